@@ -1,0 +1,144 @@
+"""One protocol for every codec: a codec *is* its frozen settings.
+
+Settings go to JSON and back to an equal codec; `encode` and `decode` are functions of the settings and their arguments
+alone. How a ratio is reached is the codec's own business (`encode_to_size`), since one has a rate target, another a
+quantiser step and a third an integer quality; what was reached, and why not, is told in the same words by all.
+"""
+
+from __future__ import annotations
+
+import enum
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import ClassVar, Protocol, TypeAlias, runtime_checkable
+
+from safecheck.frames import PixelFormat, Raster, Samples
+
+__all__ = ["EXEMPT_BYTES", "RATE_TOLERANCE", "Codec", "Encoded", "RatedCodec", "Reached", "Settings"]
+
+Settings: TypeAlias = Mapping[str, str | int | float | bool]
+"""A codec's settings as JSON scalars, keys sorted by the registry where order matters."""
+
+RATE_TOLERANCE = 0.01
+"""A code whose size is within this share of the asked size counts as reached."""
+EXEMPT_BYTES = 4096
+"""Targets below this many bytes are not held to `RATE_TOLERANCE`: headers weigh too much there."""
+
+
+class Reached(enum.StrEnum):
+    """Whether the asked size was met, and if not, why."""
+
+    ASKED = "asked"
+    """Within `RATE_TOLERANCE`."""
+    SMALL_FRAME = "small frame"
+    """The target is under `EXEMPT_BYTES`; nearest size taken."""
+    CODEC_FLOOR = "codec floor"
+    """The codec can make it no smaller."""
+    CODEC_CEILING = "codec ceiling"
+    """The codec can make it no larger."""
+    REVERSIBLE_SMALLER = "reversible is smaller"
+    """A reversible code is already smaller than the size asked for."""
+    BRACKET = "bracket"
+    """An integer dial: one of the two settings around the asked size."""
+    SETTING = "setting"
+    """Asked by setting, not by size."""
+
+
+@dataclass(frozen=True, slots=True)
+class Encoded:
+    """A code, and how it came about."""
+
+    code: bytes
+    settings: Settings
+    """Settings of the codec that wrote it; with them it is written again, byte for byte."""
+    reached: Reached
+    encodes: int = 1
+    """How many times the frame was encoded on the way."""
+
+
+@runtime_checkable
+class Codec(Protocol):
+    """A way to turn a raster into bytes and back."""
+
+    name: ClassVar[str]
+    """Word for the codec in plans, commands and rows."""
+    archive_can_write: ClassVar[bool]
+    """Whether a DICOM transfer syntax exists for it. False: an analysis codec."""
+    reversible: ClassVar[bool]
+    """Whether `decode(encode(x))` equals x by construction."""
+
+    @property
+    def settings(self) -> Settings:
+        """What makes two codecs equal, as JSON scalars; `registry.from_settings(name, settings)` gives an equal codec."""
+        ...
+
+    @property
+    def version(self) -> str:
+        """Library and version, or the version of our own bitstream."""
+        ...
+
+    def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
+        """Why this codec takes no raster of this format and (rows, columns); None where it does."""
+        ...
+
+    def encode(self, raster: Raster) -> bytes:
+        """Write the raster.
+
+        Raises
+        ------
+        CannotEncode
+            Where `refuses` gives a reason.
+        CodecUnavailable
+            Where the library is missing.
+        """
+        ...
+
+    def decode(self, code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
+        """Read a code back, from the bytes alone.
+
+        Parameters
+        ----------
+        code
+            Bytes.
+        format
+            Expected pixel format; a code that says otherwise is corrupt.
+        shape
+            Expected (rows, columns).
+
+        Returns
+        -------
+        numpy.ndarray
+            (rows, columns) or (rows, columns, 3), dtype ``format.dtype``, within the format's range.
+
+        Raises
+        ------
+        CorruptCode
+            If the bytes cannot be read, or give another shape, precision or range.
+        CodecUnavailable
+            Where the library is missing.
+        """
+        ...
+
+
+@runtime_checkable
+class RatedCodec(Codec, Protocol):
+    """A codec that can be asked for a size."""
+
+    def encode_to_size(self, raster: Raster, target_bytes: float) -> Encoded:
+        """Write the raster at the asked size, or as near as the codec comes.
+
+        The dial in ``self.settings`` is ignored; the other settings hold. The search starts from the raster alone.
+
+        Parameters
+        ----------
+        raster
+            What to write.
+        target_bytes
+            Positive.
+
+        Raises
+        ------
+        CannotEncode, CodecUnavailable
+            As in `encode`.
+        """
+        ...
