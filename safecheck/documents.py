@@ -66,7 +66,8 @@ def from_mapping(model: type[D], table: object) -> D:
         return model.model_validate_json(json.dumps(table, default=_as_text), strict=True)
     except ValidationError as error:
         found = error.errors(include_url=False, include_context=False)
-        first = found[0]
+        # A misspelt key gives two findings, one missing and one unknown: the unknown one shows the slip.
+        first = min(found, key=lambda item: item["type"] != "extra_forbidden")
         more = f" (and {len(found) - 1} more)" if len(found) > 1 else ""
         raise DocumentError(_dotted(first["loc"]), _sentence(first["type"], first["msg"]) + more) from error
 

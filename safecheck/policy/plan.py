@@ -1,0 +1,211 @@
+"""The plan: scope, candidates, regions, limits and context, declared before the run."""
+
+from __future__ import annotations
+
+import datetime
+import hashlib
+import json
+from typing import Annotated, Literal
+
+from pydantic import Field, model_validator
+
+from safecheck.documents import Document
+from safecheck.frames import SizeBasis
+
+__all__ = [
+    "Allowed",
+    "CandidatePlan",
+    "Change",
+    "Claim",
+    "ControlPlan",
+    "LimitPlan",
+    "Plan",
+    "RegionPlan",
+    "SamplePlan",
+    "Scope",
+    "WindowPlan",
+    "plan_hash",
+]
+
+Text = Annotated[str, Field(min_length=1, max_length=200)]
+
+
+class Change(Document):
+    """What is to be decided, by whom it was declared, and when."""
+
+    title: Text
+    """One line for the head of the record."""
+    reference: str = ""
+    """Reference of the change record, as the site writes it."""
+    declared_by: Text
+    """Role, not name, of who declared the plan."""
+    declared_on: datetime.date
+    compressed_copy: Text
+    """Which copy would be recompressed, e.g. 'archive copy'."""
+    compressed_when: Text
+    """When, e.g. '90 days after the report'."""
+
+
+class SamplePlan(Document):
+    """How the studies assessed were drawn."""
+
+    drawn: Literal["random", "consecutive", "chosen"]
+    """Only a random sample carries a bound on studies not assessed."""
+    source: str = ""
+    """From which studies, e.g. 'CT head 2025, main site'."""
+
+
+class CandidatePlan(Document):
+    """One codec at one asked ratio."""
+
+    codec: Text
+    ratio: Annotated[float, Field(gt=1, le=1000)]
+    basis: SizeBasis = SizeBasis.BITS_STORED
+    status: Literal["proposed", "context"] = "proposed"
+    """Only proposed candidates decide the exit code."""
+    settings: dict[str, str | int | float | bool] = Field(default_factory=dict)
+    """The codec's other settings, e.g. size = 16 for tiled."""
+
+    @property
+    def name(self) -> str:
+        """How outputs name it: codec, ratio, basis where it is not bits-stored, other settings."""
+        basis = "" if self.basis is SizeBasis.BITS_STORED else f" of {self.basis}"
+        settings = "".join(f", {key} {value}" for key, value in sorted(self.settings.items()))
+        return f"{self.codec} {self.ratio:g}:1{basis}{settings}"
+
+
+class WindowPlan(Document):
+    """A display window on which changes are measured."""
+
+    label: Text
+    centre: float
+    width: Annotated[float, Field(gt=0)]
+    unit: Text
+    """Unit of centre and width; frames of another unit do not take the window."""
+    function: Literal["LINEAR", "LINEAR_EXACT", "SIGMOID"] = "LINEAR"
+    modality: str = ""
+    """Only for this modality, or '' for all of that unit."""
+
+    @model_validator(mode="after")
+    def _width_of_linear(self) -> WindowPlan:
+        """PS3.3 C.11.2: a LINEAR window is at least 1 wide."""
+        if self.function == "LINEAR" and self.width < 1:
+            raise ValueError(f"a LINEAR window is at least 1 wide, found {self.width:g}")
+        return self
+
+
+class RegionPlan(Document):
+    """Where the drawn regions are."""
+
+    file: Text
+    """Region file, SEG or RT Structure Set; a relative path counts from the plan's folder."""
+
+
+class LimitPlan(Document):
+    """A bound on a measure."""
+
+    name: Text
+    measure: Text
+    """Name from the table of measures, e.g. 'rmse_content'."""
+    unit: Text
+    """Unit of the bound; values in another unit are not held against it."""
+    at_most: float | None = None
+    at_least: float | None = None
+    region: str = ""
+    """Label of the region, for region measures; '' for all."""
+    region_role: str = ""
+    """Role of the regions, for region measures; '' for all."""
+    window: str = ""
+    """Label of the window, for window measures; '' for all."""
+    modality: str = ""
+    """Only for this modality; '' for all."""
+    body_part: str = ""
+    """Only for this body part; '' for all."""
+    declared_by: Text
+    """Role of its author."""
+    declared_on: datetime.date
+
+    @model_validator(mode="after")
+    def _one_bound(self) -> LimitPlan:
+        """A limit has one side."""
+        if (self.at_most is None) == (self.at_least is None):
+            raise ValueError("one of at_most and at_least is expected, and only one")
+        return self
+
+    @property
+    def bound(self) -> float:
+        """The bound, whichever side it is on."""
+        return self.at_most if self.at_most is not None else self.at_least or 0.0
+
+
+class Claim(Document):
+    """What the sample is to show about studies not assessed."""
+
+    exceeding_at_most_percent: Annotated[float, Field(gt=0, lt=100)]
+    """Largest share of patients with an exceedance that the claim allows."""
+    confidence_percent: Annotated[float, Field(gt=50, lt=100)] = 95.0
+
+
+class Allowed(Document):
+    """How much of the input may be left out before the run says so by its exit code."""
+
+    refused_percent: Annotated[float, Field(ge=0, le=100)] = 0.0
+    """Share of image files that may be refused."""
+    excluded_percent: Annotated[float, Field(ge=0, le=100)] = 100.0
+    """Share of all files that may be excluded by rule."""
+
+
+class ControlPlan(Document):
+    """Which frames carry the controls that are too dear for every frame."""
+
+    share_percent: Annotated[float, Field(ge=0, le=100)] = 5.0
+    """Share of frames; at least one per stratum and codec whatever it says."""
+    seed: int = 1
+
+
+class Scope(Document):
+    """Which inputs are subjects of the run."""
+
+    modalities: tuple[str, ...] = ()
+    """Only these; empty for all."""
+    body_parts: tuple[str, ...] = ()
+    """Only these; empty for all."""
+    localizers: bool = False
+    secondary_captures: bool = False
+    lossy_sources: bool = False
+    """Take sources already lossy, as second generation."""
+
+
+class Plan(Document):
+    """The whole document."""
+
+    version: Literal[1]
+    change: Change
+    sample: SamplePlan
+    scope: Scope = Scope()
+    candidates: Annotated[tuple[CandidatePlan, ...], Field(min_length=1)]
+    windows: tuple[WindowPlan, ...] = ()
+    regions: RegionPlan | None = None
+    limits: tuple[LimitPlan, ...] = ()
+    claim: Claim | None = None
+    allowed: Allowed = Allowed()
+    controls: ControlPlan = ControlPlan()
+
+    @model_validator(mode="after")
+    def _names_differ(self) -> Plan:
+        """Outputs name candidates, limits and windows by these."""
+        for kind, names in (
+            ("candidates", [candidate.name for candidate in self.candidates]),
+            ("limits", [limit.name for limit in self.limits]),
+            ("windows", [f"{window.label} {window.modality}" for window in self.windows]),
+        ):
+            twice = sorted({name for name in names if names.count(name) > 1})
+            if twice:
+                raise ValueError(f"{kind} need different names, found {twice[0]!r} twice")
+        return self
+
+
+def plan_hash(plan: Plan) -> str:
+    """SHA-256 of the plan as read, over JSON with sorted keys: comments and order of keys do not matter."""
+    text = json.dumps(plan.model_dump(mode="json"), sort_keys=True, separators=(",", ":"), ensure_ascii=False)
+    return hashlib.sha256(text.encode()).hexdigest()
