@@ -144,7 +144,7 @@ class FigureEntry(Document):
     window: str = ""
     """Label of the window, for window measures."""
     unit: str
-    worse: Literal["higher", "lower", "neither"]
+    worse: Literal["higher", "lower", "away from zero"]
     frames: int
     """Frames with a value."""
     without_value: int = 0
@@ -221,7 +221,7 @@ class OutcomeEntry(Document):
 class ControlEntry(Document):
     """One kind of control, for one codec where it applies."""
 
-    control: Literal["reversible", "repeat", "over-compressed", "planted", "codec reversible"]
+    control: Literal["reversible", "repeat", "over-compressed", "planted"]
     codec: str
     frames: int
     held: int

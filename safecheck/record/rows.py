@@ -62,6 +62,7 @@ class TreatedFrame:
     frame: int = column("", "Frame number, from 1.")
     stratum: str = column("", "Group of like images.")
     modality: str = column("", "Modality.")
+    body_part: str = column("", "Body part: a term of the standard's list, other, or empty.")
     unit: str = column("", "Unit of every column in the unit of the image.")
     role: str = column("", "candidate, delivered, reversible, repeat, over-compressed or planted.")
     candidate: str = column("", "Name of the candidate or control.")
@@ -73,7 +74,6 @@ class MeasureRow(TreatedFrame):
 
     # What the frame is
     slice_position_mm: float | None = optional("mm", "Position along the normal of the image plane.")
-    body_part: str = column("", "Body part: a term of the standard's list, other, or empty.")
     slice_thickness_class: str = column("", "Class of slice thickness, or empty.")
     kernel: str = column("", "Reconstruction kernel, or a keyed short form of an unusual name, or empty.")
     manufacturer: str = column("", "Manufacturer, other, or empty.")
@@ -105,7 +105,6 @@ class MeasureRow(TreatedFrame):
     encodes: int = column("", "Encodings needed to reach it.")
     code_bytes: int = column("bytes", "Size of the code stream.")
     code_crc32: int = column("", "CRC-32 of the code stream.")
-    code_repeats: bool | None = optional("", "For the repeat control: whether the second code equals the first.")
     bits_per_pixel: float = column("bits per pixel", "Bits of the code stream per pixel of the frame.")
     ratio_bits_stored: float = column("to 1", "Size on the bits-stored basis over the code.")
     ratio_bits_allocated: float = column("to 1", "Size on the bits-allocated basis over the code.")
@@ -170,10 +169,12 @@ class MeasureRow(TreatedFrame):
     ciede2000_p95: float | None = optional("CIEDE2000", "95th percentile of it.")
     ciede2000_max: float | None = optional("CIEDE2000", "Largest of it.")
 
-    # The planted displacement
-    planted_size: float | None = optional(IMAGE_UNIT, "Control: displacement added to one patch of the original.")
-    planted_row: int | None = optional("pixels", "Control: first row of that patch.")
-    planted_column: int | None = optional("pixels", "Control: first column of that patch.")
+    # Controls
+    control_held: bool | None = optional("", "Controls: whether what was asked of it was found; null for candidates.")
+    control_found: str = column("", "Controls: what was found, in words; empty for candidates.", default="")
+    planted_size: float | None = optional(IMAGE_UNIT, "Planted control: displacement added to one 8x8 patch.")
+    planted_row: int | None = optional("pixels", "Planted control: first row of that patch.")
+    planted_column: int | None = optional("pixels", "Planted control: first column of that patch.")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

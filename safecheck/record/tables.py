@@ -9,6 +9,8 @@ from collections.abc import Iterable, Iterator, Sequence
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+import numpy.typing as npt
 import pyarrow as pa
 import pyarrow.csv
 import pyarrow.parquet
@@ -16,7 +18,17 @@ import pyarrow.parquet
 from safecheck.errors import DossierError
 from safecheck.record.rows import TABLES, columns_of
 
-__all__ = ["CSV_LIMIT", "ROW_GROUP", "from_rows", "read_table", "schema_of", "table_writer", "write_csv", "write_table"]
+__all__ = [
+    "CSV_LIMIT",
+    "ROW_GROUP",
+    "TableReader",
+    "from_rows",
+    "read_table",
+    "schema_of",
+    "table_writer",
+    "write_csv",
+    "write_table",
+]
 
 ROW_GROUP = 16_384
 """Rows per row group: fixed, since the bytes of the file depend on it."""
@@ -86,19 +98,69 @@ def write_csv(path: Path, table: pa.Table) -> None:
     path.write_bytes(buffer.getvalue())
 
 
-def read_table(path: Path, table: str, columns: Sequence[str] | None = None) -> pa.Table:
-    """Read a table of a dossier.
+def read_table(path: Path, table: str) -> pa.Table:
+    """Read a whole table of a dossier.
 
     Raises
     ------
     DossierError
         If the file is missing, is no Parquet, or has other columns.
     """
-    try:
-        found = pa.parquet.read_table(path, columns=list(columns) if columns else None)
-    except (OSError, pa.ArrowException) as error:
-        raise DossierError(f"the table {path.name} of the dossier cannot be read") from error
-    expected = schema_of(table)
-    if columns is None and not found.schema.equals(expected):
-        raise DossierError(f"the table {path.name} of the dossier has other columns than this version writes")
-    return found
+    return TableReader(path, table).whole()
+
+
+class TableReader:
+    """A table of a dossier, read a column at a time: figures over 10^6 rows need a few columns, not the table.
+
+    Parameters
+    ----------
+    path
+        Parquet file.
+    table
+        Name in `safecheck.record.rows.TABLES`.
+
+    Raises
+    ------
+    DossierError
+        If the file is missing, is no Parquet, or has other columns.
+    """
+
+    def __init__(self, path: Path, table: str) -> None:
+        try:
+            self._file = pa.parquet.ParquetFile(path)
+        except (OSError, pa.ArrowException) as error:
+            raise DossierError(f"the table {path.name} of the dossier cannot be read") from error
+        if not self._file.schema_arrow.equals(schema_of(table)):
+            raise DossierError(f"the table {path.name} of the dossier has other columns than this version writes")
+        self.table = table
+        self._kept: dict[str, pa.ChunkedArray] = {}
+        self.rows: int = self._file.metadata.num_rows
+
+    def whole(self) -> pa.Table:
+        """All rows and columns."""
+        return self._file.read()
+
+    def numbers(self, column: str) -> npt.NDArray[np.float64]:
+        """Return a column of numbers, (rows,), NaN where it is null."""
+        values = self._file.read([column]).column(0).cast(pa.float64())
+        return np.asarray(values.fill_null(float("nan")).to_numpy(), dtype=np.float64)
+
+    def codes(self, column: str) -> tuple[npt.NDArray[np.int64], tuple[Any, ...]]:
+        """Return a column of names as whole numbers, (rows,), and the names that they stand for, sorted."""
+        encoded = self._file.read([column]).column(0).combine_chunks().dictionary_encode()
+        names = encoded.dictionary.to_pylist()
+        order = sorted(range(len(names)), key=lambda index: names[index])
+        rank = np.empty(len(names), dtype=np.int64)
+        rank[order] = np.arange(len(names))
+        codes = rank[encoded.indices.to_numpy(zero_copy_only=False)] if len(encoded) else np.empty(0, np.int64)
+        return codes, tuple(names[index] for index in order)
+
+    def at(self, indices: Sequence[int], columns: Sequence[str]) -> list[dict[str, Any]]:
+        """Return some rows, some columns of each; the columns are kept, since places are asked for again and again."""
+        for name in columns:
+            if name not in self._kept:
+                found = self._file.read([name]).column(0)
+                self._kept[name] = found.dictionary_encode() if pa.types.is_string(found.type) else found
+        wanted = pa.array(indices, pa.int64())
+        taken = {name: self._kept[name].take(wanted).to_pylist() for name in columns}
+        return [{name: taken[name][row] for name in columns} for row in range(len(indices))]
