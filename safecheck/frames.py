@@ -140,7 +140,7 @@ class Raster:
     @property
     def pixels(self) -> int:
         """Rows times columns."""
-        return self.samples.shape[0] * self.samples.shape[1]
+        return int(self.samples.shape[0] * self.samples.shape[1])
 
     def size_bytes(self, basis: SizeBasis) -> float:
         """Bytes before recompression on the two bases that depend on the raster alone.
@@ -287,6 +287,8 @@ class Origin:
     """Along the normal of the image plane."""
     may_show_text: bool = False
     """Burned-in text is declared or likely: no crop of this frame is ever written."""
+    under_18: bool = False
+    """The header gives an age, or dates that give one, under 18 years."""
     notes: tuple[str, ...] = ()
     """What preflight noticed and set right, one short sentence each."""
 

@@ -53,23 +53,23 @@ class OutcomeWord(enum.StrEnum):
 
 
 CAUTIONS: tuple[str, ...] = (
-    "This record describes numerical differences between images before and after recompression. It does not say whether "
-    "any image is fit for diagnosis, treatment or any other clinical use. It is not a medical device and not for "
-    "decisions on an individual patient.",
-    "Whether irreversible compression may be used, for which examinations and to what degree, is decided under the law "
-    "and guidance that apply locally by the licensed clinicians responsible, with advice from a medical physicist where "
-    "required.",
-    "Limits shown were declared by the user. Staying within them is not evidence of clinical acceptability. A limit that "
-    "the over-compressed control also meets tells nothing.",
-    "Results apply to the images, encoder, version and settings listed, and reach beyond them only as far as the sample "
-    "was drawn at random. An archive product may encode differently; check the images it delivers.",
-    "Small or low-contrast findings can be altered while average figures stay favourable. See the worst places and the "
-    "region tables.",
+    "This record describes numerical differences between images before and after recompression. It does not say "
+    "whether any image is fit for diagnosis, treatment or any other clinical use. It is not a medical device and "
+    "not for decisions on an individual patient.",
+    "Whether irreversible compression may be used, for which examinations and to what degree, is decided under the "
+    "law and guidance that apply locally by the licensed clinicians responsible, with advice from a medical "
+    "physicist where required.",
+    "Limits shown were declared by the user. Staying within them is not evidence of clinical acceptability. A limit"
+    " that the over-compressed control also meets tells nothing.",
+    "Results apply to the images, encoder, version and settings listed, and reach beyond them only as far as the "
+    "sample was drawn at random. An archive product may encode differently; check the images it delivers.",
+    "Small or low-contrast findings can be altered while average figures stay favourable. See the worst places and "
+    "the region tables.",
     "Irreversible compression cannot be undone. Keep the originals until the decision is final and verified.",
-    "Only pixels were examined: not headers, references to new instance UIDs, the lossy mark in viewers, derived views, "
-    "registration, or the comparison with earlier images.",
-    "The seal shows a change only against a hash kept elsewhere; it is neither a signature nor an electronic seal in law. "
-    "Pseudonymised is not anonymous.",
+    "Only pixels were examined: not headers, references to new instance UIDs, the lossy mark in viewers, derived "
+    "views, registration, or the comparison with earlier images.",
+    "The seal shows a change only against a hash kept elsewhere; it is neither a signature nor an electronic seal "
+    "in law. Pseudonymised is not anonymous.",
 )
 """Cautions 1 to 8, which always stand."""
 
@@ -106,7 +106,9 @@ REASONS: MappingProxyType[str, Reason] = MappingProxyType(
         # by rule
         "not-dicom": Reason("excluded", "not a DICOM file"),
         "no-pixels": Reason("excluded", "holds no pixel data"),
-        "not-an-image": Reason("excluded", "a report, presentation state, segmentation, plan or other non-image object"),
+        "not-an-image": Reason(
+            "excluded", "a report, presentation state, segmentation, plan or other non-image object"
+        ),
         "localizer": Reason("excluded", "a localizer; assessed only when asked for"),
         "secondary-capture": Reason("excluded", "a secondary capture; assessed only when asked for"),
         "dose-page": Reason("excluded", "a dose report or other page of text"),

@@ -1,1 +1,1 @@
-"""TODO"""
+"""The jobs behind the commands: each puts the rooms together for one purpose."""

@@ -1,1 +1,1 @@
-"""TODO"""
+"""The waist: the rows that workers write and reports read, and the canonical record."""

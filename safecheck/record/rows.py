@@ -93,6 +93,8 @@ class MeasureRow(TreatedFrame):
     source_bytes: int = column("bytes", "Size of the frame as it lies in the archive.")
     source_lossy: bool = column("", "Whether the source had already been compressed irreversibly.")
     generation: str = column("", "first, or second where the source was already lossy.")
+    under_18: bool = column("", "Whether the header gives an age under 18 years.")
+    may_show_text: bool = column("", "Whether burned-in text is declared or likely: no crop is ever written.")
 
     # What was done
     codec: str = column("", "Codec, or delivered.")
@@ -129,7 +131,9 @@ class MeasureRow(TreatedFrame):
     p999_content: float | None = optional(IMAGE_UNIT, "99.9th percentile of it in content; from 1,000 pixels on.")
     peak_bits: float = column(IMAGE_UNIT, "Peak of the first PSNR: the span that the stored bits can express.")
     peak_range: float | None = optional(IMAGE_UNIT, "Peak of the second PSNR: the span of the original's content.")
-    psnr_peak_bits_db: float | None = optional("dB", "PSNR over all pixels of the frame, peak peak_bits; null if equal.")
+    psnr_peak_bits_db: float | None = optional(
+        "dB", "PSNR over all pixels of the frame, peak peak_bits; null if equal."
+    )
     psnr_peak_range_db: float | None = optional("dB", "PSNR over all pixels, peak peak_range; null if equal.")
     psnr_peak_bits_content_db: float | None = optional("dB", "PSNR over content, peak peak_bits; null if equal.")
     psnr_peak_range_content_db: float | None = optional("dB", "PSNR over content, peak peak_range; null if equal.")

@@ -1,1 +1,1 @@
-"""TODO"""
+"""What the rows show: strata, figures, bounds; patients and studies, not frames, are the unit."""

@@ -40,7 +40,7 @@ def share_upper_bound(exceeding: int, patients: int, *, confidence: float = 0.95
         raise ValueError(f"a confidence lies between 0 and 1, found {confidence}")
     if exceeding == patients:
         return 1.0
-    from scipy.special import betaincinv  # noqa: PLC0415 - loads with the command that needs it
+    from scipy.special import betaincinv
 
     return float(betaincinv(exceeding + 1, patients - exceeding, confidence))
 

@@ -110,5 +110,3 @@ def worst_index(measure: Measure, rows: Indices, values: npt.NDArray[np.float64]
     if measure.worse == "lower":
         return int(rows[np.argmin(values)])
     return int(rows[np.argmax(np.abs(values) if measure.worse == "away from zero" else values)])
-
-

@@ -1,0 +1,164 @@
+"""The record from the tables: what a run found, ready to be hashed, read and drawn."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+
+from safecheck.policy.conditions import CONDITION_TEXTS, ExitCondition, in_order, winning
+from safecheck.policy.plan import Plan, plan_hash
+from safecheck.record.document import (
+    SCHEMA_VERSION,
+    CandidateEntry,
+    CodecCheckEntry,
+    Condition,
+    ControlEntry,
+    InputCounts,
+    OutcomeEntry,
+    PlanEntry,
+    RecordDocument,
+    TableEntry,
+)
+from safecheck.record.tables import TableReader
+from safecheck.statistics.bounds import patients_needed
+from safecheck.statistics.cautions import cautions_that_apply
+from safecheck.statistics.controls import controls
+from safecheck.statistics.counts import candidate_entries, input_counts, left_out, stratum_entries
+from safecheck.statistics.delivered import delivered_entry
+from safecheck.statistics.figures import figures
+from safecheck.statistics.groups import Groups
+from safecheck.statistics.ledger import ledger
+from safecheck.statistics.outcomes import outcomes
+from safecheck.statistics.places import worst_places
+from safecheck.statistics.regions import region_entries
+from safecheck.wording import NO_LIMITS, RECORD_TITLE
+
+__all__ = ["Surroundings", "summarise"]
+
+
+@dataclass(frozen=True, slots=True)
+class Surroundings:
+    """What the record says beside what stands in the tables."""
+
+    plan_source: Literal["file", "command line"]
+    key_id: str
+    versions: Mapping[str, str]
+    selftest: tuple[CodecCheckEntry, ...]
+    tables: tuple[TableEntry, ...]
+    notes: Mapping[str, int]
+    """What preflight set right, with the number of frames."""
+    patient_unknown_studies: int = 0
+    regions_without_frame: tuple[str, ...] = ()
+
+
+def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surroundings) -> RecordDocument:
+    """Build the record.
+
+    Parameters
+    ----------
+    plan
+        As read.
+    tables
+        The four tables of the dossier by name.
+    around
+        Versions, selftest, notes and whatever else the tables do not hold.
+    """
+    groups = {name: Groups.of(tables[name]) for name in ("measures", "windows", "regions")}
+    measures = groups["measures"]
+    counts = input_counts(tables["inputs"], patient_unknown_studies=around.patient_unknown_studies)
+    strata = tuple(stratum_entries(measures))
+    candidates = tuple(candidate_entries(plan, measures))
+    names = tuple(candidate.candidate for candidate in candidates)
+    held = tuple(outcomes(plan, groups, candidates))
+    checks = tuple(controls(measures))
+    controls_held = _controls_held(checks, counts)
+    conditions = in_order(_conditions(plan, counts, held, controls_held, candidates))
+    return RecordDocument(
+        schema_version=SCHEMA_VERSION,
+        title=RECORD_TITLE,
+        plan=PlanEntry(source=around.plan_source, sha256=plan_hash(plan), content=plan.model_dump(mode="json")),
+        key_id=around.key_id,
+        versions=dict(around.versions),
+        selftest=around.selftest,
+        inputs=counts,
+        left_out=tuple(left_out(tables["inputs"])),
+        strata=strata,
+        candidates=candidates,
+        ledger=tuple(ledger(measures, names)),
+        figures=tuple(figures(measures, groups["windows"], names)),
+        outcomes=held,
+        outcomes_text=_outcomes_text(held),
+        controls=checks,
+        controls_held=controls_held,
+        worst_places=tuple(worst_places(measures, candidates)),
+        regions=tuple(region_entries(groups["regions"], candidates)),
+        regions_without_frame=around.regions_without_frame,
+        delivered=delivered_entry(tables["inputs"], measures),
+        content_rules=_counted(measures, "content_rule"),
+        notes=dict(sorted(around.notes.items())),
+        cautions=cautions_that_apply(plan, measures, strata, held, controls_held=controls_held),
+        conditions=tuple(Condition(code=int(code), text=CONDITION_TEXTS[code]) for code in conditions),
+        exit_code=int(winning(conditions)),
+        exit_text=CONDITION_TEXTS[winning(conditions)],
+        tables=around.tables,
+    )
+
+
+def _controls_held(checks: tuple[ControlEntry, ...], counts: InputCounts) -> bool:
+    """Every control held; a run that assessed frames without a reversible control held none."""
+    if not counts.frames_assessed:
+        return True
+    kinds = {check.control for check in checks}
+    return "reversible" in kinds and all(check.not_held == 0 for check in checks)
+
+
+def _conditions(
+    plan: Plan,
+    counts: InputCounts,
+    held: tuple[OutcomeEntry, ...],
+    controls_held: bool,
+    candidates: tuple[CandidateEntry, ...],
+) -> Iterator[ExitCondition]:
+    """Yield the exit conditions that a finished run can have."""
+    if not controls_held:
+        yield ExitCondition.CONTROLS
+    images = counts.assessed + counts.refused
+    too_many_refused = 100 * counts.refused > plan.allowed.refused_percent * max(images, 1)
+    too_many_excluded = 100 * counts.excluded > plan.allowed.excluded_percent * max(counts.files, 1)
+    proposed = [entry for entry in held if entry.status == "proposed"]
+    nothing = not counts.frames_assessed or not any(candidate.frames for candidate in candidates)
+    unheard = bool(proposed) and all(entry.outcome == "not evaluated" for entry in proposed)
+    if too_many_refused or too_many_excluded or nothing or unheard:
+        yield ExitCondition.LEFT_OUT
+    if any(entry.outcome == "outside declared limits" for entry in proposed):
+        yield ExitCondition.OUTSIDE
+    if plan.claim and _too_little(plan, proposed):
+        yield ExitCondition.LITTLE_EVIDENCE
+
+
+def _too_little(plan: Plan, proposed: list[OutcomeEntry]) -> bool:
+    """Whether any limit without an exceedance rests on fewer patients than the claim needs."""
+    if plan.claim is None or plan.sample.drawn != "random" or not proposed:
+        return True
+    share, confidence = plan.claim.exceeding_at_most_percent / 100, plan.claim.confidence_percent / 100
+    needed = patients_needed(share, confidence=confidence)
+    return any(entry.patients < needed for entry in proposed)
+
+
+def _outcomes_text(held: tuple[OutcomeEntry, ...]) -> str:
+    """One line over all limits and proposed candidates."""
+    if not held:
+        return NO_LIMITS
+    proposed = [entry.outcome for entry in held if entry.status == "proposed"]
+    words = ("outside declared limits", "within declared limits", "not evaluated")
+    return "; ".join(f"{proposed.count(word)} {word}" for word in words if word in proposed)
+
+
+def _counted(groups: Groups, column: str) -> dict[str, int]:
+    """Frames by the name in a column, over the reversible control, which runs once on every frame."""
+    rows = groups.of_candidate("reversible")
+    codes, names = groups.reader.codes(column)
+    return {names[code]: int((codes[rows] == code).sum()) for code in np.unique(codes[rows])}
