@@ -93,4 +93,4 @@ def _sentence(kind: str, message: str) -> str:
         return "this key is missing"
     if kind == "extra_forbidden":
         return "this key is unknown"
-    return message.removeprefix("Value error, ").removeprefix("Assertion failed, ")
+    return message.removeprefix("Value error, ")
