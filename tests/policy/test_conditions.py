@@ -11,7 +11,7 @@ from safecheck.policy.conditions import CONDITION_TEXTS, ExitCondition, in_order
 ORDER = (2, 8, 5, 4, 6, 3, 10, 7)
 
 
-@pytest.mark.parametrize("pair", itertools.combinations(ORDER, 2), ids=str)
+@pytest.mark.parametrize("pair", list(itertools.combinations(ORDER, 2)), ids=str)
 def test_of_two_conditions_the_earlier_of_the_order_wins(pair: tuple[int, int]) -> None:
     assert winning([ExitCondition(pair[1]), ExitCondition(pair[0])]) == pair[0]
 
