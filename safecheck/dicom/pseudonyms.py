@@ -75,8 +75,8 @@ class Pseudonyms:
         Raises
         ------
         UsageError
-            If two values of this run would share a name (about 1 in 10**9 for 1,000 values): no figure may be booked
-            under a wrong name, so the run stops and another key is asked for.
+            If two values of this run would share a name (about 1 in 10**9 for 1,000 values): no figure may be
+            booked under a wrong name, so the run stops and another key is asked for.
         """
         message = f"{kind}\0{value}".encode("utf-8", "surrogatepass")
         digest = hmac.digest(self._key, message, "sha256")
@@ -141,9 +141,7 @@ def _read_key(place: Path) -> bytes:
         mode = os.fstat(stream.fileno()).st_mode
         content = stream.read(4096)
     if os.name == "posix" and mode & (stat.S_IRWXG | stat.S_IRWXO):
-        raise UsageError(
-            "the site key file can be read by others: expected a file that only its owner can read (0600)"
-        )
+        raise UsageError("the site key file can be read by others: expected a file that only its owner can read (0600)")
     try:
         key = bytes.fromhex(content.decode("ascii").strip())
     except ValueError:

@@ -1,4 +1,4 @@
-"""pydicom's own warnings and log lines quote values and paths of the file: inside this room they are not heard.
+"""pydicom's own warnings and log lines quote values and paths of the file: in this room they are not heard.
 
 What they warn of is looked at by our own rules and preflight, and named by reason there.
 """

@@ -15,7 +15,7 @@ __all__ = ["BOMB_FLOOR_BYTES", "BOMB_RATIO", "WHOLE_LIMIT_BYTES", "inflate", "op
 WHOLE_LIMIT_BYTES = 512 * 1024 * 1024
 """What must be taken in whole (archive members, deflated files) may be this large, not larger."""
 BOMB_RATIO = 200
-"""Inflating beyond this ratio, and beyond the floor, is no image but an attack; deflate itself ends at 1032."""
+"""Inflating beyond this ratio, and beyond the floor, is taken for an attack; deflate itself ends at 1032."""
 BOMB_FLOOR_BYTES = 16 * 1024 * 1024
 _CHUNK_BYTES = 1 << 20
 
@@ -36,7 +36,7 @@ def open_source(source: Source) -> BinaryIO:
     Raises
     ------
     InputRefused
-        'unreadable' if it is gone, locked or damaged; 'too-large' or 'archive-bomb' for a member beyond bounds.
+        'unreadable' if it is gone, locked or damaged; for a member beyond bounds 'too-large' or 'archive-bomb'.
     """
     try:
         if not source.member:

@@ -1,6 +1,6 @@
 """Transfer syntaxes: their names and what each says about loss (PS3.5 chapter 8 and 10, PS3.6 Annex A).
 
-The JPEG XL ones (Supplement 232) are not in pydicom 3.0.2; they stand here, and pydicom's tables are left alone.
+The JPEG XL ones (Supplement 232) are not in pydicom 3.0.2; they stand here, pydicom's tables are left alone.
 """
 
 from __future__ import annotations
@@ -9,7 +9,7 @@ import enum
 from dataclasses import dataclass
 from types import MappingProxyType
 
-from pydicom.uid import UID_dictionary
+from pydicom.uid import UID
 
 __all__ = ["SYNTAXES", "Coding", "Loss", "Syntax", "syntax_named", "syntax_of"]
 
@@ -49,13 +49,13 @@ class Syntax:
     coding: Coding
     loss: Loss
     method: str = ""
-    """Defined Term that (0028,2114) takes when this syntax was used with loss; '' where none belongs to it."""
+    """Defined Term that (0028,2114) takes when this syntax was used with loss, or ''."""
 
 
 def _native() -> list[Syntax]:
-    return [
-        _known(suffix, Coding.NATIVE, Loss.REVERSIBLE) for suffix in ("", ".1", ".1.98", ".1.99", ".2")
-    ] + [_known(".5", Coding.RLE, Loss.REVERSIBLE)]
+    return [_known(suffix, Coding.NATIVE, Loss.REVERSIBLE) for suffix in ("", ".1", ".1.98", ".1.99", ".2")] + [
+        _known(".5", Coding.RLE, Loss.REVERSIBLE)
+    ]
 
 
 def _jpeg() -> list[Syntax]:
@@ -80,28 +80,23 @@ def _wavelet_and_newer() -> list[Syntax]:
         _known(".4.203", Coding.JPEG_2000, Loss.EITHER, ht),
         Syntax(f"{_ROOT}.4.110", "JPEG XL Lossless", Coding.JPEG_XL, Loss.REVERSIBLE, jxl),
         # The JPEG inside keeps its own record: its loss is that of JPEG.
-        Syntax(
-            f"{_ROOT}.4.111", "JPEG XL JPEG Recompression", Coding.JPEG_XL, Loss.IRREVERSIBLE, "ISO_10918_1"
-        ),
+        Syntax(f"{_ROOT}.4.111", "JPEG XL JPEG Recompression", Coding.JPEG_XL, Loss.IRREVERSIBLE, "ISO_10918_1"),
         Syntax(f"{_ROOT}.4.112", "JPEG XL", Coding.JPEG_XL, Loss.EITHER, jxl),
     ]
 
 
 def _moving_and_referenced() -> list[Syntax]:
-    moving = [uid[len(_ROOT) :] for uid in UID_dictionary if _is_video(uid)]
+    whole = [f".4.{n}" for n in range(100, 109)]
+    moving = [*whole, *(f"{suffix}.1" for suffix in whole[:7]), ".7.1", ".7.2", ".7.3"]
     referenced = (".4.94", ".4.95", ".4.204", ".4.205")
-    return [_known(suffix, Coding.VIDEO, Loss.IRREVERSIBLE) for suffix in sorted(moving)] + [
+    return [_known(suffix, Coding.VIDEO, Loss.IRREVERSIBLE) for suffix in moving] + [
         _known(suffix, Coding.REFERENCED, Loss.UNKNOWN) for suffix in referenced
     ]
 
 
-def _is_video(uid: str) -> bool:
-    return uid.startswith((f"{_ROOT}.4.10", f"{_ROOT}.7."))
-
-
 def _known(suffix: str, coding: Coding, loss: Loss, method: str = "") -> Syntax:
-    uid = _ROOT + suffix
-    return Syntax(uid, UID_dictionary[uid][0], coding, loss, method)
+    uid = UID(_ROOT + suffix)
+    return Syntax(str(uid), uid.name, coding, loss, method)
 
 
 SYNTAXES: MappingProxyType[str, Syntax] = MappingProxyType(

@@ -1,7 +1,7 @@
 """Text of a file reduced to known terms, so that nothing typed into a header can leave this room.
 
-Each function takes the raw text and gives a term of a closed list, 'other' for a text that is not in it, or '' for none.
-Lists written from memory of the standard's tables are open to additions: an unlisted term becomes
+Each function takes the raw text and gives a term of a closed list, 'other' for a text that is not in it, or ''
+for none. Lists written from memory of the standard's tables are open to additions: an unlisted term becomes
 'other', which costs detail and nothing else.
 """
 
@@ -9,7 +9,8 @@ from __future__ import annotations
 
 import re
 
-from pydicom.uid import UID_dictionary
+from pydicom.config import IGNORE
+from pydicom.uid import UID
 
 from safecheck.dicom.pseudonyms import Pseudonyms
 
@@ -30,27 +31,29 @@ __all__ = [
 
 OTHER = "other"
 
-MODALITIES = frozenset(
-    # Defined Terms of PS3.3 C.7.3.1.1.1, retired ones included; from memory.
-    "ANN AR ASMT AU BDUS BI BMD CD CF CP CR CS CT CTPROTOCOL DD DF DG DM DMS DOC DS DX EC ECG EEG EMG EOG EPS ES FA FID "
-    "FS GM HC HD IO IOL IVOCT IVUS KER KO LEN LP LS M3D MA MG MR MS NM OAM OCT OP OPM OPR OPT OPTBSV OPTENF OPV OSS OT "
-    "PA PLAN POS PR PT PX REG RESP RF RG RTDOSE RTIMAGE RTINTENT RTPLAN RTRAD RTRECORD RTSEGANN RTSTRUCT RWV SC SEG SM "
-    "SMR SR SRF ST STAIN TEXTUREMAP TG US VA VF VL VIDD XA XAPROTOCOL XC".split()
-)
+# Defined Terms of PS3.3 C.7.3.1.1.1, retired ones included; from memory.
+_MODALITIES_TEXT = """
+ANN AR ASMT AU BDUS BI BMD CD CF CP CR CS CT CTPROTOCOL DD DF DG DM DMS DOC DS DX EC ECG EEG EMG EOG EPS
+ES FA FID FS GM HC HD IO IOL IVOCT IVUS KER KO LEN LP LS M3D MA MG MR MS NM OAM OCT OP OPM OPR OPT OPTBSV
+OPTENF OPV OSS OT PA PLAN POS PR PT PX REG RESP RF RG RTDOSE RTIMAGE RTINTENT RTPLAN RTRAD RTRECORD
+RTSEGANN RTSTRUCT RWV SC SEG SM SMR SR SRF ST STAIN TEXTUREMAP TG US VA VF VL VIDD XA XAPROTOCOL XC
+"""
+MODALITIES = frozenset(_MODALITIES_TEXT.split())
 
-BODY_PARTS = frozenset(
-    # Body Part Examined terms of PS3.16 Annex L and what PS3.3 C.7.3.1.1.1 defined before it; from memory.
-    "ABDOMEN ABDOMENPELVIS ADRENAL ANKLE ANUS AORTA ARM AXILLA BACK BILEDUCT BLADDER BODY BRAIN BREAST BRONCHUS BUTTOCK "
-    "CALCANEUS CALF CAROTID CEREBELLUM CERVIX CHEEK CHEST CHESTABDOMEN CHESTABDPELVIS CIRCLEOFWILLIS CLAVICLE COCCYX "
-    "COLON CORNEA CORONARYARTERY CSPINE CTSPINE DUODENUM EAR ELBOW ESOPHAGUS EXTREMITY EYE EYELID FACE FEMUR FINGER FOOT "
-    "FOREARM GALLBLADDER HAND HEAD HEADNECK HEART HIP HUMERUS IAC ILEUM ILIUM JAW JEJUNUM KIDNEY KNEE LARYNX LEG LIVER "
-    "LOWEREXTREMITY LOWERLEG LSPINE LSSPINE LUNG MANDIBLE MAXILLA MEDIASTINUM MOUTH NASALBONE NECK NECKCHEST "
-    "NECKCHESTABDOMEN NECKCHESTABDPELV NOSE ORBIT OVARY PANCREAS PAROTID PATELLA PELVIS PENIS PHARYNX PROSTATE RADIUS "
-    "RADIUSULNA RECTUM RIB SACRUM SCALP SCAPULA SCLERA SCROTUM SELLA SHOULDER SIJOINT SINUS SKULL SPINE SPLEEN SSPINE "
-    "STERNOCLAVICULARJOINT STERNUM STOMACH TESTIS THIGH THUMB THYMUS THYROID TIBIA TIBIAFIBULA TLSPINE TMJ TOE TONGUE "
-    "TRACHEA TSPINE ULNA UMBILICUS UPPERARM UPPEREXTREMITY URETER URETHRA UTERUS VAGINA VULVA WHOLEBODY WRIST "
-    "ZYGOMA".split()
-)
+# Body Part Examined terms of PS3.16 Annex L and what PS3.3 C.7.3.1.1.1 defined before it; from memory.
+_BODY_PARTS_TEXT = """
+ABDOMEN ABDOMENPELVIS ADRENAL ANKLE ANUS AORTA ARM AXILLA BACK BILEDUCT BLADDER BODY BRAIN BREAST BRONCHUS
+BUTTOCK CALCANEUS CALF CAROTID CEREBELLUM CERVIX CHEEK CHEST CHESTABDOMEN CHESTABDPELVIS CIRCLEOFWILLIS
+CLAVICLE COCCYX COLON CORNEA CORONARYARTERY CSPINE CTSPINE DUODENUM EAR ELBOW ESOPHAGUS EXTREMITY EYE
+EYELID FACE FEMUR FINGER FOOT FOREARM GALLBLADDER HAND HEAD HEADNECK HEART HIP HUMERUS IAC ILEUM ILIUM JAW
+JEJUNUM KIDNEY KNEE LARYNX LEG LIVER LOWEREXTREMITY LOWERLEG LSPINE LSSPINE LUNG MANDIBLE MAXILLA
+MEDIASTINUM MOUTH NASALBONE NECK NECKCHEST NECKCHESTABDOMEN NECKCHESTABDPELV NOSE ORBIT OVARY PANCREAS
+PAROTID PATELLA PELVIS PENIS PHARYNX PROSTATE RADIUS RADIUSULNA RECTUM RIB SACRUM SCALP SCAPULA SCLERA
+SCROTUM SELLA SHOULDER SIJOINT SINUS SKULL SPINE SPLEEN SSPINE STERNOCLAVICULARJOINT STERNUM STOMACH
+TESTIS THIGH THUMB THYMUS THYROID TIBIA TIBIAFIBULA TLSPINE TMJ TOE TONGUE TRACHEA TSPINE ULNA UMBILICUS
+UPPERARM UPPEREXTREMITY URETER URETHRA UTERUS VAGINA VULVA WHOLEBODY WRIST ZYGOMA
+"""
+BODY_PARTS = frozenset(_BODY_PARTS_TEXT.split())
 
 PHOTOMETRIC = frozenset(
     # PS3.3 C.7.6.3.1.2, retired ones included; from memory. XYB came with JPEG XL.
@@ -182,7 +185,7 @@ def manufacturer(text: str) -> str:
 
 
 def kernel(text: str, pseudonyms: Pseudonyms) -> str:
-    r"""Convolution Kernel (0018,1210): known forms as they are, values joined by '\'; any other as a keyed short form."""
+    r"""Convolution Kernel (0018,1210), values joined by '\': known forms as they are, any other keyed and short."""
     word = text.strip()
     if not word or _KERNELS.fullmatch(word):
         return word
@@ -191,14 +194,14 @@ def kernel(text: str, pseudonyms: Pseudonyms) -> str:
 
 def object_class(uid: str) -> str:
     """Name of a SOP class (PS3.6 Table A-1)."""
-    if not uid:
-        return ""
-    entry = UID_dictionary.get(uid)
-    return entry[0] if entry and "SOP Class" in entry[1] else "private or unknown object class"
+    known = UID(uid, IGNORE)
+    if known.type == "SOP Class":
+        return known.name
+    return "private or unknown object class" if uid else ""
 
 
 def loss_method(text: str) -> str:
-    """Lossy Image Compression Method (0028,2114): terms made like the standard's are carried through, known or not."""
+    """Lossy Image Compression Method (0028,2114): terms formed like the standard's are carried through."""
     word = text.strip().upper()
     return word if not word or _STANDARD_METHOD.fullmatch(word) else OTHER
 
