@@ -1,0 +1,204 @@
+"""One pinned decoder for each transfer syntax, and a second, independent one where the machine has it.
+
+Every decoder takes the code stream of one frame and gives (rows, columns) or (rows, columns, 3) integers as coded:
+channels are neither scaled nor reordered, and only colour transforms that belong to the code stream are undone.
+"""
+
+from __future__ import annotations
+
+import itertools
+import struct
+from collections.abc import Callable
+from dataclasses import dataclass
+from types import MappingProxyType
+from typing import Any
+
+import imagecodecs
+import numpy as np
+import numpy.typing as npt
+import openjpeg
+from pydicom.encaps import encapsulate
+from pydicom.pixels.decoders.base import get_decoder
+from pydicom.uid import RLELossless
+
+from safecheck.dicom.pixel_header import PixelHeader
+from safecheck.dicom.quiet import quiet_library
+from safecheck.dicom.stream_facts import StreamFacts
+from safecheck.errors import InputRefused
+
+__all__ = ["DECODERS", "Decoder", "decode", "second_opinion"]
+
+_Array = npt.NDArray[Any]
+_Decode = Callable[[bytes, PixelHeader, "StreamFacts | None"], _Array]
+_ROOT = "1.2.840.10008.1.2"
+
+
+@dataclass(frozen=True, slots=True)
+class Decoder:
+    """Who decodes a syntax."""
+
+    library: str
+    run: _Decode
+    processes: tuple[str, ...] = ()
+    """Processes that the code stream may name under this syntax; empty where it names none."""
+    second_library: str = ""
+    """'' where no second decoder is among the runtime dependencies."""
+    second: _Decode | None = None
+
+
+def _rle(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    """RLE Lossless (PS3.5 Annex G): a byte plane per segment, the most significant byte of each channel first."""
+    depth = header.bits_allocated // 8
+    if len(code) < 64:
+        raise InputRefused("truncated", "the RLE header is cut")
+    count, *starts = struct.unpack_from("<16I", code)
+    if count != header.channels * depth:
+        raise InputRefused("length", f"{count} RLE segments, expected {header.channels * depth}")
+    bounds = [*starts[:count], len(code)]
+    if bounds[0] < 64 or any(a >= b for a, b in itertools.pairwise(bounds)):
+        raise InputRefused("decode", "the RLE segments overlap or lie outside the frame")
+    pixels = header.rows * header.columns
+    out = np.empty((header.rows * header.columns, header.channels, depth), dtype=np.uint8)
+    for segment in range(count):
+        plane = imagecodecs.packbits_decode(code[bounds[segment] : bounds[segment + 1]])
+        if len(plane) < pixels:
+            raise InputRefused("truncated", "an RLE segment holds fewer samples than the frame")
+        channel, byte = divmod(segment, depth)
+        out[:, channel, depth - 1 - byte] = np.frombuffer(plane, dtype=np.uint8, count=pixels)
+    return out.view(f"<u{depth}").reshape(header.shape).astype(header.container, copy=False)
+
+
+def _rle_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    options: dict[str, Any] = {
+        "rows": header.rows,
+        "columns": header.columns,
+        "samples_per_pixel": header.channels,
+        "bits_allocated": header.bits_allocated,
+        "bits_stored": header.bits_allocated,
+        "pixel_representation": 0,
+        "photometric_interpretation": "RGB" if header.channels == 3 else "MONOCHROME2",
+        "planar_configuration": 0,
+        "number_of_frames": 1,
+        "pixel_keyword": "PixelData",
+        "decoding_plugin": "pydicom",
+    }
+    with quiet_library():
+        fragments = encapsulate([code], has_bot=False)
+        return get_decoder(RLELossless).as_array(fragments, index=0, raw=True, **options)[0]
+
+
+def _jpeg(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
+    if header.channels == 1 or facts is None:
+        return np.asarray(imagecodecs.jpeg8_decode(code))
+    marked = facts.coded_colour or ("RGB" if header.photometric == "RGB" else "YBR")
+    if facts.process == "lossless":
+        marked = "RGB"  # no transform belongs to the lossless process: channels as they are
+    colours = {"RGB": "RGB", "YBR": "YCBCR"}
+    return np.asarray(imagecodecs.jpeg8_decode(code, colorspace=colours[marked], outcolorspace="RGB"))
+
+
+def _jpeg_lossless_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    return np.asarray(imagecodecs.jpegsof3_decode(code))
+
+
+def _jpeg_ls(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    return np.asarray(imagecodecs.jpegls_decode(code))
+
+
+def _jpeg2000(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    return np.asarray(imagecodecs.jpeg2k_decode(code, numthreads=1))
+
+
+def _jpeg2000_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    return np.asarray(openjpeg.decode(code, j2k_format=0))
+
+
+def _htj2k(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    return np.asarray(imagecodecs.htj2k_decode(code))
+
+
+def _jpeg_xl(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    return np.asarray(imagecodecs.jpegxl_decode(code, numthreads=1))
+
+
+_TURBO, _SOF3 = "libjpeg-turbo (imagecodecs)", "jpegsof3 (imagecodecs)"
+_OPENJPEG, _OPENJPH = "OpenJPEG (imagecodecs)", "OpenJPH (imagecodecs)"
+_LOSSLESS = Decoder(_TURBO, _jpeg, ("lossless",), _SOF3, _jpeg_lossless_second)
+_J2K = Decoder(_OPENJPEG, _jpeg2000, ("jpeg2000",), "OpenJPEG (pylibjpeg-openjpeg)", _jpeg2000_second)
+_HT = Decoder(_OPENJPH, _htj2k, ("htj2k",), _OPENJPEG, _jpeg2000)
+_XL = Decoder("libjxl (imagecodecs)", _jpeg_xl)
+
+DECODERS: MappingProxyType[str, Decoder] = MappingProxyType(
+    {
+        f"{_ROOT}.5": Decoder("PackBits (imagecodecs)", _rle, (), "pydicom", _rle_second),
+        f"{_ROOT}.4.50": Decoder(_TURBO, _jpeg, ("baseline",)),
+        f"{_ROOT}.4.51": Decoder(_TURBO, _jpeg, ("baseline", "extended")),
+        f"{_ROOT}.4.53": Decoder(_TURBO, _jpeg, ("progressive",)),
+        f"{_ROOT}.4.55": Decoder(_TURBO, _jpeg, ("progressive",)),
+        f"{_ROOT}.4.57": _LOSSLESS,
+        f"{_ROOT}.4.70": _LOSSLESS,
+        f"{_ROOT}.4.80": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
+        f"{_ROOT}.4.81": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
+        f"{_ROOT}.4.90": _J2K,
+        f"{_ROOT}.4.91": _J2K,
+        f"{_ROOT}.4.201": _HT,
+        f"{_ROOT}.4.202": _HT,
+        f"{_ROOT}.4.203": _HT,
+        f"{_ROOT}.4.110": _XL,
+        f"{_ROOT}.4.111": _XL,
+        f"{_ROOT}.4.112": _XL,
+    }
+)
+"""Pinned decoder by transfer syntax UID; uncompressed syntaxes need none."""
+
+
+def decode(uid: str, code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
+    """Decode one frame with the pinned decoder.
+
+    Parameters
+    ----------
+    uid
+        Transfer syntax, a key of `DECODERS`.
+    code
+        Code stream of the frame.
+    header, facts
+        What the header and the code stream declare; already held against each other.
+
+    Returns
+    -------
+    numpy.ndarray
+        `header.shape`, integers as coded.
+
+    Raises
+    ------
+    InputRefused
+        'decode': the library refuses the stream, or gives another shape or type; 'truncated', 'length' for RLE.
+    """
+    return _checked(DECODERS[uid].run, code, header, facts)
+
+
+def second_opinion(uid: str, code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array | None:
+    """Decode one frame with the second decoder of its syntax; None where there is none.
+
+    Raises
+    ------
+    InputRefused
+        As `decode`.
+    """
+    second = DECODERS[uid].second
+    return None if second is None else _checked(second, code, header, facts)
+
+
+def _checked(run: _Decode, code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
+    try:
+        samples = run(code, header, facts)
+    except InputRefused:
+        raise
+    except Exception as error:
+        # The one seam to the decoding libraries, which share no base of errors.
+        raise InputRefused("decode", f"{type(error).__name__} from the decoder") from None
+    if samples.shape != header.shape:
+        raise InputRefused("length", "the code stream holds another number of samples than the header declares")
+    if samples.dtype.kind not in "iu" or samples.dtype.itemsize > 2:
+        raise InputRefused("bits", "the code stream holds samples that are not 8 or 16 bit integers")
+    return samples

@@ -1,0 +1,77 @@
+"""Which pixels are padding (PS3.3 C.7.5.1.1.2): stored values, before the modality transform; grey only."""
+
+from __future__ import annotations
+
+import numpy as np
+from pydicom.dataset import Dataset
+
+from safecheck.dicom.elements import value_of
+from safecheck.dicom.pixel_header import PixelHeader
+from safecheck.errors import InputRefused
+from safecheck.frames import Mask, PixelFormat, Samples
+
+__all__ = ["padding_mask"]
+
+
+def padding_mask(dataset: Dataset, header: PixelHeader, samples: Samples) -> tuple[Mask | None, tuple[str, ...]]:
+    """Pixels that hold the padding value, or lie between it and the range limit, both ends included.
+
+    Parameters
+    ----------
+    dataset, header
+        Of the file.
+    samples
+        (rows, columns) stored values with their sign read; colour gives None.
+
+    Returns
+    -------
+    mask, notes
+        (rows, columns), None where no pixel is padding; and what was set right or left aside.
+
+    Raises
+    ------
+    InputRefused
+        'header': the value is not one whole number.
+    """
+    value, limit = _whole(dataset, "PixelPaddingValue"), _whole(dataset, "PixelPaddingRangeLimit")
+    if value is None and limit is None:
+        return None, ()
+    if header.channels == 3:
+        return None, ("a padding value is declared for colour, where it has no meaning; not applied",)
+    if value is None:
+        return None, ("a padding range limit is declared without a padding value; not applied",)
+    notes: list[str] = []
+    first = _in_range(value, header, notes)
+    last = first if limit is None else _in_range(limit, header, notes)
+    if (last < first) if header.photometric == "MONOCHROME2" else (last > first):
+        notes.append("the padding range limit lies on the other side of the padding value than the standard asks")
+    low, high = min(first, last), max(first, last)
+    if high < header.format.lowest or low > header.format.highest:
+        return None, (*notes, "the padding value lies outside the stored range; no pixel can hold it")
+    mask = (samples >= low) & (samples <= high) if low != high else samples == low
+    return (mask if mask.any() else None), tuple(notes)
+
+
+def _whole(dataset: Dataset, keyword: str) -> int | None:
+    value = value_of(dataset, keyword)
+    if value is None:
+        return None
+    if isinstance(value, bytes) and len(value) == 2:
+        return int.from_bytes(value, "little")
+    if not isinstance(value, int):
+        raise InputRefused("header", f"{keyword} is not one whole number")
+    return value
+
+
+def _in_range(value: int, header: PixelHeader, notes: list[str]) -> int:
+    """Read a value that was written with the other sign as the bits that it stands for."""
+    held: PixelFormat = header.format
+    if held.lowest <= value <= held.highest:
+        return value
+    other = value - (1 << 16) if header.signed and value > held.highest else value
+    if not header.signed and value < 0:
+        other = int(np.int64(value) & ((1 << 16) - 1))
+    if other != value and held.lowest <= other <= held.highest:
+        notes.append("the padding value was written with the other sign; read by the sign of the samples")
+        return other
+    return value
