@@ -1,1 +1,1 @@
-"""TODO"""
+"""Codecs behind one protocol: ways to turn a raster into bytes and back."""

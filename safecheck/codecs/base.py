@@ -10,11 +10,15 @@ from __future__ import annotations
 import enum
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import ClassVar, Protocol, TypeAlias, runtime_checkable
+from typing import Any, ClassVar, Protocol, TypeAlias, runtime_checkable
 
+import numpy as np
+import numpy.typing as npt
+
+from safecheck.errors import CannotEncode, CorruptCode
 from safecheck.frames import PixelFormat, Raster, Samples
 
-__all__ = ["EXEMPT_BYTES", "RATE_TOLERANCE", "Codec", "Encoded", "RatedCodec", "Reached", "Settings"]
+__all__ = ["EXEMPT_BYTES", "RATE_TOLERANCE", "Codec", "Encoded", "RatedCodec", "Reached", "Settings", "admit", "fitted"]
 
 Settings: TypeAlias = Mapping[str, str | int | float | bool]
 """A codec's settings as JSON scalars, keys sorted by the registry where order matters."""
@@ -38,6 +42,8 @@ class Reached(enum.StrEnum):
     """The codec can make it no larger."""
     REVERSIBLE_SMALLER = "reversible is smaller"
     """A reversible code is already smaller than the size asked for."""
+    COARSE_STEPS = "coarse steps"
+    """The sizes that the codec can give lie further apart than `RATE_TOLERANCE`; nearest size taken."""
     BRACKET = "bracket"
     """An integer dial: one of the two settings around the asked size."""
     SETTING = "setting"
@@ -69,7 +75,7 @@ class Codec(Protocol):
 
     @property
     def settings(self) -> Settings:
-        """What makes two codecs equal, as JSON scalars; `registry.from_settings(name, settings)` gives an equal codec."""
+        """What makes two codecs equal, as JSON scalars; `registry.from_settings(name, settings)` gives an equal one."""
         ...
 
     @property
@@ -142,3 +148,57 @@ class RatedCodec(Codec, Protocol):
             As in `encode`.
         """
         ...
+
+
+def admit(codec: Codec, raster: Raster) -> None:
+    """Raise where a codec takes no such raster, or where a sample lies outside the raster's own format.
+
+    Libraries clip or wrap values beyond the bits they were told, and say nothing.
+
+    Raises
+    ------
+    CannotEncode
+        With the codec's name and the reason.
+    """
+    reason = codec.refuses(raster.format, raster.shape)
+    if reason is not None:
+        raise CannotEncode(f"{codec.name}: {reason}")
+    lowest, highest = int(raster.samples.min()), int(raster.samples.max())
+    if lowest < raster.format.lowest or highest > raster.format.highest:
+        raise CannotEncode(
+            f"{codec.name}: samples from {lowest} to {highest}, expected "
+            f"{raster.format.lowest} to {raster.format.highest} ({raster.format.bits_stored} bits stored)"
+        )
+
+
+def fitted(
+    decoded: npt.NDArray[Any],
+    codec: str,
+    form: PixelFormat,
+    shape: tuple[int, int],
+) -> Samples:
+    """Bring what a library decoded into the format's sample type, or say that it is no such raster.
+
+    Parameters
+    ----------
+    decoded
+        Whole numbers of any type.
+    codec
+        Name of the codec, for the message.
+    form, shape
+        Expected pixel format and (rows, columns).
+
+    Raises
+    ------
+    CorruptCode
+        If the shape, the kind of number or the range is not the format's.
+    """
+    expected = shape if form.channels == 1 else (*shape, form.channels)
+    if decoded.shape != expected or decoded.dtype.kind not in "iu":
+        raise CorruptCode(f"{codec}: decoded to {decoded.dtype} of shape {decoded.shape}, expected {expected}")
+    lowest, highest = int(decoded.min()), int(decoded.max())
+    if lowest < form.lowest or highest > form.highest:
+        raise CorruptCode(
+            f"{codec}: decoded to values from {lowest} to {highest}, expected {form.lowest} to {form.highest}"
+        )
+    return np.ascontiguousarray(decoded, dtype=form.dtype)

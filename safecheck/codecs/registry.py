@@ -1,0 +1,190 @@
+"""The only registry: names to codecs. Codecs that an archive can write stand first.
+
+A codec's module, and with it a library, loads when the codec is first asked for.
+"""
+
+from __future__ import annotations
+
+import dataclasses
+import importlib
+import importlib.util
+import json
+from collections.abc import Mapping
+from dataclasses import dataclass
+from types import MappingProxyType
+from typing import cast
+
+from safecheck.codecs.base import Codec, RatedCodec, Settings
+from safecheck.errors import CannotEncode, CodecUnavailable, UsageError
+
+__all__ = [
+    "ENTRIES",
+    "Entry",
+    "available",
+    "codec",
+    "entry",
+    "from_settings",
+    "from_text",
+    "names",
+    "rated",
+    "rated_names",
+    "settings_text",
+]
+
+
+@dataclass(frozen=True, slots=True)
+class Entry:
+    """Where a codec is found, and what can be said of it without loading it."""
+
+    module: str
+    kind: str
+    """Name of the class in the module."""
+    library: str
+    """Distribution that carries it."""
+    needs: str
+    """Module of that distribution whose presence tells whether the codec works here."""
+    rated: bool
+    """Whether it can be asked for a size."""
+    archive_can_write: bool
+
+
+ENTRIES: Mapping[str, Entry] = MappingProxyType(
+    {
+        "jpeg2000": Entry("safecheck.codecs.jpeg2000", "Jpeg2000", "pylibjpeg-openjpeg", "openjpeg", True, True),
+        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLs", "imagecodecs", "imagecodecs", False, True),
+        "jpeg2000-reversible": Entry(
+            "safecheck.codecs.reversible", "Jpeg2000Lossless", "imagecodecs", "imagecodecs", False, True
+        ),
+        "tiled": Entry("safecheck.codecs.tile.codec", "Tiled", "numba", "numba", True, False),
+    }
+)
+"""Every codec, in the order in which outputs name them."""
+
+
+def names() -> tuple[str, ...]:
+    """Names of all codecs, those that an archive can write first."""
+    return tuple(ENTRIES)
+
+
+def rated_names() -> tuple[str, ...]:
+    """Names of the codecs that can be asked for a size: what a plan may propose."""
+    return tuple(name for name, found in ENTRIES.items() if found.rated)
+
+
+def entry(name: str) -> Entry:
+    """Look a codec up without loading it.
+
+    Raises
+    ------
+    UsageError
+        If no codec has that name.
+    """
+    try:
+        return ENTRIES[name]
+    except KeyError:
+        raise UsageError(f"codec {name!r} is unknown, expected one of {list(ENTRIES)}") from None
+
+
+def available(name: str) -> bool:
+    """Whether this machine has the library that a codec needs.
+
+    Raises
+    ------
+    UsageError
+        If no codec has that name.
+    """
+    return importlib.util.find_spec(entry(name).needs) is not None
+
+
+def codec(name: str, **settings: str | float | bool) -> Codec:
+    """Make a codec; settings not named keep their defaults.
+
+    Parameters
+    ----------
+    name
+        One of `names`.
+    **settings
+        The codec's own.
+
+    Raises
+    ------
+    UsageError
+        If no codec has that name, or a setting is unknown or out of range.
+    CodecUnavailable
+        If the codec's module cannot be loaded here.
+    """
+    kind = _kind(name)
+    known = [field.name for field in dataclasses.fields(cast("type", kind)) if field.init]
+    for key in settings:
+        if key not in known:
+            raise UsageError(f"codec {name}: setting {key!r} is unknown, expected one of {known}")
+    try:
+        return kind(**settings)
+    except (TypeError, ValueError, CannotEncode) as error:
+        raise UsageError(f"codec {name}: {error}") from error
+
+
+def rated(name: str, **settings: str | float | bool) -> RatedCodec:
+    """Make a codec that can be asked for a size.
+
+    Raises
+    ------
+    UsageError
+        As in `codec`, and if the codec has no dial.
+    CodecUnavailable
+        As in `codec`.
+    """
+    if not entry(name).rated:
+        raise UsageError(f"codec {name} cannot be asked for a size, expected one of {list(rated_names())}")
+    return cast("RatedCodec", codec(name, **settings))
+
+
+def from_settings(name: str, settings: Settings) -> Codec:
+    """Make the codec that has these settings, all of them named.
+
+    Raises
+    ------
+    UsageError
+        As in `codec`, and if a setting is missing.
+    CodecUnavailable
+        As in `codec`.
+    """
+    made = codec(name, **settings)
+    missing = sorted(set(made.settings) - set(settings))
+    if missing:
+        raise UsageError(f"codec {name}: setting {missing[0]!r} is missing")
+    return made
+
+
+def settings_text(settings: Settings) -> str:
+    """Settings as JSON with sorted keys and no spaces: equal text for equal codecs."""
+    return json.dumps(dict(settings), sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+
+
+def from_text(name: str, text: str) -> Codec:
+    """Make the codec whose settings `settings_text` wrote.
+
+    Raises
+    ------
+    UsageError
+        If the text is no table of JSON, and as in `from_settings`.
+    CodecUnavailable
+        As in `codec`.
+    """
+    try:
+        table = json.loads(text)
+    except json.JSONDecodeError as error:
+        raise UsageError(f"codec {name}: settings are not JSON: {error}") from error
+    if not isinstance(table, dict):
+        raise UsageError(f"codec {name}: settings are a {type(table).__name__}, expected a table")
+    return from_settings(name, table)
+
+
+def _kind(name: str) -> type[Codec]:
+    """Load a codec's class."""
+    found = entry(name)
+    try:
+        module = importlib.import_module(found.module)
+    except ImportError as error:
+        raise CodecUnavailable(f"codec {name} is not available here: {found.library} is missing") from error
+    return cast("type[Codec]", getattr(module, found.kind))

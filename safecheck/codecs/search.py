@@ -1,0 +1,242 @@
+"""The dial that gives a size: one search for every codec, starting from the raster alone.
+
+A code's size follows a codec's dial (ratio, quantiser step, distance) roughly as a power, so the search runs in
+logarithms of both: a first guess along the expected exponent, then the secant through what was seen, kept inside the
+bracket once there is one, and bisection where the secant stalls. It remembers nothing between frames, so a run that
+was stopped and resumed gives the same codes.
+
+An integer dial (quality, largest error) seldom meets a size; there the two settings around it are given.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Literal, TypeAlias
+
+from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Reached
+
+__all__ = ["MOST_ENCODES", "Dial", "End", "Found", "Step", "bracket", "tell", "turn"]
+
+MOST_ENCODES = 12
+"""No frame is encoded more often than this on the way to a size."""
+_ONE_SIDED = 3
+"""After so many codes on the same side of the asked size the end of the dial is tried."""
+_NARROW = 1e-7
+"""A bracket narrower than this, in natural logarithms of the dial, holds no further size."""
+
+End: TypeAlias = Literal["met", "floor", "ceiling", "between"]
+"""How a search ended: met; all codes too large; all too small; sizes too far apart."""
+
+
+@dataclass(frozen=True, slots=True)
+class Dial:
+    """A continuous, positive dial."""
+
+    lowest: float
+    highest: float
+    exponent: float
+    """Expected d log(size) / d log(dial), not zero; negative where turning up makes the code smaller."""
+
+    def __post_init__(self) -> None:
+        """Check ranges."""
+        if not 0 < self.lowest < self.highest < math.inf:
+            raise ValueError(f"dial from {self.lowest} to {self.highest}, expected 0 < lowest < highest")
+        if self.exponent == 0 or not math.isfinite(self.exponent):
+            raise ValueError(f"exponent is {self.exponent}, expected a finite number other than 0")
+
+
+@dataclass(frozen=True, slots=True)
+class Found:
+    """The code nearest to the asked size."""
+
+    dial: float
+    code: bytes
+    encodes: int
+    end: End
+
+
+@dataclass(frozen=True, slots=True)
+class Step:
+    """One setting of an integer dial, and its code."""
+
+    dial: int
+    code: bytes
+
+
+@dataclass(frozen=True, slots=True)
+class _Point:
+    """Logarithms of a dial and of size over asked size."""
+
+    at: float
+    excess: float
+
+
+def turn(encode: Callable[[float], bytes], target_bytes: float, dial: Dial, start: float) -> Found:
+    """Turn a continuous dial until the code has the asked size.
+
+    Parameters
+    ----------
+    encode
+        Dial -> code; a function of its argument alone.
+    target_bytes
+        Asked size, positive.
+    dial
+        Range and expected slope.
+    start
+        First dial tried; brought into the range.
+
+    Returns
+    -------
+    Found
+        The code nearest to the asked size; ``met`` where within `RATE_TOLERANCE` of it. At most `MOST_ENCODES` codes
+        are written.
+
+    Raises
+    ------
+    ValueError
+        If ``target_bytes`` or ``start`` is not positive and finite.
+    """
+    if not (0 < target_bytes < math.inf and 0 < start < math.inf):
+        raise ValueError(f"asked for {target_bytes} bytes from {start}, expected positive numbers")
+    low, high = math.log(dial.lowest), math.log(dial.highest)
+    points: list[_Point] = []
+    best: tuple[float, float, bytes] | None = None
+    at: float | None = min(max(math.log(start), low), high)
+    while at is not None and len(points) < MOST_ENCODES:
+        setting = min(max(math.exp(at), dial.lowest), dial.highest)
+        code = encode(setting)
+        points.append(_Point(at, math.log(max(len(code), 1) / target_bytes)))
+        miss = abs(len(code) / target_bytes - 1)
+        if best is None or miss < best[0]:
+            best = (miss, setting, code)
+        if miss <= RATE_TOLERANCE:
+            break
+        at = _next(points, dial.exponent, low, high)
+    assert best is not None
+    miss, setting, code = best
+    return Found(setting, code, len(points), "met" if miss <= RATE_TOLERANCE else _end(points))
+
+
+def _end(points: list[_Point]) -> End:
+    """Say on which sides of the asked size the codes fell."""
+    if all(point.excess > 0 for point in points):
+        return "floor"
+    return "ceiling" if all(point.excess < 0 for point in points) else "between"
+
+
+def _next(points: list[_Point], exponent: float, low: float, high: float) -> float | None:
+    """Logarithm of the dial to try next; None where nothing is left to try."""
+    above = [point for point in points if point.excess > 0]
+    below = [point for point in points if point.excess <= 0]
+    if above and below:
+        return _inside(points, min(above, key=_size), max(below, key=_size))
+    last = points[-1]
+    wanted = high if (last.excess > 0) == (exponent < 0) else low
+    if any(point.at == wanted for point in points):
+        return None
+    if len(points) >= _ONE_SIDED:
+        return wanted
+    slope = exponent
+    if len(points) > 1 and points[-2].at != last.at:
+        slope = (last.excess - points[-2].excess) / (last.at - points[-2].at)
+    if slope * exponent <= 0 or abs(slope) < abs(exponent) / 10:
+        return wanted
+    return min(max(last.at - last.excess / slope, low), high)
+
+
+def _size(point: _Point) -> float:
+    """Order points by the size of their codes."""
+    return point.excess
+
+
+def _inside(points: list[_Point], above: _Point, below: _Point) -> float | None:
+    """Between two dials whose codes lie on both sides: secant, every third time the middle."""
+    width = below.at - above.at
+    if abs(width) < _NARROW:
+        return None
+    share = above.excess / (above.excess - below.excess)
+    # The secant alone creeps where the size is a staircase: hold it off the ends, and halve at times.
+    share = 0.5 if len(points) % 3 == 2 else min(max(share, 0.1), 0.9)
+    at = above.at + share * width
+    return None if any(point.at == at for point in points) else at
+
+
+def bracket(
+    encode: Callable[[int], bytes], target_bytes: float, lowest: int, highest: int, start: int, *, rising: bool
+) -> tuple[Step, ...]:
+    """Find the two neighbouring settings of an integer dial whose codes lie around the asked size.
+
+    Parameters
+    ----------
+    encode
+        Setting -> code; a function of its argument alone.
+    target_bytes
+        Asked size, positive.
+    lowest, highest
+        Range of the dial, both ends included.
+    start
+        First setting tried, within the range.
+    rising
+        Whether the code grows with the setting.
+
+    Returns
+    -------
+    tuple[Step, ...]
+        The setting whose code is the larger one within the asked size, then its neighbour above the asked size. One
+        step alone where every code is larger or every code is smaller.
+
+    Raises
+    ------
+    ValueError
+        If the range is empty, ``start`` is outside it, or ``target_bytes`` is not positive.
+    """
+    if not lowest <= start <= highest or not 0 < target_bytes < math.inf:
+        raise ValueError(f"asked for {target_bytes} bytes from {start} in {lowest} to {highest}")
+    within: Step | None = None
+    beyond: Step | None = None
+    small, large = (lowest, highest) if rising else (highest, lowest)
+    at, stride = start, 1
+    while True:
+        step = Step(at, encode(at))
+        if len(step.code) <= target_bytes:
+            within = step
+        else:
+            beyond = step
+        if within is not None and beyond is not None:
+            if abs(within.dial - beyond.dial) == 1:
+                return within, beyond
+            at = (within.dial + beyond.dial) // 2
+            continue
+        end = large if beyond is None else small
+        if at == end:
+            return (step,)
+        # Strides double: a start that is nearly right costs two or three codes, a wrong one stays logarithmic.
+        at = min(at + stride, end) if end > at else max(at - stride, end)
+        stride *= 2
+
+
+def tell(end: End, target_bytes: float, reversible_bytes: Callable[[], int]) -> Reached:
+    """Put the end of a search into the words that all codecs share.
+
+    Parameters
+    ----------
+    end
+        How the search ended.
+    target_bytes
+        Asked size.
+    reversible_bytes
+        Gives the smallest reversible size; called only where the codec could make its code no larger.
+    """
+    if end == "met":
+        return Reached.ASKED
+    if end == "ceiling" and reversible_bytes() <= target_bytes:
+        return Reached.REVERSIBLE_SMALLER
+    if target_bytes < EXEMPT_BYTES:
+        return Reached.SMALL_FRAME
+    return {
+        "floor": Reached.CODEC_FLOOR,
+        "ceiling": Reached.CODEC_CEILING,
+        "between": Reached.COARSE_STEPS,
+    }[end]
