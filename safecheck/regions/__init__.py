@@ -1,1 +1,1 @@
-"""TODO"""
+"""Regions: shapes, where they lie, and the exact fraction of each pixel that they cover."""

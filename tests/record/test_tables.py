@@ -21,10 +21,11 @@ EXAMPLES = {"text": "name", "whole": 3, "real": 2.5, "truth": True}
 
 def row_of(table: str, **given: Any) -> Any:
     """A row with a plain value in each column that must have one, null in the others."""
+    row_class: Any = TABLES[table]
     values = {
         text.name: None if text.kind.endswith("null") else EXAMPLES[text.kind] for text in columns_of(TABLES[table])
     }
-    return TABLES[table](**(values | given))
+    return row_class(**(values | given))
 
 
 @pytest.mark.parametrize("table", TABLES)
