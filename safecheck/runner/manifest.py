@@ -1,0 +1,211 @@
+"""What a dossier was begun with, so that only the same run may resume in it."""
+
+from __future__ import annotations
+
+import dataclasses
+import enum
+import hashlib
+import hmac
+import os
+import shutil
+from collections.abc import Iterable, Mapping
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from safecheck.dicom.instance import Instance
+from safecheck.documents import Document, from_json
+from safecheck.errors import DocumentError, DossierError, ResumeMismatch, UsageError
+from safecheck.evaluation import Assignment
+from safecheck.record.canonical import canonical_bytes, document_bytes
+
+__all__ = ["WORK", "Manifest", "begin", "describe", "finish"]
+
+WORK = "work"
+"""Folder inside a dossier that holds the manifest and the shards while a run goes on."""
+_MANIFEST = "manifest.json"
+
+
+class Manifest(Document):
+    """What decides the rows of a run. Hashes are keyed where their content could be guessed."""
+
+    version: int = 1
+    """Of this document."""
+    key_id: str
+    """Short hash of the site key."""
+    inputs: str
+    """Keyed hash of all inputs by content, with their frames and delivered copies."""
+    plan: str
+    """Hash of the plan."""
+    assignment: str
+    """Keyed hash of what is done to every frame."""
+    versions: dict[str, str]
+    """This package, Python and the libraries that numbers depend on."""
+
+
+def describe(
+    instances: Iterable[Instance],
+    pairs: Mapping[str, Instance],
+    assignment: Assignment,
+    *,
+    plan_hash: str,
+    key: bytes,
+    key_id: str,
+    versions: Mapping[str, str],
+) -> Manifest:
+    """Write down what a run is about.
+
+    Parameters
+    ----------
+    instances
+        The originals to assess, in any order.
+    pairs
+        Input pseudonym of an original -> the instance that the archive delivered for it.
+    assignment
+        What is done to every frame.
+    plan_hash
+        Of the plan as read.
+    key, key_id
+        Site key and its short hash.
+    versions
+        Name -> version of all that numbers depend on.
+    """
+    inputs = sorted(
+        [each.input, each.frames, pairs[each.input].input if each.input in pairs else ""] for each in instances
+    )
+    return Manifest(
+        key_id=key_id,
+        inputs=_keyed(key, "inputs", inputs),
+        plan=plan_hash,
+        assignment=_keyed(key, "assignment", _plain(assignment)),
+        versions=dict(sorted(versions.items())),
+    )
+
+
+def begin(dossier: Path, manifest: Manifest) -> Path:
+    """Begin a run in a folder, or go on with the same run that was stopped there.
+
+    Parameters
+    ----------
+    dossier
+        A folder that does not exist, is empty, or holds a run that was stopped.
+    manifest
+        What this run is about.
+
+    Returns
+    -------
+    pathlib.Path
+        The work folder inside the dossier.
+
+    Raises
+    ------
+    ResumeMismatch
+        If the run in the folder was begun with another input, plan, key or version.
+    UsageError
+        If the folder holds a finished dossier or anything else, or cannot be made.
+    """
+    work = dossier / WORK
+    try:
+        found = {path.name for path in dossier.iterdir()} if dossier.exists() else set()
+        if found and not (work / _MANIFEST).exists() and found != {WORK}:
+            raise UsageError(_occupied(found))
+        work.mkdir(parents=True, exist_ok=True)
+        if (work / _MANIFEST).exists():
+            _compare(_read(work / _MANIFEST), manifest)
+        else:
+            _write(work / _MANIFEST, document_bytes(manifest))
+    except OSError as error:
+        raise UsageError(f"the dossier's folder cannot be used: {os.strerror(error.errno or 0)}") from None
+    return work
+
+
+def finish(work: Path) -> None:
+    """Remove the work folder of a run whose dossier is complete; the manifest goes last, so a stop here resumes."""
+    for path in work.iterdir():
+        if path.name == _MANIFEST:
+            continue
+        if path.is_dir():
+            shutil.rmtree(path)
+        else:
+            path.unlink()
+    shutil.rmtree(work)
+
+
+def _occupied(found: set[str]) -> str:
+    """Say why a folder without a stopped run cannot be used."""
+    if "seal.json" in found:
+        return "the folder holds a finished dossier; expected a new or empty folder, or a run to be resumed"
+    return "the folder is not empty and holds no run to be resumed; expected a new or empty folder"
+
+
+def _read(path: Path) -> Manifest:
+    """Read the manifest of a stopped run."""
+    try:
+        return from_json(Manifest, path.read_bytes())
+    except DocumentError as error:
+        raise DossierError("the manifest of the stopped run cannot be read; start again in another folder") from error
+
+
+def _write(path: Path, content: bytes) -> None:
+    """Write a file so that it is whole or absent, also after a power cut."""
+    aside = path.with_name(f"{path.name}.{os.getpid()}.aside")
+    with aside.open("wb") as file:
+        file.write(content)
+        file.flush()
+        os.fsync(file.fileno())
+    aside.replace(path)
+
+
+def _compare(begun: Manifest, now: Manifest) -> None:
+    """Raise if the stopped run was another; say what differs."""
+    if begun.key_id != now.key_id:
+        # All other hashes are keyed: under another key they differ whatever the inputs are.
+        differ = ["site key"]
+    else:
+        names = {"inputs": "inputs", "plan": "plan", "assignment": "candidates, windows or regions"}
+        differ = [word for name, word in names.items() if getattr(begun, name) != getattr(now, name)]
+        differ += _versions(begun.versions, now.versions)
+        if begun.version != now.version:
+            differ.append("format of the work folder")
+    if differ:
+        raise ResumeMismatch(
+            f"the run in this folder was begun with other values of: {', '.join(differ)}; expected the same ones, "
+            "or a new folder"
+        )
+
+
+def _versions(begun: Mapping[str, str], now: Mapping[str, str]) -> list[str]:
+    """Each version that differs, in words."""
+    return [
+        f"version of {name} ({begun.get(name, 'none')} then, {now.get(name, 'none')} now)"
+        for name in sorted(begun.keys() | now.keys())
+        if begun.get(name) != now.get(name)
+    ]
+
+
+def _keyed(key: bytes, what: str, content: Any) -> str:  # noqa: ANN401
+    """HMAC-SHA256 over JSON values in canonical form."""
+    return hmac.digest(key, what.encode() + b"\0" + canonical_bytes(content), "sha256").hex()
+
+
+def _plain(value: object) -> Any:  # noqa: ANN401
+    """Settings of any depth as JSON values: equal settings give equal values, in this process and in any other."""
+    if isinstance(value, enum.Enum):
+        return value.value
+    if value is None or isinstance(value, bool | int | str):
+        return value
+    if isinstance(value, float):
+        return ["real", value.hex()]
+    if isinstance(value, Document):
+        return [type(value).__name__, _plain(value.model_dump(mode="json"))]
+    if isinstance(value, np.ndarray):
+        return ["array", value.dtype.str, list(value.shape), hashlib.sha256(value.tobytes()).hexdigest()]
+    if isinstance(value, Mapping):
+        return {str(name): _plain(item) for name, item in value.items()}
+    if isinstance(value, tuple | list):
+        return [_plain(item) for item in value]
+    if dataclasses.is_dataclass(value):
+        fields = {item.name: _plain(getattr(value, item.name)) for item in dataclasses.fields(value)}
+        return [type(value).__name__, fields]
+    raise TypeError(f"a value of kind {type(value).__name__} has no place in an assignment")

@@ -1,0 +1,85 @@
+"""The inside of a worker process: takes orders on its standard input, answers in lines of JSON.
+
+Answers are JSON and not pickles: decoders read files from anywhere, and what they may do to this process must not be
+able to run anything in the process that outlives it.
+"""
+
+from __future__ import annotations
+
+import json
+import logging
+import os
+import pickle
+import queue
+import signal
+import threading
+import warnings
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any, BinaryIO
+
+from safecheck.runner.tasks import Task
+from safecheck.runner.worker import Treatment, perform
+
+__all__ = ["Order", "main"]
+
+
+@dataclass(frozen=True, slots=True)
+class Order:
+    """One task to perform."""
+
+    task: Task
+    lost: frozenset[int]
+    """Positions of its frames under which workers died twice."""
+
+
+def main() -> None:
+    """Perform orders until the input ends."""
+    orders = os.fdopen(os.dup(0), "rb")
+    answers = os.fdopen(os.dup(1), "wb")
+    _silence()
+    inbox: queue.SimpleQueue[Any] = queue.SimpleQueue()
+    threading.Thread(target=_listen, args=(orders, inbox, answers), daemon=True).start()
+    treatment, work = inbox.get()
+    while True:
+        _answer(answers, _carry_out(inbox.get(), treatment, work, answers))
+
+
+def _silence() -> None:
+    """Let nothing that a library prints, warns or logs about a file out of this process; leave Ctrl-C to the parent."""
+    nowhere = os.open(os.devnull, os.O_RDWR)
+    for descriptor in (0, 1, 2):
+        os.dup2(nowhere, descriptor)
+    warnings.simplefilter("ignore")
+    logging.disable(logging.CRITICAL)
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+
+def _listen(orders: BinaryIO, inbox: queue.SimpleQueue[Any], answers: BinaryIO) -> None:
+    """Take orders; leave at once when the parent is gone, whatever is being done, since nobody waits for it."""
+    try:
+        while True:
+            inbox.put(pickle.load(orders))
+    except EOFError:
+        pass
+    except Exception as error:
+        _answer(answers, {"unfit": type(error).__name__})
+    finally:
+        os._exit(0)
+
+
+def _carry_out(order: Order, treatment: Treatment, work: Path, answers: BinaryIO) -> dict[str, Any]:
+    """Perform one order; what cannot be written is told by its system code, which holds no path."""
+    try:
+        done = perform(order.task, treatment, work, order.lost, lambda position: _answer(answers, {"begun": position}))
+    except OSError as error:
+        return {"error": os.strerror(error.errno or 0)}
+    except Exception as error:
+        return {"error": type(error).__name__}
+    return {"refused": done.refused}
+
+
+def _answer(answers: BinaryIO, message: dict[str, Any]) -> None:
+    """Send one line."""
+    answers.write(json.dumps(message).encode() + b"\n")
+    answers.flush()

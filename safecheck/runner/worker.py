@@ -1,0 +1,186 @@
+"""What a worker does with one task, wherever it runs: read frame by frame, evaluate, write the shard."""
+
+from __future__ import annotations
+
+import contextlib
+from collections import Counter
+from collections.abc import Callable, Collection
+from contextlib import AbstractContextManager, ExitStack
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Protocol
+
+import pyarrow as pa
+
+from safecheck.dicom.instance import Instance
+from safecheck.errors import InputExcluded, InputRefused
+from safecheck.evaluation import Assignment
+from safecheck.frames import Frame
+from safecheck.record.rows import FrameResult
+from safecheck.record.tables import from_rows
+from safecheck.runner.shards import SHARD_TABLES, LeftOut, write_shard
+from safecheck.runner.tasks import FrameTask, Task
+
+__all__ = ["Done", "Evaluate", "FrameReader", "OpenInstance", "Treatment", "perform"]
+
+
+class FrameReader(Protocol):
+    """An open instance."""
+
+    def frame(self, number: int) -> Frame:
+        """Read one frame, counted from 1.
+
+        Raises
+        ------
+        InputRefused
+            If its pixel path is doubtful.
+        """
+        ...
+
+
+class OpenInstance(Protocol):
+    """Opens an instance for reading frames one at a time."""
+
+    def __call__(self, instance: Instance, /) -> AbstractContextManager[FrameReader]:
+        """Open; raises InputRefused if it cannot be read."""
+        ...
+
+
+class Evaluate(Protocol):
+    """Frame -> rows."""
+
+    def __call__(
+        self, frame: Frame, assignment: Assignment, *, full_controls: bool, delivered: Frame | None = None
+    ) -> FrameResult:
+        """See `safecheck.evaluation.evaluate`."""
+        ...
+
+
+@dataclass(frozen=True, slots=True)
+class Treatment:
+    """What is done to each frame; goes to each worker once, so all of it can be pickled."""
+
+    assignment: Assignment
+    evaluate: Evaluate
+    open_instance: OpenInstance
+
+
+@dataclass(frozen=True, slots=True)
+class Done:
+    """A task whose shard is in its place."""
+
+    task: str
+    """Its name."""
+    refused: int
+    """Its frames that gave no rows."""
+
+
+@dataclass(slots=True)
+class _Side:
+    """The instance last opened on one side, original or delivered: frames that follow each other share it."""
+
+    open_instance: OpenInstance
+    input: str = ""
+    reader: FrameReader | None = None
+    stack: ExitStack = field(default_factory=ExitStack)
+
+    def read(self, instance: Instance, number: int) -> Frame:
+        """Read a frame."""
+        if self.reader is None or self.input != instance.input:
+            self.close()
+            self.reader = self.stack.enter_context(self.open_instance(instance))
+            self.input = instance.input
+        return self.reader.frame(number)
+
+    def close(self) -> None:
+        """Close what is open."""
+        self.reader = None
+        self.stack.close()
+
+
+@dataclass(slots=True)
+class _Bench:
+    """What a worker holds while it is at one task."""
+
+    treatment: Treatment
+    originals: _Side
+    delivered: _Side
+    tables: dict[str, list[pa.Table]] = field(default_factory=lambda: {name: [] for name in SHARD_TABLES})
+    left_out: list[LeftOut] = field(default_factory=list)
+    notes: Counter[str] = field(default_factory=Counter)
+
+
+def perform(task: Task, treatment: Treatment, work: Path, lost: Collection[int], begun: Callable[[int], None]) -> Done:
+    """Assess the frames of one task and write its shard.
+
+    Parameters
+    ----------
+    task
+        The task.
+    treatment
+        What is done to each frame.
+    work
+        Work folder of the dossier.
+    lost
+        Positions in the task, from 0, of frames under which workers died: refused without a try.
+    begun
+        Called with the position of each frame before it is touched, and with the number of frames before the shard is
+        written, so that whoever outlives this process knows what it died of.
+
+    Raises
+    ------
+    OSError
+        If the shard cannot be written. What goes wrong with a frame is in the shard, never raised.
+    """
+    bench = _Bench(treatment, _Side(treatment.open_instance), _Side(treatment.open_instance))
+    with contextlib.closing(bench.originals), contextlib.closing(bench.delivered):
+        for position, each in enumerate(task.frames):
+            if position in lost:
+                bench.left_out.append(_left_out(each, "worker-lost", ""))
+                continue
+            begun(position)
+            _assess(each, bench)
+    begun(len(task.frames))
+    write_shard(work, task, bench.tables, bench.left_out, bench.notes)
+    return Done(task.name, sum(each.side == "original" for each in bench.left_out))
+
+
+def _assess(each: FrameTask, bench: _Bench) -> None:
+    """Assess one frame; whatever goes wrong with it becomes an entry, and the run goes on."""
+    try:
+        frame = bench.originals.read(each.instance, each.number)
+        delivered = _read_delivered(each, bench)
+        result = bench.treatment.evaluate(
+            frame, bench.treatment.assignment, full_controls=each.full_controls, delivered=delivered
+        )
+        tables = {name: from_rows(name, getattr(result, name)) for name in SHARD_TABLES}
+    except (InputRefused, InputExcluded) as refusal:
+        bench.left_out.append(_left_out(each, refusal.reason, refusal.detail))
+    except Exception as error:
+        # The text of a foreign exception may hold identifiers or paths; its class cannot.
+        bench.left_out.append(_left_out(each, "internal", type(error).__name__))
+    else:
+        for name, table in tables.items():
+            bench.tables[name].append(table)
+        bench.notes.update(set(frame.origin.notes))
+
+
+def _read_delivered(each: FrameTask, bench: _Bench) -> Frame | None:
+    """Delivered copy of a frame; where it is refused, the original is assessed without it."""
+    if each.delivered is None:
+        return None
+    try:
+        return bench.delivered.read(each.delivered, each.number)
+    except (InputRefused, InputExcluded) as refusal:
+        reason, detail = refusal.reason, refusal.detail
+    except Exception as error:
+        reason, detail = "internal", type(error).__name__
+    bench.left_out.append(
+        LeftOut(input=each.delivered.input, side="delivered", frame=each.number, reason=reason, detail=detail)
+    )
+    return None
+
+
+def _left_out(each: FrameTask, reason: str, detail: str) -> LeftOut:
+    """Entry of an original frame without rows."""
+    return LeftOut(input=each.instance.input, side="original", frame=each.number, reason=reason, detail=detail)
