@@ -9,8 +9,8 @@ from collections.abc import Iterator
 
 from pydicom.dataset import Dataset
 
-from safecheck.dicom.stream_loss import Finding, Verdict, look_into
 from safecheck.dicom.header import Header, items, text, words
+from safecheck.dicom.stream_loss import Finding, Verdict, look_into
 from safecheck.dicom.syntaxes import Loss
 from safecheck.dicom.terms import decimal, loss_method
 from safecheck.frames import LossHistory
