@@ -63,9 +63,7 @@ VESSELS = (
     Organ(4, -9, 4, 4, 165, 1.0, wave=0.02),
 )
 PANCREAS = tuple(
-    Organ(
-        -2 + 8.2 * i, -20 + 5.5 * math.sin(i * 0.9 + 0.5), 7.2 - 0.35 * i, 6.4 - 0.3 * i, 92, 5.0, wave=0.12
-    )
+    Organ(-2 + 8.2 * i, -20 + 5.5 * math.sin(i * 0.9 + 0.5), 7.2 - 0.35 * i, 6.4 - 0.3 * i, 92, 5.0, wave=0.12)
     for i in range(9)
 )
 COLON = (
@@ -161,9 +159,7 @@ def _draw_wall(canvas: Canvas, body: Body, rng: np.random.Generator, z_mm: float
     canvas.paint(wall.grown(-24.5), MUSCLE_HU, 7, soft_mm=1.0)
     canvas.paint(wall.grown(-31), FAT_HU, 8, soft_mm=1.2)
     for side in (-1, 1):
-        canvas.paint(
-            Blob(side * 30 * size, -93 * size, 27 * size, 5.5 * size, side * 9), MUSCLE_HU, 6, soft_mm=1.0
-        )
+        canvas.paint(Blob(side * 30 * size, -93 * size, 27 * size, 5.5 * size, side * 9), MUSCLE_HU, 6, soft_mm=1.0)
         _draw_back_muscles(canvas, body, side)
     _draw_ribs(canvas, wall, rng, z_mm)
 
@@ -175,9 +171,7 @@ def _draw_back_muscles(canvas: Canvas, body: Body, side: int) -> None:
         x_mm = side * (38 + offset) * size
         cleft = Stroke(x_mm, (72 + offset / 4) * size, x_mm + side * 6 * size, 96 * size, 0.7 * size)
         canvas.paint(cleft, -40, 6, soft_mm=1.5, strength=0.7)
-    canvas.paint(
-        Blob(side * 33 * size, 42 * size, 13 * size, 17 * size, side * -20), MUSCLE_HU, 6, soft_mm=1.0
-    )
+    canvas.paint(Blob(side * 33 * size, 42 * size, 13 * size, 17 * size, side * -20), MUSCLE_HU, 6, soft_mm=1.0)
     crus = Stroke(side * 20 * size, 12 * size, side * 24 * size, 32 * size, 3.4 * size)
     canvas.paint(crus, MUSCLE_HU, 5, soft_mm=1.0)
 
@@ -204,12 +198,8 @@ def _draw_spine(canvas: Canvas, body: Body) -> None:
     bone, marrow = 560.0, 200.0
     for side in (-1, 1):
         canvas.paint(Stroke(side * 13 * s, 52 * s, side * 15 * s, 66 * s, 5.0 * s), bone, 40, soft_mm=1.5)
-        canvas.paint(
-            Stroke(side * 13 * s, 54 * s, side * 15 * s, 64 * s, 3.0 * s), marrow + 60, 50, soft_mm=1.5
-        )
-        canvas.paint(
-            Stroke(side * 15 * s, 65 * s, side * 40 * s, 60 * s, 3.2 * s), bone - 120, 40, soft_mm=1.5
-        )
+        canvas.paint(Stroke(side * 13 * s, 54 * s, side * 15 * s, 64 * s, 3.0 * s), marrow + 60, 50, soft_mm=1.5)
+        canvas.paint(Stroke(side * 15 * s, 65 * s, side * 40 * s, 60 * s, 3.2 * s), bone - 120, 40, soft_mm=1.5)
         canvas.paint(Stroke(side * 16 * s, 65 * s, side * 38 * s, 60.5 * s, 1.6 * s), marrow, 50, soft_mm=1.5)
         canvas.paint(Blob(side * 17 * s, 71 * s, 7.5 * s, 7 * s, side * 30), bone + 60, 40, soft_mm=1.5)
         canvas.paint(Stroke(side * 15 * s, 72 * s, 0, 82 * s, 3.4 * s), bone, 40, soft_mm=1.5)
@@ -265,9 +255,7 @@ def _draw_gut(canvas: Canvas, body: Body, rng: np.random.Generator, z_mm: float)
         for _ in range(7):
             x_mm = outline.x_mm + float(rng.normal(0, 0.3)) * outline.half_width_mm
             y_mm = outline.y_mm - 1.5 + float(rng.normal(0, 0.2)) * outline.half_height_mm
-            canvas.paint(
-                Blob(x_mm, y_mm, float(rng.uniform(1.5, 5)), float(rng.uniform(1, 3))), -850, 0, soft_mm=1.5
-            )
+            canvas.paint(Blob(x_mm, y_mm, float(rng.uniform(1.5, 5)), float(rng.uniform(1, 3))), -850, 0, soft_mm=1.5)
 
 
 def _draw_liver(canvas: Canvas, body: Body, rng: np.random.Generator, z_mm: float) -> None:
@@ -279,14 +267,12 @@ def _draw_liver(canvas: Canvas, body: Body, rng: np.random.Generator, z_mm: floa
     for x0, y0, x1, y1, radius in (
         (-24, -12, -44, -8, 5.0),
         (-44, -8, -66, -1, 3.6),
-        (-66, -1, -84, -6, 2.2),
+        (-66, -1, -78, -9, 2.2),
         (-44, -8, -40, -34, 3.2),
         (-40, -34, -36, -58, 2.2),
         (-36, -58, -14, -62, 1.6),
         (-66, -1, -62, 20, 1.8),
-        (-118, -2, -134, -14, 1.6),
+        (-121, 5, -134, -4, 1.6),
         (-36, -58, -60, -76, 1.4),
     ):
-        canvas.paint(
-            Stroke(x0 * s, y0 * s + wander, x1 * s, y1 * s + wander, radius * s), 152, 2, soft_mm=2.0
-        )
+        canvas.paint(Stroke(x0 * s, y0 * s + wander, x1 * s, y1 * s + wander, radius * s), 152, 2, soft_mm=2.0)

@@ -60,7 +60,7 @@ def big_multiframe(path: Path, frames: int, rows: int, columns: int, *, seed: in
 
 
 def _write_frames(stream: BinaryIO, frames: int, shape: tuple[int, int], seed: int) -> None:
-    """Write a scene at rest under noise that is shifted anew for each frame: cheap, and no two frames are equal."""
+    """Write a scene at rest under noise that is shifted anew for each frame, so that no two are equal."""
     rng = np.random.default_rng([seed, 61])
     scene = 2000 + 500 * low_passed(rng, shape, 0.02)
     noise = 25 * low_passed(rng, shape, 0.4)

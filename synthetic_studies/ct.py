@@ -61,9 +61,7 @@ class _Series:
         rows, columns = self.grid.rows, self.grid.columns
         return Circle((rows - 1) / 2, (columns - 1) / 2, min(rows, columns) / 2)
 
-    def disc(
-        self, label: str, role: str, place: tuple[float, float, float], contrast: float, calm: float
-    ) -> Disc:
+    def disc(self, label: str, role: str, place: tuple[float, float, float], contrast: float, calm: float) -> Disc:
         x_mm, y_mm, radius_mm = (part * self.body.size for part in place)
         row, column = self.grid.pixel(x_mm, y_mm)
         sd = self.noise_sd_hu * float(noise_share(np.array(x_mm), np.array(y_mm)))

@@ -85,9 +85,7 @@ def deliver(original: Truth, folder: Path, *, step: float, manner: Manner = _AS_
     )
 
 
-def _change(
-    header: Dataset, source: Path, path: Path, step: float, manner: Manner
-) -> tuple[float, PairTruth]:
+def _change(header: Dataset, source: Path, path: Path, step: float, manner: Manner) -> tuple[float, PairTruth]:
     """Quantise the pixels in place; give the estimated ratio and the change."""
     before = header.pixel_array
     padding = before == header.get("PixelPaddingValue", np.iinfo(np.int32).max)

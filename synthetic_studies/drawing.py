@@ -55,9 +55,9 @@ class Blob:
         along = (x_mm - self.x_mm) * math.cos(turn) + (y_mm - self.y_mm) * math.sin(turn)
         across = (y_mm - self.y_mm) * math.cos(turn) - (x_mm - self.x_mm) * math.sin(turn)
         power = self.squareness
-        reached = (
-            np.abs(along / self.half_width_mm) ** power + np.abs(across / self.half_height_mm) ** power
-        ) ** (1 / power)
+        reached = (np.abs(along / self.half_width_mm) ** power + np.abs(across / self.half_height_mm) ** power) ** (
+            1 / power
+        )
         limit: Image = np.ones_like(reached)
         if self.waves:
             angle = np.arctan2(across / self.half_height_mm, along / self.half_width_mm)
@@ -132,6 +132,11 @@ class Ribbon:
         """No point of the outline is farther from the middle."""
         half = max(math.hypot(x - self.x_mm, y - self.y_mm) for x, y in self.points_mm)
         return half + max(self.radius_mm, self.end_radius_mm or 0.0)
+
+    def grown(self, by_mm: float) -> Ribbon:
+        """Give the same line, thicker by `by_mm` on each side."""
+        end = self.radius_mm if self.end_radius_mm is None else self.end_radius_mm
+        return Ribbon(self.points_mm, max(self.radius_mm + by_mm, 0.1), max(end + by_mm, 0.1))
 
     def distance_mm(self, x_mm: Image, y_mm: Image) -> Image:
         """Distance outside the outline; negative inside."""

@@ -16,9 +16,7 @@ _SIDE = 8
 def cosine_matrix() -> npt.NDArray[np.float64]:
     """Orthonormal 8-point DCT-II (Ahmed, Natarajan, Rao 1974), rows are basis vectors."""
     index = np.arange(_SIDE)
-    matrix: npt.NDArray[np.float64] = (
-        np.cos(np.pi * (2 * index[None, :] + 1) * index[:, None] / (2 * _SIDE)) / 2
-    )
+    matrix: npt.NDArray[np.float64] = np.cos(np.pi * (2 * index[None, :] + 1) * index[:, None] / (2 * _SIDE)) / 2
     matrix[0] /= np.sqrt(2)
     return matrix
 
@@ -39,7 +37,7 @@ def quantise_blocks(samples: Samples, step: float, lowest: int, highest: int) ->
     -------
     tuple
         The plane afterwards, same shape and dtype, and the size in bytes that an ideal coder with one
-        fixed table for each coefficient position would need (zero-order entropy; an estimate, no code is made).
+        fixed table for each coefficient position would need (zero-order entropy: an estimate).
     """
     rows, columns = samples.shape
     padded = np.pad(samples.astype(np.float64), ((0, -rows % _SIDE), (0, -columns % _SIDE)), mode="edge")
