@@ -9,10 +9,12 @@ import numpy.typing as npt
 
 from safecheck.regions.shapes import Ring, signed_area
 
-__all__ = ["Coverage", "cover"]
+__all__ = ["Centres", "Coverage", "cover", "find_centres"]
 
 Coverage = npt.NDArray[np.float64]
 """(rows, columns); fraction of each pixel covered, 0 to 1."""
+Centres = npt.NDArray[np.bool_]
+"""(rows, columns); pixels whose centre is inside."""
 
 
 def cover(rings: Sequence[Ring], rows: int, columns: int) -> Coverage:
@@ -48,6 +50,29 @@ def cover(rings: Sequence[Ring], rows: int, columns: int) -> Coverage:
         sums += sense * one
     covered = np.cumsum(sums, axis=1)[:, :columns]
     return np.clip(covered, 0.0, 1.0)
+
+
+def find_centres(rings: Sequence[Ring], rows: int, columns: int) -> Centres:
+    """Pixels whose centre is inside a set of rings, by the even-odd rule.
+
+    Parameters
+    ----------
+    rings
+        Each (n, 2) vertices (row, column), pixel centres on whole numbers.
+    rows, columns
+        Size of the image.
+
+    Returns
+    -------
+    numpy.ndarray
+        (rows, columns), boolean; a centre on an edge belongs to the side of larger row and column.
+    """
+    from safecheck.regions.coverage_kernels import toggle_ring
+
+    toggles = np.zeros((rows, columns + 1), dtype=np.bool_)
+    for ring in rings:
+        toggle_ring(toggles, np.ascontiguousarray(ring))
+    return np.asarray(np.logical_xor.accumulate(toggles, axis=1)[:, :columns])
 
 
 def _depth(index: int, rings: Sequence[Ring]) -> int:

@@ -8,7 +8,7 @@ import numpy as np
 import numpy.typing as npt
 from numba import njit
 
-__all__ = ["accumulate_ring"]
+__all__ = ["accumulate_ring", "toggle_ring"]
 
 
 @njit(cache=True, nogil=True)
@@ -79,3 +79,27 @@ def accumulate_ring(sums: npt.NDArray[np.float64], ring: npt.NDArray[np.float64]
             at_start = column0 + (start - row0) / (row1 - row0) * (column1 - column0)
             at_end = column0 + (end - row0) / (row1 - row0) * (column1 - column0)
             _accumulate_segment(sums, start, at_start, end, at_end)
+
+
+@njit(cache=True, nogil=True)
+def toggle_ring(toggles: npt.NDArray[np.bool_], ring: npt.NDArray[np.float64]) -> None:
+    """Toggle, in each row of pixel centres, the first centre to the right of every edge that crosses the row.
+
+    Parameters
+    ----------
+    toggles
+        (rows, columns + 1), boolean; an exclusive-or along columns gives the centres inside by the even-odd rule.
+    ring
+        (n, 2) vertices as (row, column), pixel centres on whole numbers.
+    """
+    count = ring.shape[0]
+    rows, columns = toggles.shape[0], toggles.shape[1] - 1
+    for index in range(count):
+        row0, column0 = ring[index, 0], ring[index, 1]
+        row1, column1 = ring[(index + 1) % count, 0], ring[(index + 1) % count, 1]
+        low, high = (row0, row1) if row0 < row1 else (row1, row0)
+        # Half open, so that a vertex on a row of centres counts once.
+        for row in range(max(0, math.ceil(low)), min(rows, math.ceil(high))):
+            crossing = column0 + (row - row0) / (row1 - row0) * (column1 - column0)
+            column = min(max(math.ceil(crossing), 0), columns)
+            toggles[row, column] = not toggles[row, column]

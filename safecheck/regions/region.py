@@ -10,10 +10,22 @@ import numpy.typing as npt
 from pydantic import Field
 
 from safecheck.documents import Document
-from safecheck.regions.coverage import Coverage, cover
+from safecheck.regions.coverage import Centres, Coverage, cover, find_centres
 from safecheck.regions.shapes import Shape
 
-__all__ = ["Grid", "InPatient", "MaskOnGrid", "OnFrames", "Part", "Region", "RegionSet", "Role", "Vector", "cover_grid"]
+__all__ = [
+    "Covered",
+    "Grid",
+    "InPatient",
+    "MaskOnGrid",
+    "OnFrames",
+    "Part",
+    "Region",
+    "RegionSet",
+    "Role",
+    "Vector",
+    "cover_grid",
+]
 
 Role: TypeAlias = Literal["target", "background", "uniform", "edge", "other"]
 Vector: TypeAlias = tuple[float, float, float]
@@ -134,29 +146,40 @@ class RegionSet:
     """Of the file that they came from."""
 
 
-def cover_grid(region: Region, grid: Grid) -> Coverage | None:
-    """Fraction of each pixel of a frame that a region covers; None where it covers none.
+@dataclass(frozen=True, slots=True, eq=False)
+class Covered:
+    """What a region covers of one frame."""
 
-    Returns
-    -------
-    numpy.ndarray or None
-        (rows, columns), 0 to 1.
-    """
-    total: Coverage | None = None
+    fractions: Coverage
+    """(rows, columns), 0 to 1."""
+    inside: Centres
+    """(rows, columns): pixels whose centre is inside; of a mask, those covered by half or more."""
+
+
+def cover_grid(region: Region, grid: Grid) -> Covered | None:
+    """Fraction of each pixel of a frame that a region covers; None where it covers none."""
+    total: Covered | None = None
     for part in region.parts:
         covered = _of_mask(part, grid) if isinstance(part, MaskOnGrid) else _of_part(part, grid)
-        if covered is not None and covered.any():
-            total = covered if total is None else np.maximum(total, covered)
+        if covered is None or not covered.fractions.any():
+            continue
+        if total is not None:
+            fractions = np.maximum(total.fractions, covered.fractions)
+            covered = Covered(fractions, total.inside | covered.inside)
+        total = covered
     return total
 
 
-def _of_part(part: Part, grid: Grid) -> Coverage | None:
+def _of_part(part: Part, grid: Grid) -> Covered | None:
     """Coverage of one shape."""
     placement = part.placement
     if isinstance(placement, OnFrames):
-        return cover(part.shape.rings(), grid.rows, grid.columns) if placement.holds(grid) else None
-    rings = _on_grid(part.shape.rings(), placement, grid)
-    return None if rings is None else cover(rings, grid.rows, grid.columns)
+        rings = part.shape.rings() if placement.holds(grid) else None
+    else:
+        rings = _on_grid(part.shape.rings(), placement, grid)
+    if rings is None:
+        return None
+    return Covered(cover(rings, grid.rows, grid.columns), find_centres(rings, grid.rows, grid.columns))
 
 
 def _on_grid(
@@ -183,17 +206,20 @@ def _on_grid(
     return brought
 
 
-def _of_mask(mask: MaskOnGrid, grid: Grid) -> Coverage | None:
+def _of_mask(mask: MaskOnGrid, grid: Grid) -> Covered | None:
     """Fractions of a segmentation on a frame of the same grid."""
-    if mask.fractions.shape != (grid.rows, grid.columns):
+    if mask.fractions.shape != (grid.rows, grid.columns) or not _is_same(mask.grid, grid):
         return None
-    if mask.grid.instance and mask.grid.instance == grid.instance and mask.grid.frame == grid.frame:
-        return mask.fractions
-    if mask.grid.position_mm is None or grid.position_mm is None or not mask.grid.frame_of_reference:
-        return None
-    if mask.grid.frame_of_reference != grid.frame_of_reference:
-        return None
-    return mask.fractions if _corner_distance_mm(mask.grid, grid) < SAME_MM else None
+    return Covered(mask.fractions, mask.fractions >= 0.5)
+
+
+def _is_same(one: Grid, other: Grid) -> bool:
+    """Whether two grids are the frame of one instance, or lie in one place of one frame of reference."""
+    if one.instance and (one.instance, one.frame) == (other.instance, other.frame):
+        return True
+    if not one.frame_of_reference or one.frame_of_reference != other.frame_of_reference:
+        return False
+    return _corner_distance_mm(one, other) < SAME_MM
 
 
 def _corner_distance_mm(one: Grid, other: Grid) -> float:

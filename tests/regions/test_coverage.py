@@ -10,7 +10,7 @@ import skimage.draw
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from safecheck.regions.coverage import Coverage, cover
+from safecheck.regions.coverage import Coverage, cover, find_centres
 from safecheck.regions.shapes import Ellipse, Polygon, Rectangle, Ring, Shape
 
 
@@ -106,3 +106,20 @@ def test_a_polygon_covers_what_a_fine_raster_of_scikit_image_covers(seed: int) -
 def test_a_shape_turned_by_half_a_turn_is_itself(shape: Shape) -> None:
     turned = shape.model_copy(update={"angle_degrees": 180.0})
     assert np.allclose(cover(shape.rings(), 10, 10), cover(turned.rings(), 10, 10), atol=1e-12)
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_the_centres_inside_are_those_that_scikit_image_finds(seed: int) -> None:
+    ring = _star(seed, 9)
+    inside = find_centres([ring], 24, 24)
+    assert np.array_equal(inside, skimage.draw.polygon2mask((24, 24), ring))
+    covered = cover([ring], 24, 24)
+    assert not (inside & (covered == 0)).any()
+    assert inside[covered == 1].all()
+
+
+def test_a_shape_beyond_the_image_holds_the_centres_of_the_image_alone() -> None:
+    wide = Rectangle(centre=(4, 4), height=100, width=100)
+    assert find_centres(wide.rings(), 8, 8).all()
+    away = Rectangle(centre=(4, -60), height=10, width=10)
+    assert not find_centres(away.rings(), 8, 8).any()

@@ -42,9 +42,9 @@ def test_millimetres_become_pixels_by_the_spacing_of_each_direction() -> None:
     covered = cover_grid(region(PLANE), AXIAL)
     assert covered is not None
     # 5 mm x 5 mm over 0.5 mm x 0.25 mm pixels: 10 rows by 20 columns about row 16, column 16.
-    assert covered.sum() == pytest.approx(200)
-    assert covered[16, 16] == 1.0
-    assert covered[16].sum() == pytest.approx(20)
+    assert covered.fractions.sum() == pytest.approx(200)
+    assert covered.fractions[16, 16] == 1.0
+    assert covered.fractions[16].sum() == pytest.approx(20)
 
 
 def test_an_oblique_frame_is_covered_where_its_own_plane_lies() -> None:
@@ -54,7 +54,7 @@ def test_an_oblique_frame_is_covered_where_its_own_plane_lies() -> None:
     plane = PLANE.model_copy(update={"along_rows": (0.0, c, s)})
     covered = cover_grid(region(plane), oblique)
     assert covered is not None
-    assert covered.sum() == pytest.approx(200)
+    assert covered.fractions.sum() == pytest.approx(200)
     assert cover_grid(region(PLANE), oblique) is None
 
 
@@ -101,7 +101,7 @@ def test_a_mask_lies_on_the_same_grid_alone() -> None:
     mask = Region("m", "mask", "other", (MaskOnGrid(AXIAL, fractions),))
     covered = cover_grid(mask, dataclasses.replace(AXIAL, instance="another instance"))
     assert covered is not None
-    assert covered.sum() == 1.0
+    assert covered.fractions.sum() == 1.0
     assert cover_grid(mask, dataclasses.replace(AXIAL, position_mm=(-10.0, -20.0, 30.5))) is None
     assert cover_grid(mask, dataclasses.replace(AXIAL, spacing_mm=(0.5, 0.26))) is None
 
