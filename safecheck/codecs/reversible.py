@@ -11,7 +11,7 @@ import importlib
 import importlib.metadata
 from dataclasses import dataclass
 from types import ModuleType
-from typing import ClassVar
+from typing import ClassVar, Literal
 
 import numpy as np
 
@@ -30,12 +30,15 @@ _LONGEST_SIDE = 0xFFFF
 _HEADROOM_BYTES = 4096
 
 
-def _library() -> ModuleType:
-    """Load imagecodecs on first use."""
+def _library(part: Literal["JPEGLS", "JPEG2K"]) -> ModuleType:
+    """Load imagecodecs on first use; builds of it may lack a part."""
     try:
-        return importlib.import_module("imagecodecs")
+        library = importlib.import_module("imagecodecs")
     except ImportError as error:
         raise CodecUnavailable("imagecodecs is not on this machine") from error
+    if not getattr(library, part).available:
+        raise CodecUnavailable(f"imagecodecs on this machine was built without {part}")
+    return library
 
 
 def _version(library_version: str) -> str:
@@ -76,7 +79,7 @@ class JpegLs:
     @property
     def version(self) -> str:
         """CharLS's version and that of the package that carries it."""
-        return _version(_library().jpegls_version())
+        return _version(_library("JPEGLS").jpegls_version())
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only what the header cannot say."""
@@ -93,7 +96,7 @@ class JpegLs:
             Where the library is missing.
         """
         admit(self, raster)
-        library, form = _library(), raster.format
+        library, form = _library("JPEGLS"), raster.format
         offset = np.int32(-form.lowest)
         unsigned = (raster.samples.astype(np.int32) + offset).astype(_unsigned(form))
         try:
@@ -117,7 +120,7 @@ class JpegLs:
         CodecUnavailable
             Where the library is missing.
         """
-        library = _library()
+        library = _library("JPEGLS")
         check_jpegls(code, _unsigned(format).itemsize * 8, format.channels, shape)
         try:
             decoded = library.jpegls_decode(code)
@@ -149,7 +152,7 @@ class Jpeg2000Lossless:
     @property
     def version(self) -> str:
         """OpenJPEG's version and that of the package that carries it."""
-        return _version(_library().jpeg2k_version())
+        return _version(_library("JPEG2K").jpeg2k_version())
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
         """Refuse colour of one bit a channel, whose samples the library loses, and what no header can say."""
@@ -168,7 +171,7 @@ class Jpeg2000Lossless:
             Where the library is missing.
         """
         admit(self, raster)
-        library, form = _library(), raster.format
+        library, form = _library("JPEG2K"), raster.format
         # Told 8 bits or fewer of a 16-bit sample, the library writes 16.
         narrow = np.dtype(f"{'i' if form.signed else 'u'}{_unsigned(form).itemsize}")
         try:
@@ -198,7 +201,7 @@ class Jpeg2000Lossless:
         CodecUnavailable
             Where the library is missing.
         """
-        library = _library()
+        library = _library("JPEG2K")
         check_jpeg2000(code, format, shape, reversible=True)
         try:
             decoded = library.jpeg2k_decode(code, numthreads=1)

@@ -23,8 +23,8 @@ MOST_ENCODES = 12
 """No frame is encoded more often than this on the way to a size."""
 _ONE_SIDED = 3
 """After so many codes on the same side of the asked size the end of the dial is tried."""
-_NARROW = 1e-7
-"""A bracket narrower than this, in natural logarithms of the dial, holds no further size."""
+_NARROW = 1e-3
+"""A bracket narrower than this, in natural logarithms of the dial, holds one stair of the size."""
 
 End: TypeAlias = Literal["met", "floor", "ceiling", "between"]
 """How a search ended: met; all codes too large; all too small; sizes too far apart."""
@@ -131,7 +131,7 @@ def _next(points: list[_Point], exponent: float, low: float, high: float) -> flo
     above = [point for point in points if point.excess > 0]
     below = [point for point in points if point.excess <= 0]
     if above and below:
-        return _inside(points, min(above, key=_size), max(below, key=_size))
+        return _inside(len(points), *_pair(above, below))
     last = points[-1]
     wanted = high if (last.excess > 0) == (exponent < 0) else low
     if any(point.at == wanted for point in points):
@@ -146,21 +146,23 @@ def _next(points: list[_Point], exponent: float, low: float, high: float) -> flo
     return min(max(last.at - last.excess / slope, low), high)
 
 
-def _size(point: _Point) -> float:
-    """Order points by the size of their codes."""
-    return point.excess
+def _pair(above: list[_Point], below: list[_Point]) -> tuple[_Point, _Point]:
+    """Nearest sizes on both sides of the asked one; of equal sizes the dials that lie nearest to each other."""
+    least = min(point.excess for point in above)
+    most = max(point.excess for point in below)
+    pairs = [(a, b) for a in above if a.excess == least for b in below if b.excess == most]
+    return min(pairs, key=lambda pair: abs(pair[0].at - pair[1].at))
 
 
-def _inside(points: list[_Point], above: _Point, below: _Point) -> float | None:
-    """Between two dials whose codes lie on both sides: secant, every third time the middle."""
+def _inside(tried: int, above: _Point, below: _Point) -> float | None:
+    """Between two dials whose codes lie on both sides: the secant, every third time the middle."""
     width = below.at - above.at
     if abs(width) < _NARROW:
         return None
     share = above.excess / (above.excess - below.excess)
     # The secant alone creeps where the size is a staircase: hold it off the ends, and halve at times.
-    share = 0.5 if len(points) % 3 == 2 else min(max(share, 0.1), 0.9)
-    at = above.at + share * width
-    return None if any(point.at == at for point in points) else at
+    share = 0.5 if tried % 3 == 2 else min(max(share, 0.1), 0.9)
+    return above.at + share * width
 
 
 def bracket(

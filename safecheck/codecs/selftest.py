@@ -77,7 +77,7 @@ def _held(codec: Codec, rasters: list[Raster]) -> str:
         return f"bit-exact on {text}"
     if codec.name != "jpeg2000":
         return f"written and read: {text}"
-    agreed = "a second decoder gives equal samples" if _second_decoder() else "no second decoder here"
+    agreed = "a second decoder agrees, within 1 in colour" if _second_decoder() else "no second decoder here"
     return f"written and read: {text}; {agreed}"
 
 
@@ -111,14 +111,19 @@ def _second_decoder() -> bool:
 
 
 def _decoders_agree(code: bytes, decoded: Samples) -> bool:
-    """Whether imagecodecs reads the same samples; true where it is missing."""
+    """Whether imagecodecs reads the same samples, in colour within 1; true where it is missing.
+
+    The irreversible colour transform is rounded from single precision, which builds of OpenJPEG do in unlike order.
+    """
     if not _second_decoder():
         return True
     second = importlib.import_module("imagecodecs")
     try:
-        return np.array_equal(second.jpeg2k_decode(code, numthreads=1), decoded)
+        again = second.jpeg2k_decode(code, numthreads=1)
     except RuntimeError:
         return False
+    apart = np.abs(again.astype(np.int64) - decoded.astype(np.int64)).max()
+    return bool(apart <= (0 if decoded.ndim == 2 else 1))
 
 
 def _rasters(depths: Iterable[int]) -> Iterator[Raster]:
