@@ -31,6 +31,13 @@ _LATER_LOOK_BYTES = 1 << 12
 _DEFER_BYTES = 1 << 22
 _WHOLE = re.compile(r"[+-]?\d{1,12}(?:\.0*)?")
 _UNDEFINED = 0xFFFFFFFF
+# Elements that a bare data set or meta group may begin with, in both byte orders, and the prefix without preamble.
+_FIRST_ELEMENTS = frozenset(
+    struct.pack(f"{order}HH", group, element)
+    for order in "<>"
+    for group, elements in ((0x0002, (0x0000, 0x0001, 0x0002)), (0x0008, (0x0000, 0x0001, 0x0005, 0x0008, 0x0016)))
+    for element in elements
+) | {b"DICM"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,8 +101,7 @@ def _check_preamble(start: bytes) -> None:
     """Tell DICOM files from others; a bare data set is named, since guessing its encoding would be doubtful."""
     if start[_PREAMBLE_BYTES:] == b"DICM":
         return
-    group, element = struct.unpack("<HH", start[:4]) if len(start) >= 8 else (0, 0)
-    if (group in (0x0002, 0x0008, 0x0800) and element in (0, 0x0001, 0x0005, 0x0008, 0x0016)) or (start[:4] == b"DICM"):
+    if start[:4] in _FIRST_ELEMENTS:
         raise InputRefused("unreadable", "a data set without preamble and file meta information")
     raise InputExcluded("not-dicom")
 
@@ -124,7 +130,8 @@ def _after_meta(tag: BaseTag, _vr: str | None, _length: int) -> bool:
 
 
 def _at_pixels(tag: BaseTag, _vr: str | None, _length: int) -> bool:
-    return tag in (0x7FE00010, 0x7FE00009, 0x7FE00008)
+    # Shifted first: comparing the library's tags is slow, and this is called for every element.
+    return tag >> 16 == 0x7FE0 and tag & 0xFFFF in (0x0008, 0x0009, 0x0010)
 
 
 def _encoding(uid: str, stream: BinaryIO) -> tuple[bool, bool]:

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 
-import numpy as np
 from pydicom.dataset import Dataset
 
 from safecheck.dicom import terms
@@ -96,11 +95,13 @@ def slice_position_mm(position: tuple[float, ...], orientation: tuple[float, ...
     float or None
         In mm, rounded to 1e-6; None where either is missing or not usable.
     """
-    if len(position) != 3 or len(orientation) != 6 or not np.isfinite([*position, *orientation]).all():
+    if len(position) != 3 or len(orientation) != 6 or not all(map(math.isfinite, (*position, *orientation))):
         return None
-    normal = np.cross(orientation[:3], orientation[3:])
-    length = float(np.linalg.norm(normal))
-    return round(float(np.dot(position, normal)) / length, 6) if length > 1e-6 else None
+    (rx, ry, rz, cx, cy, cz), (x, y, z) = orientation, position
+    normal = (ry * cz - rz * cy, rz * cx - rx * cz, rx * cy - ry * cx)
+    length = math.hypot(*normal)
+    along = x * normal[0] + y * normal[1] + z * normal[2]
+    return round(along / length, 6) if length > 1e-6 else None
 
 
 def _may_show_text(dataset: Dataset, modality: str, object_class: str) -> bool:

@@ -149,7 +149,10 @@ def _secondary_capture(header: Header, facts: Facts) -> str:
         return f"by object class, Modality {modality}"
     if _SCREEN_TYPES.search(_types(header)):
         return "by Image Type"
-    return "by Conversion Type" if text(header.dataset, 0x00080064) in _SCREEN_CONVERSIONS else ""
+    # Some scanners fill Conversion Type for images as acquired, which Image Type then calls primary.
+    primary = "PRIMARY" in (each.upper() for each in words(header.dataset, 0x00080008)[:2])
+    converted = text(header.dataset, 0x00080064) in _SCREEN_CONVERSIONS
+    return "by Conversion Type" if converted and not primary else ""
 
 
 def _palette(_: Header, facts: Facts) -> str:
@@ -189,7 +192,7 @@ RULES: tuple[Rule, ...] = (
     Rule(
         "secondary-capture",
         "SOP Class is one of Secondary Capture, whatever Modality says; Image Type from value 3 on names a screen "
-        "save; or Conversion Type is WSD, DV, DRW or SYN.",
+        "save; or Conversion Type is WSD, DV, DRW or SYN and Image Type does not say PRIMARY.",
         "secondary_captures",
         _secondary_capture,
     ),

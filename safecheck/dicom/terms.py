@@ -146,7 +146,7 @@ _MAKERS: tuple[tuple[str, str], ...] = (
 _KERNELS = re.compile(
     r"[A-Z][a-z]?\d{2}[a-z]?(?:\\[1-5])?"  # B30f, H31s, Br40d, I31f\3
     r"|STANDARD|SOFT|DETAIL|BONE|BONEPLUS|EDGE|LUNG|CHST|ULTRA|EXPERIMENTAL7|HD(?:STD|DTL|LUNG|BONE)PLUS"
-    r"|FC\d{2}H?|FL\d{2}|[A-FL]|[CDEFUY][ABCDE]|EB|EC"
+    r"|\d{1,2}|FC\d{2}H?|FL\d{2}|[A-FL]|[CDEFUY][ABCDE]|EB|EC"
 )
 _DECIMAL = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[Ee][+-]?\d+)?")
 _STANDARD_METHOD = re.compile(r"(?:ISO|IEC|ITU)_[0-9]{1,5}(?:_[0-9]{1,3})?")
