@@ -1,0 +1,231 @@
+"""From a raster to a code and back: the parts put together."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from safecheck.codecs.tile import context, mask, planes, quantise, rate, steps, stream, transform
+from safecheck.codecs.tile.entropy import Coder, finish_encoding, new_states, start_decoding
+from safecheck.codecs.tile.levels import WORST_BYTES, decode_levels, encode_levels
+from safecheck.codecs.tile.settings import TRANSFORMS, WEIGHTINGS
+from safecheck.errors import CorruptCode
+from safecheck.frames import Mask, PixelFormat, Raster, Samples
+
+__all__ = ["Analysis", "Padding", "analyse", "counts", "decode", "fixed_bytes", "write"]
+
+START: Coder = (0, 0, 0xFFFFFFFF)
+"""An encoder before its first bit."""
+
+
+@dataclass(frozen=True, slots=True)
+class Padding:
+    """What a code says of padding, the same at every step."""
+
+    kind: int
+    """0: none; 1: one value a channel; 2: several values."""
+    values: tuple[int, int, int]
+    """Counted from the format's least value, where `kind` is 1."""
+    written: bytes
+    """First bytes of the payload."""
+    coder: Coder
+    """The encoder behind them."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Analysis:
+    """A raster's transform coefficients and all else that does not depend on the step."""
+
+    raster: Raster
+    transform: str
+    weighting: str
+    size: int
+    centres: tuple[int, ...]
+    used: npt.NDArray[np.uint8]
+    """1 for each tile that is coded: (tiles,)."""
+    coefficients: tuple[npt.NDArray[np.int32], ...]
+    """Of each plane: (tiles, size * size), in `transform.scan_order`."""
+    padding: Padding
+
+    @property
+    def across(self) -> int:
+        """Tiles in a row of tiles."""
+        return -(-self.raster.shape[1] // self.size)
+
+
+def analyse(raster: Raster, name: str, weighting: str, size: int) -> Analysis:
+    """Transform a raster, once for all steps."""
+    padding = raster.padding
+    centres = planes.centre(raster.samples, padding)
+    table = transform.basis(name, size)
+    values = planes.to_planes(raster.samples, padding, centres, size)
+    coefficients = tuple(transform.forward(plane, table) for plane in values)
+    used = planes.used_tiles(raster.shape, padding, size)
+    return Analysis(raster, name, weighting, size, centres, used, coefficients, _write_padding(raster))
+
+
+def _tables(size: int) -> tuple[npt.NDArray[np.int32], npt.NDArray[np.uint8], npt.NDArray[np.uint8]]:
+    return context.place_table(size), context.zone_table(size), context.class_table()
+
+
+def _plane_steps(name: str, size: int, step: int, channels: int) -> list[npt.NDArray[np.float64]]:
+    """Steps of each plane, in scan order and coefficient units."""
+    value = steps.step_at(step)
+    order = transform.scan_order(size)
+    return [
+        steps.coefficient_steps(value, scale, steps.weights(name, size, plane > 0), order)
+        for plane, scale in enumerate(planes.PLANE_SCALES[channels])
+    ]
+
+
+def _padding_values(raster: Raster, padding: Mask) -> npt.NDArray[np.int32]:
+    """Values of padding pixels counted from the format's least: (pixels, channels)."""
+    pixels = raster.samples[padding].astype(np.int32) - raster.format.lowest
+    return pixels.reshape(len(pixels), raster.format.channels)
+
+
+def _write_padding(raster: Raster) -> Padding:
+    if raster.padding is None:
+        return Padding(0, (0, 0, 0), b"", START)
+    buffer = np.empty(6 * raster.pixels * raster.format.channels + 1024, dtype=np.uint8)
+    states = new_states(mask.MASK_CONTEXTS)
+    coder = mask.encode_mask(raster.padding.view(np.uint8), states, buffer, START)
+    values = _padding_values(raster, raster.padding)
+    if (values == values[0]).all():
+        first = [int(value) for value in values[0]] + [0, 0]
+        return Padding(1, (first[0], first[1], first[2]), buffer[: coder[0]].tobytes(), coder)
+    coder = mask.encode_padding_values(values, raster.format.bits_stored, states, buffer, coder)
+    return Padding(2, (0, 0, 0), buffer[: coder[0]].tobytes(), coder)
+
+
+def counts(analysis: Analysis) -> npt.NDArray[np.int64]:
+    """Expected magnitudes counted for `rate.search`, over all planes, scaled to all tiles."""
+    total = np.zeros(rate.BINS, dtype=np.int64)
+    size = analysis.size
+    places = context.place_table(size)
+    all_values = int(analysis.used.sum()) * size * size
+    for plane, scale in enumerate(planes.PLANE_SCALES[analysis.raster.format.channels]):
+        relative = steps.weights(analysis.weighting, size, plane > 0).ravel()[transform.scan_order(size)]
+        part = rate.magnitude_counts(
+            analysis.coefficients[plane], analysis.used, analysis.across, places, relative * scale
+        )
+        total += part * all_values // max(int(part.sum()), 1)
+    return total
+
+
+def fixed_bytes(analysis: Analysis) -> int:
+    """Bytes that do not depend on the step: header, mask and padding values."""
+    return stream.HEADER_BYTES + len(analysis.padding.written)
+
+
+def write(analysis: Analysis, step: int) -> bytes:
+    """Quantise and code at the step of an index; equal arguments give equal bytes on every processor."""
+    raster, size = analysis.raster, analysis.size
+    levels = [np.empty_like(part) for part in analysis.coefficients]
+    ends = np.zeros(len(analysis.used), dtype=np.int32)
+    coder, done = analysis.padding.coder, len(analysis.padding.written)
+    buffer = np.empty(done + WORST_BYTES * (size * size + 2) + 2 * levels[0].size, dtype=np.uint8)
+    buffer[:done] = np.frombuffer(analysis.padding.written, dtype=np.uint8)
+    shifts = [0] * 6
+    for plane, plane_steps in enumerate(_plane_steps(analysis.weighting, size, step, raster.format.channels)):
+        coefficients = analysis.coefficients[plane]
+        shifts[2 * plane : 2 * plane + 2] = quantise.quantise(
+            coefficients, plane_steps, analysis.used, levels[plane], ends
+        )
+        buffer, coder = _write_levels(analysis, levels[plane], ends, buffer, coder)
+    centres = [*analysis.centres, 0, 0]
+    header = stream.Header(
+        transform=TRANSFORMS.index(analysis.transform),
+        weighting=WEIGHTINGS.index(analysis.weighting),
+        size=size,
+        rows=raster.shape[0],
+        columns=raster.shape[1],
+        bits=raster.format.bits_stored,
+        signed=int(raster.format.signed),
+        channels=raster.format.channels,
+        padding=analysis.padding.kind,
+        step=step,
+        padding_values=analysis.padding.values,
+        centres=(centres[0], centres[1], centres[2]),
+        shifts=(shifts[0], shifts[1], shifts[2], shifts[3], shifts[4], shifts[5]),
+    )
+    return stream.write(header, buffer[: finish_encoding(buffer, coder)].tobytes())
+
+
+def _write_levels(
+    analysis: Analysis,
+    levels: npt.NDArray[np.int32],
+    ends: npt.NDArray[np.int32],
+    buffer: npt.NDArray[np.uint8],
+    coder: Coder,
+) -> tuple[npt.NDArray[np.uint8], Coder]:
+    """Write one plane's levels, in a larger buffer where the first guess is too small."""
+    while True:
+        after, fits = encode_levels(
+            levels,
+            ends,
+            analysis.used,
+            analysis.across,
+            _tables(analysis.size),
+            new_states(context.CONTEXTS),
+            buffer,
+            coder,
+        )
+        if fits:
+            return buffer, after
+        larger = np.empty(2 * len(buffer) + WORST_BYTES * (analysis.size**2 + 2), dtype=np.uint8)
+        larger[: coder[0]] = buffer[: coder[0]]
+        buffer = larger
+
+
+def _read_padding(
+    header: stream.Header,
+    format: PixelFormat,  # noqa: A002
+    buffer: npt.NDArray[np.uint8],
+) -> tuple[Coder, npt.NDArray[np.uint8] | None, npt.NDArray[np.int32]]:
+    """Read mask and values (pixels or 1, channels); no mask where the frame has no padding."""
+    coder = start_decoding(buffer)
+    values = np.array([header.padding_values[: header.channels]], dtype=np.int32)
+    if not header.padding:
+        return coder, None, values
+    found = np.zeros((header.rows, header.columns), dtype=np.uint8)
+    states = new_states(mask.MASK_CONTEXTS)
+    coder = mask.decode_mask(found, states, buffer, coder)
+    if header.padding == 2:
+        values = np.zeros((int(np.count_nonzero(found)), header.channels), dtype=np.int32)
+        coder = mask.decode_padding_values(values, format.bits_stored, states, buffer, coder)
+    return coder, found, values + format.lowest
+
+
+def decode(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
+    """Read a code back; see `Codec.decode`."""
+    header, payload = stream.read(code, format, shape)
+    buffer = np.frombuffer(payload, dtype=np.uint8)
+    coder, found, values = _read_padding(header, format, buffer)
+    padding = None if found is None else found.view(np.bool_)
+    size = header.size
+    used = planes.used_tiles(shape, padding, size)
+    whole = planes.padded_shape(shape, size)
+    table = transform.basis(TRANSFORMS[header.transform], size)
+    weighting = WEIGHTINGS[header.weighting]
+    results = []
+    for plane, plane_steps in enumerate(_plane_steps(weighting, size, header.step, header.channels)):
+        levels = np.zeros((len(used), size * size), dtype=np.int32)
+        states = new_states(context.CONTEXTS)
+        coder, readable = decode_levels(levels, used, whole[1] // size, _tables(size), states, buffer, coder)
+        if not readable:
+            raise CorruptCode("a tiled code ends early or holds a level out of range")
+        quantise.dequantise(levels, plane_steps, *header.shifts[2 * plane : 2 * plane + 2], levels)
+        results.append(transform.inverse(levels, table, whole))
+    if coder[0] != len(buffer) + 2:
+        raise CorruptCode("a tiled code holds more or fewer bytes than its levels take")
+    samples = planes.from_planes(results, header.centres, format, shape)
+    if padding is not None:
+        exact = values.astype(format.dtype)
+        if header.padding == 1:
+            np.copyto(samples, exact[0], where=padding if format.channels == 1 else padding[..., None])
+        else:
+            samples[padding] = exact[:, 0] if format.channels == 1 else exact
+    return samples

@@ -1,0 +1,67 @@
+"""Dead-zone quantiser, its steps per coefficient, and the grid on which steps lie.
+
+A coefficient c becomes the level sign(c) floor(|c| / step + offset), with the offset `OFFSET` = 1/3 (a dead zone 4/3
+steps wide, common practice for intra coding) and 1/2 for the constant of a tile. A level q is read as
+sign(q) (|q| + shift) step, where the two shifts, for |q| = 1 and above, are measured by the encoder and stand in the
+code: the means of the coefficients that became these levels.
+"""
+
+from __future__ import annotations
+
+from typing import Any, TypeAlias
+
+import numpy as np
+import numpy.typing as npt
+from numba import njit
+
+__all__ = ["OFFSET", "dequantise", "quantise"]
+
+Array: TypeAlias = npt.NDArray[Any]
+
+OFFSET = 1.0 / 3.0
+"""Rounding offset of all coefficients but the constant."""
+
+
+@njit(cache=True, nogil=True)
+def quantise(coefficients: Array, steps: Array, used: Array, levels: Array, ends: Array) -> tuple[int, int]:
+    """Fill levels (tiles, size * size) and ends of block (tiles,); return the two shifts in 1/256 steps."""
+    total_one = 0
+    count_one = 0
+    total_more = 0
+    count_more = 0
+    for tile in range(coefficients.shape[0]):
+        end = 0
+        if used[tile]:
+            value = coefficients[tile, 0]
+            level = np.int32(np.floor(abs(value) / steps[0] + 0.5))
+            levels[tile, 0] = -level if value < 0 else level
+            for k in range(1, coefficients.shape[1]):
+                value = coefficients[tile, k]
+                ratio = abs(value) / steps[k]
+                level = np.int32(np.floor(ratio + OFFSET))
+                levels[tile, k] = -level if value < 0 else level
+                if level:
+                    end = k
+                    part = np.int64(np.floor((ratio - level) * 256.0))
+                    if level == 1:
+                        total_one += part
+                        count_one += 1
+                    else:
+                        total_more += part
+                        count_more += 1
+        ends[tile] = end
+    one = min(max(total_one // max(count_one, 1), -127), 127)
+    return one, min(max(total_more // max(count_more, 1), -127), 127)
+
+
+@njit(cache=True, nogil=True)
+def dequantise(levels: Array, steps: Array, shift_one: int, shift_more: int, coefficients: Array) -> None:
+    """Fill coefficients (tiles, size * size) in 1/`GRID` stored units, kept within 2**30."""
+    for tile in range(levels.shape[0]):
+        for k in range(levels.shape[1]):
+            level = np.int64(levels[tile, k])
+            size = abs(level)
+            shift = shift_one if size == 1 else shift_more
+            fine = size * 256 + (shift if k > 0 and size > 0 else 0)
+            value = min(np.floor(fine * steps[k] / 256.0 + 0.5), 1073741824.0)
+            coefficients[tile, k] = np.int32(-value if level < 0 else value)
