@@ -17,6 +17,7 @@ from safecheck.dicom.pseudonyms import Pseudonyms
 __all__ = [
     "BODY_PARTS",
     "MODALITIES",
+    "NOT_A_NUMBER",
     "OTHER",
     "PHOTOMETRIC",
     "body_part",
@@ -30,6 +31,7 @@ __all__ = [
 ]
 
 OTHER = "other"
+NOT_A_NUMBER = "not a number"
 
 # Defined Terms of PS3.3 C.7.3.1.1.1, retired ones included; from memory.
 _MODALITIES_TEXT = """
@@ -209,4 +211,4 @@ def loss_method(text: str) -> str:
 def decimal(text: str) -> str:
     """Return a decimal string as found, or 'not a number'."""
     word = text.strip()
-    return word if not word or (len(word) <= 16 and _DECIMAL.fullmatch(word)) else "not a number"
+    return word if not word or (len(word) <= 16 and _DECIMAL.fullmatch(word)) else NOT_A_NUMBER
