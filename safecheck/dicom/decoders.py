@@ -26,7 +26,7 @@ from safecheck.dicom.quiet import quiet_library
 from safecheck.dicom.stream_facts import StreamFacts
 from safecheck.errors import InputRefused
 
-__all__ = ["DECODERS", "Decoder", "decode", "second_opinion"]
+__all__ = ["DECODERS", "Decoder", "decode", "rebuild_jpeg", "second_opinion"]
 
 _Array = npt.NDArray[Any]
 _Decode = Callable[[bytes, PixelHeader, "StreamFacts | None"], _Array]
@@ -119,6 +119,20 @@ def _htj2k(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Arra
 
 def _jpeg_xl(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
     return np.asarray(imagecodecs.jpegxl_decode(code, numthreads=1))
+
+
+def rebuild_jpeg(code: bytes) -> bytes:
+    """JPEG stream that a JPEG XL container was made from, byte for byte.
+
+    Raises
+    ------
+    InputRefused
+        'decode'.
+    """
+    try:
+        return bytes(imagecodecs.jpegxl_decode_jpeg(code, numthreads=1))
+    except Exception as error:
+        raise InputRefused("decode", f"{type(error).__name__} from the decoder") from None
 
 
 _TURBO, _SOF3 = "libjpeg-turbo (imagecodecs)", "jpegsof3 (imagecodecs)"

@@ -9,17 +9,22 @@ import numpy as np
 import numpy.typing as npt
 
 from safecheck.dicom.colour import rgb_from_ybr, spread_422
-from safecheck.dicom.decoders import DECODERS, decode, second_opinion
-from safecheck.dicom.jxl_header import read_jpeg_xl
+from safecheck.dicom.decoders import DECODERS, decode, rebuild_jpeg, second_opinion
+from safecheck.dicom.jxl_header import holds_jpeg, read_jpeg_xl
 from safecheck.dicom.pixel_header import PixelHeader
 from safecheck.dicom.stored_bits import stored_values
 from safecheck.dicom.stream_facts import StreamFacts, coded_length, read_jpeg, read_jpeg2000, strip_jp2
-from safecheck.dicom.syntaxes import Coding, Syntax
+from safecheck.dicom.syntaxes import Coding, Syntax, syntax_of
 from safecheck.errors import InputRefused
 from safecheck.frames import Samples
 
 __all__ = ["FramePixels", "check_syntax", "read_frame_pixels", "second_frame_pixels"]
 
+_JPEG_SYNTAXES = {
+    "baseline": "1.2.840.10008.1.2.4.50",
+    "extended": "1.2.840.10008.1.2.4.51",
+    "progressive": "1.2.840.10008.1.2.4.55",
+}
 _TRANSFORMED = ("YBR_RCT", "YBR_ICT")
 
 
@@ -78,6 +83,8 @@ def read_frame_pixels(data: bytes, syntax: Syntax, header: PixelHeader, *, littl
     """
     if syntax.coding is Coding.NATIVE:
         return _native(data, header, little_endian=little_endian)
+    if syntax.coding is Coding.JPEG_XL and holds_jpeg(data):
+        return _rebuilt_jpeg(data, header)
     code = strip_jp2(data) if syntax.coding is Coding.JPEG_2000 else data
     facts = _facts(code, syntax)
     size_bytes = _code_bytes(code, syntax)
@@ -119,6 +126,16 @@ def _native(data: bytes, header: PixelHeader, *, little_endian: bool) -> FramePi
     samples, notes = stored_values(container, header, reason="high-bits")
     samples, colour_notes = _to_rgb(samples, header)
     return FramePixels(samples, len(data), notes + colour_notes)
+
+
+def _rebuilt_jpeg(data: bytes, header: PixelHeader) -> FramePixels:
+    """Decode the JPEG stream inside, so that the values are those of the file before it was recompressed."""
+    jpeg = rebuild_jpeg(data)
+    syntax = syntax_of(_JPEG_SYNTAXES.get(read_jpeg(jpeg).process, ""))
+    if syntax.coding is not Coding.JPEG:
+        raise InputRefused("syntax", "JPEG XL around a JPEG process other than baseline, extended or progressive")
+    inside = read_frame_pixels(jpeg, syntax, header, little_endian=True)
+    return FramePixels(inside.samples, len(data), ("decoded as the JPEG stream it was made from", *inside.notes))
 
 
 def _facts(code: bytes, syntax: Syntax) -> StreamFacts | None:
@@ -170,6 +187,8 @@ def _check_colour(facts: StreamFacts, syntax: Syntax, header: PixelHeader) -> No
             raise InputRefused("photometric", f"{header.photometric} in the header, {facts.coded_colour} in the stream")
     elif syntax.coding is Coding.JPEG and facts.process == "lossless" and header.photometric == "YBR_FULL_422":
         raise InputRefused("photometric", "YBR_FULL_422 in lossless JPEG")
+    elif syntax.coding is Coding.JPEG_XL and header.photometric.startswith("YBR"):
+        raise InputRefused("photometric", f"{header.photometric} in {syntax.name} that holds no JPEG stream")
     elif syntax.coding is Coding.JPEG_2000:
         transformed = facts.coded_colour == "YBR"
         if header.photometric != "RGB" and (header.photometric in _TRANSFORMED) != transformed:
@@ -209,8 +228,6 @@ def _container(decoded: npt.NDArray[Any], header: PixelHeader) -> npt.NDArray[An
 
 def _colour_undone(syntax: Syntax, facts: StreamFacts | None) -> bool:
     """Whether the decoder itself turns luma and colour difference into RGB."""
-    if syntax.coding is Coding.JPEG_XL:
-        return True
     return syntax.coding is Coding.JPEG and facts is not None and facts.process != "lossless"
 
 

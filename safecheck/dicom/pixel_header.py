@@ -7,7 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from pydicom.dataset import Dataset
 
-from safecheck.dicom.elements import term, value_of, whole_number
+from safecheck.dicom.elements import term, whole_number
+from safecheck.dicom.quiet import quiet_library
 from safecheck.errors import InputRefused
 from safecheck.frames import PixelFormat
 
@@ -152,9 +153,17 @@ def _overlay_bits(dataset: Dataset, allocated: int) -> frozenset[int]:
     for group in range(0x6000, 0x6020, 2):
         if (group, 0x0102) not in dataset or (group, 0x3000) in dataset:
             continue
-        plane = dataset.group_dataset(group)
-        allocated_of_plane = value_of(plane, f"{group:04x}0100")
-        position = value_of(plane, f"{group:04x}0102")
-        if allocated_of_plane == allocated and isinstance(position, int) and 0 <= position < allocated:
+        allocated_of_plane, position = (_plane_number(dataset, group, element) for element in (0x0100, 0x0102))
+        if allocated_of_plane == allocated and 0 <= position < allocated:
             found.add(position)
     return frozenset(found)
+
+
+def _plane_number(dataset: Dataset, group: int, element: int) -> int:
+    """Whole number of an overlay group; -1 where absent or malformed, so that its plane masks nothing."""
+    try:
+        with quiet_library():
+            value = dataset[group, element].value
+    except Exception:  # the library raises many kinds here; the plane then simply masks nothing
+        return -1
+    return value if isinstance(value, int) else -1

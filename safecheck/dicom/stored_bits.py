@@ -48,7 +48,7 @@ def stored_values(container: npt.NDArray[Any], header: PixelHeader, *, reason: s
         notes.append("stored bits do not begin at the lowest bit; samples were shifted down")
     upper = _upper_mask(header, shift)
     if upper and np.bitwise_or.reduce(container, axis=None) & upper:
-        notes.extend(_check_upper(container, stored, upper, signed=header.signed, reason=reason))
+        _check_upper(container, stored, upper, signed=header.signed, reason=reason)
     return _with_sign(container, header), tuple(notes)
 
 
@@ -74,18 +74,17 @@ def _upper_mask(header: PixelHeader, shift: int) -> int:
     return (above & ~planes) >> shift
 
 
-def _check_upper(container: npt.NDArray[Any], stored: int, upper: int, *, signed: bool, reason: str) -> tuple[str, ...]:
-    """Accept the upper bits as copies of the sign bit, or as zero; refuse anything else."""
+def _check_upper(container: npt.NDArray[Any], stored: int, upper: int, *, signed: bool, reason: str) -> None:
+    """Accept the upper bits as copies of the sign bit of every sample; refuse anything else.
+
+    Where some samples carry their sign upwards and others do not, the latter may as well be positive values beyond
+    the stored bits.
+    """
     if not signed:
         raise InputRefused(reason, f"values above {stored} bits in samples declared unsigned")
-    found = container & upper
     negative = (container >> (stored - 1)) & 1 == 1
-    extended = np.where(negative, found == upper, found == 0)
-    if not np.all(extended | (found == 0)):
+    if not np.array_equal(container & upper, np.where(negative, upper, 0)):
         raise InputRefused(reason, f"values outside the range of {stored} signed bits")
-    if np.all(extended):
-        return ()
-    return ("the sign was carried into the unused high bits of some samples only; read from the stored bits",)
 
 
 def _with_sign(container: npt.NDArray[Any], header: PixelHeader) -> Samples:
