@@ -111,7 +111,8 @@ def _levels(values: npt.NDArray[Any]) -> npt.NDArray[np.uint8]:
     """Display values 0 to 255 as whole levels."""
     if not (np.isfinite(values).all() and values.min() >= 0 and values.max() <= 255):
         raise ValueError("a display level lies outside 0 to 255")
-    return np.rint(values).astype(np.uint8)
+    levels: npt.NDArray[np.uint8] = np.rint(values).astype(np.uint8)
+    return levels
 
 
 def read_crop(folder: Path, name: str) -> Crop:

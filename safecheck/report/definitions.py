@@ -1,0 +1,64 @@
+"""What each figure of the record means: its formula, the pixels it is taken over, and the source of the formula."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from safecheck.report.formulas import FORMULAS
+
+__all__ = ["TERMS", "Definition", "definition_of", "label_of"]
+
+
+@dataclass(frozen=True, slots=True)
+class Definition:
+    """A measure as the record explains it."""
+
+    label: str
+    formula: str
+    source: str
+
+
+TERMS: tuple[tuple[str, str], ...] = (
+    ("Error", "after minus before, in the unit of the image; never the other way round"),
+    (
+        "Candidate",
+        "one codec at one asked ratio, or the copies that an archive delivered; only proposed candidates decide the "
+        "exit code, those for context are shown beside them",
+    ),
+    (
+        "Bases of a ratio",
+        "bits stored: pixels × channels × bits stored ÷ 8; bits allocated: the same with bits allocated; content: the "
+        "first, content pixels only; lossless: bytes of the smaller of JPEG-LS and JPEG 2000 5/3; now: bytes as they lie "
+        "in the archive. The bytes after are those of the code stream alone",
+    ),
+    ("Content", "pixels that are not padding and, where the rule of the modality says so, not surrounding air"),
+    ("Patch", "complete window of 8×8 pixels on a fixed grid from (0, 0), with at least half content"),
+    ("Window", "a display window that turns values into display levels from 0 to 255, here unrounded"),
+    (
+        "Group of like images",
+        "images that a policy would treat alike: modality, body part, class of slice thickness, kernel",
+    ),
+    (
+        "Over-compressed control",
+        "a recompression far beyond every candidate: a limit that it meets as well cannot tell damage",
+    ),
+    (
+        "Bound",
+        "exact one-sided 95 % upper bound (Clopper and Pearson 1934) on the share of patients with an exceedance; stands "
+        "only where studies were drawn at random",
+    ),
+    ("Percentiles", "over frames, with linear interpolation between the two nearest"),
+)
+"""Words of the record, in the order in which they are explained."""
+
+
+def definition_of(measure: str) -> Definition | None:
+    """Return the definition of a measure by its name in the tables, or None for a name without one."""
+    known = FORMULAS.get(measure)
+    return Definition(*known) if known else None
+
+
+def label_of(measure: str) -> str:
+    """Return how the record names a measure; a name without a label stands with its words apart."""
+    known = FORMULAS.get(measure)
+    return known[0] if known else measure.replace("_", " ")

@@ -1,0 +1,229 @@
+"""Vector drawings: error against achieved ratio, and bytes as bars. Curves differ by marker and dash, not by colour."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from reportlab.graphics.shapes import Circle, Drawing, Group, Line, Polygon, PolyLine, Rect, String
+
+from safecheck.report.blocks import Bars, Bound, Chart, Point, Series
+from safecheck.report.theme import (
+    ACCENT,
+    HAIR,
+    INK,
+    LIGHT,
+    MEDIUM,
+    MID,
+    REGULAR,
+    RULE,
+    WHITE,
+    fit_text,
+    load_fonts,
+    printable,
+    text_width,
+)
+
+__all__ = ["bars_drawing", "chart_drawing", "nice_ticks", "ratio_ticks"]
+
+_SMALL = 7.0
+_DASHES: tuple[tuple[float, ...] | None, ...] = (None, (4, 2), (1.4, 1.6), (7, 2, 1.5, 2), (2.5, 1.2))
+_GREYS = (INK, ACCENT, MID, INK, ACCENT)
+_RATIOS = (1, 1.5, 2, 3, 4, 5, 6, 8, 10, 15, 20, 30, 40, 60, 80, 100, 150, 200, 300, 400, 600, 800, 1000)
+
+
+@dataclass(frozen=True, slots=True)
+class _Scale:
+    """Maps values to points, evenly or by logarithm."""
+
+    low: float
+    high: float
+    start: float
+    end: float
+    logarithmic: bool = False
+
+    def at(self, value: float) -> float:
+        """Position of a value."""
+        low, high = self.low, self.high
+        if self.logarithmic:
+            low, high, value = math.log(low), math.log(high), math.log(value)
+        return self.start + (value - low) / (high - low) * (self.end - self.start)
+
+
+def nice_ticks(high: float, about: int = 5) -> list[float]:
+    """Return ticks from 0 to at least `high` in steps of 1, 2, 2.5 or 5 times a power of ten."""
+    if not high > 0:
+        return [0.0, 1.0]
+    raw = high / about
+    power = 10.0 ** math.floor(math.log10(raw))
+    step = next(factor * power for factor in (1, 2, 2.5, 5, 10) if factor * power >= raw * (1 - 1e-9))
+    return [step * index for index in range(math.ceil(high / step - 1e-9) + 1)]
+
+
+def ratio_ticks(low: float, high: float, width: float, apart: float = 17.0) -> list[float]:
+    """Return the round ratios between two, none closer on the logarithmic axis than `apart` points."""
+    scale = _Scale(low, high, 0, width, logarithmic=True)
+    kept: list[float] = []
+    for ratio in _RATIOS:
+        if low <= ratio <= high and (not kept or scale.at(ratio) - scale.at(kept[-1]) >= apart):
+            kept.append(float(ratio))
+    return kept or [low]
+
+
+def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
+    """Draw one chart: title and key above, axes, declared limits, curves with their spread."""
+    load_fonts()
+    drawing = Drawing(width, height)
+    keys = _key(chart.series, width)
+    top = height - 14 - 11 * len(keys) - 4
+    highest = max(max(point.y, point.high or 0, point.worst or 0) for item in chart.series for point in item.points)
+    ticks = nice_ticks(max([highest, *(bound.value for bound in _near(chart, highest))]))
+    labels = _tick_labels(ticks)
+    left = max(text_width(label, REGULAR, _SMALL) for label in labels) + 8
+    ratios = [point.x for item in chart.series for point in item.points]
+    x = _Scale(min(ratios) / 1.12, max(ratios) * 1.12, left, width - 6, logarithmic=True)
+    y = _Scale(0, ticks[-1], 27, top - 10)
+    drawing.add(String(0, height - 9, printable(chart.title), fontName=MEDIUM, fontSize=8.4, fillColor=INK))
+    _draw_keys(drawing, chart.series, keys, height - 22)
+    drawing.add(String(0, top - 3, printable(chart.y_title), fontName=REGULAR, fontSize=_SMALL, fillColor=MID))
+    _axes(drawing, chart, x, y, list(zip(ticks, labels, strict=True)), width)
+    for bound in _near(chart, highest):
+        _bound(drawing, x, y.at(bound.value), bound.text)
+    for index, item in enumerate(chart.series):
+        shift = 4.2 * (index - (len(chart.series) - 1) / 2)
+        _curve(drawing, item.points, x, y, index, shift)
+    return drawing
+
+
+def _near(chart: Chart, highest: float) -> list[Bound]:
+    """Limits near enough to the values that drawing them leaves the curves readable."""
+    return [bound for bound in chart.bounds if 0 < bound.value <= 2.5 * highest]
+
+
+def _tick_labels(ticks: Sequence[float]) -> list[str]:
+    """Ticks with equal decimals."""
+    step = ticks[1] - ticks[0]
+    places = max(0, -math.floor(math.log10(step) + 1e-9) + (1 if f"{step:.1e}".startswith("2.5") else 0))
+    return [f"{tick:,.{places}f}" for tick in ticks]
+
+
+def _axes(
+    drawing: Drawing, chart: Chart, x: _Scale, y: _Scale, ticks: Sequence[tuple[float, str]], width: float
+) -> None:
+    """Grid lines, ticks and the title of the axis of ratios."""
+    for value, label in ticks:
+        at = y.at(value)
+        colour = INK if value == 0 else HAIR
+        drawing.add(Line(x.start, at, x.end, at, strokeColor=colour, strokeWidth=0.6 if value == 0 else 0.35))
+        drawing.add(_label(label, x.start - 4, at - 2.4, "end"))
+    for ratio in ratio_ticks(x.low, x.high, x.end - x.start):
+        at = x.at(ratio)
+        drawing.add(Line(at, y.start, at, y.start - 3, strokeColor=INK, strokeWidth=0.5))
+        drawing.add(_label(f"{ratio:g}", at, y.start - 11, "middle"))
+    title = fit_text(chart.x_title, REGULAR, _SMALL, width)
+    drawing.add(_label(title, x.end, 4, "end", MID))
+
+
+def _label(text: str, x: float, y: float, anchor: str, colour: object = INK) -> String:
+    """Small text."""
+    return String(x, y, text, fontName=REGULAR, fontSize=_SMALL, textAnchor=anchor, fillColor=colour)
+
+
+def _bound(drawing: Drawing, x: _Scale, at: float, text: str) -> None:
+    """A declared limit, named on its line."""
+    drawing.add(Line(x.start, at, x.end, at, strokeColor=INK, strokeWidth=0.7, strokeDashArray=[1, 2]))
+    drawing.add(String(x.start + 3, at + 2.5, text, fontName=LIGHT, fontSize=_SMALL, fillColor=INK))
+
+
+def _curve(drawing: Drawing, points: Sequence[Point], x: _Scale, y: _Scale, index: int, shift: float) -> None:
+    """One codec: line through the medians, spread bars, the largest, markers."""
+    colour = _GREYS[index % len(_GREYS)]
+    places = [(x.at(point.x) + shift, y.at(point.y)) for point in points]
+    if len(places) > 1:
+        flat = [part for place in places for part in place]
+        drawing.add(PolyLine(flat, strokeColor=colour, strokeWidth=0.9, strokeDashArray=_dash(index)))
+    for point, (at, middle) in zip(points, places, strict=True):
+        if point.low is not None and point.high is not None:
+            low, high = y.at(point.low), y.at(point.high)
+            drawing.add(Line(at, low, at, high, strokeColor=colour, strokeWidth=0.7))
+            for end in (low, high):
+                drawing.add(Line(at - 1.6, end, at + 1.6, end, strokeColor=colour, strokeWidth=0.7))
+        if point.worst is not None:
+            top = y.at(point.worst)
+            drawing.add(Line(at - 3, top, at + 3, top, strokeColor=colour, strokeWidth=1.3))
+        drawing.add(_marker(index, at, middle, colour))
+
+
+def _dash(index: int) -> list[float] | None:
+    """Dash pattern of a curve."""
+    dash = _DASHES[index % len(_DASHES)]
+    return list(dash) if dash else None
+
+
+def _marker(index: int, x: float, y: float, colour: object) -> Group:
+    """Filled circle, open square, filled triangle, open diamond, filled square."""
+    r = 2.4
+    kind = index % 5
+    fill = colour if kind in (0, 2, 4) else WHITE
+    drawn = {"fillColor": fill, "strokeColor": colour, "strokeWidth": 0.9}
+    if kind == 0:
+        return Group(Circle(x, y, r, **drawn))
+    if kind in (1, 4):
+        return Group(Rect(x - r, y - r, 2 * r, 2 * r, **drawn))
+    if kind == 2:
+        return Group(Polygon([x - r * 1.2, y - r, x + r * 1.2, y - r, x, y + r * 1.3], **drawn))
+    return Group(Polygon([x - r * 1.3, y, x, y + r * 1.3, x + r * 1.3, y, x, y - r * 1.3], **drawn))
+
+
+def _key(series: Sequence[Series], width: float) -> list[list[int]]:
+    """Which entries of the key stand on which line."""
+    lines: list[list[int]] = [[]]
+    used = 0.0
+    for index, item in enumerate(series):
+        need = _key_width(item)
+        if lines[-1] and used + need > width:
+            lines.append([])
+            used = 0.0
+        lines[-1].append(index)
+        used += need
+    return lines
+
+
+def _key_width(item: Series) -> float:
+    """Sample, gap and name."""
+    return 36 + text_width(printable(item.name), REGULAR, _SMALL)
+
+
+def _draw_keys(drawing: Drawing, series: Sequence[Series], lines: Sequence[Sequence[int]], top: float) -> None:
+    """Samples of line and marker with the names."""
+    for number, line in enumerate(lines):
+        at, y = 0.0, top - 11 * number
+        for index in line:
+            colour = _GREYS[index % len(_GREYS)]
+            dash = _dash(index)
+            drawing.add(Line(at, y + 2.4, at + 20, y + 2.4, strokeColor=colour, strokeWidth=0.9, strokeDashArray=dash))
+            drawing.add(_marker(index, at + 10, y + 2.4, colour))
+            drawing.add(_label(printable(series[index].name), at + 24, y, "start"))
+            at += _key_width(series[index])
+
+
+def bars_drawing(bars: Bars, width: float) -> Drawing:
+    """Draw bars on one scale from zero: open ones are before, filled ones after."""
+    load_fonts()
+    line, gap = 11.5, 8.0
+    names = min(max(text_width(printable(bar.label), REGULAR, 7.4) for bar in bars.bars) + 8, width * 0.36)
+    largest = max(bar.value for bar in bars.bars) or 1.0
+    room = width - names - max(text_width(bar.text, REGULAR, 7.4) for bar in bars.bars) - 8
+    height = line * len(bars.bars) + gap
+    drawing = Drawing(width, height)
+    for index, bar in enumerate(bars.bars):
+        y = height - gap / 2 - line * (index + 1) + 2
+        size = max(bar.value / largest * room, 0.8)
+        label = fit_text(bar.label, REGULAR, 7.4, names - 6)
+        drawing.add(String(0, y + 1.4, label, fontName=REGULAR, fontSize=7.4, fillColor=INK))
+        fill = WHITE if bar.before else MID
+        drawing.add(Rect(names, y, size, 7.4, fillColor=fill, strokeColor=INK, strokeWidth=0.5))
+        drawing.add(String(names + size + 5, y + 1.4, bar.text, fontName=REGULAR, fontSize=7.4, fillColor=INK))
+    drawing.add(Line(names, gap / 2 - 1, names, height - gap / 2 + 1, strokeColor=RULE, strokeWidth=0.5))
+    return drawing

@@ -1,0 +1,132 @@
+"""Labels, formulas and sources of the measures by their name in the tables."""
+
+from __future__ import annotations
+
+from types import MappingProxyType
+
+__all__ = ["FORMULAS"]
+
+_STATED = "definition stated here"
+_WANG = "Wang, Bovik, Sheikh and Simoncelli, IEEE Trans. Image Process. 13 (2004) 600"
+_COMMON = "common definition"
+_E = "e = after − before"
+
+FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
+    {
+        "bias_frame": ("Mean error, frame", f"Σ e ÷ n over all pixels; {_E}", _COMMON),
+        "bias_content": ("Mean error, content", f"Σ e ÷ n over content; {_E}", _COMMON),
+        "rmse_frame": ("RMSE, frame", "√(Σ e² ÷ n) over all pixels", _COMMON),
+        "rmse_content": ("RMSE, content", "√(Σ e² ÷ n) over content", _COMMON),
+        "mean_absolute_frame": ("Mean absolute error, frame", "Σ |e| ÷ n over all pixels", _COMMON),
+        "mean_absolute_content": ("Mean absolute error, content", "Σ |e| ÷ n over content", _COMMON),
+        "max_frame": ("Largest error, frame", "max |e| over all pixels", _COMMON),
+        "max_content": ("Largest error, content", "max |e| over content", _COMMON),
+        "p999_frame": (
+            "99.9th percentile of error, frame",
+            "99.9th percentile of |e| over all pixels, from 1,000 pixels on",
+            _STATED,
+        ),
+        "p999_content": (
+            "99.9th percentile of error, content",
+            "99.9th percentile of |e| over content, from 1,000 pixels on",
+            _STATED,
+        ),
+        "psnr_peak_bits_db": (
+            "PSNR, frame, peak of stored bits",
+            "20 log10(peak ÷ RMSE) over all pixels; peak: span that the stored bits can express, in the unit of the error",
+            _COMMON,
+        ),
+        "psnr_peak_range_db": (
+            "PSNR, frame, peak of content range",
+            "20 log10(peak ÷ RMSE) over all pixels; peak: span of the original's content",
+            _COMMON,
+        ),
+        "psnr_peak_bits_content_db": (
+            "PSNR, content, peak of stored bits",
+            "20 log10(peak ÷ RMSE) over content; peak: span that the stored bits can express",
+            _COMMON,
+        ),
+        "psnr_peak_range_content_db": (
+            "PSNR, content, peak of content range",
+            "20 log10(peak ÷ RMSE) over content; peak: span of the original's content",
+            _COMMON,
+        ),
+        "worst_patch_rmse": (
+            "RMSE, worst patch 8×8",
+            "largest √(Σ e² ÷ 64) of the patches with at least half content",
+            _STATED,
+        ),
+        "patch_p95_rmse": ("RMSE, 95th percentile of patches", "95th percentile of the patches' RMSE", _STATED),
+        "patch_median_rmse": ("RMSE, median of patches", "median of the patches' RMSE", _STATED),
+        "worst_window_rmse": (
+            "RMSE, worst larger patch",
+            "as the worst patch, over a square whose side in mm stands in the table; needs a pixel spacing",
+            _STATED,
+        ),
+        "worst_outside_rmse": (
+            "RMSE, worst patch outside regions",
+            "largest RMSE of the patches clear of every drawn region",
+            _STATED,
+        ),
+        "edge_band_rmse": (
+            "RMSE, band at the content's edge",
+            "√(Σ e² ÷ n) over the band on both sides of the content's edge",
+            _STATED,
+        ),
+        "edge_band_max": ("Largest error, band at the content's edge", "max |e| over that band", _STATED),
+        "noise_sd": (
+            "Noise SD, original",
+            "local estimator, from the original only, not across edges; not evaluated below one stored unit",
+            _STATED,
+        ),
+        "noise_sd_after": ("Noise SD, after", "the same estimator at the places chosen in the original", _STATED),
+        "noise_sd_kept_percent": ("Noise SD kept", "100 × noise SD after ÷ noise SD of the original", _STATED),
+        "rmse_over_noise": (
+            "RMSE over noise SD",
+            "RMSE over content ÷ noise SD of the original; read beside the noise SD kept",
+            _STATED,
+        ),
+        "padding_changed": ("Padding pixels changed", "padding pixels of the original whose value changed", _STATED),
+        "became_padding": ("Pixels that became padding", "other pixels whose value lies in the padding range", _STATED),
+        "outside_flattened_max": ("Largest change made to air", "max |e| over air that was flattened", _STATED),
+        "ciede2000_mean": (
+            "Colour difference, mean",
+            "mean CIEDE2000 over content; sRGB and D65 assumed",
+            "ISO/CIE 11664-6",
+        ),
+        "ciede2000_p95": (
+            "Colour difference, 95th percentile",
+            "95th percentile of CIEDE2000 over content; sRGB and D65 assumed",
+            "ISO/CIE 11664-6",
+        ),
+        "ciede2000_max": (
+            "Colour difference, largest",
+            "largest CIEDE2000 over content; sRGB and D65 assumed",
+            "ISO/CIE 11664-6",
+        ),
+        "ssim": (
+            "SSIM",
+            "mean of the SSIM map of display levels at the window named, over content not clipped in the original; "
+            "Gaussian 11×11, σ = 1.5, K1 = 0.01, K2 = 0.03, L = 255, valid part only",
+            _WANG,
+        ),
+        "ssim_p05": ("SSIM, 5th percentile", "5th percentile of the same map", _WANG),
+        "ssim_lowest": ("SSIM, least", "least value of the same map", _WANG),
+        "share_clipped_percent": (
+            "Content clipped",
+            "share of content whose display level is at an end of the window in the original",
+            _STATED,
+        ),
+        "changed_5_levels_percent": (
+            "Content changed by 5 levels",
+            "share of content whose display level moved by 5 of 255 or more at the window named",
+            _STATED,
+        ),
+        "max_levels": ("Largest change of display level", "largest move of the display level over content", _STATED),
+        "rmse": ("RMSE, region", "√(Σ w e² ÷ Σ w), w the share of each pixel inside the region", _COMMON),
+        "bias": ("Mean error, region", "Σ w e ÷ Σ w, w the share of each pixel inside the region", _COMMON),
+        "mean_absolute": ("Mean absolute error, region", "Σ w |e| ÷ Σ w", _COMMON),
+        "max": ("Largest error, region", "max |e| over pixels whose centre is inside", _COMMON),
+    }
+)
+"""Name -> label, formula with its domain, source."""

@@ -1,0 +1,193 @@
+"""Each kind of block -> what the page layout flows."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any, TypeAlias
+
+from reportlab.platypus import CondPageBreak, HRFlowable, KeepTogether, Paragraph, Spacer
+from reportlab.platypus import Table as PlatypusTable
+from reportlab.platypus.flowables import Flowable
+
+from safecheck.report.blocks import (
+    Bars,
+    Block,
+    Charts,
+    Contents,
+    Facts,
+    Heading,
+    Numbered,
+    Places,
+    Prose,
+    Signatures,
+    Table,
+    Title,
+)
+from safecheck.report.figures import bars_drawing, chart_drawing
+from safecheck.report.sketches import cards_flowables
+from safecheck.report.tables import table_flowable
+from safecheck.report.theme import ACCENT, INK, RULE, TEXT_WIDTH, markup, style
+
+__all__ = ["ContentsEntry", "flowables_of"]
+
+ContentsEntry: TypeAlias = tuple[str, str, int]
+"""Key of the bookmark, title, page."""
+
+_PLAIN = [
+    ("VALIGN", (0, 0), (-1, -1), "TOP"),
+    ("LEFTPADDING", (0, 0), (-1, -1), 0),
+    ("RIGHTPADDING", (0, 0), (-1, -1), 6),
+    ("TOPPADDING", (0, 0), (-1, -1), 0),
+    ("BOTTOMPADDING", (0, 0), (-1, -1), 0),
+]
+
+
+def flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowable]:
+    """Lay out one block; `contents` is what the list of contents shows."""
+    match block:
+        case Title():
+            return _title(block)
+        case Heading(text):
+            return [CondPageBreak(80), _paragraph(text, "heading")]
+        case Prose():
+            return [_prose(block)]
+        case Numbered():
+            return _numbered(block)
+        case Facts():
+            return [_facts(block)]
+        case Table():
+            return _table(block)
+        case Charts():
+            return [_charts(block)]
+        case Bars():
+            return [KeepTogether([_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH)])]
+        case Places():
+            return cards_flowables(block.cards)
+        case Signatures():
+            return [_signatures(block)]
+        case Contents():
+            return _contents(contents)
+
+
+def _paragraph(text: str, name: str, **more: Any) -> Paragraph:  # noqa: ANN401 - reportlab's own options
+    """A paragraph of plain text."""
+    return Paragraph(markup(text), style(name), **more)
+
+
+def _plain_table(rows: list[list[Any]], widths: list[float], extra: Sequence[tuple[Any, ...]] = ()) -> PlatypusTable:
+    """A table without rules, to set things side by side."""
+    table = PlatypusTable(rows, colWidths=widths, hAlign="LEFT")
+    table.setStyle([*_PLAIN, *extra])
+    return table
+
+
+def _title(block: Title) -> list[Flowable]:
+    """Head of the first page."""
+    count = len(block.facts)
+    labels = [_paragraph(label, "small-label") for label, _ in block.facts]
+    values = [_paragraph(value, "value") for _, value in block.facts]
+    facts = _plain_table([labels, values], [TEXT_WIDTH / count] * count)
+    sealed = [_paragraph("SHA-256 of the record", "small-label"), _paragraph(block.record_sha256, "hash")]
+    head: list[Flowable] = [_paragraph(block.title, "title")]
+    if block.subject:
+        head.append(_paragraph(block.subject, "subject"))
+    return [
+        *head,
+        Spacer(1, 8),
+        HRFlowable(width="100%", thickness=1.2, color=ACCENT, spaceBefore=0, spaceAfter=7),
+        facts,
+        Spacer(1, 5),
+        *sealed,
+        HRFlowable(width="100%", thickness=0.4, color=RULE, spaceBefore=7, spaceAfter=9),
+    ]
+
+
+def _prose(block: Prose) -> Flowable:
+    """A paragraph; a caution has a bar at its side."""
+    paragraph = _paragraph(block.text, block.style)
+    if block.style != "caution":
+        return paragraph
+    bar = _plain_table([[paragraph]], [TEXT_WIDTH], [("LINEBEFORE", (0, 0), (0, -1), 1.6, INK)])
+    bar.spaceBefore, bar.spaceAfter = 3, 7
+    return bar
+
+
+def _numbered(block: Numbered) -> list[Flowable]:
+    """Numbered sentences."""
+    return [
+        _paragraph(text, "numbered", bulletText=f"{number}") for number, text in enumerate(block.items, block.first)
+    ]
+
+
+def _facts(block: Facts) -> Flowable:
+    """Labels on the left, sentences on the right."""
+    rows = [[_paragraph(label, "label"), [_paragraph(line, "body") for line in lines]] for label, lines in block.pairs]
+    return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
+
+
+def _table(block: Table) -> list[Flowable]:
+    """Caption, table and note; at least the head and a few rows stay together."""
+    flowables: list[Flowable] = [CondPageBreak(96)]
+    if block.caption:
+        flowables.append(_paragraph(block.caption, "caption"))
+    flowables.append(table_flowable(block))
+    if block.note:
+        flowables.append(_paragraph(block.note, "note"))
+    return flowables
+
+
+def _charts(block: Charts) -> Flowable:
+    """Charts side by side above their caption."""
+    gap = 18.0
+    width = (TEXT_WIDTH - gap) / 2
+    drawings = [chart_drawing(chart, width, 172) for chart in block.charts]
+    cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
+    side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])
+    parts: list[Flowable] = [Spacer(1, 4), side_by_side, Spacer(1, 3)]
+    return KeepTogether([*parts, _paragraph(block.caption, "note")] if block.caption else parts)
+
+
+def _signatures(block: Signatures) -> Flowable:
+    """Blank blocks, two by two."""
+    half = (TEXT_WIDTH - 18) / 2
+    cells = [_signature(block.head, role, half) for role in block.roles]
+    rows = [[cells[i], "", cells[i + 1] if i + 1 < len(cells) else ""] for i in range(0, len(cells), 2)]
+    return _plain_table(
+        rows, [half, 18, half], [("RIGHTPADDING", (0, 0), (-1, -1), 0), ("BOTTOMPADDING", (0, 0), (-1, -1), 20)]
+    )
+
+
+def _signature(head: str, role: str, width: float) -> PlatypusTable:
+    """One block: room for an opinion, name, date and signature."""
+    rows = [[_paragraph(head, "card-head"), ""], [_paragraph(role, "small-label"), ""]]
+    heights: list[float | None] = [None, None]
+    for label, height in (("", 26), ("", 22), ("", 22), ("", 22), ("Name", 26), ("Date", 26), ("Signature", 34)):
+        rows.append([_paragraph(label, "small-label"), ""])
+        heights.append(height)
+    table = PlatypusTable(rows, colWidths=[44, width - 44], rowHeights=heights, hAlign="LEFT")
+    lines = [("LINEBELOW", (0, row), (-1, row), 0.35, RULE) for row in range(2, 9)]
+    table.setStyle(
+        [
+            *_PLAIN,
+            ("LINEABOVE", (0, 0), (-1, 0), 0.9, INK),
+            ("TOPPADDING", (0, 0), (-1, 0), 5),
+            ("VALIGN", (0, 2), (-1, -1), "BOTTOM"),
+            *lines,
+        ]
+    )
+    return table
+
+
+def _contents(entries: Sequence[ContentsEntry]) -> list[Flowable]:
+    """Sections with their pages."""
+    rows: list[list[Any]] = []
+    for key, title, page in entries:
+        link = Paragraph(f'<a href="#{key}">{markup(title)}</a>', style("contents"))
+        rows.append([link, Paragraph(str(page), style("contents-page"))])
+    rules = [
+        ("LINEBELOW", (0, 0), (-1, -1), 0.25, RULE),
+        ("TOPPADDING", (0, 0), (-1, -1), 1.6),
+        ("BOTTOMPADDING", (0, 0), (-1, -1), 2.2),
+    ]
+    table = _plain_table(rows, [TEXT_WIDTH - 40, 40], [*rules, ("RIGHTPADDING", (0, 0), (-1, -1), 0)])
+    return [CondPageBreak(120), _paragraph("In this record", "heading"), table]

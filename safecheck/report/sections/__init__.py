@@ -1,0 +1,1 @@
+"""The parts of the record, one file each: from the record's entries to plain blocks."""

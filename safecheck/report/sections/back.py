@@ -1,0 +1,154 @@
+"""The last pages: definitions, versions and selftest, the plan as read, what to keep, signatures."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import Any
+
+from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Signatures, Table
+from safecheck.report.definitions import TERMS, definition_of
+from safecheck.report.numbers import count, rounded_time
+from safecheck.report.sections.view import View, dash, rest_sentence
+
+__all__ = ["definitions", "keeping", "plan", "signatures", "versions"]
+
+PLAN_LINES = 200
+ROLES = ("Responsible clinician", "Medical physicist", "PACS administrator", "Keeper of the change record")
+
+
+def definitions(view: View) -> Section:
+    """The section Definitions: those of the measures that this record shows."""
+    record = view.record
+    names = dict.fromkeys(
+        [item.measure for item in record.figures]
+        + [item.measure for item in record.outcomes]
+        + [item.measure for item in record.worst_places]
+    )
+    terms = tuple(Row((term, text)) for term, text in TERMS)
+    blocks: list[Block] = [Table((Column("Word"), Column("Meaning")), terms)]
+    rows = []
+    for name in names:
+        known = definition_of(name)
+        if known:
+            rows.append(Row((f"{known.label} ({name})", known.formula, known.source)))
+    if rows:
+        columns = (Column("Measure"), Column("Formula and domain"), Column("Source"))
+        blocks += [Heading("Measures"), Table(columns, tuple(rows))]
+    return Section("Definitions", tuple(blocks))
+
+
+def versions(view: View) -> Section:
+    """The section Versions and selftest."""
+    record, run = view.record, view.run
+    programs = tuple(Row((name, version)) for name, version in sorted(record.versions.items()))
+    checks = tuple(
+        Row(
+            (
+                item.codec,
+                f"{item.library} {item.version}".strip(),
+                "yes" if item.available else "no",
+                {None: "not a reversible codec", True: "yes", False: "NO"}[item.reversible_exact],
+                dash(item.detail),
+            )
+        )
+        for item in record.selftest
+    )
+    columns = (
+        Column("Codec"),
+        Column("Library"),
+        Column("On this machine"),
+        Column("Reversible form exact"),
+        Column("Detail"),
+    )
+    facts = [
+        Row(("Started", f"{run.started:%Y-%m-%d %H:%M:%S %Z}")),
+        Row(("Finished", f"{run.finished:%Y-%m-%d %H:%M:%S %Z}")),
+        Row(("Workers", count(run.workers))),
+        *(Row((f"Time for {name}", rounded_time(seconds))) for name, seconds in sorted(run.seconds.items())),
+    ]
+    if run.system:
+        facts.insert(0, Row(("System", run.system)))
+    blocks: list[Block] = [Table((Column("Program or library"), Column("Version")), programs)]
+    if checks:
+        blocks += [Heading("Selftest of the codecs"), Table(columns, checks)]
+    blocks += [Heading("The run"), Table((Column("What"), Column("Value")), tuple(facts))]
+    blocks += _tables(view)
+    return Section("Versions and selftest", tuple(blocks))
+
+
+def _tables(view: View) -> list[Block]:
+    """Files of the dossier that the record covers by their hashes."""
+    if not view.record.tables:
+        return []
+    columns = (Column("File"), Column("Rows", number=True), Column("SHA-256"))
+    rows = tuple(Row((item.file, count(item.rows), item.sha256)) for item in view.record.tables)
+    return [Heading("Tables that the record covers"), Table(columns, rows)]
+
+
+def plan(view: View) -> Section:
+    """The section Plan as read."""
+    entry = view.record.plan
+    lines = [Row((path, value)) for path, value in _flat("", entry.content)]
+    blocks: tuple[Block, ...] = (
+        Prose(f"Read from the {entry.source}. SHA-256 of the plan: {entry.sha256}", "note"),
+        Table(
+            (Column("Key"), Column("Value as read")),
+            tuple(lines[:PLAN_LINES]),
+            note=rest_sentence(PLAN_LINES, len(lines), "all stand in record.json"),
+        ),
+    )
+    return Section("Plan as read", blocks)
+
+
+def _flat(path: str, value: Any) -> Iterator[tuple[str, str]]:  # noqa: ANN401 - the plan's own values
+    """Yield (dotted path, text) of every value."""
+    if isinstance(value, dict) and value:
+        for key, inner in value.items():
+            yield from _flat(f"{path}.{key}" if path else str(key), inner)
+    elif isinstance(value, list | tuple) and value:
+        for index, inner in enumerate(value):
+            yield from _flat(f"{path}[{index}]", inner)
+    else:
+        yield path, _plain(value)
+
+
+def _plain(value: Any) -> str:  # noqa: ANN401 - the plan's own values
+    """A value as the plan writes it."""
+    if value is None:
+        return "none"
+    if isinstance(value, bool):
+        return str(value).lower()
+    if isinstance(value, float):
+        return f"{value:g}"
+    return str(value) if value not in ("", [], (), {}) else "empty"
+
+
+def keeping(view: View) -> Section:
+    """The section What to keep."""
+    record = view.record
+    program = record.versions.get("safecheck", "")
+    keep = (
+        ("Originals", f"the {count(record.inputs.files)} files as they were read"),
+        ("Site key", f"the key whose short hash is {record.key_id}; without it pseudonyms cannot be recomputed"),
+        ("Plan", f"SHA-256 {record.plan.sha256[:16]}…"),
+        ("Versions", f"those listed under Versions and selftest{f', program version {program}' if program else ''}"),
+        ("Dossier", "the whole folder, with its seal"),
+        ("Hash of the record", f"{view.record_sha256[:16]}…, kept where the dossier is not"),
+    )
+    columns = (
+        Column("What to keep to recompute"),
+        Column("Which"),
+        Column("Where kept", blank=True),
+        Column("Until", blank=True),
+    )
+    rows = (*(Row((what, which, "", "")) for what, which in keep), Row(("Review of this decision", "date:", "", "")))
+    return Section("What to keep, and review", (Table(columns, rows),))
+
+
+def signatures(view: View) -> Section:
+    """The section Opinions: blank blocks for named roles."""
+    text = (
+        "Each signatory states an opinion of their own. A signature here neither alters the figures nor is asked for by "
+        f"this record, whose hash is {view.record_sha256[:16]}…"
+    )
+    return Section("Opinions", (Prose(text, "note"), Signatures("Opinion of the signatory", ROLES)), new_page=True)

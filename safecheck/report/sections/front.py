@@ -1,0 +1,200 @@
+"""The first pages: what was asked, what was run, the outcomes in words, the cautions in full."""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Sequence
+from typing import Any
+
+from safecheck.record.document import CandidateEntry, OutcomeEntry
+from safecheck.report.blocks import Block, Column, Contents, Facts, Heading, Numbered, Prose, Row, Table, Title
+from safecheck.report.numbers import bytes_text, count, figure, joined, plural, rounded_time
+from safecheck.report.sections.view import View
+from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, SHORT_CAUTION
+
+__all__ = ["front", "outcome_order", "ratio_groups"]
+
+LINES_ON_FIRST_PAGE = 14
+"""Outcomes shown on the first page; those outside come first, so that none of them is cut for one within."""
+
+
+def front(view: View) -> tuple[Block, ...]:
+    """Blocks of the first pages."""
+    return (
+        _title(view),
+        Facts((("Asked", _asked(view)), ("Run", _run(view)))),
+        *_outcomes(view),
+        *_cautions(view),
+        Contents(),
+    )
+
+
+def _title(view: View) -> Title:
+    """The head of the first page."""
+    change = view.change
+    facts = (
+        ("Change reference", change.get("reference") or "none given"),
+        ("Plan declared by", change.get("declared_by") or "the command line"),
+        ("on", change.get("declared_on") or "not stated"),
+        ("Run finished", f"{view.run.finished:%Y-%m-%d %H:%M} {view.run.finished.tzname() or ''}".strip()),
+    )
+    return Title(RECORD_TITLE, view.subject, facts, view.record_sha256)
+
+
+def _asked(view: View) -> tuple[str, ...]:
+    """What the plan asks."""
+    change, content = view.change, view.record.plan.content
+    lines = []
+    if change.get("compressed_copy"):
+        lines.append(
+            f"What recompression would do to: {change['compressed_copy']}, recompressed "
+            f"{change.get('compressed_when') or 'at a time not stated'}."
+        )
+    lines.append(_sample_line(content.get("sample")))
+    proposed = [item for item in view.candidates if item.status == "proposed"]
+    context = [item for item in view.candidates if item.status == "context"]
+    lines.append(f"Proposed: {joined(ratio_groups(proposed)) or 'nothing'}.")
+    if context:
+        lines.append(f"For context: {joined(ratio_groups(context))}.")
+    lines.append(_plan_line(view))
+    return tuple(line for line in lines if line)
+
+
+def _sample_line(sample: Any) -> str:  # noqa: ANN401 - a table of the plan as read
+    """How the studies were drawn."""
+    if not isinstance(sample, dict) or not sample.get("drawn"):
+        return ""
+    words = {"random": "at random", "consecutive": "consecutively", "chosen": "by choice"}
+    source = f" from: {sample['source']}" if sample.get("source") else ""
+    return f"Studies were drawn {words.get(str(sample['drawn']), sample['drawn'])}{source}."
+
+
+def ratio_groups(candidates: Sequence[CandidateEntry]) -> tuple[str, ...]:
+    """'jpeg2000 5:1, 8:1' as 'jpeg2000 at 5, 8 to 1', where the names say no more than codec and ratio."""
+    plain: dict[str, list[str]] = {}
+    for item in candidates:
+        ratio = f"{item.ratio_asked:g}" if item.ratio_asked is not None else ""
+        if item.candidate == f"{item.codec} {ratio}:1":
+            plain.setdefault(item.codec, []).append(ratio)
+        else:
+            plain.setdefault(item.candidate, [])
+    return tuple(f"{name} at {joined(ratios)}:1" if ratios else name for name, ratios in plain.items())
+
+
+def _plan_line(view: View) -> str:
+    """Where the plan came from, and when it was declared."""
+    plan, run = view.record.plan, view.run
+    source = "The plan is a file" if plan.source == "file" else "The plan is the command line"
+    when = {
+        "before the first results": "declared before the first results",
+        "after the first results": "FIRST SEEN AFTER RESULTS OF THE SAME INPUTS",
+        "not known": "and when it was declared is not known",
+    }[run.plan_declared]
+    return f"{source}, {when}; its hash begins {plan.sha256[:16]}."
+
+
+def _run(view: View) -> tuple[str, ...]:
+    """What was run."""
+    record, run = view.record, view.run
+    inputs = record.inputs
+    total = sum(item.bytes_now for item in record.strata)
+    files = (
+        f"{plural(inputs.files, 'file')} read: {count(inputs.assessed)} assessed, {count(inputs.excluded)} excluded, "
+        f"{count(inputs.refused)} refused."
+    )
+    images = (
+        f"{plural(inputs.frames_assessed, 'frame')} of {plural(inputs.series, 'series', 'series')}, "
+        f"{plural(inputs.studies, 'study', 'studies')} and {plural(inputs.patients, 'patient')}, in "
+        f"{plural(len(record.strata), 'group')} of like images ({bytes_text(total)} as they lie in the archive)."
+    )
+    delivered = record.delivered
+    copies = f"{plural(delivered.pairs, 'delivered copy', 'delivered copies')} matched." if delivered else ""
+    held = "Controls held." if record.controls_held else "CONTROLS WERE NOT HELD: the run is invalid."
+    time = f"{plural(run.workers, 'worker')}, {rounded_time(run.wall_time.total_seconds())}."
+    if run.sessions > 1:
+        time = f"{time} Stopped and resumed {plural(run.sessions - 1, 'time')}."
+    lines = (files, images, copies, f"{held} {time}")
+    return tuple(line for line in lines if line)
+
+
+def _outcomes(view: View) -> tuple[Block, ...]:
+    """One line per limit and proposed candidate, and the exit text."""
+    record = view.record
+    blocks: list[Block] = [Heading("Outcomes"), Prose(SHORT_CAUTION, "caution")]
+    lines = sorted((item for item in record.outcomes if item.status == "proposed"), key=outcome_order)
+    if lines:
+        blocks += [Prose(f"{_sentence_case(record.outcomes_text)}.", "strong"), _outcome_table(lines)]
+    else:
+        blocks.append(Prose(_sentence_case(record.outcomes_text or NO_LIMITS) + ".", "strong"))
+    blocks.append(Prose(f"Exit {record.exit_code}: {record.exit_text}", "outcome"))
+    more = [item for item in record.conditions if item.code != record.exit_code]
+    if more:
+        also = "; ".join(f"{item.code}, {item.text}" for item in more)
+        blocks.append(Prose(f"These hold as well: {also}.", "note"))
+    return tuple(blocks)
+
+
+def _sentence_case(text: str) -> str:
+    """Return the text with a capital first letter and without its full stop."""
+    return (text[:1].upper() + text[1:]).rstrip(".")
+
+
+def outcome_order(item: OutcomeEntry) -> int:
+    """Outside first, then not evaluated, then within."""
+    return ("outside declared limits", "not evaluated", "within declared limits").index(item.outcome)
+
+
+def _outcome_table(lines: Sequence[OutcomeEntry]) -> Table:
+    """The table of the first page."""
+    columns = (
+        Column("Limit"),
+        Column("Candidate"),
+        Column("Outcome"),
+        Column("Studies within"),
+        Column("Bound for patients not assessed"),
+    )
+    rows = [
+        Row(
+            (
+                f"{item.limit}: {item.side} {figure(item.bound)} {_unit(item.unit)}".rstrip(),
+                item.candidate,
+                _outcome_words(item),
+                f"{count(item.studies_within)} of {count(item.studies)}",
+                item.bound_text,
+            ),
+            strong=item.outcome == "outside declared limits",
+        )
+        for item in lines[:LINES_ON_FIRST_PAGE]
+    ]
+    return Table(columns, tuple(rows), note=_rest(lines[LINES_ON_FIRST_PAGE:]))
+
+
+def _rest(cut: Sequence[OutcomeEntry]) -> str:
+    """How many lines the first page leaves out, by outcome."""
+    if not cut:
+        return ""
+    counts = Counter(item.outcome for item in cut)
+    parts = joined([f"{number} {outcome}" for outcome, number in counts.items()])
+    return f"and {len(cut)} more ({parts}); all stand in the section Limits and outcomes."
+
+
+def _outcome_words(item: OutcomeEntry) -> str:
+    """The outcome, with the mark of a limit that tells nothing."""
+    if item.over_compressed_also_within:
+        return f"{item.outcome}; does not tell the over-compressed control apart"
+    return item.outcome
+
+
+def _unit(unit: str) -> str:
+    """A unit as printed; a quantity of dimension one has none."""
+    return "" if unit == "1" else unit
+
+
+def _cautions(view: View) -> tuple[Block, ...]:
+    """Cautions in full: those that always stand, then those that this run gives rise to."""
+    given = view.record.cautions
+    extra = tuple(text for text in given if text not in CAUTIONS)
+    blocks: list[Block] = [Heading("Cautions"), Numbered(CAUTIONS)]
+    if extra:
+        blocks += [Prose("Because of what this run held:", "strong"), Numbered(extra, first=len(CAUTIONS) + 1)]
+    return tuple(blocks)

@@ -1,0 +1,129 @@
+"""The ratio ledger: what each candidate saves, on every basis."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from safecheck.record.document import CandidateEntry, LedgerEntry, StratumEntry
+from safecheck.report.blocks import Bar, Bars, Block, Column, Heading, Prose, Row, Section, Table
+from safecheck.report.numbers import aligned, bytes_text, count, joined
+from safecheck.report.sections.view import View, names_with_status, rest_sentence
+from safecheck.wording import ANALYSIS_CODEC
+
+__all__ = ["ledger"]
+
+STRATA = 24
+
+_COLUMNS = (
+    Column("Candidate"),
+    Column("Frames", number=True),
+    Column("Code", "MB", number=True),
+    Column("Bits per pixel", "bits", number=True),
+    Column("total", "to 1", number=True, over="Bits stored"),
+    Column("least", "to 1", number=True, over="Bits stored"),
+    Column("largest", "to 1", number=True, over="Bits stored"),
+    Column("Bits allo-cated", "to 1", number=True),
+    Column("Content", "to 1", number=True),
+    Column("loss-less", "times", number=True, over="Smaller than"),
+    Column("now", "times", number=True, over="Smaller than"),
+)
+
+
+def ledger(view: View) -> Section:
+    """The section Ratio ledger."""
+    intro = (
+        "One code has another ratio on each basis. “10:1” says nothing until the basis is named: bits stored counts the "
+        "bits that hold values, bits allocated the bits of the file, content only pixels that are neither padding nor "
+        "air. What an archive gains stands in the last two columns: against the smallest reversible code, and against "
+        "the bytes that lie there now."
+    )
+    blocks: list[Block] = [Prose(intro)]
+    if any(not item.archive_can_write for item in view.candidates):
+        blocks.append(Prose(f"* {ANALYSIS_CODEC}. Codecs that an archive can write stand first.", "note"))
+    strata = view.record.strata
+    for stratum in strata[:STRATA]:
+        blocks += _of_stratum(view, stratum)
+    rest = rest_sentence(STRATA, len(strata), "their ledgers stand in record.json")
+    if rest:
+        blocks.append(Prose(rest, "note"))
+    blocks += _reached(view)
+    return Section("Ratio ledger", tuple(blocks))
+
+
+def _of_stratum(view: View, stratum: StratumEntry) -> list[Block]:
+    """Bars and table of one group."""
+    found = [
+        (item, view.ledger[item.candidate, stratum.stratum])
+        for item in view.candidates
+        if (item.candidate, stratum.stratum) in view.ledger
+    ]
+    if not found:
+        return []
+    names = _starred([item for item, _ in found])
+    entries = [entry for _, entry in found]
+    blocks: list[Block] = [Heading(f"Ledger: {stratum.stratum}"), *_bars(names, entries, stratum)]
+    cells = zip(
+        names,
+        [count(item.frames) for item in entries],
+        aligned([item.code_bytes / 1e6 for item in entries]),
+        aligned([item.bits_per_pixel for item in entries], 2),
+        aligned([item.ratio_bits_stored for item in entries], 2),
+        aligned([item.ratio_bits_stored_least for item in entries], 2),
+        aligned([item.ratio_bits_stored_largest for item in entries], 2),
+        aligned([item.ratio_bits_allocated for item in entries], 2),
+        aligned([item.ratio_content for item in entries], 2),
+        aligned([item.times_smaller_than_lossless for item in entries], 2),
+        aligned([item.times_smaller_than_now for item in entries], 2),
+        strict=True,
+    )
+    blocks.append(Table(_COLUMNS, tuple(Row(row) for row in cells), note=_reversible(entries)))
+    return blocks
+
+
+def _starred(candidates: Sequence[CandidateEntry]) -> list[str]:
+    """Mark analysis codecs with a star."""
+    names = names_with_status(candidates)
+    return [name if item.archive_can_write else f"{name} *" for name, item in zip(names, candidates, strict=True)]
+
+
+def _bars(names: Sequence[str], entries: Sequence[LedgerEntry], stratum: StratumEntry) -> list[Block]:
+    """Bytes before and after on one scale, where every bar counts the same frames."""
+    if any(item.frames != stratum.frames for item in entries):
+        return []
+    bars = [Bar("as they lie now", stratum.bytes_now, bytes_text(stratum.bytes_now), before=True)]
+    if stratum.lossless_bytes is not None:
+        text = bytes_text(stratum.lossless_bytes)
+        bars.append(Bar("smallest reversible", stratum.lossless_bytes, text, before=True))
+    pairs = zip(names, entries, strict=True)
+    bars += [Bar(name, item.code_bytes, bytes_text(item.code_bytes)) for name, item in pairs]
+    return [Bars(tuple(bars), f"Bytes of the same {count(stratum.frames)} frames")]
+
+
+def _reversible(entries: Sequence[LedgerEntry]) -> str:
+    """Which codec wrote the reversible code that savings are counted against."""
+    codecs = max((item.lossless_codecs for item in entries), key=lambda table: sum(table.values()))
+    if not codecs:
+        return "No reversible code was written for these frames."
+    parts = joined([f"{codec} for {count(frames)} frames" for codec, frames in sorted(codecs.items())])
+    return (
+        f"Smallest reversible code: {parts}. Ratios are of totals over frames; least and largest are of single frames."
+    )
+
+
+def _reached(view: View) -> list[Block]:
+    """Where the ratio asked for was not met."""
+    rows = [
+        Row((item.candidate, reached, count(frames), count(item.frames)))
+        for item in view.candidates
+        for reached, frames in sorted(item.reached.items())
+        if reached != "asked"
+    ]
+    if not rows:
+        return [Prose("Every frame reached the ratio that was asked for.", "note")]
+    columns = (
+        Column("Candidate"),
+        Column("What was reached instead of the ratio asked for"),
+        Column("Frames", number=True),
+        Column("of", number=True),
+    )
+    return [Heading("Ratios not reached"), Table(columns, tuple(rows))]

@@ -1,0 +1,258 @@
+"""Groups of like images, and in each the figures of every candidate with their curves."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from safecheck.record.document import CandidateEntry, FigureEntry, StratumEntry
+from safecheck.report.blocks import (
+    Block,
+    Bound,
+    Chart,
+    Charts,
+    Column,
+    Heading,
+    Point,
+    Prose,
+    Row,
+    Section,
+    Series,
+    Table,
+)
+from safecheck.report.definitions import label_of
+from safecheck.report.numbers import NONE, aligned, count
+from safecheck.report.sections.view import View, names_with_status, rest_sentence, stratum_line
+from safecheck.wording import SHORT_CAUTION
+
+__all__ = ["strata"]
+
+STRATA_IN_DETAIL = 24
+PER_TABLE = 5
+"""Candidates per table of further measures: two columns each."""
+
+_MAIN = ("rmse_content", "max_content", "worst_patch_rmse")
+_WINDOW = ("ssim", "changed_5_levels_percent")
+
+
+def strata(view: View) -> tuple[Section, ...]:
+    """One section that lists the groups, and one per group."""
+    shown = view.record.strata[:STRATA_IN_DETAIL]
+    return (_overview(view), *(_detail(view, stratum) for stratum in shown))
+
+
+def _overview(view: View) -> Section:
+    """The table of groups."""
+    columns = (
+        Column("Group of like images"),
+        Column("Unit of errors"),
+        Column("Patients", number=True),
+        Column("Studies", number=True),
+        Column("Series", number=True),
+        Column("Frames", number=True),
+        Column("Bytes now", "MB", number=True),
+        Column("Best reversible code", "MB", number=True),
+    )
+    entries = view.record.strata
+    now = aligned([item.bytes_now / 1e6 for item in entries])
+    least = aligned([None if item.lossless_bytes is None else item.lossless_bytes / 1e6 for item in entries])
+    rows = tuple(
+        Row(
+            (
+                item.stratum,
+                item.unit,
+                count(item.patients),
+                count(item.studies),
+                count(item.series),
+                count(item.frames),
+                now[index],
+                least[index],
+            )
+        )
+        for index, item in enumerate(entries)
+    )
+    note = "Studies, not frames, count as independent. A patient may stand in several groups."
+    rest = rest_sentence(STRATA_IN_DETAIL, len(entries), "their figures stand in record.json")
+    blocks: tuple[Block, ...] = (Table(columns, rows, note=note),)
+    if not entries:
+        blocks = (Prose("No image was assessed."),)
+    if rest:
+        blocks = (*blocks, Prose(f"The {STRATA_IN_DETAIL} first groups follow in detail, {rest}.", "note"))
+    return Section("Groups of like images", blocks)
+
+
+def _detail(view: View, stratum: StratumEntry) -> Section:
+    """Figures and curves of one group."""
+    candidates = view.in_stratum(stratum)
+    blocks: list[Block] = [Prose(stratum_line(stratum)), Prose(SHORT_CAUTION, "caution")]
+    if not candidates:
+        return Section(stratum.stratum, (*blocks, Prose("No candidate has figures in this group.")))
+    charts = tuple(_charts(view, stratum, candidates))
+    if charts:
+        caption = (
+            "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio "
+            "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic."
+        )
+        blocks.append(Charts(charts, caption))
+    blocks += [_errors(view, stratum, candidates), *_windows(view, stratum, candidates)]
+    blocks += _further(view, stratum, candidates)
+    return Section(stratum.stratum, tuple(blocks))
+
+
+def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Chart]:
+    """Error against achieved ratio, for the content's RMSE and the worst patch."""
+    charts = []
+    for measure in ("rmse_content", "worst_patch_rmse"):
+        series: dict[str, list[Point]] = {}
+        for item in candidates:
+            point = _point(view, stratum.stratum, item.candidate, measure)
+            if point:
+                series.setdefault(_codec_name(item), []).append(point)
+        drawn = tuple(Series(name, tuple(sorted(points, key=lambda p: p.x))) for name, points in series.items())
+        if drawn:
+            title = label_of(measure)
+            y_title = f"{title}, {stratum.unit}"
+            charts.append(Chart(title, "Achieved ratio, to 1", y_title, drawn, _bounds(view, stratum, measure)))
+    return charts
+
+
+def _codec_name(item: CandidateEntry) -> str:
+    """Name of a curve: the codec, with settings that differ from the default kept apart."""
+    if item.role == "delivered":
+        return "delivered copies"
+    _, comma, settings = item.candidate.partition(", ")
+    return f"{item.codec}{comma}{settings}"
+
+
+def _point(view: View, stratum: str, candidate: str, measure: str) -> Point | None:
+    """One candidate on the chart."""
+    ledger = view.ledger.get((candidate, stratum))
+    found = view.figure(candidate, stratum, measure)
+    if ledger is None or found is None or found.median is None:
+        return None
+    return Point(ledger.ratio_bits_stored_median, found.median, found.p05, found.p95, found.largest)
+
+
+def _bounds(view: View, stratum: StratumEntry, measure: str) -> tuple[Bound, ...]:
+    """Declared upper limits on the measure that reach this group's values."""
+    found = {
+        item.limit: Bound(item.bound, f"declared limit {item.bound:g}")
+        for item in view.record.outcomes
+        if item.measure == measure
+        and item.side == "at most"
+        and item.unit == stratum.unit
+        and item.outcome != "not evaluated"
+    }
+    return tuple(found.values()) if len(found) == 1 else ()
+
+
+def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
+    """RMSE, maximum and worst patch beside the ratio that was reached."""
+    unit = stratum.unit
+    columns = (
+        Column("Candidate"),
+        Column("Frames", number=True),
+        Column("median", "to 1", number=True, over="Achieved ratio, bits stored"),
+        Column("least", "to 1", number=True, over="Achieved ratio, bits stored"),
+        Column("median", unit, number=True, over="RMSE, content"),
+        Column("95th pct.", unit, number=True, over="RMSE, content"),
+        Column("largest", unit, number=True, over="RMSE, content"),
+        Column("median", unit, number=True, over="Largest error, content"),
+        Column("largest", unit, number=True, over="Largest error, content"),
+        Column("median", unit, number=True, over="RMSE, worst patch 8×8"),
+        Column("largest", unit, number=True, over="RMSE, worst patch 8×8"),
+    )
+    ledgers = [view.ledger.get((item.candidate, stratum.stratum)) for item in candidates]
+    rmse, largest, patch = (
+        [view.figure(item.candidate, stratum.stratum, measure) for item in candidates] for measure in _MAIN
+    )
+    cells = zip(
+        names_with_status(candidates),
+        [count(item.frames) if item else NONE for item in ledgers],
+        aligned([item.ratio_bits_stored_median if item else None for item in ledgers], 2),
+        aligned([item.ratio_bits_stored_least if item else None for item in ledgers], 2),
+        *_same_decimals(_of(rmse, "median"), _of(rmse, "p95"), _of(rmse, "largest")),
+        *_same_decimals(_of(largest, "median"), _of(largest, "largest")),
+        *_same_decimals(_of(patch, "median"), _of(patch, "largest")),
+        strict=True,
+    )
+    return Table(columns, tuple(Row(row) for row in cells), caption="Errors: after minus before, over frames")
+
+
+def _of(entries: Sequence[FigureEntry | None], part: str) -> list[float | None]:
+    """One statistic of each entry."""
+    return [None if item is None else getattr(item, part) for item in entries]
+
+
+def _same_decimals(*columns: list[float | None]) -> list[tuple[str, ...]]:
+    """Write several columns with the decimals that suit them together."""
+    flat = aligned([value for column in columns for value in column])
+    size = len(columns[0])
+    return [flat[start : start + size] for start in range(0, len(flat), size)]
+
+
+def _windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Block]:
+    """SSIM and share of pixels changed, for each window."""
+    columns = (
+        Column("Window and candidate"),
+        Column("median", "1", number=True, over="SSIM, content"),
+        Column("5th pct.", "1", number=True, over="SSIM, content"),
+        Column("least", "1", number=True, over="SSIM, content"),
+        Column("median", "%", number=True, over="Content changed by 5 levels of 255 or more"),
+        Column("95th pct.", "%", number=True, over="Content changed by 5 levels of 255 or more"),
+        Column("largest", "%", number=True, over="Content changed by 5 levels of 255 or more"),
+    )
+    rows: list[Row] = []
+    for window in view.windows(stratum.stratum):
+        ssim, changed = (
+            [view.figure(item.candidate, stratum.stratum, measure, window) for item in candidates]
+            for measure in _WINDOW
+        )
+        cells = zip(
+            names_with_status(candidates),
+            *(aligned(_of(ssim, part), 4) for part in ("median", "p05", "least")),
+            *_same_decimals(_of(changed, "median"), _of(changed, "p95"), _of(changed, "largest")),
+            strict=True,
+        )
+        rows += [Row((window,), group=True), *(Row(row) for row in cells)]
+    if not rows:
+        return [Prose("No window figures: no display window applies to this group.", "note")]
+    return [Table(columns, tuple(rows), caption="On the display windows, over frames")]
+
+
+def _further(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Block]:
+    """All other measures, candidates side by side."""
+    mine = [item for item in view.record.figures if item.stratum == stratum.stratum]
+    keys = dict.fromkeys((item.measure, item.window, item.unit) for item in mine)
+    others = [key for key in keys if key[0] not in (*_MAIN, *_WINDOW)]
+    if not others:
+        return []
+    blocks: list[Block] = [Heading(f"Further measures: {stratum.stratum}")]
+    for start in range(0, len(candidates), PER_TABLE):
+        blocks.append(_further_table(view, stratum.stratum, candidates[start : start + PER_TABLE], others))
+    return blocks
+
+
+def _further_table(
+    view: View, stratum: str, candidates: Sequence[CandidateEntry], measures: Sequence[tuple[str, str, str]]
+) -> Table:
+    """Median and worst of each measure for up to `PER_TABLE` candidates."""
+    columns = [Column("Measure"), Column("Unit")]
+    for name in names_with_status(candidates):
+        columns += [Column(part, "", number=True, over=name) for part in ("median", "worst")]
+    rows = []
+    for measure, window, unit in measures:
+        entries = [view.figure(item.candidate, stratum, measure, window) for item in candidates]
+        values = [part for item in entries for part in (item.median if item else None, _worst(item))]
+        label = f"{label_of(measure)}, {window}" if window else label_of(measure)
+        rows.append(Row((label, unit, *aligned(values))))
+    note = "Worst: the largest value where more is worse, the least where less is worse, else the farther from zero."
+    return Table(tuple(columns), tuple(rows), note=note)
+
+
+def _worst(item: FigureEntry | None) -> float | None:
+    """The end of the spread that is worse."""
+    if item is None or item.largest is None or item.least is None:
+        return None
+    if item.worse == "higher":
+        return item.largest
+    return item.least if item.worse == "lower" else max(item.least, item.largest, key=abs)

@@ -1,0 +1,120 @@
+"""The record with its entries found by name, and the words that several sections share."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+from safecheck.record.document import (
+    CandidateEntry,
+    FigureEntry,
+    LedgerEntry,
+    Place,
+    RecordDocument,
+    StratumEntry,
+)
+from safecheck.record.run import RunFacts
+from safecheck.report.numbers import NONE, count, plural
+from safecheck.wording import CAUTIONS_WHEN, RECORD_TITLE
+
+__all__ = ["View", "place_short", "place_words", "rest_sentence", "view_of"]
+
+
+@dataclass(frozen=True, slots=True)
+class View:
+    """What every section reads."""
+
+    record: RecordDocument
+    run: RunFacts
+    record_sha256: str
+    crops: Path | None
+    """The folder of crops; None draws without images."""
+    candidates: tuple[CandidateEntry, ...]
+    """Codecs that an archive can write first, then delivered copies, then analysis codecs."""
+    figures: dict[tuple[str, str, str, str], FigureEntry]
+    """By candidate, stratum, measure and window."""
+    ledger: dict[tuple[str, str], LedgerEntry]
+    """By candidate and stratum."""
+
+    @property
+    def change(self) -> dict[str, str]:
+        """The plan's table on the change, as read; empty where the plan has none."""
+        table = self.record.plan.content.get("change")
+        return {key: str(value) for key, value in table.items()} if isinstance(table, dict) else {}
+
+    @property
+    def subject(self) -> str:
+        """What is to be decided, in one line."""
+        title = self.record.title
+        return self.change.get("title") or (title if title != RECORD_TITLE else "")
+
+    @property
+    def second_generation(self) -> bool:
+        """Whether sources that were already lossy were assessed."""
+        return CAUTIONS_WHEN["already_lossy"] in self.record.cautions
+
+    def in_stratum(self, stratum: StratumEntry) -> tuple[CandidateEntry, ...]:
+        """Candidates with figures or bytes in a stratum, in order."""
+        with_figures = {(candidate, name) for candidate, name, _, _ in self.figures}
+        known = with_figures | self.ledger.keys()
+        return tuple(entry for entry in self.candidates if (entry.candidate, stratum.stratum) in known)
+
+    def figure(self, candidate: str, stratum: str, measure: str, window: str = "") -> FigureEntry | None:
+        """Figures of one measure, or None."""
+        return self.figures.get((candidate, stratum, measure, window))
+
+    def windows(self, stratum: str) -> tuple[str, ...]:
+        """Labels of the windows that a stratum has figures for, in the record's order."""
+        labels = [window for _, name, _, window in self.figures if name == stratum and window]
+        return tuple(dict.fromkeys(labels))
+
+
+def view_of(record: RecordDocument, record_sha256: str, run: RunFacts, crops: Path | None) -> View:
+    """Index a record."""
+    rank = {"candidate": 0, "delivered": 1}
+    ordered = sorted(record.candidates, key=lambda item: (not item.archive_can_write, rank[item.role]))
+    figures = {(item.candidate, item.stratum, item.measure, item.window): item for item in record.figures}
+    ledger = {(item.candidate, item.stratum): item for item in record.ledger}
+    return View(record, run, record_sha256, crops, tuple(ordered), figures, ledger)
+
+
+def place_words(place: Place) -> str:
+    """Name a place in full, under pseudonyms."""
+    parts = [f"patient {place.patient}", f"study {place.study}"]
+    parts += [f"series {place.series_number}" if place.series_number is not None else f"series {place.series}"]
+    parts += [place_short(place)]
+    return ", ".join(parts)
+
+
+def place_short(place: Place) -> str:
+    """Name a place within its series: image, frame, row and column."""
+    image = f"image {place.instance_number}" if place.instance_number is not None else place.instance
+    parts = [image, f"frame {count(place.frame)}"]
+    if place.row is not None and place.column is not None:
+        parts.append(f"row {count(place.row)}, column {count(place.column)}")
+    return ", ".join(parts)
+
+
+def rest_sentence(shown: int, total: int, where: str = "all stand in the tables") -> str:
+    """Say how much of a long list was cut, or nothing."""
+    return f"and {count(total - shown)} more; {where}" if total > shown else ""
+
+
+def stratum_line(stratum: StratumEntry) -> str:
+    """Counts of a stratum in one sentence."""
+    return (
+        f"{plural(stratum.frames, 'frame')} of {plural(stratum.series, 'series', 'series')}, "
+        f"{plural(stratum.studies, 'study', 'studies')}, {plural(stratum.patients, 'patient')}. "
+        f"Errors in {stratum.unit}."
+    )
+
+
+def names_with_status(candidates: Sequence[CandidateEntry]) -> tuple[str, ...]:
+    """Name candidates, each with 'context' where it is not proposed."""
+    return tuple(item.candidate if item.status == "proposed" else f"{item.candidate} (context)" for item in candidates)
+
+
+def dash(text: str) -> str:
+    """Return a dash for an empty text."""
+    return text or NONE

@@ -1,0 +1,102 @@
+"""Half a page to paste into a change ticket, with the record's hash."""
+
+from __future__ import annotations
+
+import textwrap
+
+from safecheck.record.document import OutcomeEntry, RecordDocument
+from safecheck.record.run import RunFacts
+from safecheck.report.numbers import count, figure, joined, plural
+from safecheck.report.sections.front import outcome_order, ratio_groups
+from safecheck.report.sections.view import View, view_of
+from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, RUN_INVALID
+
+__all__ = ["summary_text"]
+
+WIDTH = 100
+OUTCOMES = 12
+
+
+def summary_text(record: RecordDocument, record_sha256: str, run: RunFacts) -> str:
+    """Write the summary as plain text, lines of at most 100 characters.
+
+    Parameters
+    ----------
+    record
+        The record.
+    record_sha256
+        SHA-256 of record.json, 64 hexadecimal digits.
+    run
+        When and how it was made.
+    """
+    view = view_of(record, record_sha256, run, None)
+    paragraphs = [_head(view), *_asked_and_run(view), *_outcomes(record), _exit(record), *_cautions(record)]
+    return "\n".join(paragraphs) + "\n"
+
+
+def _wrapped(text: str, first: str = "", rest: str = "") -> str:
+    """Break a paragraph into lines."""
+    return textwrap.fill(text, WIDTH, initial_indent=first, subsequent_indent=rest, break_on_hyphens=False)
+
+
+def _head(view: View) -> str:
+    """Title, subject, reference and hash."""
+    lines = [RECORD_TITLE.upper()]
+    lines += [_wrapped(view.subject)] if view.subject else []
+    lines.append(f"Change reference: {view.change.get('reference') or 'none given'}")
+    lines.append(f"SHA-256 of record.json: {view.record_sha256}")
+    if not view.record.controls_held:
+        lines.append(RUN_INVALID)
+    return "\n".join(lines) + "\n"
+
+
+def _asked_and_run(view: View) -> list[str]:
+    """Candidates, input and when the plan was declared."""
+    inputs, run = view.record.inputs, view.run
+    proposed = joined(ratio_groups([item for item in view.candidates if item.status == "proposed"]))
+    context = joined(ratio_groups([item for item in view.candidates if item.status == "context"]))
+    asked = f"Proposed: {proposed or 'nothing'}." + (f" For context: {context}." if context else "")
+    ran = (
+        f"{plural(inputs.files, 'file')}: {count(inputs.assessed)} assessed, {count(inputs.excluded)} excluded, "
+        f"{count(inputs.refused)} refused; {plural(inputs.frames_assessed, 'frame')}, "
+        f"{plural(inputs.studies, 'study', 'studies')}, {plural(inputs.patients, 'patient')}. "
+        f"Run finished {run.finished:%Y-%m-%d %H:%M %Z}. Plan {view.record.plan.sha256[:16]} declared: "
+        f"{run.plan_declared}."
+    )
+    second = " SECOND GENERATION: sources were already lossy." if view.second_generation else ""
+    return [_wrapped(asked), _wrapped(ran + second), ""]
+
+
+def _outcomes(record: RecordDocument) -> list[str]:
+    """One line per limit and proposed candidate, those outside first."""
+    lines = sorted((item for item in record.outcomes if item.status == "proposed"), key=outcome_order)
+    if not lines:
+        return [f"Outcomes: {record.outcomes_text or NO_LIMITS}.", ""]
+    shown = [_wrapped(_outcome(item), "- ", "  ") for item in lines[:OUTCOMES]]
+    if len(lines) > OUTCOMES:
+        shown.append(f"- and {len(lines) - OUTCOMES} more; all stand in the record")
+    return [f"Outcomes: {record.outcomes_text.rstrip('.')}.", *shown, ""]
+
+
+def _outcome(item: OutcomeEntry) -> str:
+    """One outcome in words."""
+    unit = "" if item.unit == "1" else f" {item.unit}"
+    text = (
+        f"{item.limit} ({item.side} {figure(item.bound)}{unit}), {item.candidate}: {item.outcome}, in "
+        f"{count(item.studies_within)} of {count(item.studies)} studies; {item.bound_text}"
+    )
+    if item.over_compressed_also_within:
+        text += "; does not tell the over-compressed control apart"
+    return text
+
+
+def _exit(record: RecordDocument) -> str:
+    """Exit code and text."""
+    held = "Controls held." if record.controls_held else "Controls were not held."
+    return _wrapped(f"{held} Exit {record.exit_code}: {record.exit_text}") + "\n"
+
+
+def _cautions(record: RecordDocument) -> list[str]:
+    """All cautions in full, those that this run gives rise to after those that always stand."""
+    texts = [*CAUTIONS, *(text for text in record.cautions if text not in CAUTIONS)]
+    return [_wrapped(text, f"{number}. ", "   ") for number, text in enumerate(texts, 1)]
