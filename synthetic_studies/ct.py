@@ -10,7 +10,7 @@ import numpy as np
 import numpy.typing as npt
 from pydicom import Dataset
 
-from synthetic_studies.anatomy import LIVER_HU, Body, draw_body
+from synthetic_studies.anatomy import LIVER_HU, draw_body
 from synthetic_studies.drawing import Blob, Canvas
 from synthetic_studies.fields import band_passed, streaked
 from synthetic_studies.headers import (
@@ -33,9 +33,9 @@ Storage = Literal["signed", "unsigned-12"]
 CUTOFF: dict[str, float] = {"SOFT": 0.20, "STANDARD": 0.28, "SHARP": 0.42}
 """Cycles per pixel; the noise spectrum peaks at 0.71 of it."""
 FIELD_MM = 400.0
-_DISC_PLACES = ((-110, -48, 8), (-84, -56, 6), (-60, -58, 4), (-116, -20, 8), (-90, -28, 6), (-66, -30, 4))
-_UNIFORM = (-98.0, 10.0, 15.0)
-_BACKGROUND = (-84.0, -74.0, 7.0)
+_DISC_PLACES = ((-92, -50, 8), (-70, -58, 6), (-50, -52, 4), (-112, -18, 8), (-86, -24, 6), (-62, -28, 4))
+_UNIFORM = (-96.0, 13.0, 15.0)
+_BACKGROUND = (-70.0, 10.0, 6.0)
 _EDGE = (44.0, 88.0, -48.0, 12.0)
 """From x, to x, y, and how far both sides are clear, in mm."""
 
@@ -45,7 +45,7 @@ class _Series:
     """Everything that the slices of one series share."""
 
     grid: Grid
-    body: Body
+    seed: int
     noise_sd_hu: float
     kernel: Kernel
     storage: Storage
@@ -62,7 +62,7 @@ class _Series:
         return Circle((rows - 1) / 2, (columns - 1) / 2, min(rows, columns) / 2)
 
     def disc(self, label: str, role: str, place: tuple[float, float, float], contrast: float, calm: float) -> Disc:
-        x_mm, y_mm, radius_mm = (part * self.body.size for part in place)
+        x_mm, y_mm, radius_mm = place
         row, column = self.grid.pixel(x_mm, y_mm)
         sd = self.noise_sd_hu * float(noise_share(np.array(x_mm), np.array(y_mm)))
         circle = Circle(row, column, radius_mm / self.grid.spacing_mm)
@@ -84,7 +84,7 @@ class _Series:
         return self.disc("liver", "background", _BACKGROUND, 0.0, 1.2)
 
     def edge(self) -> Edge:
-        left, right, y_mm, reach = (part * self.body.size for part in _EDGE)
+        left, right, y_mm, reach = _EDGE
         start, end = self.grid.pixel(left, y_mm), self.grid.pixel(right, y_mm)
         half = reach / self.grid.spacing_mm
         return Edge("fluid level", start, end, half, -980.0, 12.0, (left, y_mm), (right, y_mm))
@@ -115,7 +115,7 @@ def _draw_slice(series: _Series, z_mm: float) -> Image:
         quiet = Blob(disc.x_mm, disc.y_mm, disc.radius_mm * 1.6, disc.radius_mm * 1.6)
         calm.paint(quiet.grown(1.0), 1.0, soft_mm=2.0)
     planted = Canvas(series.grid, 0.0)
-    planted.values = draw_body(series.grid, series.body, z_mm, calm.values)
+    planted.values = draw_body(series.grid, series.seed, z_mm, calm.values)
     _draw_level(planted, series.edge())
     for disc in discs:
         planted.paint(Blob(disc.x_mm, disc.y_mm, disc.radius_mm, disc.radius_mm), disc.value)
@@ -205,7 +205,7 @@ def ct_body(
         In HU; discs and edge lie at the same place in every slice.
     """
     grid = Grid(rows, columns, FIELD_MM / min(rows, columns))
-    series = _Series(grid, Body(seed), noise_sd_hu, kernel, storage, thickness_mm, contrasts_hu)
+    series = _Series(grid, seed, noise_sd_hu, kernel, storage, thickness_mm, contrasts_hu)
     patient = patient or Patient(1 + seed % 99)
     options = (
         rows,
