@@ -320,6 +320,8 @@ class Frame:
     spacing_mm: tuple[float, float] | None = None
     """(between rows, between columns); None where missing, zero or not in the patient."""
     geometry: Geometry | None = None
+    padding_range: tuple[int, int] | None = None
+    """Least and largest stored value that the header declares as padding; None where it declares none."""
     displays: tuple[Display, ...] = ()
     """As the file gives them; those of the plan and the defaults are added where they are measured."""
 

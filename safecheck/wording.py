@@ -136,6 +136,7 @@ REASONS: MappingProxyType[str, Reason] = MappingProxyType(
         "archive-path": Reason("refused", "an archive member that points outside its archive"),
         "archive-bomb": Reason("refused", "an archive member that inflates beyond measure"),
         "link-loop": Reason("refused", "a symbolic link that leads back into a folder already entered"),
+        "delivered-differs": Reason("refused", "a delivered copy of another size, unit or kind than its original"),
         "conflict": Reason("refused", "two inputs claim the same instance with different content"),
         "worker-lost": Reason("refused", "the process that assessed it died twice"),
         "internal": Reason("refused", "an internal error while it was assessed"),

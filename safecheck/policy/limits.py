@@ -71,7 +71,7 @@ def judge(limit: LimitPlan, measure: Measure, evidence: Evidence) -> Outcome:
         reason = "no value in the limit's unit and scope" if not missing else "no value could be computed"
         return Outcome(OutcomeWord.NOT_EVALUATED, 0, 0, missing, 0, 0, 0, 0, None, reason)
     values = evidence.values[known]
-    if measure.worse == "away from zero":
+    if measure.signed:
         values = np.abs(values)
     outside = values > limit.bound if limit.at_most is not None else values < limit.bound
     worst = known[int(np.argmax(values) if limit.at_most is not None else np.argmin(values))]

@@ -39,7 +39,8 @@ class Change(Document):
     """Reference of the change record, as the site writes it."""
     declared_by: Text
     """Role, not name, of who declared the plan."""
-    declared_on: datetime.date
+    declared_on: datetime.date | None
+    """None only for candidates given on the command line, of which no plan was declared."""
     compressed_copy: Text
     """Which copy would be recompressed, e.g. 'archive copy'."""
     compressed_when: Text
@@ -65,13 +66,16 @@ class CandidatePlan(Document):
     """Only proposed candidates decide the exit code."""
     settings: dict[str, str | int | float | bool] = Field(default_factory=dict)
     """The codec's other settings, e.g. size = 16 for tiled."""
+    outside: Literal["keep", "flatten"] = "keep"
+    """Whether what is neither content nor padding is coded like the rest, or set to one value before coding."""
 
     @property
     def name(self) -> str:
-        """How outputs name it: codec, ratio, basis where it is not bits-stored, other settings."""
+        """How outputs name it: codec, ratio, basis where it is not bits-stored, what else was asked."""
         basis = "" if self.basis is SizeBasis.BITS_STORED else f" of {self.basis}"
         settings = "".join(f", {key} {value}" for key, value in sorted(self.settings.items()))
-        return f"{self.codec} {self.ratio:g}:1{basis}{settings}"
+        outside = ", outside flattened" if self.outside == "flatten" else ""
+        return f"{self.codec} {self.ratio:g}:1{basis}{settings}{outside}"
 
 
 class WindowPlan(Document):

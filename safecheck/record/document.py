@@ -144,7 +144,8 @@ class FigureEntry(Document):
     window: str = ""
     """Label of the window, for window measures."""
     unit: str
-    worse: Literal["higher", "lower", "away from zero"]
+    worse: Literal["higher", "lower"]
+    """Which way the change is larger; of signed measures the size counts."""
     frames: int
     """Frames with a value."""
     without_value: int = 0

@@ -106,7 +106,7 @@ class MeasureRow(TreatedFrame):
     reached: str = column("", "asked, or why the ratio was not met.")
     encodes: int = column("", "Encodings needed to reach it.")
     code_bytes: int = column("bytes", "Size of the code stream.")
-    code_crc32: int = column("", "CRC-32 of the code stream.")
+    code_crc32: int | None = optional("", "CRC-32 of the code stream; null for delivered copies.")
     bits_per_pixel: float = column("bits per pixel", "Bits of the code stream per pixel of the frame.")
     ratio_bits_stored: float = column("to 1", "Size on the bits-stored basis over the code.")
     ratio_bits_allocated: float = column("to 1", "Size on the bits-allocated basis over the code.")
@@ -299,3 +299,7 @@ class FrameResult:
     measures: tuple[MeasureRow, ...] = ()
     windows: tuple[WindowRow, ...] = ()
     regions: tuple[RegionRow, ...] = ()
+    notes: tuple[str, ...] = ()
+    """What was not run on the frame, one sentence each."""
+    delivered_differs: str = ""
+    """Why a delivered copy was not measured against the frame, or ''."""

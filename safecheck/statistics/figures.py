@@ -69,7 +69,7 @@ def _entry(
     """Yield the entry of one group of rows; none where the measure does not apply to any of its frames."""
     known = rows[~np.isnan(values[rows])]
     missing = len(rows) - len(known)
-    if not len(known) and measure.name not in _INFINITE_WHERE_EQUAL:
+    if not len(known) and not measure.null_when_equal:
         return
     found = values[known]
     spread = [float(part) for part in np.percentile(found, (50, 5, 95))] if len(known) else [None, None, None]
@@ -93,20 +93,15 @@ def _entry(
     )
 
 
-_INFINITE_WHERE_EQUAL = frozenset(
-    name for name, measure in MEASURES.items() if measure.table == "measures" and measure.unit == "dB"
-)
-
-
 def _reason(measure: Measure, missing: int) -> str:
     """Why some frames have no value."""
     if not missing:
         return ""
-    return "infinite: nothing changed" if measure.name in _INFINITE_WHERE_EQUAL else "not evaluated on these frames"
+    return "infinite: nothing changed" if measure.null_when_equal else "not evaluated on these frames"
 
 
 def worst_index(measure: Measure, rows: Indices, values: npt.NDArray[np.float64]) -> int:
     """Row of the worst of some values, none of them NaN; the first of equals."""
     if measure.worse == "lower":
         return int(rows[np.argmin(values)])
-    return int(rows[np.argmax(np.abs(values) if measure.worse == "away from zero" else values)])
+    return int(rows[np.argmax(np.abs(values) if measure.signed else values)])
