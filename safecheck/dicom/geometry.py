@@ -10,9 +10,10 @@ from pydicom.dataset import Dataset
 
 from safecheck.dicom.elements import real_numbers, value_of
 from safecheck.dicom.functional_groups import FunctionalGroups
+from safecheck.dicom.origin import slice_position_mm, slice_thickness_class
 from safecheck.frames import Geometry
 
-__all__ = ["Place", "read_place", "slice_position_mm", "thickness_class"]
+__all__ = ["Place", "read_place"]
 
 _Triple = tuple[float, float, float]
 
@@ -24,7 +25,10 @@ class Place:
     geometry: Geometry | None
     spacing_mm: tuple[float, float] | None
     """(between rows, between columns)."""
-    thickness_mm: float | None
+    slice_position_mm: float | None
+    """Along the normal of the frame's plane."""
+    slice_thickness_class: str
+    """As `Origin` names it; '' where unknown."""
     notes: tuple[str, ...]
 
 
@@ -44,27 +48,10 @@ def read_place(dataset: Dataset, groups: FunctionalGroups, index: int) -> Place:
     return Place(
         geometry=geometry,
         spacing_mm=spacing_mm,
-        thickness_mm=thickness[0] if thickness and thickness[0] > 0 else None,
+        slice_position_mm=None if geometry is None else slice_position_mm(position or (), orientation or ()),
+        slice_thickness_class=slice_thickness_class(str(thickness[0]) if thickness else ""),
         notes=notes,
     )
-
-
-def slice_position_mm(geometry: Geometry | None) -> float | None:
-    """Distance of the frame's plane from the origin along its normal, in mm, rounded to 1e-6."""
-    if geometry is None:
-        return None
-    normal = np.cross(geometry.along_columns, geometry.along_rows)
-    return round(float(np.dot(normal, geometry.position_mm)), 6) + 0.0
-
-
-def thickness_class(thickness_mm: float | None) -> str:
-    """Class of a slice thickness, as `Origin.slice_thickness_class` names it; '' where unknown."""
-    if thickness_mm is None:
-        return ""
-    for limit, name in ((1, "up to 1 mm"), (3, "over 1 to 3 mm"), (5, "over 3 to 5 mm")):
-        if thickness_mm <= limit:
-            return name
-    return "over 5 mm"
 
 
 def _spacing(dataset: Dataset, measures: Dataset) -> tuple[tuple[float, float] | None, tuple[str, ...]]:

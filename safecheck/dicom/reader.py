@@ -11,7 +11,7 @@ from safecheck.dicom.display import read_displays
 from safecheck.dicom.frame_bytes import FrameBytes, locate_frames
 from safecheck.dicom.frame_pixels import FramePixels, check_syntax, read_frame_pixels, second_frame_pixels
 from safecheck.dicom.functional_groups import FunctionalGroups
-from safecheck.dicom.geometry import Place, read_place, slice_position_mm, thickness_class
+from safecheck.dicom.geometry import Place, read_place
 from safecheck.dicom.instance import Instance
 from safecheck.dicom.modality import LUMA_UNIT, Modality, read_modality
 from safecheck.dicom.opened import OpenedFile, open_file
@@ -182,11 +182,11 @@ class InstanceReader:
         text = known.may_show_text or may_show_text(
             self._opened.dataset, acquisition=known.modality, capture=self._capture
         )
-        own_thickness = thickness_class(place.thickness_mm) if self._groups.enhanced else ""
+        own_thickness = place.slice_thickness_class if self._groups.enhanced else ""
         return dataclasses.replace(
             known,
             source_bytes=pixels.source_bytes,
-            slice_position_mm=slice_position_mm(place.geometry),
+            slice_position_mm=place.slice_position_mm,
             slice_thickness_class=own_thickness or known.slice_thickness_class,
             may_show_text=text,
             notes=tuple(dict.fromkeys((*known.notes, *notes))),
