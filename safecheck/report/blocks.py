@@ -200,6 +200,7 @@ class PlaceCard:
 
     head: str
     value: str
+    measure: str
     lines: tuple[tuple[str, str], ...]
     """Label and value."""
     rows: int
@@ -243,6 +244,8 @@ class Section:
     title: str
     blocks: tuple[Block, ...]
     new_page: bool = False
+    room_mm: float = 62.0
+    """Height that must be left on the page for the section to begin on it."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -33,22 +33,22 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         ),
         "psnr_peak_bits_db": (
             "PSNR, frame, peak of stored bits",
-            "20 log10(peak ÷ RMSE) over all pixels; peak: span that the stored bits can express, in the unit of the error",
+            "20 log₁₀(peak ÷ RMSE) over all pixels; peak: span that the stored bits can express, in the unit of the error",
             _COMMON,
         ),
         "psnr_peak_range_db": (
             "PSNR, frame, peak of content range",
-            "20 log10(peak ÷ RMSE) over all pixels; peak: span of the original's content",
+            "20 log₁₀(peak ÷ RMSE) over all pixels; peak: span of the original's content",
             _COMMON,
         ),
         "psnr_peak_bits_content_db": (
             "PSNR, content, peak of stored bits",
-            "20 log10(peak ÷ RMSE) over content; peak: span that the stored bits can express",
+            "20 log₁₀(peak ÷ RMSE) over content; peak: span that the stored bits can express",
             _COMMON,
         ),
         "psnr_peak_range_content_db": (
             "PSNR, content, peak of content range",
-            "20 log10(peak ÷ RMSE) over content; peak: span of the original's content",
+            "20 log₁₀(peak ÷ RMSE) over content; peak: span of the original's content",
             _COMMON,
         ),
         "worst_patch_rmse": (
@@ -60,7 +60,7 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         "patch_median_rmse": ("RMSE, median of patches", "median of the patches' RMSE", _STATED),
         "worst_window_rmse": (
             "RMSE, worst larger patch",
-            "as the worst patch, over a square whose side in mm stands in the table; needs a pixel spacing",
+            "as the worst patch, over squares of 10 mm; needs a pixel spacing",
             _STATED,
         ),
         "worst_outside_rmse": (
@@ -70,7 +70,7 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         ),
         "edge_band_rmse": (
             "RMSE, band at the content's edge",
-            "√(Σ e² ÷ n) over the band on both sides of the content's edge",
+            "√(Σ e² ÷ n) within 4 pixels of the content's edge, on both sides",
             _STATED,
         ),
         "edge_band_max": ("Largest error, band at the content's edge", "max |e| over that band", _STATED),
@@ -79,7 +79,6 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
             "local estimator, from the original only, not across edges; not evaluated below one stored unit",
             _STATED,
         ),
-        "noise_sd_after": ("Noise SD, after", "the same estimator at the places chosen in the original", _STATED),
         "noise_sd_kept_percent": ("Noise SD kept", "100 × noise SD after ÷ noise SD of the original", _STATED),
         "rmse_over_noise": (
             "RMSE over noise SD",
@@ -123,10 +122,44 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
             _STATED,
         ),
         "max_levels": ("Largest change of display level", "largest move of the display level over content", _STATED),
-        "rmse": ("RMSE, region", "√(Σ w e² ÷ Σ w), w the share of each pixel inside the region", _COMMON),
-        "bias": ("Mean error, region", "Σ w e ÷ Σ w, w the share of each pixel inside the region", _COMMON),
-        "mean_absolute": ("Mean absolute error, region", "Σ w |e| ÷ Σ w", _COMMON),
-        "max": ("Largest error, region", "max |e| over pixels whose centre is inside", _COMMON),
+        "region_rmse": (
+            "RMSE, region",
+            "√(Σ w e² ÷ Σ w), w the share of each pixel inside the region",
+            _COMMON,
+        ),
+        "region_bias": ("Mean error, region", "Σ w e ÷ Σ w, w the share of each pixel inside the region", _COMMON),
+        "region_mean_absolute": ("Mean absolute error, region", "Σ w |e| ÷ Σ w", _COMMON),
+        "region_max": ("Largest error, region", "max |e| over pixels whose centre is inside", _COMMON),
+        "region_p999": (
+            "99.9th percentile of error, region",
+            "99.9th percentile of |e| over pixels whose centre is inside, from 1,000 pixels on",
+            _STATED,
+        ),
+        "region_psnr_peak_bits_db": (
+            "PSNR, region, peak of stored bits",
+            "20 log₁₀(peak ÷ RMSE) over the region; peak: span that the stored bits can express",
+            _COMMON,
+        ),
+        "region_psnr_peak_range_db": (
+            "PSNR, region, peak of content range",
+            "20 log₁₀(peak ÷ RMSE) over the region; peak: span of the original's content",
+            _COMMON,
+        ),
+        "region_ssim": (
+            "SSIM, region",
+            "mean of the SSIM map at the first window over pixels whose centre is inside",
+            _WANG,
+        ),
+        "region_noise_removed_percent": (
+            "Noise removed, region",
+            "100 × (1 − SD after ÷ SD before) of the region's background",
+            _STATED,
+        ),
+        "region_cnr_after": (
+            "CNR after, region",
+            "(mean of the region − mean of its background) ÷ SD of the background, after; read beside the noise removed",
+            _COMMON,
+        ),
     }
 )
-"""Name -> label, formula with its domain, source."""
+"""Name in the catalogue of measures -> label, formula with its domain, source."""

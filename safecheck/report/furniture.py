@@ -10,6 +10,7 @@ from reportlab.platypus import Paragraph
 
 from safecheck.report.blocks import Report
 from safecheck.report.theme import (
+    FIRST_TOP,
     INK,
     LEFT,
     MEDIUM,
@@ -28,8 +29,10 @@ from safecheck.report.theme import (
 )
 from safecheck.wording import SHORT_CAUTION
 
-__all__ = ["draw_page"]
+__all__ = ["MARKS_HEIGHT", "draw_page"]
 
+MARKS_HEIGHT = 9 * mm
+"""Height that the strip of marks takes from the text of each page."""
 _RIGHT = LEFT + TEXT_WIDTH
 
 
@@ -39,7 +42,7 @@ def draw_page(canvas: Any, report: Report, page: int, pages: int) -> None:  # no
     if page > 1:
         _head(canvas, report)
     if report.marks:
-        _marks(canvas, report.marks)
+        _marks(canvas, report.marks, FIRST_TOP if page == 1 else TOP)
     _foot(canvas, report, page, pages)
     if report.across:
         _across(canvas, report.across)
@@ -64,10 +67,10 @@ def _head(canvas: Any, report: Report) -> None:  # noqa: ANN401 - reportlab's ca
     canvas.line(LEFT, y - 5, _RIGHT, y - 5)
 
 
-def _marks(canvas: Any, marks: tuple[str, ...]) -> None:  # noqa: ANN401 - reportlab's canvas
+def _marks(canvas: Any, marks: tuple[str, ...], top: float) -> None:  # noqa: ANN401 - reportlab's canvas
     """A dark strip with what holds for the whole record."""
     text = fit_text("   ·   ".join(marks), MEDIUM, 8.2, TEXT_WIDTH - 12)
-    y = PAGE_HEIGHT - TOP - 5 * mm
+    y = PAGE_HEIGHT - top - 5 * mm
     canvas.setFillColor(INK)
     canvas.rect(LEFT, y, TEXT_WIDTH, 5.6 * mm, stroke=0, fill=1)
     canvas.setFillColor(WHITE)

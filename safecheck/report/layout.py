@@ -48,7 +48,7 @@ def flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowab
         case Title():
             return _title(block)
         case Heading(text):
-            return [CondPageBreak(80), _paragraph(text, "heading")]
+            return [CondPageBreak(136), _paragraph(text, "heading")]
         case Prose():
             return [_prose(block)]
         case Numbered():
@@ -60,7 +60,7 @@ def flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowab
         case Charts():
             return [_charts(block)]
         case Bars():
-            return [KeepTogether([_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH)])]
+            return [KeepTogether([_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH), Spacer(1, 6)])]
         case Places():
             return cards_flowables(block.cards)
         case Signatures():
@@ -121,7 +121,7 @@ def _numbered(block: Numbered) -> list[Flowable]:
 
 def _facts(block: Facts) -> Flowable:
     """Labels on the left, sentences on the right."""
-    rows = [[_paragraph(label, "label"), [_paragraph(line, "body") for line in lines]] for label, lines in block.pairs]
+    rows = [[_paragraph(label, "label"), [_paragraph(line, "fact") for line in lines]] for label, lines in block.pairs]
     return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
 
 
@@ -130,17 +130,14 @@ def _table(block: Table) -> list[Flowable]:
     flowables: list[Flowable] = [CondPageBreak(96)]
     if block.caption:
         flowables.append(_paragraph(block.caption, "caption"))
-    flowables.append(table_flowable(block))
-    if block.note:
-        flowables.append(_paragraph(block.note, "note"))
-    return flowables
+    return [*flowables, table_flowable(block)]
 
 
 def _charts(block: Charts) -> Flowable:
     """Charts side by side above their caption."""
     gap = 18.0
     width = (TEXT_WIDTH - gap) / 2
-    drawings = [chart_drawing(chart, width, 172) for chart in block.charts]
+    drawings = [chart_drawing(chart, width, 186) for chart in block.charts]
     cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
     side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])
     parts: list[Flowable] = [Spacer(1, 4), side_by_side, Spacer(1, 3)]
@@ -165,7 +162,8 @@ def _signature(head: str, role: str, width: float) -> PlatypusTable:
         rows.append([_paragraph(label, "small-label"), ""])
         heights.append(height)
     table = PlatypusTable(rows, colWidths=[44, width - 44], rowHeights=heights, hAlign="LEFT")
-    lines = [("LINEBELOW", (0, row), (-1, row), 0.35, RULE) for row in range(2, 9)]
+    lines: list[tuple[Any, ...]] = [("LINEBELOW", (0, row), (-1, row), 0.35, RULE) for row in range(2, 9)]
+    lines += [("SPAN", (0, row), (-1, row)) for row in (0, 1)]
     table.setStyle(
         [
             *_PLAIN,

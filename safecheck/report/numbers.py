@@ -12,7 +12,7 @@ NONE = "–"
 _MINUS = "\u2212"
 
 
-def decimals_for(values: Iterable[float], most: int = 5) -> int:
+def decimals_for(values: Iterable[float], most: int = 4) -> int:
     """Decimals that give the largest value 3 significant digits and the smallest 2, within reason."""
     sizes = [abs(value) for value in values if value]
     if not sizes:

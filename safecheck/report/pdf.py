@@ -18,9 +18,20 @@ from reportlab.platypus import (
 from reportlab.platypus.flowables import Flowable
 
 from safecheck.report.blocks import Report
-from safecheck.report.furniture import draw_page
+from safecheck.report.furniture import MARKS_HEIGHT, draw_page
 from safecheck.report.layout import flowables_of
-from safecheck.report.theme import BOTTOM, LEFT, PAGE_HEIGHT, PAGE_WIDTH, TEXT_WIDTH, TOP, load_fonts, markup, style
+from safecheck.report.theme import (
+    BOTTOM,
+    FIRST_TOP,
+    LEFT,
+    PAGE_HEIGHT,
+    PAGE_WIDTH,
+    TEXT_WIDTH,
+    TOP,
+    load_fonts,
+    markup,
+    style,
+)
 
 __all__ = ["draw_pdf"]
 
@@ -84,11 +95,19 @@ def _draw(report: Report, learnt: _Folio, known: _Folio) -> bytes:
         invariant=1,
         pageCompression=1,
     )
-    head = 8 * mm if report.marks else 0
-    frame = Frame(LEFT, BOTTOM, TEXT_WIDTH, PAGE_HEIGHT - TOP - BOTTOM - head, 0, 0, 0, 0, id="text")
-    document.addPageTemplates([PageTemplate(id="page", frames=[frame], onPageEnd=furnish)])
+    strip = MARKS_HEIGHT if report.marks else 0.0
+    templates = [
+        PageTemplate(id=name, frames=[_frame(top + strip)], onPageEnd=furnish, autoNextPageTemplate="next")
+        for name, top in (("first", FIRST_TOP), ("next", TOP))
+    ]
+    document.addPageTemplates(templates)
     document.build(_story(report, learnt, known))
     return buffer.getvalue()
+
+
+def _frame(top: float) -> Frame:
+    """Where the text stands, below `top` points."""
+    return Frame(LEFT, BOTTOM, TEXT_WIDTH, PAGE_HEIGHT - top - BOTTOM, 0, 0, 0, 0, id="text")
 
 
 def _story(report: Report, learnt: _Folio, known: _Folio) -> list[Flowable]:
@@ -100,7 +119,7 @@ def _story(report: Report, learnt: _Folio, known: _Folio) -> list[Flowable]:
         story += flowables_of(block, contents)
     story.append(PageBreak())
     for (key, title), section in zip(entries, report.sections, strict=True):
-        story += [PageBreak()] if section.new_page else [CondPageBreak(62 * mm)]
+        story += [PageBreak()] if section.new_page else [CondPageBreak(section.room_mm * mm)]
         story.append(_Anchor(key, title, 0, learnt))
         story.append(Paragraph(markup(title), style("section")))
         for block in section.blocks:

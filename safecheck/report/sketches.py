@@ -106,7 +106,11 @@ _CARD_STYLE = [
 
 def _words(card: PlaceCard) -> list[Paragraph]:
     """What, how much and where, in words."""
-    lines = [Paragraph(markup(card.head), style("card-head")), Paragraph(markup(card.value), style("cell-strong"))]
+    lines = [
+        Paragraph(markup(card.head), style("card-head")),
+        Paragraph(markup(card.value), style("card-value")),
+        Paragraph(markup(card.measure), style("card")),
+    ]
     for label, value in card.lines:
         text = f'<font color="#5e6368">{markup(label)}</font> {markup(value)}'
         lines.append(Paragraph(text, style("card")))

@@ -7,7 +7,7 @@ import textwrap
 from safecheck.record.document import OutcomeEntry, RecordDocument
 from safecheck.record.run import RunFacts
 from safecheck.report.numbers import count, figure, joined, plural
-from safecheck.report.sections.front import outcome_order, ratio_groups
+from safecheck.report.sections.front import ratio_groups
 from safecheck.report.sections.view import View, view_of
 from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, RUN_INVALID
 
@@ -30,7 +30,7 @@ def summary_text(record: RecordDocument, record_sha256: str, run: RunFacts) -> s
         When and how it was made.
     """
     view = view_of(record, record_sha256, run, None)
-    paragraphs = [_head(view), *_asked_and_run(view), *_outcomes(record), _exit(record), *_cautions(record)]
+    paragraphs = [_head(view), *_asked_and_run(view), *_outcomes(view), _exit(record), *_cautions(record)]
     return "\n".join(paragraphs) + "\n"
 
 
@@ -67,9 +67,9 @@ def _asked_and_run(view: View) -> list[str]:
     return [_wrapped(asked), _wrapped(ran + second), ""]
 
 
-def _outcomes(record: RecordDocument) -> list[str]:
+def _outcomes(view: View) -> list[str]:
     """One line per limit and proposed candidate, those outside first."""
-    lines = sorted((item for item in record.outcomes if item.status == "proposed"), key=outcome_order)
+    record, lines = view.record, view.outcomes("proposed")
     if not lines:
         return [f"Outcomes: {record.outcomes_text or NO_LIMITS}.", ""]
     shown = [_wrapped(_outcome(item), "- ", "  ") for item in lines[:OUTCOMES]]

@@ -15,9 +15,11 @@ from safecheck.report.theme import (
     HAIR,
     INK,
     MEDIUM,
+    MID,
     REGULAR,
     RULE,
     TEXT_WIDTH,
+    WHITE,
     markup,
     printable,
     style,
@@ -30,25 +32,37 @@ _SIZE, _HEAD_SIZE = 7.6, 7.3
 _PAD = 3.2
 _LONGEST_WORD = 120.0
 """Points: a longer word is broken rather than given more."""
-_BLANK = 70.0
+_STRONG = 2
+"""Cells at the beginning of a strong row that stand in a heavier face."""
+_BLANK = 96.0
 
 
 def table_flowable(table: Table) -> PlatypusTable:
-    """Lay out a table over the whole width of the text."""
+    """Lay out a table over the whole width of the text; its note stays with the last row."""
     over = any(column.over for column in table.columns)
     heads = _head_rows(table.columns, over=over)
     numbers = [column.number for column in table.columns]
     body = [_body_row(row, numbers) for row in table.rows]
+    if table.note:
+        body.append([Paragraph(markup(table.note), style("note"))] + [""] * (len(numbers) - 1))
     flowable = PlatypusTable(
-        heads + body,
-        colWidths=column_widths(table),
-        repeatRows=len(heads),
-        hAlign="LEFT",
-        spaceAfter=5,
+        heads + body, colWidths=column_widths(table), repeatRows=len(heads), hAlign="LEFT", spaceAfter=6
     )
-    flowable.setStyle(TableStyle([*_base_style(len(heads), numbers), *_over_style(table.columns, over=over)]))
-    flowable.setStyle(TableStyle(list(_row_style(table.rows, len(heads)))))
+    commands = [
+        *_over_style(table.columns, over=over),
+        *_base_style(len(heads), len(table.rows), numbers),
+        *_row_style(table.rows, len(heads)),
+        *_note_style(len(heads) + len(table.rows), bool(table.note)),
+    ]
+    flowable.setStyle(TableStyle(commands))
     return flowable
+
+
+def _note_style(row: int, note: bool) -> list[tuple[Any, ...]]:  # noqa: FBT001 - one private call
+    """The note spans the table, without a rule."""
+    if not note:
+        return []
+    return [("SPAN", (0, row), (-1, row)), ("NOSPLIT", (0, row - 1), (0, row)), ("TOPPADDING", (0, row), (-1, row), 4)]
 
 
 def _head_rows(columns: Sequence[Column], *, over: bool) -> list[list[Any]]:
@@ -66,7 +80,7 @@ def _over_cell(columns: Sequence[Column], index: int) -> Any:  # noqa: ANN401 - 
     """The shared head at the first of its columns."""
     if index and columns[index - 1].over == columns[index].over:
         return ""
-    return Paragraph(markup(columns[index].over), style("head"))
+    return Paragraph(markup(columns[index].over), style("head-over"))
 
 
 def _head(column: Column, text: str) -> Paragraph:
@@ -79,10 +93,10 @@ def _body_row(row: Row, numbers: Sequence[bool]) -> list[Any]:
     """Cells: figures as they are, words as paragraphs that wrap."""
     if row.group:
         return [Paragraph(markup(row.cells[0]), style("cell-group"))] + [""] * (len(numbers) - 1)
-    words = style("cell-strong" if row.strong else "cell")
+    first = style("cell-strong" if row.strong else "cell")
     return [
-        printable(cell) if number else Paragraph(markup(cell), words)
-        for cell, number in zip(row.cells, numbers, strict=True)
+        printable(cell) if number else Paragraph(markup(cell), first if index < _STRONG else style("cell"))
+        for index, (cell, number) in enumerate(zip(row.cells, numbers, strict=True))
     ]
 
 
@@ -126,7 +140,7 @@ def _natural(table: Table, index: int) -> float:
 
 def _head_width(column: Column) -> float:
     """Width at which a head needs at most about three lines and breaks no word."""
-    words = [text_width(word, MEDIUM, _HEAD_SIZE) for word in printable(column.head).split()]
+    words = [text_width(word, MEDIUM, _HEAD_SIZE) for word in printable(column.head).split(" ")]
     unit = text_width(printable(column.unit), REGULAR, _HEAD_SIZE)
     whole = text_width(printable(column.head), MEDIUM, _HEAD_SIZE)
     return max([*words, min(unit, _LONGEST_WORD), whole / 2.6 if column.number else 0.0])
@@ -142,7 +156,7 @@ def _least(table: Table, index: int, natural: float) -> float:
     return min(natural, max(longest, _head_width(column)) + 2 * _PAD + 1)
 
 
-def _base_style(heads: int, numbers: Sequence[bool]) -> list[tuple[Any, ...]]:
+def _base_style(heads: int, rows: int, numbers: Sequence[bool]) -> list[tuple[Any, ...]]:
     """Rules, fonts and paddings of every table."""
     commands: list[tuple[Any, ...]] = [
         ("FONT", (0, heads), (-1, -1), REGULAR, _SIZE, 10),
@@ -155,8 +169,8 @@ def _base_style(heads: int, numbers: Sequence[bool]) -> list[tuple[Any, ...]]:
         ("BOTTOMPADDING", (0, 0), (-1, -1), 2.8),
         ("LINEABOVE", (0, 0), (-1, 0), 0.9, INK),
         ("LINEBELOW", (0, heads - 1), (-1, heads - 1), 0.5, INK),
-        ("LINEBELOW", (0, heads), (-1, -1), 0.25, HAIR),
-        ("LINEBELOW", (0, -1), (-1, -1), 0.5, RULE),
+        ("LINEBELOW", (0, heads), (-1, heads + rows - 1), 0.25, HAIR),
+        ("LINEBELOW", (0, heads + rows - 1), (-1, heads + rows - 1), 0.5, RULE),
     ]
     commands += [("ALIGN", (i, heads), (i, -1), "RIGHT") for i, number in enumerate(numbers) if number]
     return commands
@@ -175,7 +189,9 @@ def _over_style(columns: Sequence[Column], *, over: bool) -> list[tuple[Any, ...
         else:
             while end + 1 < len(columns) and columns[end + 1].over == columns[start].over:
                 end += 1
-            commands += [("SPAN", (start, 0), (end, 0)), ("LINEBELOW", (start, 0), (end, 0), 0.35, RULE)]
+            commands += [("SPAN", (start, 0), (end, 0)), ("LINEBELOW", (start, 0), (end, 0), 0.35, MID)]
+            # White over the ends of the rule: neighbours that share a head stand apart.
+            commands += [("LINEAFTER", (edge, 0), (edge, 1), 6, WHITE) for edge in (start - 1, end) if edge >= 0]
         start = end + 1
     return commands
 
@@ -189,4 +205,4 @@ def _row_style(rows: Sequence[Row], heads: int) -> Iterator[tuple[Any, ...]]:
             if index + 1 < len(rows) + heads:
                 yield "NOSPLIT", (0, index), (0, index + 1)
         elif row.strong:
-            yield "FONT", (0, index), (-1, index), MEDIUM, _SIZE, 10
+            yield "FONT", (0, index), (_STRONG - 1, index), MEDIUM, _SIZE, 10

@@ -6,11 +6,12 @@ Everything is legible in black and white: greys and weights carry emphasis, mark
 from __future__ import annotations
 
 import functools
+import re
 from pathlib import Path
 from xml.sax.saxutils import escape
 
 from reportlab.lib.colors import Color
-from reportlab.lib.enums import TA_RIGHT
+from reportlab.lib.enums import TA_CENTER, TA_RIGHT
 from reportlab.lib.pagesizes import A4
 from reportlab.lib.styles import ParagraphStyle
 from reportlab.lib.units import mm
@@ -21,6 +22,7 @@ __all__ = [
     "ACCENT",
     "BOTTOM",
     "FAINT",
+    "FIRST_TOP",
     "HAIR",
     "INK",
     "ITALIC",
@@ -47,6 +49,8 @@ PAGE_WIDTH, PAGE_HEIGHT = A4
 LEFT = 21 * mm
 TEXT_WIDTH = PAGE_WIDTH - 2 * LEFT
 TOP = 25 * mm
+FIRST_TOP = 17 * mm
+"""The first page has no running head."""
 BOTTOM = 25 * mm
 
 REGULAR, MEDIUM, ITALIC, LIGHT = "Roboto", "Roboto-Medium", "Roboto-Italic", "Roboto-Light"
@@ -92,7 +96,7 @@ def printable(text: str) -> str:
 
 def markup(text: str) -> str:
     """Return text for a paragraph: printable, with nothing read as markup."""
-    return escape(printable(" ".join(text.split())))
+    return escape(printable(re.sub(r"[ \t\r\n]+", " ", text)))
 
 
 def text_width(text: str, font: str, size: float) -> float:
@@ -122,10 +126,11 @@ def style(name: str) -> ParagraphStyle:
     load_fonts()
     styles = {
         "title": lambda: _style(LIGHT, 27, 32, ACCENT),
-        "subject": lambda: _style(MEDIUM, 12.5, 16.5),
+        "subject": lambda: _style(MEDIUM, 12, 16),
         "section": lambda: _style(MEDIUM, 15, 19, ACCENT, spaceBefore=20, spaceAfter=5),
         "heading": lambda: _style(MEDIUM, 10.5, 14, INK, spaceBefore=11, spaceAfter=3),
         "body": lambda: _style(REGULAR, 9, 13, spaceAfter=5),
+        "fact": lambda: _style(REGULAR, 9, 12.6, spaceAfter=1.5),
         "note": lambda: _style(REGULAR, 7.8, 11, MID, spaceAfter=4),
         "strong": lambda: _style(MEDIUM, 9, 13, spaceAfter=3),
         "caution": lambda: _style(ITALIC, 8, 11, INK, leftIndent=8, spaceBefore=2, spaceAfter=6, borderPadding=0),
@@ -141,7 +146,16 @@ def style(name: str) -> ParagraphStyle:
             spaceBefore=10,
             spaceAfter=10,
         ),
-        "numbered": lambda: _style(REGULAR, 8.5, 11.8, spaceAfter=3.2, leftIndent=15, bulletIndent=0),
+        "numbered": lambda: _style(
+            REGULAR,
+            8.5,
+            11.8,
+            spaceAfter=3.2,
+            leftIndent=15,
+            bulletIndent=0,
+            bulletFontName=REGULAR,
+            bulletFontSize=8.5,
+        ),
         "label": lambda: _style(MEDIUM, 9, 13, ACCENT),
         "small-label": lambda: _style(REGULAR, 7.4, 10, MID),
         "value": lambda: _style(MEDIUM, 9, 12),
@@ -151,10 +165,12 @@ def style(name: str) -> ParagraphStyle:
         "cell-strong": lambda: _style(MEDIUM, 7.6, 10),
         "cell-group": lambda: _style(MEDIUM, 7.8, 10.4),
         "head": lambda: _style(MEDIUM, 7.3, 9),
+        "head-over": lambda: _style(MEDIUM, 7.3, 9, alignment=TA_CENTER),
         "head-number": lambda: _style(MEDIUM, 7.3, 9, alignment=TA_RIGHT),
         "contents": lambda: _style(REGULAR, 8.6, 12),
         "contents-page": lambda: _style(REGULAR, 8.6, 12, alignment=TA_RIGHT),
         "card-head": lambda: _style(MEDIUM, 8.4, 11),
+        "card-value": lambda: _style(LIGHT, 12.5, 16),
         "card": lambda: _style(REGULAR, 7.6, 10.2),
     }
     return styles[name]()

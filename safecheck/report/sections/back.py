@@ -90,7 +90,10 @@ def plan(view: View) -> Section:
     entry = view.record.plan
     lines = [Row((path, value)) for path, value in _flat("", entry.content)]
     blocks: tuple[Block, ...] = (
-        Prose(f"Read from the {entry.source}. SHA-256 of the plan: {entry.sha256}", "note"),
+        Prose(
+            f"Read from the {entry.source}. Keys left out stand with their default. SHA-256 of the plan: {entry.sha256}",
+            "note",
+        ),
         Table(
             (Column("Key"), Column("Value as read")),
             tuple(lines[:PLAN_LINES]),
@@ -101,13 +104,15 @@ def plan(view: View) -> Section:
 
 
 def _flat(path: str, value: Any) -> Iterator[tuple[str, str]]:  # noqa: ANN401 - the plan's own values
-    """Yield (dotted path, text) of every value."""
+    """Yield (dotted path, text): a line per value, but one line only for each table of a list."""
     if isinstance(value, dict) and value:
         for key, inner in value.items():
             yield from _flat(f"{path}.{key}" if path else str(key), inner)
+    elif isinstance(value, list | tuple) and value and isinstance(value[0], dict):
+        for index, table in enumerate(value):
+            yield f"{path}[{index}]", "; ".join(f"{key} {text}" for key, text in _flat("", table))
     elif isinstance(value, list | tuple) and value:
-        for index, inner in enumerate(value):
-            yield from _flat(f"{path}[{index}]", inner)
+        yield path, ", ".join(_plain(inner) for inner in value)
     else:
         yield path, _plain(value)
 
@@ -134,6 +139,7 @@ def keeping(view: View) -> Section:
         ("Versions", f"those listed under Versions and selftest{f', program version {program}' if program else ''}"),
         ("Dossier", "the whole folder, with its seal"),
         ("Hash of the record", f"{view.record_sha256[:16]}…, kept where the dossier is not"),
+        ("Review date", "when this decision is looked at again"),
     )
     columns = (
         Column("What to keep to recompute"),
@@ -141,8 +147,8 @@ def keeping(view: View) -> Section:
         Column("Where kept", blank=True),
         Column("Until", blank=True),
     )
-    rows = (*(Row((what, which, "", "")) for what, which in keep), Row(("Review of this decision", "date:", "", "")))
-    return Section("What to keep, and review", (Table(columns, rows),))
+    rows = tuple(Row((what, which, "", "")) for what, which in keep)
+    return Section("What to keep, and review", (Table(columns, rows),), new_page=True)
 
 
 def signatures(view: View) -> Section:
@@ -151,4 +157,4 @@ def signatures(view: View) -> Section:
         "Each signatory states an opinion of their own. A signature here neither alters the figures nor is asked for by "
         f"this record, whose hash is {view.record_sha256[:16]}…"
     )
-    return Section("Opinions", (Prose(text, "note"), Signatures("Opinion of the signatory", ROLES)), new_page=True)
+    return Section("Opinions", (Prose(text, "note"), Signatures("Opinion of the signatory", ROLES)), room_mm=160)

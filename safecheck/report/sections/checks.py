@@ -51,19 +51,17 @@ def left_out(view: View) -> Section:
     """The section Files left out."""
     record = view.record
     inputs = record.inputs
-    blocks: list[Block] = [Prose(_sum_line("Originals", _counts(inputs)), "strong")]
-    blocks.append(Prose(_reasons_line(record.left_out, "original", inputs.excluded, inputs.refused)))
+    blocks: list[Block] = [
+        Prose(_sum_line("Originals", _counts(inputs)), "strong"),
+        *_disagreement(record.left_out, "original", inputs.excluded, inputs.refused),
+    ]
     if inputs.delivered_files:
-        delivered = (
-            inputs.delivered_files,
-            inputs.delivered_assessed,
-            inputs.delivered_excluded,
-            inputs.delivered_refused,
-        )
-        blocks.append(Prose(_sum_line("Delivered copies", delivered), "strong"))
-        blocks.append(
-            Prose(_reasons_line(record.left_out, "delivered", inputs.delivered_excluded, inputs.delivered_refused))
-        )
+        excluded, refused = inputs.delivered_excluded, inputs.delivered_refused
+        counts = (inputs.delivered_files, inputs.delivered_assessed, excluded, refused)
+        blocks += [
+            Prose(_sum_line("Delivered copies", counts), "strong"),
+            *_disagreement(record.left_out, "delivered", excluded, refused),
+        ]
     blocks += _reasons(record.left_out)
     if inputs.frames_refused:
         blocks.append(
@@ -91,20 +89,21 @@ def _sum_line(name: str, counts: tuple[int, int, int, int]) -> str:
     return f"{line}." if files == assessed + excluded + refused else f"{line}: THE SUMS DO NOT AGREE."
 
 
-def _reasons_line(
+def _disagreement(
     entries: tuple[CountEntry, ...], side: Literal["original", "delivered"], excluded: int, refused: int
-) -> str:
-    """Whether the reasons add up to the counts."""
+) -> list[Block]:
+    """Say so where the reasons do not add up to the counts."""
     sums = {"excluded": 0, "refused": 0}
     for item in entries:
         if item.side == side:
             sums[item.status] += item.files
     if (sums["excluded"], sums["refused"]) == (excluded, refused):
-        return "The files of each reason below add up to these numbers."
-    return (
+        return []
+    text = (
         f"THE REASONS DO NOT ADD UP: they name {count(sums['excluded'])} excluded and "
         f"{count(sums['refused'])} refused files."
     )
+    return [Prose(text, "strong")]
 
 
 def _reasons(entries: tuple[CountEntry, ...]) -> list[Block]:

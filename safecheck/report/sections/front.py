@@ -8,11 +8,12 @@ from typing import Any
 
 from safecheck.record.document import CandidateEntry, OutcomeEntry
 from safecheck.report.blocks import Block, Column, Contents, Facts, Heading, Numbered, Prose, Row, Table, Title
+from safecheck.report.definitions import label_of
 from safecheck.report.numbers import bytes_text, count, figure, joined, plural, rounded_time
 from safecheck.report.sections.view import View
 from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, SHORT_CAUTION
 
-__all__ = ["front", "outcome_order", "ratio_groups"]
+__all__ = ["front", "limit_words", "outcome_words", "ratio_groups"]
 
 LINES_ON_FIRST_PAGE = 14
 """Outcomes shown on the first page; those outside come first, so that none of them is cut for one within."""
@@ -35,7 +36,7 @@ def _title(view: View) -> Title:
     facts = (
         ("Change reference", change.get("reference") or "none given"),
         ("Plan declared by", change.get("declared_by") or "the command line"),
-        ("on", change.get("declared_on") or "not stated"),
+        ("Plan declared on", change.get("declared_on") or "not stated"),
         ("Run finished", f"{view.run.finished:%Y-%m-%d %H:%M} {view.run.finished.tzname() or ''}".strip()),
     )
     return Title(RECORD_TITLE, view.subject, facts, view.record_sha256)
@@ -118,19 +119,18 @@ def _run(view: View) -> tuple[str, ...]:
 
 
 def _outcomes(view: View) -> tuple[Block, ...]:
-    """One line per limit and proposed candidate, and the exit text."""
+    """The exit text, then one line per limit and proposed candidate."""
     record = view.record
     blocks: list[Block] = [Heading("Outcomes"), Prose(SHORT_CAUTION, "caution")]
-    lines = sorted((item for item in record.outcomes if item.status == "proposed"), key=outcome_order)
-    if lines:
-        blocks += [Prose(f"{_sentence_case(record.outcomes_text)}.", "strong"), _outcome_table(lines)]
-    else:
-        blocks.append(Prose(_sentence_case(record.outcomes_text or NO_LIMITS) + ".", "strong"))
     blocks.append(Prose(f"Exit {record.exit_code}: {record.exit_text}", "outcome"))
     more = [item for item in record.conditions if item.code != record.exit_code]
     if more:
         also = "; ".join(f"{item.code}, {item.text}" for item in more)
         blocks.append(Prose(f"These hold as well: {also}.", "note"))
+    blocks.append(Prose(_sentence_case(record.outcomes_text or NO_LIMITS) + ".", "strong"))
+    lines = view.outcomes("proposed")
+    if lines:
+        blocks.append(_outcome_table(lines))
     return tuple(blocks)
 
 
@@ -139,34 +139,33 @@ def _sentence_case(text: str) -> str:
     return (text[:1].upper() + text[1:]).rstrip(".")
 
 
-def outcome_order(item: OutcomeEntry) -> int:
-    """Outside first, then not evaluated, then within."""
-    return ("outside declared limits", "not evaluated", "within declared limits").index(item.outcome)
-
-
 def _outcome_table(lines: Sequence[OutcomeEntry]) -> Table:
-    """The table of the first page."""
+    """The table of the first page, a group of rows per limit."""
     columns = (
-        Column("Limit"),
-        Column("Candidate"),
+        Column("Limit and candidate"),
         Column("Outcome"),
         Column("Studies within"),
-        Column("Bound for patients not assessed"),
+        Column("Bound on patients not assessed"),
     )
-    rows = [
-        Row(
-            (
-                f"{item.limit}: {item.side} {figure(item.bound)} {_unit(item.unit)}".rstrip(),
-                item.candidate,
-                _outcome_words(item),
-                f"{count(item.studies_within)} of {count(item.studies)}",
-                item.bound_text,
-            ),
-            strong=item.outcome == "outside declared limits",
-        )
-        for item in lines[:LINES_ON_FIRST_PAGE]
-    ]
+    shown = lines[:LINES_ON_FIRST_PAGE]
+    rows: list[Row] = []
+    for name in dict.fromkeys(item.limit for item in shown):
+        same = [item for item in shown if item.limit == name]
+        rows += [Row((limit_words(same[0]),), group=True), *(_outcome_row(item) for item in same)]
     return Table(columns, tuple(rows), note=_rest(lines[LINES_ON_FIRST_PAGE:]))
+
+
+def limit_words(item: OutcomeEntry) -> str:
+    """A limit in one line."""
+    bound = f"{figure(item.bound)} {item.unit}".removesuffix(" 1")
+    return f"{item.limit}: {label_of(item.measure)} {item.side} {bound}, {item.scope}"
+
+
+def _outcome_row(item: OutcomeEntry) -> Row:
+    """One candidate under a limit."""
+    studies = f"{count(item.studies_within)} of {count(item.studies)}"
+    outside = item.outcome == "outside declared limits"
+    return Row((item.candidate, outcome_words(item), studies, item.bound_text), strong=outside)
 
 
 def _rest(cut: Sequence[OutcomeEntry]) -> str:
@@ -178,16 +177,11 @@ def _rest(cut: Sequence[OutcomeEntry]) -> str:
     return f"and {len(cut)} more ({parts}); all stand in the section Limits and outcomes."
 
 
-def _outcome_words(item: OutcomeEntry) -> str:
+def outcome_words(item: OutcomeEntry) -> str:
     """The outcome, with the mark of a limit that tells nothing."""
     if item.over_compressed_also_within:
         return f"{item.outcome}; does not tell the over-compressed control apart"
     return item.outcome
-
-
-def _unit(unit: str) -> str:
-    """A unit as printed; a quantity of dimension one has none."""
-    return "" if unit == "1" else unit
 
 
 def _cautions(view: View) -> tuple[Block, ...]:

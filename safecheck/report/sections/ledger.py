@@ -22,9 +22,9 @@ _COLUMNS = (
     Column("total", "to 1", number=True, over="Bits stored"),
     Column("least", "to 1", number=True, over="Bits stored"),
     Column("largest", "to 1", number=True, over="Bits stored"),
-    Column("Bits allo-cated", "to 1", number=True),
+    Column("Bits allocated", "to 1", number=True),
     Column("Content", "to 1", number=True),
-    Column("loss-less", "times", number=True, over="Smaller than"),
+    Column("lossless", "times", number=True, over="Smaller than"),
     Column("now", "times", number=True, over="Smaller than"),
 )
 

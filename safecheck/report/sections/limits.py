@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from safecheck.record.document import OutcomeEntry
 from safecheck.report.blocks import Block, Column, Prose, Row, Section, Table
-from safecheck.report.numbers import NONE, count, figure
-from safecheck.report.sections.front import outcome_order
+from safecheck.report.numbers import aligned, count
+from safecheck.report.sections.front import limit_words, outcome_words
 from safecheck.report.sections.view import View, place_words, rest_sentence
 from safecheck.wording import NO_LIMITS, SHORT_CAUTION
 
@@ -16,24 +18,24 @@ LINES = 400
 _COLUMNS = (
     Column("Candidate"),
     Column("Outcome"),
-    Column("Values", "outside of all", number=True),
-    Column("Studies", "within of all", number=True),
-    Column("Patients", "within of all", number=True),
-    Column("Worst value", "unit of the limit", number=True),
+    Column("Values outside", number=True),
+    Column("Studies within", number=True),
+    Column("Patients within", number=True),
+    Column("Worst value", number=True),
     Column("Bound, and place of the worst value"),
 )
 
 
 def limits(view: View) -> Section:
     """The section Limits and outcomes."""
-    outcomes = view.record.outcomes
+    outcomes = view.outcomes()
     if not outcomes:
         return Section("Limits and outcomes", (Prose(f"{NO_LIMITS.capitalize()}."),))
     blocks: list[Block] = [Prose(SHORT_CAUTION, "caution")]
     rows: list[Row] = []
-    for name in dict.fromkeys(item.limit for item in outcomes):
-        same = sorted((item for item in outcomes if item.limit == name), key=outcome_order)
-        rows += [Row((_head(same[0]),), group=True), *(_row(item) for item in same)]
+    for name in dict.fromkeys(item.limit for item in view.record.outcomes):
+        same = [item for item in outcomes if item.limit == name]
+        rows += [Row((_head(same[0]),), group=True), *_rows(same)]
     note = rest_sentence(LINES, len(rows), "all stand in record.json")
     blocks.append(Table(_COLUMNS, tuple(rows[:LINES]), note=note))
     return Section("Limits and outcomes", tuple(blocks))
@@ -41,23 +43,24 @@ def limits(view: View) -> Section:
 
 def _head(item: OutcomeEntry) -> str:
     """The limit in words."""
-    unit = "" if item.unit == "1" else f" {item.unit}"
-    return (
-        f"{item.limit}: {item.measure} {item.side} {figure(item.bound)}{unit}, for {item.scope}. "
-        f"Declared by {item.declared_by} on {item.declared_on}."
-    )
+    unit = f", in {item.unit}" if item.unit != "1" else ""
+    return f"{limit_words(item)}. Declared by {item.declared_by} on {item.declared_on}. Worst value{unit}"
 
 
-def _row(item: OutcomeEntry) -> Row:
+def _rows(same: Sequence[OutcomeEntry]) -> list[Row]:
+    """All candidates under one limit."""
+    worst = aligned([item.worst_value for item in same])
+    return [_row(item, value) for item, value in zip(same, worst, strict=True)]
+
+
+def _row(item: OutcomeEntry, worst: str) -> Row:
     """One candidate under the limit."""
     candidate = item.candidate if item.status == "proposed" else f"{item.candidate} (context)"
-    outcome = str(item.outcome)
-    if item.over_compressed_also_within:
-        outcome += "; does not tell the over-compressed control apart"
+    outcome = outcome_words(item)
     if item.reason:
         outcome += f" ({item.reason})"
     missing = f" {count(item.values_missing)} values not evaluated." if item.values_missing else ""
-    place = f" {place_words(item.worst)}." if item.worst else ""
+    place = f" At {place_words(item.worst)}." if item.worst else ""
     bound = item.bound_text[:1].upper() + item.bound_text[1:]
     return Row(
         (
@@ -66,8 +69,8 @@ def _row(item: OutcomeEntry) -> Row:
             f"{count(item.values_outside)} of {count(item.values)}",
             f"{count(item.studies_within)} of {count(item.studies)}",
             f"{count(item.patients_within)} of {count(item.patients)}",
-            figure(item.worst_value) if item.worst_value is not None else NONE,
-            f"{bound}.{missing}{place[:2].upper()}{place[2:]}",
+            worst,
+            f"{bound}.{missing}{place}",
         ),
         strong=item.outcome == "outside declared limits" and item.status == "proposed",
     )

@@ -29,7 +29,8 @@ def places(view: View) -> Section:
     rest = rest_sentence(CARDS, len(entries), "all stand in record.json, and every frame's in measures.parquet")
     intro = (
         "The frames whose worst patch moved most, by candidate and group; each frame once. The outline is the frame, "
-        "the small square the patch, to scale. Rows count down and columns to the right, from 0."
+        "the small square the patch; the figures at its edges are the first row and column of the patch, from 0, rows "
+        "downwards and columns to the right."
     )
     blocks: list[Block] = [Prose(intro, "note"), Places(cards)]
     if rest:
@@ -69,7 +70,8 @@ def _card(entry: WorstPlaceEntry, crops: Path | None) -> PlaceCard:
     pictures = _pictures(crops, entry) if crops is not None and entry.crop and not hidden else None
     return PlaceCard(
         head=f"{entry.candidate}, place {entry.rank}",
-        value=f"{label_of(entry.measure)} {figure(entry.value)} {entry.unit}",
+        value=f"{figure(entry.value)} {entry.unit}",
+        measure=label_of(entry.measure),
         lines=tuple(lines),
         rows=entry.rows,
         columns=entry.columns,

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
+from safecheck.measures.catalogue import MEASURES
 from safecheck.record.document import CandidateEntry, FigureEntry, StratumEntry
 from safecheck.report.blocks import (
     Block,
@@ -82,20 +83,21 @@ def _overview(view: View) -> Section:
 
 def _detail(view: View, stratum: StratumEntry) -> Section:
     """Figures and curves of one group."""
+    title = f"Figures: {stratum.stratum}"
     candidates = view.in_stratum(stratum)
     blocks: list[Block] = [Prose(stratum_line(stratum)), Prose(SHORT_CAUTION, "caution")]
     if not candidates:
-        return Section(stratum.stratum, (*blocks, Prose("No candidate has figures in this group.")))
+        return Section(title, (*blocks, Prose("No candidate has figures in this group.")))
     charts = tuple(_charts(view, stratum, candidates))
     if charts:
         caption = (
             "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio "
-            "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic."
+            "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. Curves stand slightly apart, so that bars do not hide each other."
         )
         blocks.append(Charts(charts, caption))
     blocks += [_errors(view, stratum, candidates), *_windows(view, stratum, candidates)]
     blocks += _further(view, stratum, candidates)
-    return Section(stratum.stratum, tuple(blocks))
+    return Section(title, tuple(blocks), room_mm=125)
 
 
 def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Chart]:
@@ -109,9 +111,8 @@ def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
                 series.setdefault(_codec_name(item), []).append(point)
         drawn = tuple(Series(name, tuple(sorted(points, key=lambda p: p.x))) for name, points in series.items())
         if drawn:
-            title = label_of(measure)
-            y_title = f"{title}, {stratum.unit}"
-            charts.append(Chart(title, "Achieved ratio, to 1", y_title, drawn, _bounds(view, stratum, measure)))
+            title, bounds = label_of(measure), _bounds(view, stratum, measure)
+            charts.append(Chart(title, "Achieved ratio, to 1", stratum.unit, drawn, bounds))
     return charts
 
 
@@ -154,7 +155,7 @@ def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
         Column("median", "to 1", number=True, over="Achieved ratio, bits stored"),
         Column("least", "to 1", number=True, over="Achieved ratio, bits stored"),
         Column("median", unit, number=True, over="RMSE, content"),
-        Column("95th pct.", unit, number=True, over="RMSE, content"),
+        Column("95th pct.", unit, number=True, over="RMSE, content"),
         Column("largest", unit, number=True, over="RMSE, content"),
         Column("median", unit, number=True, over="Largest error, content"),
         Column("largest", unit, number=True, over="Largest error, content"),
@@ -195,10 +196,10 @@ def _windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
     columns = (
         Column("Window and candidate"),
         Column("median", "1", number=True, over="SSIM, content"),
-        Column("5th pct.", "1", number=True, over="SSIM, content"),
+        Column("5th pct.", "1", number=True, over="SSIM, content"),
         Column("least", "1", number=True, over="SSIM, content"),
         Column("median", "%", number=True, over="Content changed by 5 levels of 255 or more"),
-        Column("95th pct.", "%", number=True, over="Content changed by 5 levels of 255 or more"),
+        Column("95th pct.", "%", number=True, over="Content changed by 5 levels of 255 or more"),
         Column("largest", "%", number=True, over="Content changed by 5 levels of 255 or more"),
     )
     rows: list[Row] = []
@@ -226,7 +227,7 @@ def _further(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
     others = [key for key in keys if key[0] not in (*_MAIN, *_WINDOW)]
     if not others:
         return []
-    blocks: list[Block] = [Heading(f"Further measures: {stratum.stratum}")]
+    blocks: list[Block] = [Heading("Further measures")]
     for start in range(0, len(candidates), PER_TABLE):
         blocks.append(_further_table(view, stratum.stratum, candidates[start : start + PER_TABLE], others))
     return blocks
@@ -245,14 +246,15 @@ def _further_table(
         values = [part for item in entries for part in (item.median if item else None, _worst(item))]
         label = f"{label_of(measure)}, {window}" if window else label_of(measure)
         rows.append(Row((label, unit, *aligned(values))))
-    note = "Worst: the largest value where more is worse, the least where less is worse, else the farther from zero."
+    note = "Worst: the largest value where more is worse, the least where less is worse; of signed measures the one farther from zero."
     return Table(tuple(columns), tuple(rows), note=note)
 
 
 def _worst(item: FigureEntry | None) -> float | None:
-    """The end of the spread that is worse."""
+    """The end of the spread that is worse; of signed measures the farther from zero."""
     if item is None or item.largest is None or item.least is None:
         return None
-    if item.worse == "higher":
-        return item.largest
-    return item.least if item.worse == "lower" else max(item.least, item.largest, key=abs)
+    known = MEASURES.get(item.measure)
+    if known is not None and known.signed:
+        return max(item.least, item.largest, key=abs)
+    return item.largest if item.worse == "higher" else item.least

@@ -10,6 +10,7 @@ from safecheck.record.document import (
     CandidateEntry,
     FigureEntry,
     LedgerEntry,
+    OutcomeEntry,
     Place,
     RecordDocument,
     StratumEntry,
@@ -64,10 +65,19 @@ class View:
         """Figures of one measure, or None."""
         return self.figures.get((candidate, stratum, measure, window))
 
+    def outcomes(self, status: str = "") -> list[OutcomeEntry]:
+        """Outcomes of all candidates or those of one status: outside first, then not evaluated, then within."""
+        rank = {item.candidate: index for index, item in enumerate(self.candidates)}
+        wanted = [item for item in self.record.outcomes if status in ("", item.status)]
+        return sorted(wanted, key=lambda item: (_ORDER.index(item.outcome), rank.get(item.candidate, len(rank))))
+
     def windows(self, stratum: str) -> tuple[str, ...]:
         """Labels of the windows that a stratum has figures for, in the record's order."""
         labels = [window for _, name, _, window in self.figures if name == stratum and window]
         return tuple(dict.fromkeys(labels))
+
+
+_ORDER = ("outside declared limits", "not evaluated", "within declared limits")
 
 
 def view_of(record: RecordDocument, record_sha256: str, run: RunFacts, crops: Path | None) -> View:
