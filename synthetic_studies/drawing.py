@@ -138,18 +138,33 @@ class Ribbon:
         end = self.radius_mm if self.end_radius_mm is None else self.end_radius_mm
         return Ribbon(self.points_mm, max(self.radius_mm + by_mm, 0.1), max(end + by_mm, 0.1))
 
-    def distance_mm(self, x_mm: Image, y_mm: Image) -> Image:
-        """Distance outside the outline; negative inside."""
-        steps = len(self.points_mm) - 1
+    def strokes(self) -> list[Stroke]:
+        """Give the straight strokes of which it consists, in order."""
         last = self.radius_mm if self.end_radius_mm is None else self.end_radius_mm
-        nearest: Image = np.full(np.broadcast_shapes(x_mm.shape, y_mm.shape), np.inf)
-        for index, (start, end) in enumerate(pairwise(self.points_mm)):
-            radius = self.radius_mm + (last - self.radius_mm) * index / max(steps - 1, 1)
-            nearest = np.minimum(nearest, Stroke(*start, *end, radius).distance_mm(x_mm, y_mm))
-        return nearest
+        radii = np.linspace(self.radius_mm, last, len(self.points_mm) - 1)
+        lines = zip(pairwise(self.points_mm), radii, strict=True)
+        return [Stroke(*start, *end, float(radius)) for (start, end), radius in lines]
 
 
 Shape = Blob | Stroke | Ribbon
+Box = tuple[slice, slice]
+
+
+def _overlap(inner: Box, outer: Box) -> tuple[Box, Box]:
+    """Part of one box inside another, on the grid and counted from the corner of the other."""
+    starts = [max(one.start, two.start) for one, two in zip(inner, outer, strict=True)]
+    stops = [min(one.stop, two.stop) for one, two in zip(inner, outer, strict=True)]
+    stops = [max(start, stop) for start, stop in zip(starts, stops, strict=True)]
+    part = (slice(starts[0], stops[0]), slice(starts[1], stops[1]))
+    corner = (outer[0].start, outer[1].start)
+    place = (slice(starts[0] - corner[0], stops[0] - corner[0]), slice(starts[1] - corner[1], stops[1] - corner[1]))
+    return part, place
+
+
+def _span(middle: float, reach: float, size: int) -> slice:
+    """Indices within reach of the middle, of those from 0 to size - 1."""
+    start = min(max(0, math.floor(middle - reach)), size)
+    return slice(start, max(start, min(size, math.ceil(middle + reach) + 1)))
 
 
 class Canvas:
@@ -164,19 +179,29 @@ class Canvas:
         self.x_mm: Image = columns[None, :] * grid.spacing_mm
         self.y_mm: Image = rows[:, None] * grid.spacing_mm
 
-    def _box(self, shape: Shape, soft_mm: float) -> tuple[slice, slice]:
-        """Rows and columns that a shape can touch."""
+    def _box(self, shape: Shape, soft_mm: float) -> Box:
+        """Rows and columns that a shape can touch; empty where it lies outside the grid."""
         row, column = self.grid.pixel(shape.x_mm, shape.y_mm)
         reach = (shape.reach_mm + soft_mm) / self.grid.spacing_mm + 1
-        rows = slice(max(0, math.floor(row - reach)), max(0, math.ceil(row + reach) + 1))
-        return rows, slice(max(0, math.floor(column - reach)), max(0, math.ceil(column + reach) + 1))
+        return _span(row, reach, self.grid.rows), _span(column, reach, self.grid.columns)
 
-    def cover(self, shape: Shape, soft_mm: float = 0.0) -> tuple[tuple[slice, slice], Image]:
+    def cover(self, shape: Shape, soft_mm: float = 0.0) -> tuple[Box, Image]:
         """Box of a shape and its coverage there, 0 to 1; the outline is a ramp at least one pixel wide."""
         box = self._box(shape, soft_mm)
+        if not isinstance(shape, Ribbon):
+            return box, self._ramp(shape, box, soft_mm)
+        coverage: Image = np.zeros_like(self.values[box])
+        for stroke in shape.strokes():
+            part, place = _overlap(self._box(stroke, soft_mm), box)
+            np.maximum(coverage[place], self._ramp(stroke, part, soft_mm), out=coverage[place])
+        return box, coverage
+
+    def _ramp(self, shape: Blob | Stroke, box: Box, soft_mm: float) -> Image:
+        """Coverage within a box."""
         width = max(soft_mm, self.grid.spacing_mm)
         distance = shape.distance_mm(self.x_mm[:, box[1]], self.y_mm[box[0], :])
-        return box, np.clip(0.5 - distance / width, 0.0, 1.0)
+        coverage: Image = np.clip(0.5 - distance / width, 0.0, 1.0)
+        return coverage
 
     def paint(
         self, shape: Shape, value: float, texture: float = 0.0, soft_mm: float = 0.0, strength: float = 1.0
@@ -192,12 +217,17 @@ class Canvas:
         box, coverage = self.cover(shape, soft_mm)
         self.values[box] += amount * coverage
 
-    def add_dome(self, shape: Blob, amount: float) -> None:
-        """Add the thickness of an ellipsoid: `amount` at its middle, falling to nothing at its outline."""
+    def raise_to(self, shape: Shape, amount: float, soft_mm: float = 0.0) -> None:
+        """Bring what is there up to at least `amount` times the coverage."""
+        box, coverage = self.cover(shape, soft_mm)
+        np.maximum(self.values[box], amount * coverage, out=self.values[box])
+
+    def add_dome(self, shape: Blob, amount: float, power: float = 0.5) -> None:
+        """Add a thickness of `amount` at the middle, nothing at the outline; power 0.5 is an ellipsoid, 1 is softer."""
         box = self._box(shape, 0.0)
         distance = shape.distance_mm(self.x_mm[:, box[1]], self.y_mm[box[0], :])
         depth = np.clip(-distance / min(shape.half_width_mm, shape.half_height_mm), 0.0, 1.0)
-        self.values[box] += amount * np.sqrt(depth * (2 - depth))
+        self.values[box] += amount * (depth * (2 - depth)) ** power
 
     def paint_where(self, coverage: Image, value: float, texture: float = 0.0) -> None:
         """Lay a value over the whole grid by a coverage of 0 to 1."""

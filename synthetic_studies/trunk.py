@@ -51,7 +51,7 @@ def close_wall(canvas: Canvas, wall: Image, texture: Image, rng: np.random.Gener
     canvas.texture += outside * (texture - canvas.texture)
     for side in (-1, 1):
         _draw_back_muscles(canvas, side)
-        for place in (0.24, 0.62, 1.02, 1.42, 1.84):
+        for place in (0.46, 0.76, 1.08, 1.45, 1.85):
             _draw_rib(canvas, rng, side, place, z_mm)
 
 
