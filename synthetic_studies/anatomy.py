@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from synthetic_studies.drawing import Blob, Canvas, Ribbon
+from synthetic_studies.drawing import Blob, Canvas, Ribbon, smooth_line
 from synthetic_studies.fields import low_passed
 from synthetic_studies.trunk import FAT_HU, close_wall, draw_recesses, draw_spine, draw_table, draw_wall
 from synthetic_studies.truth import Grid
@@ -132,16 +132,6 @@ def _blob(organ: Organ, rng: np.random.Generator, z_mm: float) -> Blob:
     return Blob(organ.x_mm, organ.y_mm, width_mm, height_mm, organ.turned_deg, waves)
 
 
-def _line(numbers: tuple[float, ...], shift_mm: float = 0.0) -> tuple[tuple[float, float], ...]:
-    """Points of a smooth curve near x, y, x, y, ... (two rounds of corner cutting, Chaikin 1974)."""
-    points = np.array(numbers, dtype=np.float64).reshape(-1, 2) + np.array([0.0, shift_mm])
-    for _ in range(2):
-        first, second = points[:-1], points[1:]
-        cut = np.stack([0.75 * first + 0.25 * second, 0.25 * first + 0.75 * second], axis=1).reshape(-1, 2)
-        points = np.concatenate([points[:1], cut, points[-1:]])
-    return tuple((float(x), float(y)) for x, y in points)
-
-
 def _draw_spleen_and_kidneys(canvas: Canvas, rng: np.random.Generator, z_mm: float) -> None:
     """Paint spleen, then kidneys in their fat, then the adrenals above them."""
     canvas.paint(_blob(SPLEEN, rng, z_mm), SPLEEN.value_hu, 3, soft_mm=1.2)
@@ -149,8 +139,8 @@ def _draw_spleen_and_kidneys(canvas: Canvas, rng: np.random.Generator, z_mm: flo
         outline = _blob(organ, rng, z_mm)
         canvas.paint(outline.grown(3.2), FAT_HU, 8, soft_mm=1.5)
         _draw_kidney(canvas, outline, rng)
-    canvas.paint(Ribbon(_line((30, 20, 37, 27, 42, 36)), 1.7, 1.2), 75, 3, soft_mm=1.0)
-    canvas.paint(Ribbon(_line((-36, 18, -38, 28, -42, 36)), 1.6, 1.0), 75, 3, soft_mm=1.0)
+    canvas.paint(Ribbon(smooth_line((30, 20, 37, 27, 42, 36)), 1.7, 1.2), 75, 3, soft_mm=1.0)
+    canvas.paint(Ribbon(smooth_line((-36, 18, -38, 28, -42, 36)), 1.6, 1.0), 75, 3, soft_mm=1.0)
 
 
 def _draw_kidney(canvas: Canvas, outline: Blob, rng: np.random.Generator) -> None:
@@ -168,7 +158,7 @@ def _draw_kidney(canvas: Canvas, outline: Blob, rng: np.random.Generator) -> Non
     canvas.paint(Blob(hilum, outline.y_mm - 3, 3.6, 3.0, 30), 20, 2, soft_mm=1.5)
     exit_x = hilum + 2.0 * inward * outline.half_width_mm
     vein = (hilum, outline.y_mm, hilum + inward * 12, outline.y_mm - 8, exit_x, outline.y_mm - 17)
-    canvas.paint(Ribbon(_line(vein), 1.6, 2.8), 165, 1.5, soft_mm=1.2)
+    canvas.paint(Ribbon(smooth_line(vein), 1.6, 2.8), 165, 1.5, soft_mm=1.2)
 
 
 def _draw_vessels(canvas: Canvas, rng: np.random.Generator, z_mm: float) -> None:
@@ -176,10 +166,10 @@ def _draw_vessels(canvas: Canvas, rng: np.random.Generator, z_mm: float) -> None
     splenic = (-6, -12, 14, -6, 34, -10, 56, -4, 74, 4, 86, 12)
     for organ in PANCREAS:
         canvas.paint(_blob(organ, rng, z_mm), organ.value_hu, organ.texture_hu, soft_mm=1.5)
-    canvas.paint(Ribbon(_line(splenic, 1.5 * math.sin(z_mm / 15)), 3.8, 2.6), BLOOD_HU, 1.5, soft_mm=1.2)
+    canvas.paint(Ribbon(smooth_line(splenic, 1.5 * math.sin(z_mm / 15)), 3.8, 2.6), BLOOD_HU, 1.5, soft_mm=1.2)
     for organ in GREAT_VESSELS:
         canvas.paint(_blob(organ, rng, z_mm), organ.value_hu, organ.texture_hu, soft_mm=1.2)
-    canvas.paint(Ribbon(_line((14, 20.5, 18, 18, 19.7, 13.5)), 0.7, 1.1), 640, 10, soft_mm=0.8)
+    canvas.paint(Ribbon(smooth_line((14, 20.5, 18, 18, 19.7, 13.5)), 0.7, 1.1), 640, 10, soft_mm=0.8)
 
 
 def _draw_gut(canvas: Canvas, rng: np.random.Generator, z_mm: float) -> None:
@@ -206,7 +196,7 @@ def _draw_liver(canvas: Canvas, rng: np.random.Generator, z_mm: float) -> None:
     """Paint two lobes, the fissure between, and vessels that keep clear of the places of the discs."""
     for organ in LIVER:
         canvas.paint(_blob(organ, rng, z_mm), organ.value_hu, organ.texture_hu, soft_mm=1.2)
-    canvas.paint(Ribbon(_line((-28, -78, -26, -66, -27, -58)), 2.4, 0.6), FAT_HU, 4, soft_mm=2.0)
+    canvas.paint(Ribbon(smooth_line((-28, -78, -26, -66, -27, -58)), 2.4, 0.6), FAT_HU, 4, soft_mm=2.0)
     wander = 2.0 * math.sin(z_mm / 20)
     for numbers, radius_mm, end_mm in LIVER_VESSELS:
-        canvas.paint(Ribbon(_line(numbers, wander), radius_mm, end_mm), BLOOD_HU - 3, 2, soft_mm=2.0)
+        canvas.paint(Ribbon(smooth_line(numbers, wander), radius_mm, end_mm), BLOOD_HU - 3, 2, soft_mm=2.0)

@@ -11,7 +11,7 @@ import numpy.typing as npt
 
 from synthetic_studies.truth import Grid
 
-__all__ = ["Blob", "Canvas", "Ribbon", "Stroke"]
+__all__ = ["Blob", "Canvas", "Ribbon", "Stroke", "smooth_line"]
 
 Image = npt.NDArray[np.float64]
 
@@ -144,6 +144,19 @@ class Ribbon:
         radii = np.linspace(self.radius_mm, last, len(self.points_mm) - 1)
         lines = zip(pairwise(self.points_mm), radii, strict=True)
         return [Stroke(*start, *end, float(radius)) for (start, end), radius in lines]
+
+
+def smooth_line(numbers: tuple[float, ...], shift_mm: float = 0.0) -> tuple[tuple[float, float], ...]:
+    """Points of a smooth curve near x, y, x, y, ... moved back by `shift_mm`.
+
+    Two rounds of corner cutting (Chaikin, Computer Graphics and Image Processing 1974;3:346, from memory).
+    """
+    points = np.array(numbers, dtype=np.float64).reshape(-1, 2) + np.array([0.0, shift_mm])
+    for _ in range(2):
+        first, second = points[:-1], points[1:]
+        cut = np.stack([0.75 * first + 0.25 * second, 0.25 * first + 0.75 * second], axis=1).reshape(-1, 2)
+        points = np.concatenate([points[:1], cut, points[-1:]])
+    return tuple((float(x), float(y)) for x, y in points)
 
 
 Shape = Blob | Stroke | Ribbon

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
 import numpy.typing as npt
 from pydicom import Dataset
 
-from synthetic_studies.drawing import Blob, Canvas, Ribbon
+from synthetic_studies.drawing import Blob, Canvas, Ribbon, smooth_line
 from synthetic_studies.fields import low_passed
 from synthetic_studies.headers import (
     declare_grey,
@@ -28,7 +29,7 @@ Image = npt.NDArray[np.float64]
 FIELD_MM = 230.0
 SLOPE = 2.442002
 """Rescale slope, as some makers write it into MR images."""
-_FAT, _WHITE, _GREY, _FLUID, _MARROW, _MUSCLE = 2500.0, 2050.0, 1450.0, 420.0, 1700.0, 1000.0
+_FAT, _WHITE, _GREY, _FLUID, _MARROW, _MUSCLE = 2350.0, 2050.0, 1450.0, 420.0, 1700.0, 1000.0
 
 
 def mr_head(
@@ -121,11 +122,14 @@ def _head(grid: Grid, seed: int, z_mm: float) -> Image:
     skull = Blob(0, 0, 77 * scale, 95 * scale, 0, wave, 2.15)
     canvas.paint(skull, 900, soft_mm=1.0)
     canvas.paint(skull.grown(-1.6), _FAT, soft_mm=1.0)
-    canvas.paint(skull.grown(-6.0), 160, soft_mm=1.2)
-    canvas.paint(skull.grown(-7.8), _MARROW, soft_mm=1.6, strength=0.55)
-    canvas.paint(skull.grown(-10.2), 160, soft_mm=1.2)
-    canvas.paint(skull.grown(-12.0), _FLUID, soft_mm=1.0)
-    _paint_brain(canvas, skull.grown(-14.0), rng, z_mm)
+    bone = replace(skull.grown(-5.0), waves=((2, 0.012, 0.5), (5, 0.010, 0.0), (3, 0.012, 1.3)))
+    for side in (-1, 1):
+        canvas.paint(Blob(side * 69 * scale, 8, 6, 34, side * 3), _MUSCLE, soft_mm=1.2)
+    canvas.paint(bone, 160, soft_mm=1.2)
+    canvas.paint(bone.grown(-2.0), _MARROW, soft_mm=1.8, strength=0.6)
+    canvas.paint(bone.grown(-4.2), 160, soft_mm=1.4)
+    canvas.paint(bone.grown(-6.0), _FLUID, soft_mm=1.0)
+    _paint_brain(canvas, bone.grown(-7.6), rng, z_mm)
     _paint_depth(canvas, z_mm)
     texture = 1 + 0.018 * low_passed(rng, (grid.rows, grid.columns), 0.2)
     shading = 1 + 0.10 * np.hypot(canvas.x_mm, canvas.y_mm + 15) / 95 - 0.05
@@ -141,8 +145,8 @@ def _paint_brain(canvas: Canvas, brain: Blob, rng: np.random.Generator, z_mm: fl
     fold = math.cos(turn) * low_passed(rng, shape, cutoff) + math.sin(turn) * low_passed(rng, shape, cutoff)
     inside = -brain.distance_mm(canvas.x_mm, canvas.y_mm)
     slope = np.hypot(*np.gradient(fold, canvas.grid.spacing_mm)) + 0.03
-    reach = np.clip(1 - (inside - 13) / 9, 0, 1)
-    fissure = np.abs(canvas.x_mm) + np.where(np.abs(canvas.y_mm) > 42, 0.0, 60.0)
+    reach = np.clip(1 - (inside - 16) / 12, 0, 1)
+    fissure = np.abs(canvas.x_mm) + np.clip(46 - np.abs(canvas.y_mm + 4), 0, None) * 0.8
     distance = np.minimum(np.abs(fold) / slope + 14 * (1 - reach), np.minimum(np.maximum(inside, 0), fissure))
     canvas.paint(brain, _GREY, soft_mm=1.0)
     within = np.clip(inside / 1.0, 0, 1)
@@ -156,8 +160,9 @@ def _paint_depth(canvas: Canvas, z_mm: float) -> None:
     for side in (-1, 1):
         canvas.paint(Blob(side * 26, 4, 12 * size, 24 * size, side * -14), _GREY + 90, soft_mm=3.0)
         canvas.paint(Blob(side * 11, 12, 8, 13 * size, side * 12), _GREY + 40, soft_mm=2.5)
-        front = ((side * 3.0, -6.0), (side * 7.0, -22.0), (side * 13.0, -32.0))
-        canvas.paint(Ribbon(front, 3.4 * size, 4.8 * size), _FLUID, soft_mm=1.2)
-        back = ((side * 5.0, 20.0), (side * 15.0, 34.0), (side * 21.0, 47.0))
-        canvas.paint(Ribbon(back, 2.6 * size, 5.2 * size), _FLUID, soft_mm=1.2)
+        front = smooth_line((side * 2.6, 2, side * 3.4, -12, side * 6.5, -24, side * 14, -31))
+        canvas.paint(Ribbon(front, 2.0 * size, 4.2 * size), _FLUID, soft_mm=1.4)
+        back = smooth_line((side * 3, 14, side * 11, 24, side * 20, 36, side * 21, 50))
+        canvas.paint(Ribbon(back, 1.8 * size, 4.4 * size), _FLUID, soft_mm=1.4)
+        canvas.paint(Ribbon(smooth_line((side * 36, -16, side * 39, 2, side * 35, 20)), 1.2, 1.0), 1700, soft_mm=1.5)
     canvas.paint(Ribbon(((0.0, -2.0), (0.0, 18.0)), 1.8), _FLUID, soft_mm=1.2)
