@@ -34,7 +34,7 @@ def begins_archive(start: bytes) -> bool:
 
 
 def read_members(path: Path) -> Iterator[Member]:
-    """Read each member of an archive in turn, in the order of their names; folders are passed over.
+    """Read each member of an archive in turn, in the order of their names; folders are skipped.
 
     Raises
     ------

@@ -39,7 +39,7 @@ class _Walk:
 
 
 def read_list(list_file: Path) -> tuple[Path, ...]:
-    """Read a list file: one path a line, relative ones from the list's own folder, empty lines passed over.
+    """Read a list file: one path a line, relative ones from the list's own folder, empty lines skipped.
 
     Raises
     ------

@@ -27,7 +27,7 @@ _BIG_ENDIAN = "1.2.840.10008.1.2.2"
 _PREAMBLE_BYTES = 128
 _FIRST_LOOK_BYTES = 1 << 16
 _LATER_LOOK_BYTES = 1 << 12
-# Larger elements before the pixels (private blobs, as a rule) are passed over unread; none that is used is so large.
+# Larger elements before the pixels (private blobs, as a rule) stay unread; none that is used is so large.
 _DEFER_BYTES = 1 << 22
 _WHOLE = re.compile(r"[+-]?\d{1,12}(?:\.0*)?")
 _UNDEFINED = 0xFFFFFFFF

@@ -127,7 +127,7 @@ def _make_key(place: Path) -> None:
     with os.fdopen(os.open(aside, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600), "w") as stream:
         stream.write(secrets.token_hex(KEY_BYTES) + "\n")
     try:
-        # Linking fails where a file already is, so two first runs at once still share one key.
+        # Linking is refused where a file already is, so two first runs at once still share one key.
         os.link(aside, place)
     except FileExistsError:
         return

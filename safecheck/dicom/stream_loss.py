@@ -66,7 +66,7 @@ def _segments(start: bytes, position: int) -> Iterator[tuple[int, bytes]]:
     """(marker, body) of each marker segment from a position on, until the data of a scan or tile."""
     while position + 4 <= len(start):
         marker, length = struct.unpack_from(">HH", start, position)
-        if marker < 0xFF00 or length < 2:
+        if marker < 0xFF00 or length < 2 or position + 2 + length > len(start):
             return
         yield marker, start[position + 4 : position + 2 + length]
         position += 2 + length
