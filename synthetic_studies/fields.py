@@ -18,14 +18,16 @@ def frequencies(shape: tuple[int, int]) -> tuple[Image, Image]:
 
 
 def _shaped(rng: np.random.Generator, shape: tuple[int, int], power: Image) -> Image:
-    """Gaussian field of zero mean and unit variance whose power spectrum is proportional to `power`."""
+    """Gaussian field of zero mean and unit variance with a spectrum proportional to `power`; zero if that is zero."""
     spectrum = np.fft.rfft2(rng.standard_normal(shape)) * np.sqrt(power)
     mirrored = np.full(power.shape[1], 2.0)
     mirrored[0] = 1.0
     if shape[1] % 2 == 0:
         mirrored[-1] = 1.0
     variance = float((power * mirrored).sum()) / (shape[0] * shape[1])
-    field: Image = np.fft.irfft2(spectrum, s=shape) / np.sqrt(variance)
+    field: Image = np.fft.irfft2(spectrum, s=shape)
+    if variance > 0:
+        field /= np.sqrt(variance)
     return field
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any
 
 __all__ = ["Circle", "Disc", "Edge", "Grid", "PairTruth", "Truth"]
 
@@ -136,38 +137,52 @@ class Truth:
     """Planted changes, where the study is a copy of another or was made lossy."""
     parts: tuple[Truth, ...] = ()
     """The series or studies of which this one consists."""
-    properties: dict[str, object] = field(default_factory=dict)
+    properties: dict[str, Any] = field(default_factory=dict)
     """What was drawn for it, by name."""
 
-    def regions(self) -> list[dict[str, object]]:
-        """Shapes with label, role, pixel and patient coordinates, as plain values for a region file."""
+    def regions(self) -> list[dict[str, Any]]:
+        """Shapes as plain values, from which a region file can be written.
+
+        Each has 'name', 'label', 'role', 'background' (the name of another, or ''), 'shape' ('ellipse' or 'rectangle'),
+        and 'centre', 'height' and 'width' twice: with '_pixel' in pixels, the centre (row, column); with '_mm' in
+        patient millimetres, the centre (x, y). Shapes lie upright and at the same place in every slice.
+        """
         discs = (*self.targets, *(disc for disc in (self.background, self.uniform) if disc))
-        found = [_disc_region(disc) for disc in discs]
+        behind = self.background.label if self.background else ""
+        found = [_disc_region(disc, behind if disc.role == "target" else "") for disc in discs]
         return found + ([_edge_region(self.edge)] if self.edge else [])
 
 
-def _disc_region(disc: Disc) -> dict[str, object]:
+def _disc_region(disc: Disc, background: str) -> dict[str, Any]:
     return {
+        "name": disc.label,
         "label": disc.label,
         "role": disc.role,
+        "background": background,
         "shape": "ellipse",
         "centre_pixel": [disc.circle.row, disc.circle.column],
-        "radii_pixel": [disc.circle.radius, disc.circle.radius],
+        "height_pixel": 2 * disc.circle.radius,
+        "width_pixel": 2 * disc.circle.radius,
         "centre_mm": [disc.x_mm, disc.y_mm],
-        "radii_mm": [disc.radius_mm, disc.radius_mm],
+        "height_mm": 2 * disc.radius_mm,
+        "width_mm": 2 * disc.radius_mm,
     }
 
 
-def _edge_region(edge: Edge) -> dict[str, object]:
+def _edge_region(edge: Edge) -> dict[str, Any]:
+    """The boundary with what is of one value on both sides."""
     (top, left), (bottom, right) = edge.start, edge.end
-    reach = edge.half_width
     scale = (edge.end_mm[0] - edge.start_mm[0]) / (right - left)
     return {
+        "name": edge.label,
         "label": edge.label,
         "role": "edge",
+        "background": "",
         "shape": "rectangle",
-        "from_pixel": [min(top, bottom) - reach, left],
-        "to_pixel": [max(top, bottom) + reach, right],
-        "from_mm": [edge.start_mm[0], min(edge.start_mm[1], edge.end_mm[1]) - reach * scale],
-        "to_mm": [edge.end_mm[0], max(edge.start_mm[1], edge.end_mm[1]) + reach * scale],
+        "centre_pixel": [(top + bottom) / 2, (left + right) / 2],
+        "height_pixel": 2 * edge.half_width,
+        "width_pixel": right - left,
+        "centre_mm": [(edge.start_mm[0] + edge.end_mm[0]) / 2, (edge.start_mm[1] + edge.end_mm[1]) / 2],
+        "height_mm": 2 * edge.half_width * scale,
+        "width_mm": edge.end_mm[0] - edge.start_mm[0],
     }

@@ -159,6 +159,43 @@ def test_pixels_and_millimetres_of_the_truth_agree_with_the_header(series: Truth
 
 def test_regions_name_every_target_and_its_role(series: Truth) -> None:
     regions = series.regions()
-    roles = [region["role"] for region in regions]
-    assert roles == ["target"] * 6 + ["background", "uniform", "edge"]
-    assert len({region["label"] for region in regions}) == len(regions)
+    names = [region["name"] for region in regions]
+    assert [region["role"] for region in regions] == ["target"] * 6 + ["background", "uniform", "edge"]
+    assert len(set(names)) == len(regions)
+    assert [region["background"] for region in regions] == ["liver"] * 6 + [""] * 3
+    assert "liver" in names
+
+
+def test_regions_are_the_same_in_pixels_and_in_millimetres(series: Truth) -> None:
+    for region in series.regions():
+        x_mm, y_mm = region["centre_mm"]
+        np.testing.assert_allclose(series.grid.pixel(x_mm, y_mm), region["centre_pixel"])
+        for side in ("height", "width"):
+            assert region[f"{side}_mm"] == pytest.approx(region[f"{side}_pixel"] * series.grid.spacing_mm)
+
+
+def test_the_edge_region_is_half_one_value_and_half_the_other(quiet: tuple[Truth, Image]) -> None:
+    truth, hu = quiet
+    region, edge = truth.regions()[-1], truth.edge
+    assert edge is not None
+    row, column = region["centre_pixel"]
+    half_height, half_width = region["height_pixel"] / 2, region["width_pixel"] / 2
+    rows = slice(int(np.ceil(row - half_height)), int(row + half_height) + 1)
+    columns = slice(int(np.ceil(column - half_width)), int(column + half_width) + 1)
+    middle = (edge.value_above + edge.value_below) / 2
+    assert abs(hu[:, rows, columns].mean() - middle) < 25
+    # One row at most holds a mixture of both.
+    mixed = (hu[:, rows, columns] != edge.value_above) & (hu[:, rows, columns] != edge.value_below)
+    assert np.count_nonzero(mixed.any(axis=(0, 2))) <= 1
+
+
+@pytest.mark.parametrize(("rows", "columns"), [(1, 1), (2, 9), (17, 16), (64, 200)], ids=str)
+def test_any_matrix_can_be_asked_for(tmp_path: Path, rows: int, columns: int) -> None:
+    truth = ct_body(tmp_path, seed=1, rows=rows, columns=columns, slices=1)
+    assert dcmread(truth.files[0]).pixel_array.shape == (rows, columns)
+
+
+def test_slices_lie_a_thickness_apart(tmp_path: Path) -> None:
+    truth = ct_body(tmp_path, seed=1, rows=32, columns=32, slices=3, thickness_mm=2.5)
+    places = [float(dcmread(path).ImagePositionPatient[2]) for path in truth.files]
+    assert places == [-2.5, 0.0, 2.5] == list(truth.slice_positions_mm)

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 from pydicom import dcmread
 
-from synthetic_studies import Manner, Truth, already_lossy, ct_body, deliver, delivered_pair
+from synthetic_studies import Manner, Truth, already_lossy, ct_body, deliver, delivered_pair, mr_head, radiograph
 from synthetic_studies.loss import cosine_matrix, quantise_blocks
 
 
@@ -108,3 +108,15 @@ def test_an_already_lossy_study_says_so_and_looks_so(tmp_path: Path) -> None:
     levels = cosine_matrix() @ blocks @ cosine_matrix().T / 40.0
     # Every coefficient lies near a multiple of the step, but for rounding to whole pixels.
     assert np.mean(np.abs(levels - np.rint(levels)) < 0.05) > 0.98
+
+
+def test_other_grey_studies_are_delivered_in_their_own_unit(tmp_path: Path) -> None:
+    head = mr_head(tmp_path / "mr", seed=3, rows=64, columns=64, slices=1)
+    film = radiograph(tmp_path / "cr", seed=3, rows=96, columns=80, photometric="MONOCHROME1")
+    for number, original in enumerate((head, film)):
+        copies = deliver(original, tmp_path / f"copies_{number}", step=30.0)
+        before, after = dcmread(original.files[0]), dcmread(copies.files[0])
+        change = after.pixel_array.astype(float) - before.pixel_array.astype(float)
+        rmse = np.sqrt(np.mean((change * float(before.RescaleSlope)) ** 2))
+        assert copies.pairs[0].rmse == pytest.approx(rmse, rel=1e-12)
+        assert 0 <= after.pixel_array.min() <= after.pixel_array.max() <= 4095

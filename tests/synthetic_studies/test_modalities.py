@@ -23,7 +23,7 @@ def test_monochrome1_is_the_same_picture_turned_upside_down_in_value(tmp_path: P
 
 def test_mr_background_is_rayleigh_distributed(tmp_path: Path) -> None:
     truth = mr_head(tmp_path, seed=2, slices=4, noise_sd=60.0)
-    slope = float(truth.properties["slope"])  # type: ignore[arg-type]
+    slope = truth.properties["slope"]
     corners = np.stack([dcmread(path).pixel_array[:40, :40] for path in truth.files]) * slope
     # Magnitude of two Gaussian channels: mean sd * sqrt(pi / 2), SD sd * sqrt(2 - pi / 2) (computed).
     assert corners.mean() == pytest.approx(60 * np.sqrt(np.pi / 2), rel=0.02)
