@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 from pydicom.dataelem import DataElement
 from pydicom.dataset import Dataset, FileMetaDataset
@@ -16,10 +17,10 @@ ROOT = "1.2.826.0.1.3680043.10.99999."
 KEY = b"key of the tests, not of any site"
 
 
-def image(number: int = 1, **changes: object) -> Dataset:
+def image(number: int = 1, /, **changes: Any) -> Dataset:
     """A CT image of 8 x 8 pixels; a change of None removes the element."""
     dataset = Dataset()
-    values: dict[str, object] = {
+    values: dict[str, Any] = {
         "SOPClassUID": CTImageStorage,
         "SOPInstanceUID": f"{ROOT}4.{number}",
         "StudyInstanceUID": f"{ROOT}2.1",
@@ -63,7 +64,7 @@ def save(dataset: Dataset, path: Path, syntax: str = ExplicitVRLittleEndian) -> 
     return path
 
 
-def coded(code: bytes, number: int = 1, **changes: object) -> Dataset:
+def coded(code: bytes, number: int = 1, /, **changes: Any) -> Dataset:
     """An image whose pixel data is one fragment."""
     dataset = image(number, PixelData=None, **changes)
     element = DataElement("PixelData", "OB", encapsulate([code]), is_undefined_length=True)

@@ -1,0 +1,399 @@
+"""Intake of files, folders, archives, lists and DICOMDIRs; what does not depend on how they are handed in."""
+
+from __future__ import annotations
+
+import dataclasses
+import io
+import os
+import random
+import shutil
+import socket
+import zipfile
+import zlib
+from pathlib import Path
+
+import pytest
+from pydicom.data import get_testdata_file
+
+from safecheck.dicom import source as source_module
+from safecheck.dicom.instance import Source
+from safecheck.dicom.intake import Intake, gather
+from safecheck.dicom.pseudonyms import Pseudonyms
+from safecheck.dicom.source import inflate, open_source
+from safecheck.errors import InputRefused, UsageError
+from tests.dicom.made_files import KEY, ROOT, image, save, take_in
+
+DEFLATED = "1.2.840.10008.1.2.1.99"
+
+
+def study(folder: Path, count: int = 4) -> Path:
+    """A folder of images under names that say nothing."""
+    for number in range(1, count + 1):
+        save(image(number), folder / f"x{(number * 7) % 5}{number}")
+    return folder
+
+
+def without_sources(intake: Intake) -> Intake:
+    nowhere = Source(Path())
+    return Intake(
+        tuple(dataclasses.replace(each, source=nowhere) for each in intake.instances),
+        tuple(dataclasses.replace(each, source=nowhere) for each in intake.left_out),
+    )
+
+
+def zipped(folder: Path, archive: Path) -> Path:
+    with zipfile.ZipFile(archive, "w", zipfile.ZIP_DEFLATED) as target:
+        for path in sorted(folder.rglob("*")):
+            target.write(path, path.relative_to(folder))
+    return archive
+
+
+def test_instances_come_in_order_of_their_numbers(tmp_path: Path) -> None:
+    intake = take_in(study(tmp_path, 12))
+    assert [each.instance_number for each in intake.instances] == list(range(1, 13))
+    assert intake.left_out == ()
+
+
+def test_facts_of_an_instance_are_those_of_its_header(tmp_path: Path) -> None:
+    path = save(image(7, BodyPartExamined="CHEST", ConvolutionKernel="B30f", Manufacturer="SIEMENS"), tmp_path / "f")
+    (found,) = take_in(path).instances
+    names = Pseudonyms(KEY)
+    assert found.source == Source(path)
+    assert (found.patient, found.study) == (names.name("patient", "P1"), names.name("study", f"{ROOT}2.1"))
+    assert (found.series, found.instance) == (names.name("series", f"{ROOT}3.1"), names.name("instance", f"{ROOT}4.7"))
+    assert (found.rows, found.columns, found.frames) == (8, 8, 1)
+    assert (found.bits_allocated, found.bits_stored) == (16, 12)
+    assert (found.size_bytes, found.pixel_bytes) == (path.stat().st_size, 128)
+    assert found.origin.stratum == "CT, CHEST, over 3 to 5 mm, B30f"
+    assert found.origin.slice_position_mm == 35.0
+    assert (found.origin.manufacturer, found.origin.source_bytes) == ("Siemens", 128)
+    assert (found.object_class, found.uid) == ("CT Image Storage", f"{ROOT}4.7")
+
+
+def test_a_file_without_identities_goes_by_its_content(tmp_path: Path) -> None:
+    nameless = {"PatientID": None, "StudyInstanceUID": None, "SeriesInstanceUID": None, "SOPInstanceUID": None}
+    (found,) = take_in(save(image(**nameless), tmp_path / "f")).instances
+    assert found.input == found.patient == found.study == found.series == found.instance
+
+
+@pytest.mark.parametrize("way", ["files", "reversed", "twice", "list", "zip", "mixed", "link"])
+def test_results_do_not_depend_on_how_files_are_handed_in(tmp_path: Path, way: str) -> None:
+    folder = study(tmp_path / "study")
+    (folder / "README").write_text("no image")
+    save(image(9, PixelData=None), folder / "deep" / "er" / "no pixels")
+    plain = take_in(folder)
+    files = [path for path in folder.rglob("*") if path.is_file()]
+    lister = tmp_path / "list.txt"
+    if way == "files":
+        random.Random(4).shuffle(files)
+        other = take_in(*files)
+    elif way == "reversed":
+        other = take_in(*sorted(files, reverse=True))
+    elif way == "twice":
+        other = take_in(folder, *files, folder / "deep", folder)
+    elif way == "list":
+        lister.write_text("\n".join(os.path.relpath(path, tmp_path) for path in files) + "\n\n")
+        other = take_in(list_file=lister)
+    elif way == "zip":
+        other = take_in(zipped(folder, tmp_path / "archive.img"))
+    elif way == "mixed":
+        lister.write_text(str(files[1]))
+        other = take_in(files[0], folder, list_file=lister)
+    else:
+        (tmp_path / "link").symlink_to(folder)
+        other = take_in(tmp_path / "link")
+    assert without_sources(other) == without_sources(plain)
+    assert plain.counts == {"assessed": 4, "not-dicom": 1, "no-pixels": 1}
+
+
+def test_another_key_gives_other_names(tmp_path: Path) -> None:
+    study(tmp_path, 1)
+    one, other = take_in(tmp_path).instances[0], take_in(tmp_path, key=b"another key of the tests").instances[0]
+    for kind in ("input", "patient", "study", "series", "instance"):
+        assert getattr(one, kind) != getattr(other, kind)
+
+
+def test_identical_files_are_named_once(tmp_path: Path) -> None:
+    path = save(image(1), tmp_path / "a")
+    shutil.copy(path, tmp_path / "b")
+    intake = take_in(tmp_path)
+    (left,) = intake.left_out
+    assert intake.counts == {"assessed": 1, "duplicate": 1}
+    assert left.facts is not None
+    assert left.facts.instance == intake.instances[0].instance
+
+
+def test_contradicting_files_of_one_instance_are_all_refused(tmp_path: Path) -> None:
+    save(image(1), tmp_path / "a")
+    save(image(1, Rows=4, Columns=16), tmp_path / "b")
+    save(image(2), tmp_path / "c")
+    assert take_in(tmp_path).counts == {"assessed": 1, "conflict": 2}
+
+
+def test_an_excluded_file_does_not_contradict(tmp_path: Path) -> None:
+    save(image(1), tmp_path / "a")
+    save(image(1, LossyImageCompression="01"), tmp_path / "b")
+    assert take_in(tmp_path).counts == {"assessed": 1, "already-lossy": 1}
+
+
+def test_a_cut_file_is_refused(tmp_path: Path) -> None:
+    path = save(image(1), tmp_path / "a")
+    path.write_bytes(path.read_bytes()[:-1])
+    assert take_in(path).counts == {"assessed": 0, "truncated": 1}
+
+
+def test_a_deflated_file_is_read(tmp_path: Path) -> None:
+    (found,) = take_in(save(image(1), tmp_path / "a", DEFLATED)).instances
+    assert found.pixel_bytes == 128
+    assert found.origin.source_syntax == "Deflated Explicit VR Little Endian"
+
+
+def test_progress_is_told_after_each_input(tmp_path: Path) -> None:
+    told: list[tuple[int, int]] = []
+    gather([study(tmp_path)], pseudonyms=Pseudonyms(KEY), progress=lambda done, found: told.append((done, found)))
+    assert told == [(1, 4), (2, 4), (3, 4), (4, 4)]
+
+
+# Folders and links
+
+
+def test_a_link_to_a_folder_that_holds_it_is_named_and_not_followed(tmp_path: Path) -> None:
+    study(tmp_path / "a" / "b", 2)
+    (tmp_path / "a" / "b" / "up").symlink_to(tmp_path / "a")
+    assert take_in(tmp_path).counts == {"assessed": 2, "link-loop": 1}
+
+
+def test_links_that_lead_to_each_other_are_named_wherever_the_walk_begins(tmp_path: Path) -> None:
+    study(tmp_path / "a", 1)
+    save(image(2), tmp_path / "b" / "f")
+    (tmp_path / "a" / "x").symlink_to(tmp_path / "b")
+    (tmp_path / "b" / "y").symlink_to(tmp_path / "a")
+    whole = take_in(tmp_path)
+    assert whole.counts == {"assessed": 2, "link-loop": 2}
+    assert take_in(tmp_path / "a") == take_in(tmp_path / "b") == whole
+
+
+def test_a_link_to_itself_is_a_loop(tmp_path: Path) -> None:
+    (tmp_path / "x").symlink_to(tmp_path / "x")
+    assert take_in(tmp_path).counts == {"assessed": 0, "link-loop": 1}
+
+
+def test_a_broken_link_and_a_missing_path_are_counted(tmp_path: Path) -> None:
+    (tmp_path / "x").symlink_to(tmp_path / "nowhere")
+    assert take_in(tmp_path, tmp_path / "missing").counts == {"assessed": 0, "unreadable": 2}
+
+
+def test_pipes_and_sockets_are_never_opened(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    os.mkfifo(tmp_path / "pipe")
+    monkeypatch.chdir(tmp_path)
+    with socket.socket(socket.AF_UNIX) as server:
+        server.bind("s")
+        assert take_in(tmp_path).counts == {"assessed": 0, "not-dicom": 2}
+
+
+@pytest.mark.skipif(os.geteuid() == 0, reason="nothing is closed to root")
+def test_closed_files_and_folders_are_refused(tmp_path: Path) -> None:
+    save(image(1), tmp_path / "a").chmod(0)
+    (tmp_path / "folder").mkdir(mode=0)
+    assert take_in(tmp_path).counts == {"assessed": 0, "unreadable": 2}
+
+
+def test_a_file_that_cannot_be_opened_is_refused(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    save(image(1), tmp_path / "a")
+
+    def refuse(path: Path, mode: str = "r") -> object:
+        raise PermissionError(13, "CANARY", str(path))
+
+    monkeypatch.setattr(Path, "open", refuse)
+    (left,) = take_in(tmp_path).left_out
+    assert (left.reason, left.detail) == ("unreadable", "PermissionError when opened")
+
+
+def test_a_list_that_cannot_be_read_is_a_wrong_call(tmp_path: Path) -> None:
+    (tmp_path / "list").write_bytes(b"\xff\xfe\xfa")
+    with pytest.raises(UsageError, match="list file cannot be read"):
+        take_in(list_file=tmp_path / "list")
+    with pytest.raises(UsageError, match="list file cannot be read") as caught:
+        take_in(list_file=tmp_path / "CANARY")
+    assert "CANARY" not in str(caught.value)
+
+
+# Archives
+
+
+def test_members_are_read_again_through_their_source(tmp_path: Path) -> None:
+    archive = zipped(study(tmp_path / "study", 2), tmp_path / "z")
+    for each in take_in(archive).instances:
+        with open_source(each.source) as stream:
+            assert len(stream.read()) == each.size_bytes
+
+
+def write_zip(path: Path, members: dict[str, bytes]) -> Path:
+    with zipfile.ZipFile(path, "w", zipfile.ZIP_DEFLATED) as target:
+        for name, content in members.items():
+            target.writestr(name, content)
+    return path
+
+
+@pytest.mark.parametrize("name", ["../out", "a/../../out", "/abs", "C:\\out", "..\\out", "\\out", "C:out"])
+def test_names_that_lead_out_of_an_archive_are_refused(tmp_path: Path, name: str) -> None:
+    content = save(image(1), tmp_path / "f").read_bytes()
+    archive = write_zip(tmp_path / "z", {name: content, "in/side": content})
+    intake = take_in(archive)
+    assert intake.counts == {"assessed": 1, "archive-path": 1}
+    assert sorted(each.name for each in tmp_path.iterdir()) == ["f", "z"]
+
+
+def test_an_archive_in_an_archive_is_counted_and_not_entered(tmp_path: Path) -> None:
+    inner = write_zip(tmp_path / "inner", {"f": save(image(1), tmp_path / "f").read_bytes()})
+    (left,) = take_in(write_zip(tmp_path / "z", {"inner": inner.read_bytes()})).left_out
+    assert (left.reason, left.detail) == ("not-dicom", "an archive within an archive, not entered")
+
+
+def test_a_preamble_that_imitates_an_archive_is_dicom(tmp_path: Path) -> None:
+    path = save(image(1), tmp_path / "f")
+    path.write_bytes(b"PK\x03\x04" + path.read_bytes()[4:])
+    assert take_in(path).counts == {"assessed": 1}
+
+
+def test_a_bomb_is_refused_by_name(tmp_path: Path) -> None:
+    archive = write_zip(tmp_path / "z", {"bomb": bytes(32 * 1024 * 1024)})
+    assert take_in(archive).counts == {"assessed": 0, "archive-bomb": 1}
+
+
+def test_a_deflated_bomb_is_refused_by_name(tmp_path: Path) -> None:
+    big = image(1, Rows=4096, Columns=4096, PixelData=bytes(32 * 1024 * 1024))
+    assert take_in(save(big, tmp_path / "f", DEFLATED)).counts == {"assessed": 0, "archive-bomb": 1}
+
+
+def test_members_over_the_limit_are_refused_by_name(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    archive = write_zip(tmp_path / "z", {"big": os.urandom(5000), "small": os.urandom(3000)})
+    monkeypatch.setattr(source_module, "WHOLE_LIMIT_BYTES", 4000)
+    assert take_in(archive).counts == {"assessed": 0, "too-large": 1, "not-dicom": 1}
+    with pytest.raises(InputRefused, match="too-large"):
+        open_source(Source(archive, "big"))
+
+
+def test_deflated_files_over_the_limit_are_refused_by_name(monkeypatch: pytest.MonkeyPatch) -> None:
+    engine = zlib.compressobj(wbits=-15)
+    packed = engine.compress(os.urandom(5000)) + engine.flush()
+    assert len(inflate(packed)) == 5000
+    monkeypatch.setattr(source_module, "WHOLE_LIMIT_BYTES", 4000)
+    with pytest.raises(InputRefused, match="too-large"):
+        inflate(packed)
+
+
+def test_overlapping_members_are_refused(tmp_path: Path) -> None:
+    # Two directory entries that share one member's bytes, so that little inflates to much.
+    archive = write_zip(tmp_path / "z", {"a": os.urandom(4000)})
+    content = archive.read_bytes()
+    start = content.index(b"PK\x01\x02")
+    end = content.index(b"PK\x05\x06")
+    entry, tail = content[start:end], bytearray(content[end:])
+    tail[8:12] = (2).to_bytes(2, "little") * 2
+    tail[12:16] = (2 * len(entry)).to_bytes(4, "little")
+    archive.write_bytes(content[:start] + entry + entry.replace(b"a", b"b", 1) + bytes(tail))
+    assert take_in(archive).counts == {"assessed": 0, "archive-bomb": 1}
+
+
+def test_a_size_other_than_declared_is_refused(tmp_path: Path) -> None:
+    archive = write_zip(tmp_path / "z", {"a": bytes(range(256)) * 20})
+    content = bytearray(archive.read_bytes())
+    for mark, offset in ((b"PK\x03\x04", 22), (b"PK\x01\x02", 24)):
+        place = content.index(mark) + offset
+        content[place : place + 4] = (100).to_bytes(4, "little")
+    archive.write_bytes(content)
+    assert set(take_in(archive).counts) & {"archive-bomb", "unreadable"}
+
+
+@pytest.mark.parametrize("damage", ["cut", "content", "locked"])
+def test_damaged_and_locked_archives_are_refused(tmp_path: Path, damage: str) -> None:
+    archive = write_zip(tmp_path / "z", {"a": os.urandom(4000)})
+    content = bytearray(archive.read_bytes())
+    if damage == "cut":
+        content = content[:2000]
+    elif damage == "content":
+        content[1000] ^= 255
+    else:
+        content[6] |= 1
+        content[content.index(b"PK\x01\x02") + 8] |= 1
+    archive.write_bytes(content)
+    assert take_in(archive).counts == {"assessed": 0, "unreadable": 1}
+
+
+def test_equal_names_in_an_archive_are_told_apart(tmp_path: Path) -> None:
+    with zipfile.ZipFile(tmp_path / "z", "w") as target:
+        target.writestr("a", b"first")
+        with pytest.warns(UserWarning, match="Duplicate name"):
+            target.writestr("a", b"second")
+    assert take_in(tmp_path / "z").counts == {"assessed": 0, "archive-path": 1, "not-dicom": 1}
+
+
+def test_a_source_that_is_gone_is_refused(tmp_path: Path) -> None:
+    archive = write_zip(tmp_path / "z", {"a": b"x"})
+    for source in (Source(tmp_path / "gone"), Source(archive, "gone"), Source(tmp_path / "gone", "a")):
+        with pytest.raises(InputRefused, match="unreadable") as caught:
+            open_source(source)
+        assert "gone" not in str(caught.value)
+
+
+# DICOMDIR
+
+
+def real_directory(tmp_path: Path) -> Path:
+    """The 81-file set of pydicom's DICOMDIR, copied."""
+    found = get_testdata_file("DICOMDIR", download=False)
+    assert isinstance(found, str)
+    return Path(shutil.copytree(Path(found).parent, tmp_path / "media"))
+
+
+def test_a_dicomdir_gives_the_files_it_lists(tmp_path: Path) -> None:
+    media = real_directory(tmp_path)
+    alone = take_in(media / "DICOMDIR")
+    (listed,) = [each for each in alone.left_out if each.reason == "dicomdir"]
+    assert listed.detail == "lists 31 files, 0 missing, 0 outside its folder"
+    assert sum(alone.counts.values()) == 32
+    assert take_in(media / "DICOMDIR", media / "77654033").counts == alone.counts
+
+
+def test_a_dicomdir_in_an_archive_reads_the_same(tmp_path: Path) -> None:
+    media = real_directory(tmp_path)
+    assert without_sources(take_in(zipped(media, tmp_path / "z"))) == without_sources(take_in(media))
+
+
+def test_files_missing_from_a_dicomdir_are_counted(tmp_path: Path) -> None:
+    media = real_directory(tmp_path)
+    missing = next(path for path in sorted((media / "77654033").rglob("*")) if path.is_file())
+    missing.unlink()
+    alone = take_in(media / "DICOMDIR")
+    (listed,) = [each for each in alone.left_out if each.reason == "dicomdir"]
+    assert listed.detail == "lists 31 files, 1 missing, 0 outside its folder"
+    assert sum(alone.counts.values()) == 31
+
+
+def test_entries_that_lead_out_of_a_dicomdir_are_not_followed(tmp_path: Path) -> None:
+    media = real_directory(tmp_path)
+    save(image(1), tmp_path / "CR1" / "6154")
+    content = (media / "DICOMDIR").read_bytes()
+    # One entry's Referenced File ID, at equal length.
+    assert b"77654033\\CR1\\6154" in content
+    (media / "DICOMDIR").write_bytes(content.replace(b"77654033\\CR1\\6154", b"..\\.\\.\\.\\CR1\\6154"))
+    alone = take_in(media / "DICOMDIR")
+    (listed,) = [each for each in alone.left_out if each.reason == "dicomdir"]
+    assert listed.detail == "lists 30 files, 0 missing, 1 outside its folder"
+    assert sum(alone.counts.values()) == 31
+
+
+def test_two_equal_directories_each_give_their_files(tmp_path: Path) -> None:
+    media = real_directory(tmp_path)
+    other = Path(shutil.copytree(media, tmp_path / "other"))
+    both = take_in(media / "DICOMDIR", other / "DICOMDIR")
+    assert both.counts["dicomdir"] == 2
+    assert sum(both.counts.values()) == 64
+
+
+def test_an_inflated_source_is_seekable(tmp_path: Path) -> None:
+    archive = write_zip(tmp_path / "z", {"a": b"content"})
+    stream = open_source(Source(archive, "a"))
+    assert isinstance(stream, io.BytesIO)
+    assert stream.read() == b"content"
