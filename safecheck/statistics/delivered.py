@@ -26,6 +26,7 @@ _COLUMNS = (
     "lossy_method",
     "derived",
     "new_uid",
+    "pair",
 )
 _UNMATCHED = "unmatched"
 
@@ -47,7 +48,7 @@ def delivered_entry(inputs: TableReader, measures: Groups) -> DeliveredEntry | N
         copies_without_original=sum(row["matched"] == _UNMATCHED for row in rows if row["side"] == "delivered"),
         matched_by=dict(sorted(Counter(row["matched"] for row in pairs).items())),
         expectations=tuple(_expectations(pairs)) if pairs else (),
-        shown=tuple(_shown(measures, pairs)),
+        shown=tuple(_shown(measures, _by_original(rows, pairs))),
     )
 
 
@@ -101,12 +102,17 @@ def _expectations(pairs: list[dict[str, Any]]) -> list[ExpectationEntry]:
     return entries
 
 
-def _shown(measures: Groups, pairs: list[dict[str, Any]]) -> list[DeliveredPairEntry]:
+def _by_original(rows: list[dict[str, Any]], pairs: list[dict[str, Any]]) -> dict[str, dict[str, Any]]:
+    """Instance pseudonym of an original -> row of its copy; the table of measures names the original."""
+    instance_of = {row["input"]: row["instance"] for row in rows if row["side"] == "original"}
+    return {instance_of[row["pair"]]: row for row in pairs if row["pair"] in instance_of}
+
+
+def _shown(measures: Groups, headers: dict[str, dict[str, Any]]) -> list[DeliveredPairEntry]:
     """The pairs with the largest errors."""
     rows = measures.of_role("delivered")
     largest = measures.reader.numbers("max_frame")[rows]
     order = rows[np.argsort(-largest, kind="stable")][:PAIRS_SHOWN]
-    headers = {row["instance"]: row for row in pairs}
     shown = []
     wanted = (
         "unit",

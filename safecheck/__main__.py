@@ -1,0 +1,6 @@
+"""``python -m safecheck``."""
+
+from safecheck.cli import main
+
+if __name__ == "__main__":
+    main()

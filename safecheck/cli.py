@@ -1,0 +1,375 @@
+"""The command line: parse, call a job, translate errors to one sentence and an exit code."""
+
+from __future__ import annotations
+
+import sys
+import time
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+from safecheck import __version__
+from safecheck.errors import DossierError, Interrupted, SafecheckError, UsageError
+from safecheck.policy.conditions import ExitCondition
+
+if TYPE_CHECKING:
+    from safecheck.jobs.assess import AssessRequest
+    from safecheck.policy.plan import Scope
+
+__all__ = ["app", "main"]
+
+app = typer.Typer(
+    name="safecheck",
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    help=(
+        "Measures what irreversible recompression would do to your own DICOM images and writes a record of it. "
+        "It never says that an image is fit for diagnosis: that is for local regulation and licensed clinicians."
+    ),
+    epilog=(
+        "Exit codes: 0 ran, controls held, no proposed candidate outside a declared limit (no finding on fitness for "
+        "any use); 2 call or plan wrong; 3 more left out than the plan allows, or nothing evaluated; 4 controls not held; "
+        "5 incomplete, can be resumed; 6 verification found a difference; 7 too little evidence for the declared "
+        "claim; 8 internal error; 10 a proposed candidate outside a declared limit."
+    ),
+)
+
+Paths = Annotated[list[Path], typer.Argument(help="Files, folders, zip archives or a DICOMDIR; mixed as you like.")]
+Key = Annotated[Path | None, typer.Option("--key", help="Site key file; by default in your configuration folder.")]
+Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress on the screen.")]
+Localizers = Annotated[bool, typer.Option("--localizers", help="Take localizers too.")]
+Captures = Annotated[bool, typer.Option("--secondary-captures", help="Take secondary captures too.")]
+LossySources = Annotated[
+    bool, typer.Option("--allow-lossy-source", help="Take sources already lossy, as second generation.")
+]
+
+
+@app.callback(invoke_without_command=True)
+def _root(
+    context: typer.Context,
+    version: Annotated[bool, typer.Option("--version", help="Print the version and leave.")] = False,
+) -> None:
+    if version:
+        typer.echo(__version__)
+        raise typer.Exit
+    if context.invoked_subcommand is None:
+        raise UsageError("no command is named; see safecheck --help")
+
+
+@app.command()
+def census(
+    paths: Paths,
+    draft_plan: Annotated[
+        Path | None, typer.Option("--draft-plan", metavar="FILE", help="Write a plan to start from.")
+    ] = None,
+    key: Key = None,
+    localizers: Localizers = False,
+    secondary_captures: Captures = False,
+    allow_lossy_source: LossySources = False,
+    quiet: Quiet = False,
+) -> None:
+    """Say what is there: studies, strata, bits, syntaxes, sizes, already lossy, left out and why."""
+    from safecheck.jobs import census as job
+
+    screen = _Screen(quiet=quiet)
+    found = job.take_census(
+        tuple(paths),
+        scope=_scope(localizers, secondary_captures, allow_lossy_source),
+        key_file=key,
+        progress=lambda done, total: screen.update(f"Reading headers: {done} of {total} files"),
+    )
+    screen.clear()
+    for line in job.lines_of(found):
+        typer.echo(line)
+    if draft_plan is not None:
+        if draft_plan.exists():
+            raise UsageError("the file for the draft plan exists already; name another")
+        draft_plan.write_text(job.draft_plan(found), encoding="utf-8")
+        typer.echo("A plan to start from was written; fill in what only you can say.")
+
+
+@app.command()
+def assess(
+    paths: Paths,
+    out: Annotated[Path | None, typer.Option("--out", metavar="DOSSIER", help="Folder for the dossier.")] = None,
+    plan: Annotated[Path | None, typer.Option("--plan", metavar="FILE", help="Plan declared before the run.")] = None,
+    ratios: Annotated[str, typer.Option("--ratios", help="Ratios on the bits-stored basis, without a plan.")] = (
+        "5,8,10,15,20"
+    ),
+    codecs: Annotated[str, typer.Option("--codecs", help="Codecs, without a plan.")] = "tiled,jpeg2000",
+    regions: Annotated[
+        Path | None,
+        typer.Option("--regions", metavar="FILE", help="Region file, DICOM segmentation or RT Structure Set."),
+    ] = None,
+    delivered: Annotated[
+        list[Path] | None,
+        typer.Option("--delivered", metavar="PATH", help="Copies that the archive returned; may be given again."),
+    ] = None,
+    dry_run: Annotated[
+        bool, typer.Option("--dry-run", help="Print counts, time, disk and the plan's hash; measure nothing.")
+    ] = False,
+    with_images: Annotated[
+        bool, typer.Option("--with-images", help="Write crops of the worst places, but none that may show text.")
+    ] = False,
+    no_attachment: Annotated[
+        bool, typer.Option("--no-attachment", help="Leave the record out of the PDF's attachments.")
+    ] = False,
+    workers: Annotated[int | None, typer.Option("--workers", min=1, help="Processes; by default one per core.")] = None,
+    key: Key = None,
+    localizers: Localizers = False,
+    secondary_captures: Captures = False,
+    allow_lossy_source: LossySources = False,
+    quiet: Quiet = False,
+) -> None:
+    """Recompress, measure, hold against declared limits, and write the record.
+
+    The same command into the same dossier goes on where it was stopped.
+    """
+    from safecheck.jobs.assess import AssessRequest
+
+    if out is None and not dry_run:
+        raise UsageError("no dossier is named; expected --out and a folder")
+    if plan is not None and (ratios != "5,8,10,15,20" or codecs != "tiled,jpeg2000"):
+        raise UsageError("--plan declares the candidates; --ratios and --codecs go without it")
+    request = AssessRequest(
+        paths=tuple(paths),
+        out=out,
+        plan_file=plan,
+        ratios=_numbers(ratios),
+        codecs=tuple(name.strip() for name in codecs.split(",") if name.strip()),
+        scope=_scope(localizers, secondary_captures, allow_lossy_source),
+        regions_file=regions,
+        delivered=tuple(delivered or ()),
+        key_file=key,
+        workers=workers,
+        with_images=with_images,
+        attachment=not no_attachment,
+    )
+    if dry_run:
+        _dry_run(request, _Screen(quiet=quiet))
+    else:
+        _assess(request, _Screen(quiet=quiet))
+
+
+@app.command()
+def report(
+    dossier: Annotated[Path, typer.Argument(help="Dossier of a finished run.")],
+    out: Annotated[Path, typer.Option("--out", metavar="FILE", help="PDF to write, outside the dossier.")],
+) -> None:
+    """Draw the PDF again from the record, without images; every page says REDRAWN."""
+    from safecheck.jobs.redraw import redraw
+
+    redraw(dossier, out)
+    typer.echo("The report was drawn again from the record.")
+
+
+@app.command()
+def verify(
+    dossier: Annotated[Path, typer.Argument(help="Dossier of a finished run.")],
+    images: Annotated[
+        list[Path] | None,
+        typer.Option("--images", metavar="PATH", help="Inputs of the run: compute some rows again."),
+    ] = None,
+    delivered: Annotated[
+        list[Path] | None, typer.Option("--delivered", metavar="PATH", help="Delivered copies of the run.")
+    ] = None,
+    regions: Annotated[
+        Path | None, typer.Option("--regions", metavar="FILE", help="Region file of the run, if it had one.")
+    ] = None,
+    frames: Annotated[int, typer.Option("--frames", min=1, help="How many frames to compute again.")] = 10,
+    seed: Annotated[int, typer.Option("--seed", help="Another seed draws other frames.")] = 1,
+    key: Key = None,
+) -> None:
+    """Check the seal; with images, compute a seeded sample of rows again."""
+    from safecheck.jobs.verify import verify as job
+
+    found = job(
+        dossier,
+        images=tuple(images or ()),
+        delivered=tuple(delivered or ()),
+        key_file=key,
+        regions_file=regions,
+        frames=frames,
+        seed=seed,
+    )
+    for line in (*found.lines, *found.differences):
+        typer.echo(line)
+    if found.differences:
+        raise typer.Exit(ExitCondition.DIFFERENCE)
+    typer.echo("No difference was found.")
+
+
+@app.command()
+def lookup(
+    pseudonym: Annotated[str, typer.Argument(help="As it stands in a record.")],
+    paths: Paths,
+    key: Key = None,
+) -> None:
+    """Turn a pseudonym back, on this screen only: the images are read again, nothing is kept."""
+    from safecheck.jobs.lookup import lookup as job
+
+    if not sys.stdout.isatty():
+        raise UsageError("a pseudonym is turned back on a screen only, and the output goes elsewhere")
+    for line in job(pseudonym, tuple(paths), key):
+        typer.echo(line)
+
+
+@app.command()
+def selftest() -> None:
+    """Say which codecs work on this machine, and whether the reversible ones are bit-exact."""
+    from safecheck.jobs.selftest import selftest_lines
+
+    held = True
+    for line, good in selftest_lines():
+        held = held and good
+        typer.echo(line)
+    if not held:
+        raise typer.Exit(ExitCondition.CONTROLS)
+
+
+@app.command()
+def demo(
+    out: Annotated[Path, typer.Option("--out", metavar="FOLDER", help="New folder for study and dossier.")] = Path(
+        "safecheck-demo"
+    ),
+    key: Key = None,
+    quiet: Quiet = False,
+) -> None:
+    """Make a synthetic study, run the main job on it, and say where the record is."""
+    from safecheck.jobs.assess import AssessRequest
+    from safecheck.jobs.demo import STUDY, write_demo
+
+    screen = _Screen(quiet=quiet)
+    screen.update("Making a synthetic study")
+    plan = write_demo(out)
+    request = AssessRequest(paths=(out / STUDY,), out=out / "dossier", plan_file=plan, key_file=key, with_images=True)
+    _assess(request, screen, demonstration=True)
+
+
+def _assess(request: AssessRequest, screen: _Screen, *, demonstration: bool = False) -> None:
+    """Run the main job and say what came of it."""
+    from safecheck.jobs.assess import assess as job
+
+    since = time.monotonic()
+    record = job(request, screen.update, screen.progress)
+    screen.clear()
+    typer.echo(f"Record: {request.out}/report.pdf")
+    counts = record.inputs
+    typer.echo(
+        f"{counts.frames_assessed} frames of {counts.studies} studies assessed in {time.monotonic() - since:.0f} s; "
+        f"{counts.excluded} files excluded, {counts.refused} refused"
+    )
+    typer.echo(f"Limits: {record.outcomes_text}")
+    typer.echo(f"Controls: {'held' if record.controls_held else 'NOT HELD, run invalid'}")
+    typer.echo(f"Exit {record.exit_code}: {record.exit_text}")
+    if record.exit_code and not demonstration:
+        raise typer.Exit(record.exit_code)
+
+
+def _dry_run(request: AssessRequest, screen: _Screen) -> None:
+    """Say what a run would do."""
+    from safecheck.jobs.assess import prepare_run
+    from safecheck.jobs.dry_run import dry_run
+
+    prepared = prepare_run(request, screen.update)
+    screen.clear()
+    for line in dry_run(prepared):
+        typer.echo(line)
+
+
+def _scope(localizers: bool, secondary_captures: bool, lossy_sources: bool) -> Scope:
+    """What the command line takes in."""
+    from safecheck.policy.plan import Scope
+
+    return Scope(localizers=localizers, secondary_captures=secondary_captures, lossy_sources=lossy_sources)
+
+
+def _numbers(text: str) -> tuple[float, ...]:
+    """'5,8,10' -> (5.0, 8.0, 10.0)."""
+    try:
+        return tuple(float(part) for part in text.split(",") if part.strip())
+    except ValueError:
+        raise UsageError(f"--ratios is expected as numbers with commas between, e.g. 5,8,10; found {text!r}") from None
+
+
+class _Screen:
+    """One line of progress that is written over, on the error stream; nothing when quiet or no terminal."""
+
+    def __init__(self, *, quiet: bool) -> None:
+        self._quiet = quiet
+        self._rewrites = sys.stderr.isatty()
+        self._last = ""
+        self._since = 0.0
+
+    def update(self, text: str) -> None:
+        """Show a sentence."""
+        same_kind = text.split(":")[0] == self._last.split(":")[0]
+        if self._quiet or (same_kind and time.monotonic() - self._since < 0.2):
+            return
+        if self._rewrites:
+            typer.echo(f"\r\x1b[K{text}", nl=False, err=True)
+        elif not same_kind:
+            typer.echo(text, err=True)
+        self._last, self._since = text, time.monotonic()
+
+    def progress(self, found: object) -> None:
+        """Show how far a run is."""
+        done, total = getattr(found, "done", 0), getattr(found, "total", 0)
+        remaining, note = getattr(found, "remaining_s", None), getattr(found, "note", "")
+        left = "" if remaining is None else f", about {_duration(remaining)} left"
+        if note:
+            self.clear()
+            self.update(note)
+        self.update(f"Assessing: {done} of {total} parts, {getattr(found, 'frames', 0)} frames{left}")
+
+    def clear(self) -> None:
+        """Leave an empty line behind."""
+        if self._rewrites and self._last and not self._quiet:
+            typer.echo("\r\x1b[K", nl=False, err=True)
+        self._last = ""
+
+
+def _duration(seconds: float) -> str:
+    """Seconds in words."""
+    if seconds < 90:
+        return f"{seconds:.0f} s"
+    return f"{seconds / 60:.0f} min" if seconds < 5400 else f"{seconds / 3600:.1f} h"
+
+
+def main() -> None:
+    """Run the command line; every error becomes one sentence and an exit code, and no trace reaches the user."""
+    sys.exit(_guarded(lambda: app(standalone_mode=False)))
+
+
+def _guarded(call: Callable[[], object]) -> int:
+    """Exit code of a call."""
+    try:
+        result = call()
+    except (KeyboardInterrupt, typer.Abort, Interrupted) as error:
+        text = str(error) if isinstance(error, Interrupted) else "stopped; the same command goes on"
+        return _say(text, ExitCondition.INCOMPLETE)
+    except typer.Exit as leave:
+        return int(leave.exit_code)
+    except typer.TyperException as error:
+        return _say(str(error), ExitCondition.USAGE)
+    except UsageError as error:
+        return _say(str(error), ExitCondition.USAGE)
+    except DossierError as error:
+        return _say(str(error), ExitCondition.DIFFERENCE)
+    except SafecheckError as error:
+        return _say(str(error), ExitCondition.INTERNAL)
+    except Exception as error:
+        # A foreign exception's text may hold identifiers or paths; its class cannot.
+        return _say(f"internal error ({type(error).__name__})", ExitCondition.INTERNAL)
+    return result if isinstance(result, int) else 0
+
+
+def _say(text: str, code: ExitCondition) -> int:
+    """Print one sentence on the error stream and give the exit code."""
+    typer.echo(f"safecheck: {text}", err=True)
+    return int(code)

@@ -1,0 +1,279 @@
+"""The main job: read, recompress, measure, hold against limits, write the record."""
+
+from __future__ import annotations
+
+import datetime
+import json
+import platform
+import shutil
+import time
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from safecheck.codecs import selftest
+from safecheck.dicom.reader import open_instance
+from safecheck.errors import UsageError
+from safecheck.evaluation import Assignment, Candidate, evaluate, load_kernels
+from safecheck.jobs.dossier import finish_dossier, readers, write_tables
+from safecheck.jobs.inputs import Inputs, gather_inputs
+from safecheck.jobs.places import write_places
+from safecheck.jobs.plans import DEFAULT_CODECS, DEFAULT_RATIOS, LoadedPlan, load_plan, plan_of_command_line
+from safecheck.jobs.regions import load_regions
+from safecheck.jobs.site import Site, open_site
+from safecheck.jobs.versions import versions
+from safecheck.policy.plan import Scope
+from safecheck.record.document import CodecCheckEntry, RecordDocument
+from safecheck.record.run import RunFacts
+from safecheck.regions.region import RegionSet
+from safecheck.runner.manifest import Manifest, begin, describe, finish
+from safecheck.runner.merge import Merged, merge
+from safecheck.runner.pool import LocalPool, cores
+from safecheck.runner.progress import Progress
+from safecheck.runner.run import run
+from safecheck.runner.tasks import Task, plan_tasks
+from safecheck.runner.worker import Treatment
+from safecheck.statistics.summary import Surroundings, summarise
+
+__all__ = ["AssessRequest", "Prepared", "Tell", "assess", "prepare_run"]
+
+Tell = Callable[[str], None]
+"""Takes one sentence for the user."""
+
+_FINAL = "final"
+_SESSIONS = "sessions.json"
+
+
+@dataclass(frozen=True, slots=True)
+class AssessRequest:
+    """What a user asked for."""
+
+    paths: tuple[Path, ...]
+    out: Path | None
+    """Dossier; None for a dry run."""
+    plan_file: Path | None = None
+    ratios: tuple[float, ...] = DEFAULT_RATIOS
+    codecs: tuple[str, ...] = DEFAULT_CODECS
+    scope: Scope = field(default_factory=Scope)
+    """Of the command line; what it takes in is added to the plan's own."""
+    regions_file: Path | None = None
+    delivered: tuple[Path, ...] = ()
+    key_file: Path | None = None
+    workers: int | None = None
+    """None for all cores."""
+    with_images: bool = False
+    attachment: bool = True
+
+
+@dataclass(frozen=True, slots=True)
+class Prepared:
+    """All that is known before a frame is decoded."""
+
+    request: AssessRequest
+    loaded: LoadedPlan
+    site: Site
+    inputs: Inputs
+    assignment: Assignment
+    manifest: Manifest
+    tasks: tuple[Task, ...]
+
+    @property
+    def studies(self) -> frozenset[str]:
+        """Pseudonyms of the studies to assess."""
+        return frozenset(each.study for each in self.inputs.assessed)
+
+
+def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
+    """Read plan, key, regions and headers, and cut the work into tasks.
+
+    Raises
+    ------
+    UsageError
+        If a document, a path or the key is wrong.
+    """
+    loaded = _loaded(request)
+    site = open_site(request.key_file)
+    site.see_plan(loaded.sha256)
+    missing = [path for path in (*request.paths, *request.delivered) if not path.exists()]
+    if missing:
+        raise UsageError(f"{len(missing)} of the paths given do not exist; expected files or folders")
+    inputs = gather_inputs(
+        request.paths,
+        request.delivered,
+        scope=loaded.plan.scope,
+        pseudonyms=site.pseudonyms,
+        progress=lambda done, found: tell(f"Reading headers: {done} of {found} files"),
+    )
+    regions = load_regions(loaded.regions_file, site.pseudonyms, inputs) if loaded.regions_file else None
+    assignment = Assignment(tuple(map(Candidate.of, loaded.plan.candidates)), loaded.plan.windows, regions)
+    manifest = describe(
+        inputs.assessed,
+        inputs.pairs,
+        assignment,
+        plan_hash=loaded.sha256,
+        key=site.key,
+        key_id=site.pseudonyms.key_id,
+        versions=versions(),
+    )
+    controls = loaded.plan.controls
+    tasks = plan_tasks(
+        inputs.assessed,
+        inputs.pairs,
+        manifest,
+        site.key,
+        share_percent=controls.share_percent,
+        seed=controls.seed,
+    )
+    return Prepared(request, loaded, site, inputs, assignment, manifest, tasks)
+
+
+def _loaded(request: AssessRequest) -> LoadedPlan:
+    """The plan of a file with what the command line adds, or one made from the command line."""
+    if request.plan_file is None:
+        return plan_of_command_line(request.ratios, request.codecs, request.scope, request.regions_file)
+    loaded = load_plan(request.plan_file)
+    asked, own = request.scope, loaded.plan.scope
+    scope = own.model_copy(update={name: getattr(own, name) or getattr(asked, name) for name in type(own).model_fields})
+    plan = loaded.plan.model_copy(update={"scope": scope})
+    return LoadedPlan(plan, loaded.source, request.regions_file or loaded.regions_file)
+
+
+def assess(request: AssessRequest, tell: Tell, report: Callable[[Progress], None]) -> RecordDocument:
+    """Run the main job, or go on with one that was stopped, and write the dossier.
+
+    Parameters
+    ----------
+    request
+        With a dossier to write.
+    tell
+        Takes sentences for the user.
+    report
+        Takes how far the run is.
+
+    Raises
+    ------
+    UsageError
+        If the call, the plan or the dossier's folder is wrong.
+    Interrupted
+        If stopped; the same call goes on.
+    """
+    if request.out is None:
+        raise UsageError("no dossier is named; expected --out and a folder")
+    prepared = prepare_run(request, tell)
+    work = begin(request.out, prepared.manifest)
+    started, sessions = _open_session(work)
+    declared = prepared.site.declared(prepared.loaded.sha256, prepared.studies)
+    clock = {"start": time.monotonic()}
+    workers = request.workers or cores()
+    tell("Checking codecs")
+    checks = selftest.run()
+    run(
+        prepared.tasks,
+        Treatment(prepared.assignment, evaluate, open_instance),
+        work,
+        executor=LocalPool(workers),
+        warm_up=lambda: _warm_up(tell),
+        report=report,
+    )
+    clock["assessed"] = time.monotonic()
+    tell("Writing the record")
+    final = _fresh(work / _FINAL)
+    merged = merge(prepared.tasks, work, final)
+    record = _record(prepared, merged, final, checks)
+    prepared.site.see_results(prepared.studies)
+    facts = RunFacts(
+        started=started,
+        finished=datetime.datetime.now(datetime.UTC),
+        workers=workers,
+        seconds={
+            "assess": round(clock["assessed"] - clock["start"], 3),
+            "record": round(time.monotonic() - clock["assessed"], 3),
+        },
+        sessions=sessions,
+        host=platform.node(),
+        system=f"{platform.system()} {platform.machine()}, Python {platform.python_version()}",
+        plan_declared=declared if prepared.loaded.source == "file" else "not known",
+    )
+    finish_dossier(final, record, facts, attachment=request.attachment)
+    _publish(final, request.out)
+    finish(work)
+    return record
+
+
+def _warm_up(tell: Tell) -> None:
+    """Compile once, here, before workers start."""
+    tell("Preparing compiled code (some seconds on the first run after an installation)")
+    load_kernels()
+
+
+def _record(
+    prepared: Prepared, merged: Merged, folder: Path, checks: tuple[selftest.CodecCheck, ...]
+) -> RecordDocument:
+    """The record from the tables, with crops where they were asked for."""
+    tables = write_tables(folder, prepared.inputs, merged)
+    around = Surroundings(
+        plan_source=prepared.loaded.source,
+        key_id=prepared.site.pseudonyms.key_id,
+        versions=versions(),
+        selftest=tuple(_check_entry(check) for check in checks),
+        tables=tables,
+        notes=merged.notes,
+        patient_unknown_studies=prepared.inputs.patient_unknown_studies,
+        regions_without_frame=_without_frame(prepared.assignment.regions, folder),
+    )
+    record = summarise(prepared.loaded.plan, readers(folder), around)
+    if not prepared.request.with_images:
+        return record
+    places = write_places(
+        folder, record.worst_places, prepared.inputs.assessed, prepared.inputs.pairs, prepared.assignment
+    )
+    return record.model_copy(update={"worst_places": places})
+
+
+def _check_entry(check: selftest.CodecCheck) -> CodecCheckEntry:
+    """A line of the selftest as the record holds it."""
+    return CodecCheckEntry(
+        codec=check.codec,
+        library=check.library,
+        version=check.version,
+        available=check.available,
+        reversible_exact=check.reversible_exact,
+        detail=check.detail,
+    )
+
+
+def _without_frame(regions: RegionSet | None, folder: Path) -> tuple[str, ...]:
+    """Labels of regions that cover no frame assessed: named, not dropped."""
+    if regions is None:
+        return ()
+    _, found = readers(folder)["regions"].codes("region")
+    return tuple(region.label for region in regions.regions if region.name not in found)
+
+
+def _open_session(work: Path) -> tuple[datetime.datetime, int]:
+    """When the run was begun, and how often it was taken up, this time included."""
+    path = work / _SESSIONS
+    known = json.loads(path.read_text(encoding="utf-8")) if path.exists() else {}
+    started = known.get("started") or datetime.datetime.now(datetime.UTC).isoformat()
+    sessions = known.get("sessions", 0) + 1
+    aside = path.with_suffix(".aside")
+    aside.write_text(json.dumps({"started": started, "sessions": sessions}), encoding="utf-8")
+    aside.replace(path)
+    return datetime.datetime.fromisoformat(started), sessions
+
+
+def _fresh(folder: Path) -> Path:
+    """An empty folder, whatever an earlier session left there."""
+    if folder.exists():
+        shutil.rmtree(folder)
+    folder.mkdir()
+    return folder
+
+
+def _publish(final: Path, dossier: Path) -> None:
+    """Move the finished files into the dossier, the seal last: a dossier with a seal is complete."""
+    for path in sorted(final.iterdir(), key=lambda path: path.name in ("seal.json", "SHA256SUMS")):
+        target = dossier / path.name
+        if target.is_dir():
+            shutil.rmtree(target)
+        path.replace(target)

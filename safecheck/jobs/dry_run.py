@@ -1,0 +1,104 @@
+"""What a run would do: counts, time, disk, claims that the sample cannot carry, and the plan's hash."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Iterator
+
+from safecheck.codecs import registry
+from safecheck.dicom.reader import open_instance
+from safecheck.errors import InputRefused
+from safecheck.evaluation import evaluate, load_kernels
+from safecheck.jobs.assess import Prepared
+from safecheck.runner.pool import cores
+from safecheck.runner.progress import weight_of
+from safecheck.runner.tasks import Task
+from safecheck.statistics.bounds import patients_needed
+from safecheck.wording import NO_BOUND, SHORT_CAUTION, sentence_of
+
+__all__ = ["dry_run"]
+
+_BYTES_PER_FRAME_AND_CANDIDATE = 600
+"""Rows of all tables in Parquet and CSV, measured on CT; an estimate for the disk."""
+
+
+def dry_run(prepared: Prepared) -> Iterator[str]:
+    """Yield the lines that a dry run prints; one frame is run to learn the speed."""
+    inputs, plan = prepared.inputs, prepared.loaded.plan
+    frames = sum(each.frames for each in inputs.assessed)
+    studies = len(prepared.studies)
+    patients = len({each.patient for each in inputs.assessed})
+    yield f"Files: {len(inputs.assessed)} to assess, {len(inputs.left_out) + len(inputs.out_of_scope)} left out"
+    yield f"Frames: {frames} of {studies} studies of {patients} patients"
+    yield from _reasons(prepared)
+    if inputs.matching is not None:
+        yield (
+            f"Delivered copies: {len(inputs.matching.pairs)} matched, {len(inputs.matching.unmatched_delivered)} "
+            f"without an original, {len(inputs.matching.unmatched_originals)} originals without a copy"
+        )
+    yield f"Candidates: {len(plan.candidates)}, limits: {len(plan.limits)}"
+    for name in dict.fromkeys(candidate.codec for candidate in plan.candidates):
+        yield f"  {name}: {'available' if registry.available(name) else 'not available here'}"
+    yield from _cost(prepared)
+    yield from _evidence(prepared, patients)
+    yield f"Plan hash (SHA-256): {prepared.loaded.sha256}"
+    yield SHORT_CAUTION
+
+
+def _reasons(prepared: Prepared) -> Iterator[str]:
+    """Files left out by reason."""
+    counts: dict[str, int] = {}
+    for left in prepared.inputs.left_out:
+        counts[left.reason] = counts.get(left.reason, 0) + 1
+    if prepared.inputs.out_of_scope:
+        counts["not-selected"] = len(prepared.inputs.out_of_scope)
+    for reason, files in sorted(counts.items()):
+        yield f"  {files} left out: {sentence_of(reason)}"
+
+
+def _cost(prepared: Prepared) -> Iterator[str]:
+    """Time and disk, from one task that is run for the purpose."""
+    if not prepared.tasks:
+        yield "Time and disk: nothing to assess"
+        return
+    total = sum(weight_of(task, prepared.assignment) for task in prepared.tasks)
+    seconds = _seconds_per_weight(prepared, prepared.tasks[len(prepared.tasks) // 2])
+    workers = prepared.request.workers or cores()
+    frames = sum(len(task.frames) for task in prepared.tasks)
+    disk = frames * (len(prepared.assignment.candidates) + 2) * _BYTES_PER_FRAME_AND_CANDIDATE
+    if seconds is None:
+        yield "Time: not known, the frame tried was refused"
+    else:
+        yield f"Time: about {seconds * total / workers:.0f} s on {workers} workers, after compiled code is prepared"
+    yield f"Disk: about {max(disk / 1e6, 0.1):.1f} MB"
+
+
+def _seconds_per_weight(prepared: Prepared, task: Task) -> float | None:
+    """Time per unit of work, from the first frame of a task; None where it is refused."""
+    load_kernels()
+    each = task.frames[0]
+    try:
+        with open_instance(each.instance) as reader:
+            frame = reader.frame(each.number)
+            evaluate(frame, prepared.assignment, full_controls=False)
+            since = time.monotonic()
+            evaluate(reader.frame(each.number), prepared.assignment, full_controls=each.full_controls)
+    except InputRefused:
+        return None
+    return (time.monotonic() - since) / weight_of(Task("", (each,)), prepared.assignment)
+
+
+def _evidence(prepared: Prepared, patients: int) -> Iterator[str]:
+    """What the sample cannot carry."""
+    plan = prepared.loaded.plan
+    if plan.sample.drawn != "random":
+        yield f"Evidence: {NO_BOUND}"
+    if plan.claim is None:
+        return
+    share, confidence = plan.claim.exceeding_at_most_percent / 100, plan.claim.confidence_percent / 100
+    needed = patients_needed(share, confidence=confidence)
+    if patients < needed or plan.sample.drawn != "random":
+        yield (
+            f"Evidence: the claim (at most {plan.claim.exceeding_at_most_percent:g} % of patients, confidence "
+            f"{plan.claim.confidence_percent:g} %) needs {needed} patients drawn at random, none of whom exceeds"
+        )

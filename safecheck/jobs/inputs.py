@@ -1,0 +1,226 @@
+"""Inputs of a run: both sides gathered, scoped and matched, and the row that each file gets."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any, Literal
+
+from safecheck.dicom.delivered import Matching, Pair, match
+from safecheck.dicom.facts import Facts
+from safecheck.dicom.instance import Instance
+from safecheck.dicom.intake import Intake, LeftOut, gather
+from safecheck.dicom.pseudonyms import Pseudonyms
+from safecheck.dicom.rules import Include
+from safecheck.policy.plan import Scope
+from safecheck.record.rows import InputRow
+
+__all__ = ["UNMATCHED", "Inputs", "gather_inputs", "input_rows"]
+
+UNMATCHED = "unmatched"
+Side = Literal["original", "delivered"]
+
+
+@dataclass(frozen=True, slots=True)
+class Inputs:
+    """What a run is about."""
+
+    assessed: tuple[Instance, ...]
+    """Originals in scope."""
+    out_of_scope: tuple[Instance, ...]
+    left_out: tuple[LeftOut, ...]
+    delivered: Intake | None
+    """None where no copies were given."""
+    matching: Matching | None
+
+    @property
+    def pairs(self) -> dict[str, Instance]:
+        """Input pseudonym of an original -> its delivered copy."""
+        return {pair.original.input: pair.delivered for pair in self.matching.pairs} if self.matching else {}
+
+    @property
+    def patient_unknown_studies(self) -> int:
+        """Studies whose files name no patient."""
+        return len({each.study for each in self.assessed if each.patient == each.study})
+
+
+def gather_inputs(
+    paths: Sequence[Path],
+    delivered: Sequence[Path],
+    *,
+    scope: Scope,
+    pseudonyms: Pseudonyms,
+    progress: Callable[[int, int], None] | None = None,
+) -> Inputs:
+    """Gather originals and delivered copies.
+
+    Raises
+    ------
+    UsageError
+        If a list file cannot be read, or two identifiers share a pseudonym.
+    """
+    include = Include(scope.localizers, scope.secondary_captures, scope.lossy_sources)
+    found = gather(paths, pseudonyms=pseudonyms, include=include, progress=progress)
+    assessed = tuple(each for each in found.instances if _in_scope(each, scope))
+    outside = tuple(each for each in found.instances if not _in_scope(each, scope))
+    copies = matching = None
+    if delivered:
+        every = Include(scope.localizers, scope.secondary_captures, lossy_sources=True)
+        copies = gather(delivered, pseudonyms=pseudonyms, include=every, progress=progress)
+        matching = match(assessed, copies.instances)
+    return Inputs(assessed, outside, found.left_out, copies, matching)
+
+
+def _in_scope(instance: Instance, scope: Scope) -> bool:
+    """Whether the plan's scope takes an instance; an empty list takes all."""
+    return (not scope.modalities or instance.origin.modality in scope.modalities) and (
+        not scope.body_parts or instance.origin.body_part in scope.body_parts
+    )
+
+
+def input_rows(
+    inputs: Inputs, assessed_frames: Mapping[str, int], refused_frames: Mapping[str, tuple[int, str, str]]
+) -> list[InputRow]:
+    """One row per file, in an order that does not depend on how the files were handed in.
+
+    Parameters
+    ----------
+    inputs
+        As gathered.
+    assessed_frames
+        Input pseudonym -> frames assessed.
+    refused_frames
+        Input pseudonym -> (frames refused, reason of the first, detail).
+    """
+    rows = [*_original_rows(inputs, assessed_frames, refused_frames), *_delivered_rows(inputs, refused_frames)]
+    return sorted(rows, key=lambda row: (row.side != "original", row.study, row.series, row.instance, row.input))
+
+
+def _original_rows(
+    inputs: Inputs, assessed_frames: Mapping[str, int], refused_frames: Mapping[str, tuple[int, str, str]]
+) -> Iterator[InputRow]:
+    """Rows of the originals."""
+    matched = {pair.original.input: (pair.how, pair.delivered.input) for pair in _pairs(inputs)}
+    for each in inputs.assessed:
+        done = assessed_frames.get(each.input, 0)
+        refused, reason, detail = refused_frames.get(each.input, (0, "", ""))
+        how, pair = matched.get(each.input, (UNMATCHED if inputs.matching else "", ""))
+        yield _row(
+            "original",
+            each.input,
+            _known(each) | {"bytes": each.size_bytes},
+            status="assessed" if done else "refused",
+            reason=reason,
+            detail=detail,
+            frames_assessed=done,
+            frames_refused=refused,
+            matched=how,
+            pair=pair,
+        )
+    for each in inputs.out_of_scope:
+        yield _row(
+            "original", each.input, _known(each) | {"bytes": each.size_bytes}, status="excluded", reason="not-selected"
+        )
+    for left in inputs.left_out:
+        yield _left_out_row("original", left)
+
+
+def _delivered_rows(inputs: Inputs, refused_frames: Mapping[str, tuple[int, str, str]]) -> Iterator[InputRow]:
+    """Rows of the delivered copies."""
+    if inputs.delivered is None:
+        return
+    matched = {pair.delivered.input: pair for pair in _pairs(inputs)}
+    for each in inputs.delivered.instances:
+        refused, reason, detail = refused_frames.get(each.input, (0, "", ""))
+        pair = matched.get(each.input)
+        yield _row(
+            "delivered",
+            each.input,
+            _known(each) | {"bytes": each.size_bytes},
+            status="refused" if refused else "assessed",
+            reason=reason,
+            detail=detail,
+            frames_assessed=each.frames - refused if pair else 0,
+            frames_refused=refused,
+            new_uid=each.uid != pair.original.uid if pair else None,
+            matched=pair.how if pair else UNMATCHED,
+            pair=pair.original.input if pair else "",
+        )
+    for left in inputs.delivered.left_out:
+        yield _left_out_row("delivered", left)
+
+
+def _pairs(inputs: Inputs) -> tuple[Pair, ...]:
+    return inputs.matching.pairs if inputs.matching else ()
+
+
+def _left_out_row(side: Side, left: LeftOut) -> InputRow:
+    """Row of a file that was never opened for its pixels."""
+    known = _known(left.facts) if left.facts else {}
+    return _row(
+        side,
+        left.input,
+        {"bytes": left.size_bytes} | known,
+        status=left.status,
+        reason=left.reason,
+        detail=left.detail,
+    )
+
+
+def _row(side: Side, name: str, known: dict[str, Any], **more: Any) -> InputRow:  # noqa: ANN401
+    """Row from what is known, the rest empty."""
+    empty = dict.fromkeys(
+        (
+            "reason",
+            "detail",
+            "patient",
+            "study",
+            "series",
+            "instance",
+            "modality",
+            "stratum",
+            "object_class",
+            "source_syntax",
+            "photometric",
+            "lossy_evidence",
+            "lossy_declared",
+            "lossy_ratio",
+            "lossy_method",
+            "matched",
+            "pair",
+        ),
+        "",
+    )
+    counts = {"frames_assessed": 0, "frames_refused": 0}
+    return InputRow(**({"input": name, "side": side} | empty | counts | known | more))
+
+
+def _known(known: Instance | Facts) -> dict[str, Any]:
+    """Columns that an instance taken in and a header read in vain have in common."""
+    origin, history = known.origin, known.origin.history
+    return {
+        "patient": known.patient,
+        "study": known.study,
+        "series": known.series,
+        "instance": known.instance,
+        "series_number": known.series_number,
+        "instance_number": known.instance_number,
+        "modality": origin.modality,
+        "stratum": origin.stratum,
+        "object_class": known.object_class,
+        "source_syntax": origin.source_syntax,
+        "pixel_bytes": known.pixel_bytes,
+        "frames": known.frames,
+        "rows": known.rows,
+        "columns": known.columns,
+        "bits_allocated": known.bits_allocated,
+        "bits_stored": known.bits_stored,
+        "photometric": known.photometric,
+        "lossy": history.lossy,
+        "lossy_evidence": "; ".join(history.evidence),
+        "lossy_declared": history.declared,
+        "lossy_ratio": "\\".join(history.ratios),
+        "lossy_method": "\\".join(history.methods),
+        "derived": known.derived,
+    }
