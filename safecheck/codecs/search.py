@@ -131,7 +131,7 @@ def _next(points: list[_Point], exponent: float, low: float, high: float) -> flo
     above = [point for point in points if point.excess > 0]
     below = [point for point in points if point.excess <= 0]
     if above and below:
-        return _inside(len(points), *_pair(above, below))
+        return _inside(points, *_pair(above, below))
     last = points[-1]
     wanted = high if (last.excess > 0) == (exponent < 0) else low
     if any(point.at == wanted for point in points):
@@ -154,15 +154,18 @@ def _pair(above: list[_Point], below: list[_Point]) -> tuple[_Point, _Point]:
     return min(pairs, key=lambda pair: abs(pair[0].at - pair[1].at))
 
 
-def _inside(tried: int, above: _Point, below: _Point) -> float | None:
-    """Between two dials whose codes lie on both sides: the secant, every third time the middle."""
+def _inside(points: list[_Point], above: _Point, below: _Point) -> float | None:
+    """Between two dials whose codes lie on both sides: the secant of the nearest two sizes, or the middle."""
     width = below.at - above.at
     if abs(width) < _NARROW:
         return None
-    share = above.excess / (above.excess - below.excess)
-    # The secant alone creeps where the size is a staircase: hold it off the ends, and halve at times.
-    share = 0.5 if tried % 3 == 2 else min(max(share, 0.1), 0.9)
-    return above.at + share * width
+    first, second = sorted(points, key=lambda point: abs(point.excess))[:2]
+    # The secant alone creeps where the size is a staircase, so every third code halves the bracket.
+    if first.excess != second.excess and len(points) % 3 != 2:
+        at = first.at - first.excess * (second.at - first.at) / (second.excess - first.excess)
+        if 0.02 <= (at - above.at) / width <= 0.98:
+            return at
+    return above.at + width / 2
 
 
 def bracket(

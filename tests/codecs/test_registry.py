@@ -1,0 +1,80 @@
+"""Names, settings, and what loads when."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+
+import pytest
+
+from safecheck.codecs import registry
+from safecheck.codecs.jpeg2000 import Jpeg2000
+from safecheck.codecs.reversible import JpegLs
+from safecheck.errors import CodecUnavailable, UsageError
+
+
+def test_codecs_that_an_archive_can_write_stand_first() -> None:
+    writable = [registry.entry(name).archive_can_write for name in registry.names()]
+    assert writable == sorted(writable, reverse=True)
+    assert registry.rated_names() == ("jpeg2000", "tiled")
+
+
+def test_the_registry_loads_no_codec_library() -> None:
+    script = (
+        "import sys, safecheck.codecs.registry, safecheck.codecs.selftest;"
+        "print([m for m in ('numba', 'imagecodecs', 'openjpeg', 'pydicom') if m in sys.modules])"
+    )
+    done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
+    assert done.stdout.strip() == "[]"
+
+
+def test_a_codec_is_made_by_name_and_settings() -> None:
+    assert registry.codec("jpeg2000", ratio=8) == Jpeg2000(8.0)
+    assert registry.from_settings("jpegls-reversible", JpegLs().settings) == JpegLs()
+
+
+def test_a_whole_number_is_the_same_setting_as_its_float() -> None:
+    assert registry.settings_text(Jpeg2000(10).settings) == registry.settings_text(Jpeg2000(10.0).settings)
+    assert registry.from_text("jpeg2000", '{"ratio":10}') == Jpeg2000(10.0)
+
+
+def test_text_of_settings_is_sorted_and_without_spaces() -> None:
+    assert registry.settings_text({"b": 1.5, "a": True, "c": "x"}) == '{"a":true,"b":1.5,"c":"x"}'
+
+
+@pytest.mark.parametrize(
+    ("name", "text", "message"),
+    [
+        ("jpeg", "{}", "codec 'jpeg' is unknown, expected one of"),
+        ("jpeg2000", '{"rato":10}', "setting 'rato' is unknown"),
+        ("jpeg2000", "{}", "setting 'ratio' is missing"),
+        ("jpeg2000", '{"ratio":1}', r"ratio is 1, expected 1\.001 to"),
+        ("jpeg2000", '{"ratio":true}', "ratio is True"),
+        ("jpeg2000", '{"ratio":"ten"}', "codec jpeg2000"),
+        ("jpeg2000", '{"ratio":NaN}', "ratio is nan"),
+        ("jpeg2000", "[10]", "expected a table"),
+        ("jpeg2000", "{", "not JSON"),
+        ("jpegls-reversible", '{"precision":"12 bits","signed_as":"as is"}', "settings are"),
+    ],
+)
+def test_wrong_names_and_settings_are_named(name: str, text: str, message: str) -> None:
+    with pytest.raises(UsageError, match=message):
+        registry.from_text(name, text)
+
+
+def test_a_codec_without_dial_cannot_be_asked_for_a_size() -> None:
+    with pytest.raises(UsageError, match="cannot be asked for a size"):
+        registry.rated("jpegls-reversible")
+    assert registry.rated("jpeg2000").name == "jpeg2000"
+
+
+def test_a_missing_library_makes_a_codec_unavailable(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setitem(sys.modules, "safecheck.codecs.jpeg2000", None)
+    with pytest.raises(CodecUnavailable, match="pylibjpeg-openjpeg is missing"):
+        registry.codec("jpeg2000")
+
+
+def test_availability_is_told_without_loading() -> None:
+    assert registry.available("jpeg2000")
+    with pytest.raises(UsageError, match="unknown"):
+        registry.available("jpeg")

@@ -1,0 +1,141 @@
+"""Reversible codecs: exact by other libraries' reading too, and the smaller of them named."""
+
+from __future__ import annotations
+
+import imagecodecs
+import jpeg_ls
+import numpy as np
+import numpy.typing as npt
+import openjpeg.utils
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from safecheck.codecs.jpeg2000 import Jpeg2000
+from safecheck.codecs.reversible import Jpeg2000Lossless, JpegLs, best_reversible, cheapest
+from safecheck.errors import CannotEncode, CorruptCode
+from safecheck.frames import PixelFormat, Raster
+from tests.codecs import contract, images
+
+
+@given(
+    bits=st.integers(1, 16),
+    signed=st.booleans(),
+    colour=st.booleans(),
+    rows=st.integers(1, 20),
+    columns=st.integers(1, 20),
+    seed=st.integers(0, 2**32 - 1),
+)
+@settings(deadline=None, max_examples=150)
+def test_any_small_raster_comes_back_exactly(
+    bits: int, signed: bool, colour: bool, rows: int, columns: int, seed: int
+) -> None:
+    form = PixelFormat(16, bits, signed, "RGB" if colour else "MONOCHROME1")
+    before = contract.raster(form, (rows, columns), "noise", seed)
+    for codec in (JpegLs(), Jpeg2000Lossless()):
+        if codec.refuses(form, before.shape) is None:
+            contract.check_round_trip(codec, before)
+
+
+@pytest.mark.parametrize("name", images.NAMES)
+def test_real_frames_come_back_exactly(name: str) -> None:
+    before = images.real(name)
+    for codec in (JpegLs(), Jpeg2000Lossless()):
+        assert np.array_equal(contract.back(codec, before), before.samples)
+
+
+def as_stored(before: Raster) -> npt.NDArray[np.int64]:
+    """What a JPEG-LS stream of ours holds: the samples, signed ones offset by half their range."""
+    return before.samples.astype(np.int64) - before.format.lowest
+
+
+@pytest.mark.parametrize("name", images.NAMES)
+def test_pyjpegls_reads_our_jpegls(name: str) -> None:
+    before = images.real(name)
+    code = JpegLs().encode(before)
+    buffer, told = jpeg_ls.decode_buffer(code)
+    dtype = np.dtype(np.uint8 if before.format.bits_stored <= 8 else "<u2")
+    samples = np.frombuffer(bytes(buffer), dtype)
+    if before.format.channels == 3:
+        assert told["interleave_mode"] == 2
+    assert np.array_equal(samples.reshape(before.samples.shape), as_stored(before))
+    assert told["allowed_lossy_error"] == 0
+    assert told["bits_per_sample"] == dtype.itemsize * 8
+    assert (told["height"], told["width"], told["components"]) == (*before.shape, before.format.channels)
+
+
+@pytest.mark.parametrize("name", images.NAMES)
+def test_the_other_openjpeg_reads_our_lossless_jpeg2000(name: str) -> None:
+    before = images.real(name)
+    code = Jpeg2000Lossless().encode(before)
+    assert np.array_equal(openjpeg.utils.decode(code), before.samples)
+    told = openjpeg.utils.get_parameters(code)
+    assert (told["precision"], told["is_signed"]) == (before.format.bits_stored, before.format.signed)
+
+
+@pytest.mark.parametrize("name", images.NAMES)
+def test_our_decoders_read_what_the_other_library_wrote(name: str) -> None:
+    before = images.real(name)
+    theirs = openjpeg.utils.encode_array(
+        before.samples,
+        bits_stored=before.format.bits_stored,
+        photometric_interpretation=1 if before.format.channels == 3 else 0,
+    )
+    assert np.array_equal(Jpeg2000Lossless().decode(theirs, before.format, before.shape), before.samples)
+
+
+@pytest.mark.parametrize("name", images.NAMES)
+def test_a_jpegls_code_is_at_most_four_percent_above_one_at_the_true_precision(name: str) -> None:
+    # imagecodecs writes precision 8 or 16; pyjpegls the bits stored. So the ledger errs to a larger lossless size.
+    before = images.real(name)
+    mode = 2 if before.format.channels == 3 else 0
+    data = as_stored(before).astype(np.uint8 if before.format.bits_stored <= 8 else np.uint16)
+    true = jpeg_ls.encode_buffer(
+        data.tobytes(),
+        *before.shape,
+        before.format.channels,
+        before.format.bits_stored,
+        interleave_mode=mode,
+    )
+    assert 1 <= len(JpegLs().encode(before)) / len(true) < 1.04
+
+
+def test_the_smaller_reversible_code_is_named() -> None:
+    # Both win somewhere, so neither would do alone.
+    for name, expected in (("693_UNCR", "jpegls-reversible"), ("US1_UNCR", "jpeg2000-reversible")):
+        before = images.real(name)
+        sizes = {codec.name: len(codec.encode(before)) for codec in (JpegLs(), Jpeg2000Lossless())}
+        smallest = best_reversible(before)
+        assert smallest.codec == expected
+        assert smallest.size_bytes == sizes[expected] == min(sizes.values())
+
+
+def test_one_bit_colour_has_a_reversible_code_all_the_same() -> None:
+    before = contract.raster(PixelFormat(8, 1, False, "RGB"), (40, 40), "noise")
+    assert best_reversible(before).codec == "jpegls-reversible"
+
+
+def test_a_frame_too_long_for_any_header_has_no_reversible_code() -> None:
+    before = Raster(np.zeros((1, 65536), np.uint8), PixelFormat(8, 8, False, "MONOCHROME2"))
+    with pytest.raises(CannotEncode, match="no reversible codec takes a frame of 1 x 65536 pixels"):
+        best_reversible(before)
+
+
+def test_the_cheapest_control_is_exact() -> None:
+    assert cheapest().reversible
+
+
+def test_noise_that_grows_is_written_all_the_same() -> None:
+    # Eight bits of colour noise make a JPEG-LS code larger than the samples, beyond the library's own buffer.
+    before = contract.raster(PixelFormat(8, 8, False, "RGB"), (64, 70), "noise")
+    with pytest.raises(imagecodecs.JpeglsError, match="too small"):
+        imagecodecs.jpegls_encode(before.samples)
+    code = JpegLs().encode(before)
+    assert len(code) > before.samples.nbytes
+    contract.check_round_trip(JpegLs(), before)
+
+
+def test_a_lossy_code_is_no_lossless_one() -> None:
+    before = images.real("MR2_UNCR")
+    with pytest.raises(CorruptCode, match="coding style"):
+        Jpeg2000Lossless().decode(Jpeg2000(10).encode(before), before.format, before.shape)

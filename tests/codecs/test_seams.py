@@ -1,0 +1,211 @@
+"""Where libraries are called: their exceptions have our names, and what they do wrong in silence is caught."""
+
+from __future__ import annotations
+
+import ast
+import importlib
+import re
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import imagecodecs
+import numpy as np
+import openjpeg.utils
+import pytest
+
+from safecheck.codecs import jpeg2000, reversible, selftest
+from safecheck.codecs.base import Codec
+from safecheck.codecs.jpeg2000 import Jpeg2000
+from safecheck.codecs.reversible import Jpeg2000Lossless, JpegLs
+from safecheck.errors import CannotEncode, CodecError, CodecUnavailable, CorruptCode
+from safecheck.frames import PixelFormat, Raster
+from tests.codecs import contract
+
+FORM = PixelFormat(16, 12, False, "MONOCHROME2")
+RASTER = contract.raster(FORM, (64, 70), "slopes")
+
+SEAMS: dict[str, tuple[Codec, Any, str, str]] = {
+    "jpeg2000": (Jpeg2000(4), openjpeg.utils, "encode_array", "decode"),
+    "jpegls-reversible": (JpegLs(), imagecodecs, "jpegls_encode", "jpegls_decode"),
+    "jpeg2000-reversible": (Jpeg2000Lossless(), imagecodecs, "jpeg2k_encode", "jpeg2k_decode"),
+}
+
+
+@pytest.fixture(params=SEAMS)
+def seam(request: pytest.FixtureRequest) -> tuple[Codec, Any, str, str]:
+    return SEAMS[request.param]
+
+
+def raising(error: type[Exception]) -> Callable[..., Any]:
+    def function(*args: object, **kwargs: object) -> None:
+        raise error("what the library said")
+
+    return function
+
+
+def returning(value: object) -> Callable[..., Any]:
+    return lambda *args, **kwargs: value
+
+
+@pytest.mark.parametrize("error", reversible.LIBRARY_ERRORS, ids=lambda error: error.__name__)
+def test_what_a_library_raises_has_our_name(
+    seam: tuple[Codec, Any, str, str], error: type[Exception], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    codec, library, encode, decode = seam
+    code = codec.encode(RASTER)
+    monkeypatch.setattr(library, encode, raising(error))
+    monkeypatch.setattr(library, decode, raising(error))
+    with pytest.raises(CannotEncode, match=f"{codec.name}: .* wrote no code: what the library said"):
+        codec.encode(RASTER)
+    with pytest.raises(CorruptCode, match=f"{codec.name}: .* cannot read the code: what the library said"):
+        codec.decode(code, FORM, RASTER.shape)
+
+
+def test_no_exception_of_imagecodecs_slips_by() -> None:
+    for name in ("Jpeg2kError", "JpeglsError"):
+        error = getattr(imagecodecs, name)
+        assert issubclass(error, reversible.LIBRARY_ERRORS)
+        assert isinstance(error(), Exception)
+    # A part that a build lacks raises an ImportError at its first call; `available` is asked before.
+    assert issubclass(imagecodecs.DelayedImportError, ImportError)
+
+
+def test_no_exception_of_pylibjpeg_openjpeg_slips_by() -> None:
+    # The wheel carries its source, Python and Cython: every class it raises by name is one that we map.
+    folder = Path(openjpeg.utils.__file__).parent
+    raised = set(re.findall(r"\braise (\w+)\(", (folder / "_openjpeg.pyx").read_text(encoding="utf-8")))
+    tree = ast.parse((folder / "utils.py").read_text(encoding="utf-8"))
+    for node in ast.walk(tree):
+        if isinstance(node, ast.Raise) and isinstance(node.exc, ast.Call) and isinstance(node.exc.func, ast.Name):
+            raised.add(node.exc.func.id)
+    assert raised
+    builtins = importlib.import_module("builtins")
+    for name in raised:
+        assert issubclass(getattr(builtins, name), jpeg2000.LIBRARY_ERRORS), name
+
+
+@pytest.mark.parametrize(
+    "garbage",
+    [b"", b"\x00", b"\xff", b"\xff\x4f\xff\x51", b"\xff\xd8\xff\xd9", b"not a code at all", bytes(5000)],
+    ids=["empty", "zero", "marker", "soc", "soi eoi", "text", "zeros"],
+)
+def test_what_is_no_code_is_corrupt(seam: tuple[Codec, Any, str, str], garbage: bytes) -> None:
+    with pytest.raises(CorruptCode):
+        seam[0].decode(garbage, FORM, RASTER.shape)
+
+
+@pytest.mark.parametrize(
+    ("wrong", "message"),
+    [
+        (np.zeros((64, 71), np.uint16), r"decoded to uint16 of shape \(64, 71\)"),
+        (np.zeros((64, 70, 1), np.uint16), r"of shape \(64, 70, 1\)"),
+        (np.zeros((64, 70), np.float32), "decoded to float32"),
+        (np.full((64, 70), 4096, np.uint16), "values from 4096 to 4096, expected 0 to 4095"),
+    ],
+    ids=["columns", "axes", "floats", "range"],
+)
+def test_a_decoder_that_gives_another_array_is_caught(
+    seam: tuple[Codec, Any, str, str], wrong: object, message: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    codec, library, _, decode = seam
+    code = codec.encode(RASTER)
+    monkeypatch.setattr(library, decode, returning(wrong))
+    with pytest.raises(CorruptCode, match=message):
+        codec.decode(code, FORM, RASTER.shape)
+
+
+def test_a_library_that_writes_another_precision_is_caught(monkeypatch: pytest.MonkeyPatch) -> None:
+    honest = openjpeg.utils.encode_array
+
+    def told_sixteen(samples: object, bits_stored: int, **kwargs: object) -> bytes:
+        return bytes(honest(samples, bits_stored=16, **kwargs))
+
+    monkeypatch.setattr(openjpeg.utils, "encode_array", told_sixteen)
+    with pytest.raises(CannotEncode, match="another code than asked for.*precision"):
+        Jpeg2000(4).encode(RASTER)
+
+
+def test_a_library_that_takes_the_ratio_for_none_is_caught(monkeypatch: pytest.MonkeyPatch) -> None:
+    honest = openjpeg.utils.encode_array
+
+    def ignoring(samples: object, bits_stored: int, **kwargs: object) -> bytes:
+        kwargs.pop("compression_ratios")
+        return bytes(honest(samples, bits_stored=bits_stored, **kwargs))
+
+    monkeypatch.setattr(openjpeg.utils, "encode_array", ignoring)
+    with pytest.raises(CannotEncode, match="the coding style in the header"):
+        Jpeg2000(4).encode(RASTER)
+
+
+def test_the_level_of_the_other_library_is_no_ratio() -> None:
+    # imagecodecs takes `level` as a PSNR in dB: asked for 10, it does not give a tenth.
+    code = imagecodecs.jpeg2k_encode(RASTER.samples, level=10, codecformat="j2k", bitspersample=12)
+    assert RASTER.pixels * 12 / 8 / len(code) > 20
+
+
+def test_imagecodecs_told_few_bits_of_sixteen_writes_sixteen() -> None:
+    samples = np.zeros((40, 40), np.uint16)
+    code = imagecodecs.jpeg2k_encode(samples, reversible=True, codecformat="j2k", bitspersample=6)
+    assert openjpeg.utils.get_parameters(code)["precision"] == 16
+    ours = Jpeg2000Lossless().encode(Raster(samples, PixelFormat(16, 6, False, "MONOCHROME2")))
+    assert openjpeg.utils.get_parameters(ours)["precision"] == 6
+
+
+def test_a_near_lossless_code_is_no_reversible_one() -> None:
+    near = imagecodecs.jpegls_encode(RASTER.samples, level=2)
+    with pytest.raises(CorruptCode, match="coding parameters"):
+        JpegLs().decode(near, FORM, RASTER.shape)
+
+
+@pytest.mark.parametrize("part", ["JPEGLS", "JPEG2K"])
+def test_a_build_without_a_part_makes_its_codec_unavailable(part: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    codec: Codec = JpegLs() if part == "JPEGLS" else Jpeg2000Lossless()
+
+    class Missing:
+        available = False
+
+    monkeypatch.setattr(imagecodecs, part, Missing)
+    with pytest.raises(CodecUnavailable, match=f"without {part}"):
+        codec.encode(RASTER)
+    found = selftest.check(codec.name)
+    assert (found.available, found.reversible_exact, found.detail) == (False, None, "not available here")
+
+
+@pytest.mark.parametrize("name", SEAMS)
+def test_the_selftest_sees_a_constant_picture(name: str, monkeypatch: pytest.MonkeyPatch) -> None:
+    _, library, _, decode = SEAMS[name]
+    honest = getattr(library, decode)
+
+    def constant(*args: object, **kwargs: object) -> object:
+        return honest(*args, **kwargs) * 0
+
+    monkeypatch.setattr(library, decode, constant)
+    found = selftest.check(name)
+    assert not found.available
+    assert "came back off by" in found.detail
+
+
+def test_the_selftest_sees_one_wrong_sample_in_a_reversible_codec(monkeypatch: pytest.MonkeyPatch) -> None:
+    honest = imagecodecs.jpegls_decode
+
+    def off_by_one(code: bytes) -> object:
+        samples = honest(code).copy()
+        samples.flat[-1] ^= 1
+        return samples
+
+    monkeypatch.setattr(imagecodecs, "jpegls_decode", off_by_one)
+    found = selftest.check("jpegls-reversible")
+    assert found.reversible_exact is False
+    assert "off by 1" in found.detail
+
+
+def test_the_selftest_sees_two_decoders_disagree(monkeypatch: pytest.MonkeyPatch) -> None:
+    honest = imagecodecs.jpeg2k_decode
+    monkeypatch.setattr(imagecodecs, "jpeg2k_decode", lambda code, **kwargs: honest(code, **kwargs) ^ 1)
+    assert "two JPEG 2000 decoders disagree" in selftest.check("jpeg2000").detail
+
+
+def test_every_codec_error_is_one_of_ours() -> None:
+    assert issubclass(CannotEncode, CodecError)
+    assert issubclass(CorruptCode, CodecError)
