@@ -45,7 +45,10 @@ def raising(error: type[Exception]) -> Callable[..., Any]:
 
 
 def returning(value: object) -> Callable[..., Any]:
-    return lambda *args, **kwargs: value
+    def function(*args: object, **kwargs: object) -> object:
+        return value
+
+    return function
 
 
 @pytest.mark.parametrize("error", reversible.LIBRARY_ERRORS, ids=lambda error: error.__name__)
@@ -66,7 +69,6 @@ def test_no_exception_of_imagecodecs_slips_by() -> None:
     for name in ("Jpeg2kError", "JpeglsError"):
         error = getattr(imagecodecs, name)
         assert issubclass(error, reversible.LIBRARY_ERRORS)
-        assert isinstance(error(), Exception)
     # A part that a build lacks raises an ImportError at its first call; `available` is asked before.
     assert issubclass(imagecodecs.DelayedImportError, ImportError)
 
@@ -122,7 +124,7 @@ def test_a_library_that_writes_another_precision_is_caught(monkeypatch: pytest.M
         return bytes(honest(samples, bits_stored=16, **kwargs))
 
     monkeypatch.setattr(openjpeg.utils, "encode_array", told_sixteen)
-    with pytest.raises(CannotEncode, match="another code than asked for.*precision"):
+    with pytest.raises(CannotEncode, match=r"another code than asked for.*precision"):
         Jpeg2000(4).encode(RASTER)
 
 
@@ -155,7 +157,7 @@ def test_imagecodecs_told_few_bits_of_sixteen_writes_sixteen() -> None:
 def test_a_near_lossless_code_is_no_reversible_one() -> None:
     near = imagecodecs.jpegls_encode(RASTER.samples, level=2)
     with pytest.raises(CorruptCode, match="coding parameters"):
-        JpegLs().decode(near, FORM, RASTER.shape)
+        JpegLs().decode(bytes(near), FORM, RASTER.shape)
 
 
 @pytest.mark.parametrize("part", ["JPEGLS", "JPEG2K"])
