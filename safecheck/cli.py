@@ -356,7 +356,7 @@ def _guarded(call: Callable[[], object]) -> int:
     except typer.Exit as leave:
         return int(leave.exit_code)
     except typer.TyperException as error:
-        return _say(str(error), ExitCondition.USAGE)
+        return _say(error.format_message(), ExitCondition.USAGE)
     except UsageError as error:
         return _say(str(error), ExitCondition.USAGE)
     except DossierError as error:

@@ -14,8 +14,11 @@ from dataclasses import dataclass
 from types import MappingProxyType
 from typing import cast
 
+import numpy as np
+
 from safecheck.codecs.base import Codec, RatedCodec, Settings
 from safecheck.errors import CannotEncode, CodecUnavailable, UsageError
+from safecheck.frames import PixelFormat, Raster
 
 __all__ = [
     "ENTRIES",
@@ -25,9 +28,11 @@ __all__ = [
     "entry",
     "from_settings",
     "from_text",
+    "load_kernels",
     "names",
     "rated",
     "rated_names",
+    "reversible_form",
     "settings_text",
 ]
 
@@ -46,16 +51,35 @@ class Entry:
     rated: bool
     """Whether it can be asked for a size."""
     archive_can_write: bool
+    reversible_form: tuple[str, Settings] | None = None
+    """Name and settings of the codec of the same family that gives every sample back."""
 
 
 ENTRIES: Mapping[str, Entry] = MappingProxyType(
     {
-        "jpeg2000": Entry("safecheck.codecs.jpeg2000", "Jpeg2000", "pylibjpeg-openjpeg", "openjpeg", True, True),
+        "jpeg2000": Entry(
+            "safecheck.codecs.jpeg2000",
+            "Jpeg2000",
+            "pylibjpeg-openjpeg",
+            "openjpeg",
+            True,
+            True,
+            ("jpeg2000-reversible", MappingProxyType({})),
+        ),
         "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLs", "imagecodecs", "imagecodecs", False, True),
         "jpeg2000-reversible": Entry(
             "safecheck.codecs.reversible", "Jpeg2000Lossless", "imagecodecs", "imagecodecs", False, True
         ),
-        "tiled": Entry("safecheck.codecs.tile.codec", "Tiled", "numba", "numba", True, False),
+        # A step so fine that no sum of 64 x 64 quantiser errors reaches half a stored unit.
+        "tiled": Entry(
+            "safecheck.codecs.tile.codec",
+            "Tiled",
+            "numba",
+            "numba",
+            True,
+            False,
+            ("tiled", MappingProxyType({"step": 2.0**-7})),
+        ),
     }
 )
 """Every codec, in the order in which outputs name them."""
@@ -137,6 +161,41 @@ def rated(name: str, **settings: str | float | bool) -> RatedCodec:
     if not entry(name).rated:
         raise UsageError(f"codec {name} cannot be asked for a size, expected one of {list(rated_names())}")
     return cast("RatedCodec", codec(name, **settings))
+
+
+def reversible_form(name: str) -> Codec | None:
+    """Make the codec of the same family that gives every sample back: its own reversible control.
+
+    Parameters
+    ----------
+    name
+        Of a rated codec.
+
+    Returns
+    -------
+    Codec or None
+        None where the family has no such form.
+
+    Raises
+    ------
+    UsageError
+        If no codec has that name.
+    CodecUnavailable
+        If the codec's module cannot be loaded here.
+    """
+    form = entry(name).reversible_form
+    return codec(form[0], **form[1]) if form else None
+
+
+def load_kernels() -> None:
+    """Compile what the codecs compile, or take it from the disk: once in a parent process, before workers start."""
+    samples = (np.arange(48 * 40).reshape(48, 40) * 7 % 4096).astype(np.uint16)
+    padding = np.zeros(samples.shape, dtype=np.bool_)
+    padding[:8] = True
+    form = PixelFormat(16, 12, False, "MONOCHROME2")
+    raster = Raster(samples, form, padding)
+    tiled = rated("tiled")
+    tiled.decode(tiled.encode_to_size(raster, 600.0).code, form, raster.shape)
 
 
 def from_settings(name: str, settings: Settings) -> Codec:

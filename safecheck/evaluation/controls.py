@@ -42,8 +42,8 @@ def full_controls(
         Rows of the frame's candidates.
     """
     for candidate in _one_of_each_codec(assignment, {row.candidate for row in candidates}):
-        own = reversible_form(candidate.codec, original.frame.raster)
-        if own is not None:
+        own = reversible_form(candidate.codec)
+        if own is not None and own.refuses(original.frame.raster.format, original.frame.raster.shape) is None:
             treated = reverse(original, own)
             yield treated, _marked(measure_row(original, treated), *_unchanged(original, treated))
         first = next(row for row in candidates if row.candidate == candidate.name)
