@@ -7,6 +7,7 @@ import math
 from pydicom.dataset import Dataset
 
 from safecheck.dicom import terms
+from safecheck.dicom.age import under_18
 from safecheck.dicom.header import Header, items, real, text
 from safecheck.dicom.pseudonyms import Pseudonyms
 from safecheck.frames import LossHistory, Origin
@@ -52,6 +53,7 @@ def origin_of(
         source_bytes=source_bytes,
         history=history,
         slice_position_mm=slice_position_mm(real(dataset, _POSITION), real(dataset, _ORIENTATION)),
+        under_18=under_18(dataset),
         may_show_text=_may_show_text(dataset, modality, object_class),
     )
 
