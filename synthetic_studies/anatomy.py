@@ -16,7 +16,7 @@ from synthetic_studies.fields import low_passed
 from synthetic_studies.trunk import FAT_HU, close_wall, draw_recesses, draw_spine, draw_table, draw_wall
 from synthetic_studies.truth import Grid
 
-__all__ = ["LIVER_HU", "draw_body"]
+__all__ = ["LIVER_HU", "Tissue", "draw_body", "weave_tissue"]
 
 Image = npt.NDArray[np.float64]
 
@@ -76,21 +76,48 @@ LIVER_VESSELS = (
 )
 
 
-def draw_body(grid: Grid, seed: int, z_mm: float, calm: Image) -> Image:
+@dataclass(frozen=True, slots=True, eq=False)
+class Tissue:
+    """Smooth random fields that one body is woven of, (rows, columns) each, of unit variance."""
+
+    fine: tuple[Image, Image]
+    broad: Image
+    folds: tuple[Image, Image]
+    mask: Image
+
+
+def weave_tissue(grid: Grid, seed: int) -> Tissue:
+    """Draw the fields of one body; every slice turns between the two of a pair."""
+    shape = (grid.rows, grid.columns)
+    rng = np.random.default_rng([seed, 12])
+    cutoff = min(0.45, 0.16 * grid.spacing_mm)
+    fine = (low_passed(rng, shape, cutoff), low_passed(rng, shape, cutoff))
+    folds = (low_passed(rng, shape, cutoff / 2.2), low_passed(rng, shape, cutoff / 2.2))
+    return Tissue(fine, low_passed(rng, shape, cutoff / 5), folds, low_passed(rng, shape, cutoff / 2.2))
+
+
+def draw_body(grid: Grid, seed: int, z_mm: float, tissue: Tissue, calm: Image) -> Image:
     """Section at z in HU, (rows, columns); texture is laid over it where `calm` is below 1.
 
     The texture turns slowly with z, so that neighbouring slices are alike as in a body.
     """
     canvas = _draw_shapes(grid, seed, z_mm)
-    shape = (grid.rows, grid.columns)
-    rng = np.random.default_rng([seed, 12])
-    cutoff = min(0.45, 0.16 * grid.spacing_mm)
-    turn = z_mm / 9
-    fine = math.cos(turn) * low_passed(rng, shape, cutoff) + math.sin(turn) * low_passed(rng, shape, cutoff)
-    broad = low_passed(rng, shape, cutoff / 5)
-    textured: Image = canvas.values + (1 - calm) * canvas.texture * (0.8 * fine + 0.6 * broad)
-    strands = (1 - calm) * (np.abs(canvas.values - FAT_HU) < 15) * _strands(rng, shape, cutoff / 2.2, z_mm)
-    return textured + strands
+    fine = _turned(tissue.fine, z_mm / 9)
+    strands = (np.abs(canvas.values - FAT_HU) < 15) * _strands(_turned(tissue.folds, z_mm / 25), tissue.mask)
+    textured: Image = canvas.values + (1 - calm) * (canvas.texture * (0.8 * fine + 0.6 * tissue.broad) + strands)
+    return textured
+
+
+def _turned(pair: tuple[Image, Image], angle: float) -> Image:
+    """Mixture of two fields that keeps their variance."""
+    return math.cos(angle) * pair[0] + math.sin(angle) * pair[1]
+
+
+def _strands(fold: Image, mask: Image) -> Image:
+    """Fine vessels and septa in fat: the zero lines of a smooth field, and the common zeros of two."""
+    lines: Image = 26 * np.exp(-((fold / 0.09) ** 2)) * (mask > 0)
+    dots: Image = 120 * np.exp(-(fold**2 + mask**2) / 0.05)
+    return lines + dots
 
 
 def _draw_shapes(grid: Grid, seed: int, z_mm: float) -> Canvas:
@@ -108,16 +135,6 @@ def _draw_shapes(grid: Grid, seed: int, z_mm: float) -> Canvas:
     close_wall(canvas, wall, texture, rng, z_mm)
     draw_spine(canvas)
     return canvas
-
-
-def _strands(rng: np.random.Generator, shape: tuple[int, int], cutoff: float, z_mm: float) -> Image:
-    """Fine vessels and septa in fat: the zero lines of two smooth fields, and their crossings."""
-    turn = z_mm / 25
-    first = math.cos(turn) * low_passed(rng, shape, cutoff) + math.sin(turn) * low_passed(rng, shape, cutoff)
-    second = low_passed(rng, shape, cutoff)
-    lines: Image = 26 * np.exp(-((first / 0.09) ** 2)) * (second > 0)
-    dots: Image = 120 * np.exp(-(first**2 + second**2) / 0.05)
-    return lines + dots
 
 
 def _blob(organ: Organ, rng: np.random.Generator, z_mm: float) -> Blob:

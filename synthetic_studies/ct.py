@@ -10,7 +10,7 @@ import numpy as np
 import numpy.typing as npt
 from pydicom import Dataset
 
-from synthetic_studies.anatomy import LIVER_HU, draw_body
+from synthetic_studies.anatomy import LIVER_HU, Tissue, draw_body, weave_tissue
 from synthetic_studies.drawing import Blob, Canvas
 from synthetic_studies.fields import band_passed, streaked
 from synthetic_studies.headers import (
@@ -107,7 +107,7 @@ def _noise(series: _Series, rng: np.random.Generator) -> Image:
     return series.noise_sd_hu * noise_share(blank.x_mm, blank.y_mm) * mixed
 
 
-def _draw_slice(series: _Series, z_mm: float) -> Image:
+def _draw_slice(series: _Series, tissue: Tissue, z_mm: float) -> Image:
     """Section in HU without noise, with the planted discs and the edge."""
     calm = Canvas(series.grid, 0.0)
     discs = (*series.targets(), series.background(), series.uniform())
@@ -115,7 +115,7 @@ def _draw_slice(series: _Series, z_mm: float) -> Image:
         quiet = Blob(disc.x_mm, disc.y_mm, disc.radius_mm * 1.6, disc.radius_mm * 1.6)
         calm.paint(quiet.grown(1.0), 1.0, soft_mm=2.0)
     planted = Canvas(series.grid, 0.0)
-    planted.values = draw_body(series.grid, series.seed, z_mm, calm.values)
+    planted.values = draw_body(series.grid, series.seed, z_mm, tissue, calm.values)
     _draw_level(planted, series.edge())
     for disc in discs:
         planted.paint(Blob(disc.x_mm, disc.y_mm, disc.radius_mm, disc.radius_mm), disc.value)
@@ -220,10 +220,11 @@ def ct_body(
     )
     scope = Scope("ct_body", seed, options)
     positions = tuple((index - (slices - 1) / 2) * thickness_mm for index in range(slices))
+    tissue = weave_tissue(grid, seed)
     files, uids = [], []
     for index, z_mm in enumerate(positions):
         rng = np.random.default_rng([seed, 21, index])
-        values = _draw_slice(series, z_mm) + _noise(series, rng)
+        values = _draw_slice(series, tissue, z_mm) + _noise(series, rng)
         header = start_header("CT", scope, patient, index + 1)
         _describe(header, series, scope, z_mm)
         place_pixels(header, _store(series, values))

@@ -192,7 +192,7 @@ class Canvas:
         self.x_mm: Image = columns[None, :] * grid.spacing_mm
         self.y_mm: Image = rows[:, None] * grid.spacing_mm
 
-    def _box(self, shape: Shape, soft_mm: float) -> Box:
+    def box(self, shape: Shape, soft_mm: float) -> Box:
         """Rows and columns that a shape can touch; empty where it lies outside the grid."""
         row, column = self.grid.pixel(shape.x_mm, shape.y_mm)
         reach = (shape.reach_mm + soft_mm) / self.grid.spacing_mm + 1
@@ -200,12 +200,12 @@ class Canvas:
 
     def cover(self, shape: Shape, soft_mm: float = 0.0) -> tuple[Box, Image]:
         """Box of a shape and its coverage there, 0 to 1; the outline is a ramp at least one pixel wide."""
-        box = self._box(shape, soft_mm)
+        box = self.box(shape, soft_mm)
         if not isinstance(shape, Ribbon):
             return box, self._ramp(shape, box, soft_mm)
         coverage: Image = np.zeros_like(self.values[box])
         for stroke in shape.strokes():
-            part, place = _overlap(self._box(stroke, soft_mm), box)
+            part, place = _overlap(self.box(stroke, soft_mm), box)
             np.maximum(coverage[place], self._ramp(stroke, part, soft_mm), out=coverage[place])
         return box, coverage
 
@@ -237,7 +237,7 @@ class Canvas:
 
     def add_dome(self, shape: Blob, amount: float, power: float = 0.5) -> None:
         """Add a thickness of `amount` at the middle, nothing at the outline; power 0.5 is an ellipsoid, 1 is softer."""
-        box = self._box(shape, 0.0)
+        box = self.box(shape, 0.0)
         distance = shape.distance_mm(self.x_mm[:, box[1]], self.y_mm[box[0], :])
         depth = np.clip(-distance / min(shape.half_width_mm, shape.half_height_mm), 0.0, 1.0)
         self.values[box] += amount * (depth * (2 - depth)) ** power

@@ -17,6 +17,15 @@ FAT_HU, MUSCLE_HU = -105.0, 58.0
 _BONE_HU, _MARROW_HU, _LUNG_HU = 560.0, 200.0, -840.0
 _WALL = Blob(0, 0, 164, 113, 0, ((4, 0.012, 0.4), (3, 0.01, -1.57)), 2.35)
 _CAVITY = _WALL.grown(-26)
+_LAYERS = (
+    (0.0, 15.0, 4.0, 1.0),
+    (2.2, FAT_HU, 7.0, 1.0),
+    (17.0, MUSCLE_HU, 7.0, 1.0),
+    (20.2, FAT_HU, 6.0, 0.7),
+    (21.2, MUSCLE_HU, 7.0, 1.0),
+    (24.5, FAT_HU, 8.0, 1.0),
+)
+"""Skin, fat, two layers of muscle with a thin one of fat between, inner fat: inset in mm, HU, texture, strength."""
 
 
 def draw_table(canvas: Canvas) -> None:
@@ -31,12 +40,13 @@ def draw_table(canvas: Canvas) -> None:
 
 def draw_wall(canvas: Canvas) -> None:
     """Paint skin, fat under it, layered muscle, and the fat within."""
-    canvas.paint(_WALL, 15, 4, soft_mm=1.0)
-    canvas.paint(_WALL.grown(-2.2), FAT_HU, 7, soft_mm=1.0)
-    canvas.paint(_WALL.grown(-17), MUSCLE_HU, 7, soft_mm=1.2)
-    canvas.paint(_WALL.grown(-20.2), FAT_HU, 6, soft_mm=1.0, strength=0.7)
-    canvas.paint(_WALL.grown(-21.2), MUSCLE_HU, 7, soft_mm=1.0)
-    canvas.paint(_WALL.grown(-24.5), FAT_HU, 8, soft_mm=1.2)
+    box = canvas.box(_WALL, 1.0)
+    distance = _WALL.distance_mm(canvas.x_mm[:, box[1]], canvas.y_mm[box[0], :])
+    width = max(1.1, canvas.grid.spacing_mm)
+    for inset_mm, value, texture, strength in _LAYERS:
+        coverage = strength * np.clip(0.5 - (distance + inset_mm) / width, 0, 1)
+        canvas.values[box] += coverage * (value - canvas.values[box])
+        canvas.texture[box] += coverage * (texture - canvas.texture[box])
     for side in (-1, 1):
         rectus = Blob(side * 31, -96, 27, 5, side * 9, ((3, 0.06, side * 1.0),))
         canvas.paint(rectus, MUSCLE_HU, 6, soft_mm=1.0)
