@@ -7,10 +7,9 @@ from typing import ClassVar
 
 import numpy as np
 
-from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Encoded, Reached, Settings
+from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Encoded, Reached, Settings, admit
 from safecheck.codecs.tile.settings import BITSTREAM_VERSION, SIZES, TRANSFORMS, WEIGHTINGS
 from safecheck.codecs.tile.steps import nearest_step, step_at
-from safecheck.errors import CannotEncode
 from safecheck.frames import PixelFormat, Raster, Samples
 
 __all__ = ["Tiled"]
@@ -18,7 +17,9 @@ __all__ = ["Tiled"]
 LONGEST_SIDE = 65535
 MOST_PIXELS = 1 << 28
 EXACT_BELOW_STEP = 1.0
-"""Above this step no code is ever checked for being exact."""
+"""From this step on no code is checked for being exact."""
+EXACT_GAP = 16
+"""The coarsest exact step is sought to within so many places of the grid of steps (an eighth of an octave)."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -68,14 +69,9 @@ class Tiled:
             return f"frame of {shape[0]} x {shape[1]} pixels, expected {limit}"
         return None
 
-    def _check(self, raster: Raster) -> None:
-        reason = self.refuses(raster.format, raster.shape)
-        if reason:
-            raise CannotEncode(reason)
-
     def encode(self, raster: Raster) -> bytes:
         """See `Codec.encode`."""
-        self._check(raster)
+        admit(self, raster)
         from safecheck.codecs.tile import coding
 
         analysis = coding.analyse(raster, self.transform, self.weighting, self.size)
@@ -88,26 +84,42 @@ class Tiled:
         return coding.decode(code, format, shape)
 
     def encode_to_size(self, raster: Raster, target_bytes: float) -> Encoded:
-        """See `RatedCodec.encode_to_size`; the dial is the step."""
-        self._check(raster)
+        """See `RatedCodec.encode_to_size`; the dial is the step.
+
+        Where the asked size would take a step at which every sample comes back exact, the coarsest such step is
+        sought and `reached` says that a reversible code is smaller.
+        """
+        admit(self, raster)
         from safecheck.codecs.tile import coding, rate
 
         analysis = coding.analyse(raster, self.transform, self.weighting, self.size)
+        counts, fixed_bytes = coding.counts(analysis), coding.fixed_bytes(analysis)
         index, code, encodes = rate.search(
-            lambda step: coding.write(analysis, step),
-            coding.counts(analysis),
-            coding.fixed_bytes(analysis),
-            target_bytes,
+            lambda step: coding.write(analysis, step), counts, fixed_bytes, target_bytes
         )
-        settings = {**self.settings, "step": step_at(index)}
-        return Encoded(code, settings, self._reached(raster, code, index, target_bytes), encodes)
+        reached = _reached(len(code), target_bytes)
+        if step_at(index) < EXACT_BELOW_STEP and self._exact(raster, code):
+            low, high = index, nearest_step(EXACT_BELOW_STEP)
+            while high - low > EXACT_GAP:
+                middle = (low + high) // 2
+                tried = coding.write(analysis, middle)
+                encodes += 1
+                if self._exact(raster, tried):
+                    low, code = middle, tried
+                else:
+                    high = middle
+            index = low
+            reached = Reached.REVERSIBLE_SMALLER if len(code) < target_bytes else reached
+        return Encoded(code, {**self.settings, "step": step_at(index)}, reached, encodes)
 
-    def _reached(self, raster: Raster, code: bytes, index: int, target_bytes: float) -> Reached:
-        may_be_exact = step_at(index) < EXACT_BELOW_STEP and len(code) <= target_bytes * (1 + RATE_TOLERANCE)
-        if may_be_exact and np.array_equal(self.decode(code, raster.format, raster.shape), raster.samples):
-            return Reached.REVERSIBLE_SMALLER
-        if abs(len(code) - target_bytes) <= RATE_TOLERANCE * target_bytes:
-            return Reached.ASKED
-        if target_bytes < EXEMPT_BYTES:
-            return Reached.SMALL_FRAME
-        return Reached.CODEC_FLOOR if len(code) > target_bytes else Reached.CODEC_CEILING
+    def _exact(self, raster: Raster, code: bytes) -> bool:
+        return np.array_equal(self.decode(code, raster.format, raster.shape), raster.samples)
+
+
+def _reached(size_bytes: int, target_bytes: float) -> Reached:
+    """Tell a size from the asked one, exactness aside."""
+    if abs(size_bytes - target_bytes) <= RATE_TOLERANCE * target_bytes:
+        return Reached.ASKED
+    if target_bytes < EXEMPT_BYTES:
+        return Reached.SMALL_FRAME
+    return Reached.CODEC_FLOOR if size_bytes > target_bytes else Reached.CODEC_CEILING

@@ -8,15 +8,15 @@ import numpy as np
 import numpy.typing as npt
 
 from safecheck.codecs.tile import context, mask, planes, quantise, rate, steps, stream, transform
-from safecheck.codecs.tile.entropy import Coder, finish_encoding, new_states, start_decoding
-from safecheck.codecs.tile.levels import WORST_BYTES, decode_levels, encode_levels
+from safecheck.codecs.tile.entropy import WIDE, Coder, finish_encoding, new_states, start_decoding
+from safecheck.codecs.tile.levels import WORST_BYTES, decode_levels, encode_levels, new_scratch
 from safecheck.codecs.tile.settings import TRANSFORMS, WEIGHTINGS
 from safecheck.errors import CorruptCode
 from safecheck.frames import Mask, PixelFormat, Raster, Samples
 
 __all__ = ["Analysis", "Padding", "analyse", "counts", "decode", "fixed_bytes", "write"]
 
-START: Coder = (0, 0, 0xFFFFFFFF)
+START: Coder = (0, 0, WIDE)
 """An encoder before its first bit."""
 
 
@@ -162,6 +162,8 @@ def _write_levels(
     coder: Coder,
 ) -> tuple[npt.NDArray[np.uint8], Coder]:
     """Write one plane's levels, in a larger buffer where the first guess is too small."""
+    # A carry may reach back into what stands before this plane, so a second try needs it as it was.
+    before = buffer[: coder[0]].copy()
     while True:
         after, fits = encode_levels(
             levels,
@@ -170,13 +172,14 @@ def _write_levels(
             analysis.across,
             _tables(analysis.size),
             new_states(context.CONTEXTS),
+            new_scratch(*levels.shape),
             buffer,
             coder,
         )
         if fits:
             return buffer, after
         larger = np.empty(2 * len(buffer) + WORST_BYTES * (analysis.size**2 + 2), dtype=np.uint8)
-        larger[: coder[0]] = buffer[: coder[0]]
+        larger[: coder[0]] = before
         buffer = larger
 
 
@@ -214,12 +217,16 @@ def decode(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:
     for plane, plane_steps in enumerate(_plane_steps(weighting, size, header.step, header.channels)):
         levels = np.zeros((len(used), size * size), dtype=np.int32)
         states = new_states(context.CONTEXTS)
-        coder, readable = decode_levels(levels, used, whole[1] // size, _tables(size), states, buffer, coder)
+        ends = np.zeros(len(used), dtype=np.int32)
+        scratch = new_scratch(*levels.shape)
+        coder, readable = decode_levels(
+            levels, ends, used, whole[1] // size, _tables(size), states, scratch, buffer, coder
+        )
         if not readable:
             raise CorruptCode("a tiled code ends early or holds a level out of range")
-        quantise.dequantise(levels, plane_steps, *header.shifts[2 * plane : 2 * plane + 2], levels)
+        quantise.dequantise(levels, ends, plane_steps, *header.shifts[2 * plane : 2 * plane + 2])
         results.append(transform.inverse(levels, table, whole))
-    if coder[0] != len(buffer) + 2:
+    if coder[0] != len(buffer) + 4:
         raise CorruptCode("a tiled code holds more or fewer bytes than its levels take")
     samples = planes.from_planes(results, header.centres, format, shape)
     if padding is not None:

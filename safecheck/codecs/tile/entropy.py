@@ -15,8 +15,10 @@ import numpy.typing as npt
 from numba import njit
 
 __all__ = [
+    "WIDE",
     "decode_bit",
     "decode_raw",
+    "decode_sign",
     "encode_bit",
     "encode_raw",
     "finish_encoding",
@@ -27,6 +29,10 @@ __all__ = [
 Array: TypeAlias = npt.NDArray[Any]
 Coder: TypeAlias = tuple[int, int, int]
 
+WIDE = (1 << 48) - 1
+"""Width of the interval at the start."""
+NARROW = 1 << 32
+"""An interval narrower than this is widened by two bytes. The odds are kept within 2**-11, so once is enough."""
 FIRST = (1 << 36) | (1 << 19)
 """A fresh context: both estimates even, no bit seen."""
 
@@ -36,7 +42,7 @@ def new_states(contexts: int) -> npt.NDArray[np.int64]:
     return np.full(contexts, FIRST, dtype=np.int64)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _adapted(state: int, bit: int) -> int:
     """Move both estimates towards the bit, by 1/2, 1/4, ... at first, then by 1/16 and 1/128."""
     seen = state & 15
@@ -48,34 +54,37 @@ def _adapted(state: int, bit: int) -> int:
     return (fast << 21) | (slow << 4) | min(seen + 1, 6)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _one_share(state: int, width: int) -> int:
     """Part of the interval that a one takes: probability on 15 bits, kept off both ends."""
     odds = ((state >> 21) + ((state >> 4) & 0x1FFFF)) >> 2
     return (width >> 15) * min(max(odds, 16), 32752)
 
 
-@njit(cache=True, nogil=True)
-def _write(buffer: Array, position: int, low: int, width: int) -> Coder:
-    """Carry into what is written, then move whole bytes out until the interval is wide enough."""
-    if low >> 32:
-        low &= 0xFFFFFFFF
-        back = position - 1
-        while buffer[back] == 255:
-            buffer[back] = 0
-            back -= 1
-        buffer[back] += 1
-    while width < 1 << 24:
-        buffer[position] = low >> 24
-        position += 1
-        low = (low << 8) & 0xFFFFFFFF
-        width <<= 8
-    return position, low, width
+@njit(cache=True, nogil=True, _nrt=False)
+def _carry(buffer: Array, position: int) -> None:
+    """Add one to the number that the bytes before a position form."""
+    back = position - 1
+    while buffer[back] == 255:
+        buffer[back] = 0
+        back -= 1
+    buffer[back] += 1
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
+def _shift_out(buffer: Array, position: int, low: int, width: int) -> Coder:
+    """Move two bytes out, a pending carry first; one move always makes the interval wide enough."""
+    if low >> 48:
+        _carry(buffer, position)
+    place = np.uintp(position)
+    buffer[place] = (low >> 40) & 0xFF
+    buffer[place + np.uintp(1)] = (low >> 32) & 0xFF
+    return position + 2, (low & 0xFFFFFFFF) << 16, width << 16
+
+
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def encode_bit(buffer: Array, coder: Coder, states: Array, context: int, bit: int) -> Coder:
-    """Write one bit under a context; the caller keeps 8 bytes of the buffer free."""
+    """Write one bit under a context; the caller keeps room in the buffer."""
     position, low, width = coder
     place = np.uintp(context)
     state = states[place]
@@ -86,55 +95,49 @@ def encode_bit(buffer: Array, coder: Coder, states: Array, context: int, bit: in
         low += share
         width -= share
     states[place] = _adapted(state, bit)
-    if (low >> 32) | (width < 1 << 24):
-        return _write(buffer, position, low, width)
+    if width < NARROW:
+        position, low, width = _shift_out(buffer, position, low, width)
     return position, low, width
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def encode_raw(buffer: Array, coder: Coder, value: int, bits: int) -> Coder:
-    """Write the low `bits` (0 to 32) of a value with even odds."""
+    """Write the low `bits` (1 to 16) of a value with even odds."""
     position, low, width = coder
-    while bits > 0:
-        part = min(bits, 8)
-        bits -= part
-        width >>= part
-        low += ((value >> bits) & ((1 << part) - 1)) * width
-        position, low, width = _write(buffer, position, low, width)
+    width >>= bits
+    low += (value & ((1 << bits) - 1)) * width
+    if width < NARROW:
+        position, low, width = _shift_out(buffer, position, low, width)
     return position, low, width
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def finish_encoding(buffer: Array, coder: Coder) -> int:
     """Write what a decoder needs to tell the last bits; return the number of bytes."""
     position, low, width = coder
-    position, low, width = _write(buffer, position, low + (width >> 1), 0x1000000)
-    for _ in range(2):
-        buffer[position] = low >> 24
-        position += 1
-        low = (low << 8) & 0xFFFFFFFF
-    return position
+    position, low, width = _shift_out(buffer, position, low + NARROW - 1, width)
+    return int(position)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def start_decoding(buffer: Array) -> Coder:
-    """Read the first four bytes; what lies behind the end reads as zero."""
-    code = 0
-    for k in range(4):
-        code = (code << 8) | (buffer[k] if k < buffer.shape[0] else 0)
-    return 4, code, 0xFFFFFFFF
+    """Read the first six bytes; what lies behind the end reads as zero."""
+    code: Any = 0
+    for k in range(6):
+        code = (code << 8) | (np.int64(buffer[k]) if k < buffer.shape[0] else 0)
+    return 6, code, WIDE
 
 
-@njit(cache=True, nogil=True)
-def _read(buffer: Array, position: int, code: int, width: int) -> Coder:
-    while width < 1 << 24:
-        code = (code << 8) | (np.int64(buffer[position]) if position < buffer.shape[0] else 0)
-        position += 1
-        width <<= 8
-    return position, code, width
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
+def _shift_in(buffer: Array, position: int, code: int, width: int) -> Coder:
+    two: Any = 0
+    if position + 1 < buffer.shape[0]:
+        place = np.uintp(position)
+        two = (np.int64(buffer[place]) << 8) | np.int64(buffer[place + np.uintp(1)])
+    return position + 2, (code << 16) | two, width << 16
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def decode_bit(buffer: Array, coder: Coder, states: Array, context: int) -> tuple[Coder, int]:
     """Read one bit under a context."""
     position, code, width = coder
@@ -148,22 +151,31 @@ def decode_bit(buffer: Array, coder: Coder, states: Array, context: int) -> tupl
         code -= share
         width -= share
     states[place] = _adapted(state, bit)
-    if width < 1 << 24:
-        return _read(buffer, position, code, width), bit
+    if width < NARROW:
+        position, code, width = _shift_in(buffer, position, code, width)
     return (position, code, width), bit
 
 
-@njit(cache=True, nogil=True)
-def decode_raw(buffer: Array, coder: Coder, bits: int) -> tuple[Coder, int]:
-    """Read `bits` (0 to 32) bits of even odds."""
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
+def decode_sign(buffer: Array, coder: Coder) -> tuple[Coder, bool]:
+    """Read one bit of even odds."""
     position, code, width = coder
-    value = 0
-    while bits > 0:
-        part = min(bits, 8)
-        bits -= part
-        width >>= part
-        digit = min(code // width, (1 << part) - 1)
-        code -= digit * width
-        value = (value << part) | digit
-        position, code, width = _read(buffer, position, code, width)
+    width >>= 1
+    negative = code >= width
+    if negative:
+        code -= width
+    if width < NARROW:
+        position, code, width = _shift_in(buffer, position, code, width)
+    return (position, code, width), negative
+
+
+@njit(cache=True, nogil=True, _nrt=False)
+def decode_raw(buffer: Array, coder: Coder, bits: int) -> tuple[Coder, int]:
+    """Read `bits` (1 to 16) bits of even odds."""
+    position, code, width = coder
+    width >>= bits
+    value = min(code // width, (1 << bits) - 1)
+    code -= value * width
+    if width < NARROW:
+        position, code, width = _shift_in(buffer, position, code, width)
     return (position, code, width), value

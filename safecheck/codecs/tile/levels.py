@@ -25,7 +25,14 @@ from safecheck.codecs.tile.context import (
     ONE,
     ZERO,
 )
-from safecheck.codecs.tile.entropy import Coder, decode_bit, decode_raw, encode_bit, encode_raw
+from safecheck.codecs.tile.entropy import (
+    Coder,
+    decode_bit,
+    decode_raw,
+    decode_sign,
+    encode_bit,
+    encode_raw,
+)
 
 __all__ = ["WORST_BYTES", "decode_levels", "encode_levels"]
 
@@ -36,7 +43,7 @@ WORST_BYTES = 64
 LARGEST_LEVEL = 1 << 29
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _bit_length(value: int) -> int:
     length = 0
     while value:
@@ -45,22 +52,22 @@ def _bit_length(value: int) -> int:
     return length
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _predict(levels: Array, used: Array, tile: int, across: int) -> int:
     """Predict the constant's level from its neighbours: the median of left, above and left + above - corner."""
     has_left = tile % across > 0 and used[tile - 1]
     has_above = tile >= across and used[tile - across]
-    left = np.int64(levels[tile - 1, 0]) if has_left else 0
-    above = np.int64(levels[tile - across, 0]) if has_above else 0
+    left = int(levels[tile - 1, 0]) if has_left else 0
+    above = int(levels[tile - across, 0]) if has_above else 0
     if not (has_left and has_above):
         return left + above
-    corner = np.int64(levels[tile - across - 1, 0]) if used[tile - across - 1] else (left + above) >> 1
+    corner = int(levels[tile - across - 1, 0]) if used[tile - across - 1] else (left + above) >> 1
     return max(min(left, above), min(max(left, above), left + above - corner))
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _encode_magnitude(
-    buffer: Array, coder: Coder, states: Array, zone: int, grade: int, value: int, length: int
+    buffer: Array, coder: Coder, states: Array, zone: int, grade: int, value: int
 ) -> Coder:
     """Write a magnitude above zero; that it is above zero is written by the caller."""
     coder = encode_bit(buffer, coder, states, ONE + zone * CLASSES + grade, 1 if value > 1 else 0)
@@ -68,8 +75,10 @@ def _encode_magnitude(
         return coder
     kind = (CLASSES if zone else 0) + grade
     row = LENGTH + kind * LENGTHS
-    for k in range(2, length):
-        coder = encode_bit(buffer, coder, states, row + k, 1)
+    length = 2
+    while value >> length:
+        coder = encode_bit(buffer, coder, states, row + length, 1)
+        length += 1
     if length < LENGTHS - 1:
         coder = encode_bit(buffer, coder, states, row + length, 0)
     row = MANTISSA + (kind * LENGTHS + length) * 3
@@ -77,11 +86,16 @@ def _encode_magnitude(
     coder = encode_bit(buffer, coder, states, row, first)
     if length > 2:
         coder = encode_bit(buffer, coder, states, row + 1 + first, (value >> (length - 3)) & 1)
-        coder = encode_raw(buffer, coder, value, length - 3)
+        low = length - 3
+        if low > 16:
+            coder = encode_raw(buffer, coder, value >> 16, low - 16)
+            low = 16
+        if low > 0:
+            coder = encode_raw(buffer, coder, value, low)
     return coder
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _decode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, grade: int) -> tuple[Coder, int]:
     coder, bit = decode_bit(buffer, coder, states, ONE + zone * CLASSES + grade)
     if not bit:
@@ -99,12 +113,19 @@ def _decode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, gra
     value = 2 | first
     if length > 2:
         coder, bit = decode_bit(buffer, coder, states, row + 1 + first)
-        coder, low = decode_raw(buffer, coder, length - 3)
-        value = (((value << 1) | bit) << (length - 3)) | low
+        value = (value << 1) | bit
+        low = length - 3
+        if low > 16:
+            coder, part = decode_raw(buffer, coder, low - 16)
+            value = (value << (low - 16)) | part
+            low = 16
+        if low > 0:
+            coder, part = decode_raw(buffer, coder, low)
+            value = (value << low) | part
     return coder, value
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _encode_end(buffer: Array, coder: Coder, states: Array, around: int, end: int, limit: int) -> Coder:
     """Write the place of a tile's last level that is not zero; 0 where only the constant may differ from zero."""
     length = _bit_length(end)
@@ -119,10 +140,12 @@ def _encode_end(buffer: Array, coder: Coder, states: Array, around: int, end: in
         bit = (end >> k) & 1
         coder = encode_bit(buffer, coder, states, row + node, bit)
         node = 2 * node + bit
-    return encode_raw(buffer, coder, end, length - 4)
+    if length > 4:
+        coder = encode_raw(buffer, coder, end, length - 4)
+    return coder
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _decode_end(buffer: Array, coder: Coder, states: Array, around: int, limit: int) -> tuple[Coder, int]:
     row = END + around * END_LENGTHS
     length = 0
@@ -138,11 +161,13 @@ def _decode_end(buffer: Array, coder: Coder, states: Array, around: int, limit: 
     for _ in range(min(length - 1, 3)):
         coder, bit = decode_bit(buffer, coder, states, row + node)
         node = 2 * node + bit
+    if length < 5:
+        return coder, node
     coder, low = decode_raw(buffer, coder, length - 4)
-    return coder, (node << max(length - 4, 0)) | low
+    return coder, (node << (length - 4)) | low
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _around(ends: Array, residuals: Array, used: Array, tile: int, across: int) -> tuple[int, int]:
     """Bit lengths of the ends of the tiles to the left and above, summed; and their constants' differences."""
     lengths = 0
@@ -156,7 +181,7 @@ def _around(ends: Array, residuals: Array, used: Array, tile: int, across: int) 
     return lengths, min(2 * residual, MAGNITUDE_CAP)
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _expected(magnitudes: Array, place: int, side: int, before: Array, k: int) -> int:
     """Weighted sum of the magnitudes around a place that are known."""
     at = np.uintp(place)
@@ -167,10 +192,10 @@ def _expected(magnitudes: Array, place: int, side: int, before: Array, k: int) -
         + magnitudes[at - np.uintp(2)]
         + magnitudes[at - np.uintp(side - 1)]
     )
-    return min(2 * (near + before[np.uintp(k)]) + far, MAGNITUDE_CAP)
+    return int(min(2 * (near + before[np.uintp(k)]) + far, MAGNITUDE_CAP))
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _look_back(levels: Array, used: Array, tile: int, across: int, before: Array) -> None:
     """Sum the magnitudes of the tiles to the left and above, place by place."""
     before[:] = 0
@@ -182,7 +207,7 @@ def _look_back(levels: Array, used: Array, tile: int, across: int, before: Array
             before[k] += abs(levels[tile - across, k])
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def encode_levels(
     levels: Array,
     ends: Array,
@@ -190,6 +215,7 @@ def encode_levels(
     across: int,
     tables: tuple[Array, Array, Array],
     states: Array,
+    scratch: tuple[Array, Array, Array],
     buffer: Array,
     coder: Coder,
 ) -> tuple[Coder, bool]:
@@ -198,9 +224,7 @@ def encode_levels(
     tiles, count = levels.shape
     side = _side(count)
     limit = _bit_length(count - 1)
-    magnitudes = np.zeros(side * side, np.int64)
-    before = np.zeros(count, np.int64)
-    residuals = np.zeros(tiles, np.int64)
+    magnitudes, before, residuals = scratch
     for tile in range(tiles):
         if not used[tile]:
             continue
@@ -213,7 +237,7 @@ def encode_levels(
         residuals[tile] = size
         coder = encode_bit(buffer, coder, states, ZERO + grade, 1 if size else 0)
         if size:
-            coder = _encode_magnitude(buffer, coder, states, 0, grade, size, _bit_length(size))
+            coder = _encode_magnitude(buffer, coder, states, 0, grade, size)
             coder = encode_raw(buffer, coder, 1 if residual < 0 else 0, 1)
         end = ends[tile]
         coder = _encode_end(buffer, coder, states, around, end, limit)
@@ -228,12 +252,12 @@ def encode_levels(
                 coder = encode_bit(buffer, coder, states, ZERO + zones[k] * CLASSES + grade, 1 if size else 0)
             if size:
                 magnitudes[places[k]] = size
-                coder = _encode_magnitude(buffer, coder, states, zones[k], grade, size, _bit_length(size))
+                coder = _encode_magnitude(buffer, coder, states, zones[k], grade, size)
                 coder = encode_raw(buffer, coder, 1 if level < 0 else 0, 1)
     return coder, True
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _side(count: int) -> int:
     """Side of the padded array of a tile with so many coefficients."""
     side = 4
@@ -242,25 +266,24 @@ def _side(count: int) -> int:
     return side + 4
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def decode_levels(
     levels: Array,
+    ends: Array,
     used: Array,
     across: int,
     tables: tuple[Array, Array, Array],
     states: Array,
+    scratch: tuple[Array, Array, Array],
     buffer: Array,
     coder: Coder,
 ) -> tuple[Coder, bool]:
-    """Read all tiles of a plane into zeroed levels; False where the bytes are no code."""
+    """Read all tiles of a plane into zeroed levels and ends; False where the bytes are no code."""
     places, zones, classes = tables
     tiles, count = levels.shape
     side = _side(count)
     limit = _bit_length(count - 1)
-    magnitudes = np.zeros(side * side, np.int64)
-    before = np.zeros(count, np.int64)
-    residuals = np.zeros(tiles, np.int64)
-    ends = np.zeros(tiles, np.int32)
+    magnitudes, before, residuals = scratch
     for tile in range(tiles):
         if not used[tile]:
             continue
@@ -270,11 +293,11 @@ def decode_levels(
         sign = 0
         if size:
             coder, size = _decode_magnitude(buffer, coder, states, 0, grade)
-            coder, sign = decode_raw(buffer, coder, 1)
+            coder, sign = decode_sign(buffer, coder)
         residuals[tile] = size
         level = _predict(levels, used, tile, across) + (-size if sign else size)
         coder, end = _decode_end(buffer, coder, states, around, limit)
-        if abs(level) >= LARGEST_LEVEL or end >= count or coder[0] > buffer.shape[0] + 2:
+        if abs(level) >= LARGEST_LEVEL or end >= count or coder[0] > buffer.shape[0] + 4:
             return coder, False
         levels[tile, 0] = level
         ends[tile] = end
@@ -288,7 +311,12 @@ def decode_levels(
                 coder, size = decode_bit(buffer, coder, states, ZERO + zones[k] * CLASSES + grade)
             if size:
                 coder, size = _decode_magnitude(buffer, coder, states, zones[k], grade)
-                coder, sign = decode_raw(buffer, coder, 1)
+                coder, sign = decode_sign(buffer, coder)
                 magnitudes[places[k]] = size
                 levels[tile, k] = -size if sign else size
     return coder, True
+
+
+def new_scratch(tiles: int, count: int) -> tuple[Array, Array, Array]:
+    """Work space of the coders: magnitudes of a tile with a margin, of the tiles before, differences of constants."""
+    return np.zeros(_side(count) ** 2, np.int64), np.zeros(count, np.int64), np.zeros(tiles, np.int64)

@@ -35,7 +35,7 @@ MASK_CONTEXTS: Final = 85
 """Contexts of the mask (0 to 81) and of the padding values (82 to 84, one a channel)."""
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _cell_state(mask: Array, row: int, column: int) -> int:
     part = mask[row * CELL : (row + 1) * CELL, column * CELL : (column + 1) * CELL]
     found = 0
@@ -47,14 +47,14 @@ def _cell_state(mask: Array, row: int, column: int) -> int:
     return FULL if found == part.size else MIXED
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _neighbour_cells(cells: Array, row: int, column: int) -> int:
     left = cells[row, column - 1] if column else 0
     above = cells[row - 1, column] if row else left
     return 3 * left + above
 
 
-@njit(cache=True, nogil=True)
+@njit(cache=True, nogil=True, _nrt=False)
 def _neighbour_pixels(mask: Array, row: int, column: int) -> int:
     """Context of a pixel: west, west of it, north, north west, north east, north of north; zero outside."""
     context = 0
@@ -82,10 +82,11 @@ def encode_mask(mask: Array, states: Array, buffer: Array, coder: Coder) -> Code
                 coder = encode_bit(buffer, coder, states, _UNIFORM + context, state)
             cells[row, column] = state
     for row in range(mask.shape[0]):
-        for column in range(mask.shape[1]):
-            if cells[row // CELL, column // CELL] == MIXED:
-                context = _PIXEL + _neighbour_pixels(mask, row, column)
-                coder = encode_bit(buffer, coder, states, context, mask[row, column])
+        for cell in range(cells.shape[1]):
+            if cells[row // CELL, cell] == MIXED:
+                for column in range(cell * CELL, min((cell + 1) * CELL, mask.shape[1])):
+                    context = _PIXEL + _neighbour_pixels(mask, row, column)
+                    coder = encode_bit(buffer, coder, states, context, mask[row, column])
     return coder
 
 
@@ -104,13 +105,14 @@ def decode_mask(mask: Array, states: Array, buffer: Array, coder: Coder) -> Code
             if state == FULL:
                 mask[row * CELL : (row + 1) * CELL, column * CELL : (column + 1) * CELL] = 1
     for row in range(mask.shape[0]):
-        if coder[0] > buffer.shape[0] + 4:
+        if coder[0] > buffer.shape[0] + 6:
             break
-        for column in range(mask.shape[1]):
-            if cells[row // CELL, column // CELL] == MIXED:
-                context = _PIXEL + _neighbour_pixels(mask, row, column)
-                coder, bit = decode_bit(buffer, coder, states, context)
-                mask[row, column] = bit
+        for cell in range(cells.shape[1]):
+            if cells[row // CELL, cell] == MIXED:
+                for column in range(cell * CELL, min((cell + 1) * CELL, mask.shape[1])):
+                    context = _PIXEL + _neighbour_pixels(mask, row, column)
+                    coder, bit = decode_bit(buffer, coder, states, context)
+                    mask[row, column] = bit
     return coder
 
 

@@ -23,6 +23,21 @@ OFFSET = 1.0 / 3.0
 
 
 @njit(cache=True, nogil=True)
+def _quantise_tile(coefficients: Array, steps: Array, levels: Array) -> int:
+    """Fill one tile's levels; return the place of the last that is not zero, the constant not counted."""
+    count = coefficients.shape[0]
+    for k in range(count):
+        level = np.int32(np.floor(abs(coefficients[k]) / steps[k] + OFFSET))
+        levels[k] = -level if coefficients[k] < 0 else level
+    level = np.int32(np.floor(abs(coefficients[0]) / steps[0] + 0.5))
+    levels[0] = -level if coefficients[0] < 0 else level
+    end = count - 1
+    while end > 0 and levels[end] == 0:
+        end -= 1
+    return int(end)
+
+
+@njit(cache=True, nogil=True)
 def quantise(coefficients: Array, steps: Array, used: Array, levels: Array, ends: Array) -> tuple[int, int]:
     """Fill levels (tiles, size * size) and ends of block (tiles,); return the two shifts in 1/256 steps."""
     total_one = 0
@@ -30,38 +45,32 @@ def quantise(coefficients: Array, steps: Array, used: Array, levels: Array, ends
     total_more = 0
     count_more = 0
     for tile in range(coefficients.shape[0]):
-        end = 0
-        if used[tile]:
-            value = coefficients[tile, 0]
-            level = np.int32(np.floor(abs(value) / steps[0] + 0.5))
-            levels[tile, 0] = -level if value < 0 else level
-            for k in range(1, coefficients.shape[1]):
-                value = coefficients[tile, k]
-                ratio = abs(value) / steps[k]
-                level = np.int32(np.floor(ratio + OFFSET))
-                levels[tile, k] = -level if value < 0 else level
-                if level:
-                    end = k
-                    part = np.int64(np.floor((ratio - level) * 256.0))
-                    if level == 1:
-                        total_one += part
-                        count_one += 1
-                    else:
-                        total_more += part
-                        count_more += 1
-        ends[tile] = end
+        if not used[tile]:
+            continue
+        ends[tile] = _quantise_tile(coefficients[tile], steps, levels[tile])
+        for k in range(1, ends[tile] + 1):
+            level = abs(levels[tile, k])
+            if level:
+                part = int(np.floor((abs(coefficients[tile, k]) / steps[k] - level) * 256.0))
+                if level == 1:
+                    total_one += part
+                    count_one += 1
+                else:
+                    total_more += part
+                    count_more += 1
     one = min(max(total_one // max(count_one, 1), -127), 127)
     return one, min(max(total_more // max(count_more, 1), -127), 127)
 
 
 @njit(cache=True, nogil=True)
-def dequantise(levels: Array, steps: Array, shift_one: int, shift_more: int, coefficients: Array) -> None:
-    """Fill coefficients (tiles, size * size) in 1/`GRID` stored units, kept within 2**30."""
+def dequantise(levels: Array, ends: Array, steps: Array, shift_one: int, shift_more: int) -> None:
+    """Turn levels (tiles, size * size) into coefficients in 1/256 stored units, in place, kept within 2**30."""
     for tile in range(levels.shape[0]):
-        for k in range(levels.shape[1]):
-            level = np.int64(levels[tile, k])
-            size = abs(level)
-            shift = shift_one if size == 1 else shift_more
-            fine = size * 256 + (shift if k > 0 and size > 0 else 0)
-            value = min(np.floor(fine * steps[k] / 256.0 + 0.5), 1073741824.0)
-            coefficients[tile, k] = np.int32(-value if level < 0 else value)
+        for k in range(ends[tile] + 1):
+            level = int(levels[tile, k])
+            if level:
+                size = abs(level)
+                shift = shift_one if size == 1 else shift_more
+                fine = size * 256 + (shift if k else 0)
+                value = min(np.floor(fine * steps[k] / 256.0 + 0.5), 1073741824.0)
+                levels[tile, k] = np.int32(-value if level < 0 else value)

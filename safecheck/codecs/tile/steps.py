@@ -93,7 +93,8 @@ def weights(weighting: str, size: int, chroma: bool) -> npt.NDArray[np.float64]:
     high = np.minimum(low + 1, 7)
     share = at - low
     rows = table[low] * (1 - share)[:, None] + table[high] * share[:, None]
-    return (rows[:, low] * (1 - share) + rows[:, high] * share) / table[0, 0]
+    factors: npt.NDArray[np.float64] = (rows[:, low] * (1 - share) + rows[:, high] * share) / table[0, 0]
+    return factors
 
 
 def coefficient_steps(

@@ -128,6 +128,7 @@ def _apply(table: Array, source: Array, target: Array) -> None:
 def _forward(plane: Array, table: Array, order: Array, coefficients: Array) -> None:
     size = table.shape[0]
     across = plane.shape[1] // size
+    rows, columns = (order // size * across).astype(np.uint64), (order % size).astype(np.uint64)
     work = np.empty((size, plane.shape[1]))
     turned = np.empty((size, plane.shape[1]))
     for stripe in range(plane.shape[0] // size):
@@ -139,9 +140,7 @@ def _forward(plane: Array, table: Array, order: Array, coefficients: Array) -> N
         _apply(table, turned, work)
         for t in range(across):
             for k in range(size * size):
-                u = order[k] // size
-                v = order[k] - u * size
-                value = np.floor(work[v, u * across + t] * 256.0 + 0.5)
+                value = np.floor(work[columns[k], rows[k] + np.uint64(t)] * 256.0 + 0.5)
                 coefficients[stripe * across + t, k] = np.int32(value)
 
 
@@ -149,14 +148,13 @@ def _forward(plane: Array, table: Array, order: Array, coefficients: Array) -> N
 def _inverse(coefficients: Array, table: Array, order: Array, plane: Array) -> None:
     size = table.shape[0]
     across = plane.shape[1] // size
+    rows, columns = (order // size * across).astype(np.uint64), (order % size).astype(np.uint64)
     work = np.empty((size, plane.shape[1]))
     turned = np.empty((size, plane.shape[1]))
     for stripe in range(plane.shape[0] // size):
         for t in range(across):
             for k in range(size * size):
-                u = order[k] // size
-                v = order[k] - u * size
-                work[v, u * across + t] = coefficients[stripe * across + t, k] / 256.0
+                work[columns[k], rows[k] + np.uint64(t)] = coefficients[stripe * across + t, k] / 256.0
         _apply(table, work, turned)
         for u in range(size):
             for t in range(across):
