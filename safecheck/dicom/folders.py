@@ -11,7 +11,9 @@ from pathlib import Path
 
 from safecheck.errors import UsageError
 
-__all__ = ["Problem", "find_files", "read_list"]
+__all__ = ["Problem", "expand_lists", "find_files", "read_list"]
+
+_LIST_LOOK_BYTES = 1 << 14
 
 
 @dataclass(frozen=True, slots=True, order=True)
@@ -51,6 +53,29 @@ def read_list(list_file: Path) -> tuple[Path, ...]:
     except (OSError, UnicodeDecodeError) as error:
         raise UsageError(f"the list file cannot be read ({type(error).__name__})") from None
     return tuple(list_file.parent / line.strip() for line in lines if line.strip())
+
+
+def expand_lists(paths: Iterable[Path]) -> tuple[Path, ...]:
+    """Put in the place of each list file what it lists.
+
+    A file that was handed in itself is a list if it is text and its first line names a path that exists.
+    """
+    expanded: list[Path] = []
+    for path in paths:
+        expanded.extend(read_list(path) if _is_list(path) else (path,))
+    return tuple(expanded)
+
+
+def _is_list(path: Path) -> bool:
+    try:
+        if not path.is_file():
+            return False
+        with path.open("rb") as stream:
+            start = stream.read(_LIST_LOOK_BYTES)
+        first = start.decode("utf-8-sig", "ignore").strip().split("\n")[0].strip()
+        return b"\0" not in start and bool(first) and (path.parent / first).exists()
+    except (OSError, ValueError):
+        return False
 
 
 def find_files(paths: Iterable[Path]) -> tuple[tuple[Path, ...], tuple[Problem, ...]]:

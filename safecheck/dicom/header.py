@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import io
 import os
 import re
@@ -109,19 +110,25 @@ def _check_preamble(start: bytes) -> None:
 def _read(stream: BinaryIO) -> Header:
     meta = read_dataset(stream, False, True, stop_when=_after_meta)
     uid = text(meta, 0x00020010)
+    packed_bytes = None
     if uid == _DEFLATED:
-        stream = io.BytesIO(inflate(stream.read()))
+        packed = stream.read()
+        packed_bytes, stream = len(packed), io.BytesIO(inflate(packed))
     implicit, little = _encoding(uid, stream)
     # A directory is one long sequence, and its whole content is wanted.
     defer = None if text(meta, 0x00020002) == DIRECTORY_CLASS else _DEFER_BYTES
     dataset = read_dataset(stream, implicit, little, stop_when=_at_pixels, defer_size=defer)
     syntax = syntax_of(uid)
+    pixels = _locate_pixels(stream, little, syntax)
+    if pixels and packed_bytes is not None:
+        # What lies in the file is the packed stream; the pixels' share of it cannot be more than the whole.
+        pixels = dataclasses.replace(pixels, size_bytes=min(pixels.size_bytes, packed_bytes))
     return Header(
         dataset=dataset,
         syntax=syntax,
         syntax_declared=bool(uid),
         object_uid=text(dataset, 0x00080016) or text(meta, 0x00020002),
-        pixels=_locate_pixels(stream, little, syntax),
+        pixels=pixels,
     )
 
 

@@ -14,7 +14,7 @@ from typing import BinaryIO, TypeAlias
 from safecheck.dicom.archives import Member, begins_archive, member_names, read_members
 from safecheck.dicom.examine import Content, Examined, LeftOut, examine, leave_out
 from safecheck.dicom.facts import Facts
-from safecheck.dicom.folders import Problem, find_files, read_list
+from safecheck.dicom.folders import Problem, expand_lists, find_files, read_list
 from safecheck.dicom.instance import Instance, Source
 from safecheck.dicom.pseudonyms import Pseudonyms
 from safecheck.dicom.quiet import quiet_library
@@ -52,18 +52,19 @@ def gather(
     list_file: Path | None = None,
     progress: Progress | None = None,
 ) -> Intake:
-    """Take in files, folders, DICOMDIRs and zip archives, whatever their names.
+    """Take in files, folders, DICOMDIRs, zip archives and list files, whatever their names.
 
     Parameters
     ----------
     paths
-        Handed in; may overlap. Folders are walked, zip archives entered, files that a DICOMDIR lists added.
+        Handed in; may overlap. Folders are walked, zip archives entered, files that a DICOMDIR lists added. A text
+        file whose first line names a path that exists is a list, one path a line.
     pseudonyms
         Names under the site key.
     include
         What is assessed only when asked for; None for none of it.
     list_file
-        Text file with further paths, one a line.
+        A list of further paths that is taken for one whatever it holds.
     progress
         Told after each input.
 
@@ -77,7 +78,7 @@ def gather(
     UsageError
         If the list file cannot be read, or two identifiers share a pseudonym.
     """
-    handed_in = [Path(each) for each in paths] + (list(read_list(list_file)) if list_file else [])
+    handed_in = expand_lists(Path(each) for each in paths) + (read_list(list_file) if list_file else ())
     run = _Run(pseudonyms, include or Include(), progress)
     with quiet_library():
         run.take_paths(handed_in)

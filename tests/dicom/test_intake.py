@@ -76,7 +76,7 @@ def test_a_file_without_identities_goes_by_its_content(tmp_path: Path) -> None:
     assert found.input == found.patient == found.study == found.series == found.instance
 
 
-@pytest.mark.parametrize("way", ["files", "reversed", "twice", "list", "zip", "mixed", "link"])
+@pytest.mark.parametrize("way", ["files", "reversed", "twice", "list", "named list", "zip", "mixed", "link"])
 def test_results_do_not_depend_on_how_files_are_handed_in(tmp_path: Path, way: str) -> None:
     folder = study(tmp_path / "study")
     (folder / "README").write_text("no image")
@@ -94,6 +94,9 @@ def test_results_do_not_depend_on_how_files_are_handed_in(tmp_path: Path, way: s
     elif way == "list":
         lister.write_text("\n".join(os.path.relpath(path, tmp_path) for path in files) + "\n\n")
         other = take_in(list_file=lister)
+    elif way == "named list":
+        lister.write_text("\n".join(map(str, files)))
+        other = take_in(lister)
     elif way == "zip":
         other = take_in(zipped(folder, tmp_path / "archive.img"))
     elif way == "mixed":
@@ -143,8 +146,9 @@ def test_a_cut_file_is_refused(tmp_path: Path) -> None:
 
 
 def test_a_deflated_file_is_read(tmp_path: Path) -> None:
-    (found,) = take_in(save(image(1), tmp_path / "a", DEFLATED)).instances
-    assert found.pixel_bytes == 128
+    path = save(image(1, Rows=64, Columns=64, PixelData=bytes(8192)), tmp_path / "a", DEFLATED)
+    (found,) = take_in(path).instances
+    assert 0 < found.pixel_bytes < path.stat().st_size < 8192
     assert found.origin.source_syntax == "Deflated Explicit VR Little Endian"
 
 
@@ -216,6 +220,27 @@ def test_a_list_that_cannot_be_read_is_a_wrong_call(tmp_path: Path) -> None:
     with pytest.raises(UsageError, match="list file cannot be read") as caught:
         take_in(list_file=tmp_path / "CANARY")
     assert "CANARY" not in str(caught.value)
+
+
+def test_a_text_that_names_no_path_is_no_list(tmp_path: Path) -> None:
+    for number, text in enumerate(("read me first\n", "", "\n\n", "x" * 5000, "a\0b")):
+        (tmp_path / str(number)).write_text(text)
+    found = take_in(*tmp_path.iterdir())
+    assert found.counts == {"assessed": 0, "not-dicom": 5}
+
+
+def test_a_list_within_a_folder_is_no_list(tmp_path: Path) -> None:
+    study(tmp_path / "a", 1)
+    (tmp_path / "b").mkdir()
+    (tmp_path / "b" / "list").write_text("../a")
+    assert take_in(tmp_path / "b").counts == {"assessed": 0, "not-dicom": 1}
+    assert take_in(tmp_path / "b" / "list").counts == {"assessed": 1}
+
+
+def test_paths_missing_from_a_list_are_counted(tmp_path: Path) -> None:
+    study(tmp_path / "a", 1)
+    (tmp_path / "list").write_text("a\nmissing\n")
+    assert take_in(tmp_path / "list").counts == {"assessed": 1, "unreadable": 1}
 
 
 # Archives
