@@ -79,7 +79,8 @@ def recompress(original: Original, candidate: Candidate, role: Role = "candidate
     encoded = codec.encode_to_size(raster, target)
     if encoded.reached is not Reached.ASKED and original.smallest.size_bytes <= target:
         encoded = replace(encoded, reached=Reached.REVERSIBLE_SMALLER)
-    treated = _treated(original, codec, encoded, role, candidate.name)
+    name = candidate.name if role == "candidate" else f"{role}, {candidate.codec}"
+    treated = _treated(original, codec, encoded, role, name)
     flattened_max = None
     if candidate.flatten_outside:
         flattened_max = float(np.abs(original.frame.values(raster.samples) - original.values).max())
@@ -100,9 +101,7 @@ def _flattened(original: Original) -> Raster:
 
 def over_compress(original: Original, candidate: Candidate, largest_ratio: float) -> Treated:
     """Write a frame far below the size of every candidate."""
-    far = replace(
-        candidate, name="over-compressed", ratio=largest_ratio * OVER_COMPRESSION, basis=SizeBasis.BITS_STORED
-    )
+    far = replace(candidate, ratio=largest_ratio * OVER_COMPRESSION, basis=SizeBasis.BITS_STORED)
     return recompress(original, far, "over-compressed")
 
 
