@@ -149,7 +149,7 @@ def _read(path: Path) -> Manifest:
 
 def _write(path: Path, content: bytes) -> None:
     """Write a file so that it is whole or absent, also after a power cut."""
-    aside = path.with_name(f"{path.name}.{os.getpid()}.aside")
+    aside = path.with_name(f"{path.name}.aside")
     with aside.open("wb") as file:
         file.write(content)
         file.flush()

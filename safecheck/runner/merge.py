@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 from collections import Counter
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 
 import pyarrow as pa
@@ -49,14 +49,37 @@ def merge(tasks: Sequence[Task], work: Path, dossier: Path) -> Merged:
     DossierError
         If a shard is missing or damaged; resuming does it again.
     """
-    papers = [_paper(work, task) for task in tasks]
+    tally = _Tally()
+    for task in tasks:
+        tally.add(_paper(work, task))
     rows = {}
     for table in SHARD_TABLES:
-        expected = sum(paper.tables[table].rows for paper in papers)
-        rows[table] = _write(dossier / f"{table}.parquet", table, _batches(tasks, papers, work, table))
-        if rows[table] != expected:
-            raise DossierError(f"the table {table} got {rows[table]} rows, expected {expected} from the shards")
-    return _sum_up(papers, rows)
+        batches = _batches(tasks, tally.rows[table], work, table)
+        rows[table] = _write(dossier / f"{table}.parquet", table, batches)
+        if rows[table] != sum(tally.rows[table]):
+            raise DossierError(f"the table {table} has {rows[table]} rows, its shards {sum(tally.rows[table])}")
+    return Merged(rows, tuple(tally.left_out), dict(sorted(tally.assessed.items())), dict(sorted(tally.notes.items())))
+
+
+@dataclass(slots=True)
+class _Tally:
+    """What stands beside the rows, added up one shard after the other."""
+
+    rows: dict[str, list[int]] = field(default_factory=lambda: {table: [] for table in SHARD_TABLES})
+    """Table -> rows of each shard."""
+    left_out: list[LeftOut] = field(default_factory=list)
+    assessed: Counter[str] = field(default_factory=Counter)
+    notes: Counter[str] = field(default_factory=Counter)
+
+    def add(self, paper: Paper) -> None:
+        """Add a shard's paper."""
+        for table, rows in self.rows.items():
+            rows.append(paper.tables[table].rows)
+        self.left_out.extend(paper.left_out)
+        self.notes.update(paper.notes)
+        self.assessed.update(input_ for input_, _ in paper.frames)
+        # An original none of whose frames was assessed stays, with 0: each input is accounted for.
+        self.assessed.subtract(each.input for each in paper.left_out if each.side == "original")
 
 
 def _paper(work: Path, task: Task) -> Paper:
@@ -67,10 +90,10 @@ def _paper(work: Path, task: Task) -> Paper:
     return paper
 
 
-def _batches(tasks: Sequence[Task], papers: Sequence[Paper], work: Path, table: str) -> Iterator[pa.Table]:
+def _batches(tasks: Sequence[Task], rows: Sequence[int], work: Path, table: str) -> Iterator[pa.Table]:
     """Read one shard after the other."""
-    for task, paper in zip(tasks, papers, strict=True):
-        if paper.tables[table].rows:
+    for task, count in zip(tasks, rows, strict=True):
+        if count:
             yield read_shard(work, task, table)
 
 
@@ -78,21 +101,7 @@ def _write(path: Path, table: str, batches: Iterator[pa.Table]) -> int:
     """Write a table so that it is whole or absent, also after a power cut."""
     aside = path.with_name(f"{path.name}.aside")
     rows = write_table(aside, table, batches)
-    with aside.open("rb") as file:
+    with aside.open("rb+") as file:
         os.fsync(file.fileno())
     aside.replace(path)
     return rows
-
-
-def _sum_up(papers: Sequence[Paper], rows: dict[str, int]) -> Merged:
-    """Add up what stands beside the tables."""
-    notes: Counter[str] = Counter()
-    assessed: Counter[str] = Counter()
-    left_out: list[LeftOut] = []
-    for paper in papers:
-        notes.update(paper.notes)
-        left_out.extend(paper.left_out)
-        assessed.update(input_ for input_, _ in paper.frames)
-    # An original none of whose frames was assessed stays, with 0: each input is accounted for.
-    assessed.subtract(each.input for each in left_out if each.side == "original")
-    return Merged(rows, tuple(left_out), dict(sorted(assessed.items())), dict(sorted(notes.items())))

@@ -214,12 +214,12 @@ class _Crew:
 def _start_process() -> subprocess.Popen[bytes]:
     """Start a worker with the parent's import path, one thread per library, and a process group of its own.
 
-    The group keeps Ctrl-C from reaching it; nothing it prints goes anywhere, since it may hold identifiers.
+    The group keeps Ctrl-C from reaching it; nothing it prints goes anywhere, since it may hold identifiers. The import
+    path goes by the environment, which other users of the machine cannot see.
     """
-    path = [entry or str(Path.cwd()) for entry in sys.path]
-    program = f"import sys; sys.path[:] = {path!r}; from safecheck.runner.process import main; main()"
-    command = [sys.executable, "-P", "-c", program]
-    environment = os.environ | _ONE_THREAD
+    command = [sys.executable, "-P", "-c", "from safecheck.runner.process import main; main()"]
+    path = os.pathsep.join(entry or str(Path.cwd()) for entry in sys.path)
+    environment = os.environ | _ONE_THREAD | {"PYTHONPATH": path}
     if sys.platform == "win32":
         flags = subprocess.CREATE_NEW_PROCESS_GROUP
         return subprocess.Popen(

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 from safecheck.evaluation import Assignment
 from safecheck.runner.tasks import Task, pixels_of
 
-__all__ = ["Pace", "Progress", "weight_of"]
+__all__ = ["Pace", "Progress", "kind_of", "weight_of"]
 
 _FULL_CONTROLS = 4
 """Further treatments of a frame that carries the full controls: repeat, over-compressed, planted, reversible."""
@@ -43,46 +43,69 @@ def weight_of(task: Task, assignment: Assignment) -> float:
     )
 
 
+def kind_of(task: Task) -> str:
+    """What tasks whose work takes about the same time have in common: the modality."""
+    return task.frames[0].instance.origin.modality
+
+
+@dataclass(slots=True)
+class _Kind:
+    """Tasks of one kind."""
+
+    left: float = 0.0
+    """Work not done."""
+    work: float = 0.0
+    """Work done by tasks that count for the pace."""
+    took_s: float = 0.0
+    """Time that it took."""
+
+
 @dataclass(slots=True)
 class Pace:
-    """Time per work, learnt from the tasks that this run finished.
+    """Time per work, learnt from the tasks that this run finished, for each kind by itself where one is known.
 
-    Tasks of all kinds take part as they were finished: the run takes them in the order of their names, which is as good
-    as drawn at random, so the first tenth speaks for the rest of a mixed study.
+    The run takes tasks in the order of their names, which is as good as drawn at random, so that all kinds of a mixed
+    study are met early.
     """
 
-    left: float
-    """Work of the tasks that are not done, in units of `weight_of`."""
     workers: int
     """How many tasks are done at once, at least 1."""
     finished: int = 0
-    _work: float = field(default=0.0)
-    _took_s: float = field(default=0.0)
+    _kinds: dict[str, _Kind] = field(default_factory=dict)
 
-    def finish(self, weight: float, took_s: float) -> None:
-        """Take note of a task.
+    def expect(self, kind: str, weight: float) -> None:
+        """Take note of a task that is to be done, of a kind and with so much work."""
+        self._kinds.setdefault(kind, _Kind()).left += weight
+
+    def finish(self, kind: str, weight: float, took_s: float) -> None:
+        """Take note of a task that is done.
 
         Parameters
         ----------
-        weight
-            Its work.
+        kind, weight
+            As it was expected.
         took_s
             Time it took its worker, in seconds.
         """
-        self.left = max(0.0, self.left - weight)
         self.finished += 1
+        tasks = self._kinds[kind]
+        tasks.left -= weight
         # A worker's first task holds the time in which libraries are loaded, which will not come again.
         if self.finished > self.workers:
-            self._work += weight
-            self._took_s += took_s
+            tasks.work += weight
+            tasks.took_s += took_s
 
     @property
     def remaining_s(self) -> float | None:
         """Seconds that remain, or None while too few tasks were finished to say."""
-        if self.left == 0:
-            return 0.0
-        if self.finished < self.workers + _TASKS_NEEDED or self._work == 0:
+        work = sum(kind.work for kind in self._kinds.values())
+        took_s = sum(kind.took_s for kind in self._kinds.values())
+        counted = self.finished - self.workers
+        if counted < _TASKS_NEEDED or work == 0:
             return None
-        # Tasks being done are half done on average.
-        begun = self.workers * self._work / (self.finished - self.workers) / 2
-        return max(self.left - begun, self.left / 2) * self._took_s / self._work / self.workers
+        to_do_s = sum(
+            kind.left * (kind.took_s / kind.work if kind.work else took_s / work) for kind in self._kinds.values()
+        )
+        # Of the tasks being done, half is done on average.
+        begun_s = self.workers * took_s / counted / 2
+        return max(to_do_s - begun_s, to_do_s / 2) / self.workers

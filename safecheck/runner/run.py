@@ -9,7 +9,7 @@ from pathlib import Path
 
 from safecheck.errors import Interrupted
 from safecheck.runner.executor import Executor, TaskDone, WorkerDied
-from safecheck.runner.progress import Pace, Progress, weight_of
+from safecheck.runner.progress import Pace, Progress, kind_of, weight_of
 from safecheck.runner.shards import LeftOut, clear_aside, paper_of
 from safecheck.runner.tasks import Task
 from safecheck.runner.worker import Treatment
@@ -93,12 +93,13 @@ def run(
         If no worker lives long enough to begin a frame.
     """
     clear_aside(work)
-    tally = _Tally(tasks, Pace(0.0, executor.workers), report)
+    tally = _Tally(tasks, Pace(executor.workers), report)
     try:
         left = _find_left(work, tally)
         resumed = tally.done
         if left:
-            tally.pace.left = sum(weight_of(task, treatment.assignment) for task in left)
+            for task in left:
+                tally.pace.expect(kind_of(task), weight_of(task, treatment.assignment))
             tally.tell(f"{resumed} of {len(tasks)} parts were done before" if resumed else "")
             warm_up()
             _perform(left, treatment, work, executor, tally)
@@ -135,7 +136,7 @@ def _perform(tasks: Sequence[Task], treatment: Treatment, work: Path, executor: 
             match event:
                 case TaskDone(task, refused, took_s):
                     tally.add(task, refused)
-                    tally.pace.finish(weight_of(task, treatment.assignment), took_s)
+                    tally.pace.finish(kind_of(task), weight_of(task, treatment.assignment), took_s)
                     tally.tell()
                 case WorkerDied():
                     tally.died += 1

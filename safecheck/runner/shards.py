@@ -143,9 +143,9 @@ def clear_aside(work: Path) -> None:
     DossierError
         If it cannot be removed.
     """
-    (work / _SHARDS).mkdir(exist_ok=True)
     aside = work / _ASIDE
     try:
+        (work / _SHARDS).mkdir(exist_ok=True)
         if aside.exists():
             shutil.rmtree(aside)
         aside.mkdir()

@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import contextlib
 import dataclasses
+import logging
 import os
 import signal
 import time
+import warnings
 import zlib
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -132,6 +134,14 @@ class FakeEvaluation:
     refuses_on: tuple[tuple[str, int], ...] = ()
     misfits_on: tuple[tuple[str, int], ...] = ()
     """(instance, frame) whose rows hold a text where a number belongs."""
+    pid_file: str = ""
+    """File to which the process adds its number before it takes its time."""
+    environment_log: str = ""
+    """File that takes note of threads that libraries were allowed."""
+    breaks: str = ""
+    """Folder that is replaced by a file."""
+    chatty: bool = False
+    """Print, warn and log in every way that a library may."""
     log: str = ""
     """File to which each frame evaluated adds a line."""
 
@@ -139,6 +149,17 @@ class FakeEvaluation:
         self, frame: Frame, assignment: Assignment, *, full_controls: bool, delivered: Frame | None = None
     ) -> FrameResult:
         place = (frame.key.instance, frame.key.frame)
+        if self.pid_file:
+            with Path(self.pid_file).open("a") as file:
+                file.write(f"{os.getpid()}\n")
+        if self.environment_log:
+            threads = " ".join(f"{name}={os.environ[f'{name}_NUM_THREADS']}" for name in ("OMP", "OPENBLAS", "NUMBA"))
+            Path(self.environment_log).write_text(threads)
+        if self.breaks and Path(self.breaks).is_dir():
+            Path(self.breaks).rmdir()
+            Path(self.breaks).touch()
+        if self.chatty:
+            _chat()
         if self.takes_s:
             time.sleep(self.takes_s)
         if self.log:
@@ -170,7 +191,15 @@ class FakeEvaluation:
         os.kill(os.getpid(), signal.SIGKILL)
 
 
-def row(kind: type[Any], frame: Frame, candidate: str) -> Any:  # noqa: ANN401
+def _chat() -> None:
+    print("Doe^Jane")  # noqa: T201
+    os.write(1, b"Doe^Jane")
+    os.write(2, b"Doe^Jane")
+    warnings.warn("Doe^Jane", stacklevel=1)
+    logging.getLogger("pydicom").error("Doe^Jane")
+
+
+def row(kind: type[Any], frame: Frame, candidate: str) -> Any:
     """A row with every column filled from the frame."""
     figure = float(frame.raster.samples.mean()) / (1 + len(candidate))
     by_kind: dict[str, Any] = {"str": "text", "int": frame.key.frame, "float": figure, "bool": True}
@@ -201,3 +230,57 @@ def run_study(
 def tables_of(dossier: Path) -> dict[str, bytes]:
     """Bytes of the tables in a dossier."""
     return {name: (dossier / f"{name}.parquet").read_bytes() for name in ("measures", "windows", "regions")}
+
+
+class _DiesOnArrival:
+    def __reduce__(self) -> tuple[Any, ...]:
+        return os._exit, (1,)
+
+
+class _Unreadable:
+    def __reduce__(self) -> tuple[Any, ...]:
+        return _raise_lookup_error, ()
+
+
+def _raise_lookup_error() -> None:
+    raise LookupError("Doe^Jane")
+
+
+class Killed:
+    """What tests need to know of processes, and to do to them."""
+
+    on_arrival: Any = _DiesOnArrival()
+    """Ends the worker process that takes it out of its orders."""
+    unreadable: Any = _Unreadable()
+    """Raises in the worker process that takes it out of its orders."""
+
+    @staticmethod
+    def all_pids(file: Path) -> list[int]:
+        return [int(line) for line in file.read_text().split()] if file.exists() else []
+
+    @staticmethod
+    def first_pid(file: Path) -> float:
+        """Kill the first process that names itself in a file; the time when it was killed."""
+        until_s = time.monotonic() + 20
+        while not Killed.all_pids(file) and time.monotonic() < until_s:
+            time.sleep(0.01)
+        os.kill(Killed.all_pids(file)[0], signal.SIGKILL)
+        return time.monotonic()
+
+    @staticmethod
+    def alive(pid: int) -> bool:
+        try:
+            state = Path(f"/proc/{pid}/stat").read_text().rpartition(")")[2].split()[0]
+        except OSError:
+            return False
+        return state != "Z"
+
+    @staticmethod
+    def workers_of(pid: int) -> list[int]:
+        """Child processes of a run."""
+        return [int(child) for child in Path(f"/proc/{pid}/task/{pid}/children").read_text().split()]
+
+
+def environment() -> dict[str, str]:
+    """Environment in which a program of the tests finds them."""
+    return os.environ | {"PYTHONPATH": str(Path(__file__).parents[2])}
