@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -66,8 +67,13 @@ def analyse(raster: Raster, name: str, weighting: str, size: int) -> Analysis:
     return Analysis(raster, name, weighting, size, centres, used, coefficients, _write_padding(raster))
 
 
-def _tables(size: int) -> tuple[npt.NDArray[np.int32], npt.NDArray[np.uint8], npt.NDArray[np.uint8]]:
-    return context.place_table(size), context.zone_table(size), context.class_table()
+def _tables(size: int) -> tuple[npt.NDArray[Any], npt.NDArray[Any], npt.NDArray[Any], npt.NDArray[Any]]:
+    return (
+        context.place_table(size),
+        context.zone_table(size),
+        context.class_table(),
+        context.higher_table(size),
+    )
 
 
 def _plane_steps(name: str, size: int, step: int, channels: int) -> list[npt.NDArray[np.float64]]:

@@ -27,19 +27,20 @@ __all__ = [
     "ZERO",
     "ZONES",
     "class_table",
+    "higher_table",
     "place_table",
     "zone_table",
 ]
 
 ZONES: Final = 8
 """Rows of contexts by frequency; zone 0 is the constant of a tile."""
-CLASSES: Final = 26
+CLASSES: Final = 27
 """Rows of contexts by expected magnitude."""
 LENGTHS: Final = 30
 """Bit lengths of a magnitude, 0 to 29."""
 END_LENGTHS: Final = 13
 """Bit lengths of an end of block, 0 to 12."""
-MAGNITUDE_CAP: Final = 4095
+MAGNITUDE_CAP: Final = 8191
 """Expected magnitudes above this count as this."""
 
 ZERO: Final = 0
@@ -79,3 +80,13 @@ def place_table(size: int) -> npt.NDArray[np.int32]:
     """Index of each place in `scan_order` in a (size + 4)-wide array padded by two on each side."""
     places = sorted((u + v, u, (u + 2) * (size + 4) + v + 2) for u in range(size) for v in range(size))
     return np.array([place for _, _, place in places], dtype=np.int32)
+
+
+@lru_cache(maxsize=8)
+def higher_table(size: int) -> npt.NDArray[np.int32]:
+    """Places in `scan_order` of the next higher column and row frequency; size * size where there is none."""
+    places = sorted((u + v, u, v) for u in range(size) for v in range(size))
+    index = {(u, v): k for k, (_, u, v) in enumerate(places)}
+    last = size * size
+    pairs = [(index.get((u, v + 1), last), index.get((u + 1, v), last)) for _, u, v in places]
+    return np.array(pairs, dtype=np.int32)

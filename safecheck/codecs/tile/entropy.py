@@ -44,11 +44,11 @@ def new_states(contexts: int) -> npt.NDArray[np.int64]:
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _adapted(state: int, bit: int) -> int:
-    """Move both estimates towards the bit, by 1/2, 1/4, ... at first, then by 1/16 and 1/128."""
+    """Move both estimates towards the bit, by 1/2, 1/4, ... at first, then by 1/16 and 1/128; within 32 to 65504."""
     seen = state & 15
     fast = state >> 21
     slow = (state >> 4) & 0x1FFFF
-    target = bit << 16
+    target = 32 + bit * 65472
     fast += (target - fast) >> min(seen + 1, 4)
     slow += (target - slow) >> min(seen + 1, 7)
     return (fast << 21) | (slow << 4) | min(seen + 1, 6)
@@ -56,9 +56,8 @@ def _adapted(state: int, bit: int) -> int:
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _one_share(state: int, width: int) -> int:
-    """Part of the interval that a one takes: probability on 15 bits, kept off both ends."""
-    odds = ((state >> 21) + ((state >> 4) & 0x1FFFF)) >> 2
-    return (width >> 15) * min(max(odds, 16), 32752)
+    """Part of the interval that a one takes: probability on 15 bits, 16 to 32752 as `_adapted` keeps it."""
+    return (width >> 15) * (((state >> 21) + ((state >> 4) & 0x1FFFF)) >> 2)
 
 
 @njit(cache=True, nogil=True, _nrt=False)

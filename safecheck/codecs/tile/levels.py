@@ -185,26 +185,26 @@ def _around(ends: Array, residuals: Array, used: Array, tile: int, across: int) 
 def _expected(magnitudes: Array, place: int, side: int, before: Array, k: int) -> int:
     """Weighted sum of the magnitudes around a place that are known."""
     at = np.uintp(place)
-    near = magnitudes[at - np.uintp(side)] + magnitudes[at - np.uintp(1)]
-    far = (
-        magnitudes[at - np.uintp(side + 1)]
-        + magnitudes[at - np.uintp(2 * side)]
-        + magnitudes[at - np.uintp(2)]
-        + magnitudes[at - np.uintp(side - 1)]
-    )
-    return int(min(2 * (near + before[np.uintp(k)]) + far, MAGNITUDE_CAP))
+    one = np.uintp(1)
+    row = np.uintp(side)
+    near = magnitudes[at - row] + magnitudes[at - one] + magnitudes[at - row + one]
+    far = magnitudes[at - row - row] + magnitudes[at - one - one]
+    return int(min(2 * near + far + before[np.uintp(k)], MAGNITUDE_CAP))
 
 
 @njit(cache=True, nogil=True, _nrt=False)
-def _look_back(levels: Array, used: Array, tile: int, across: int, before: Array) -> None:
-    """Sum the magnitudes of the tiles to the left and above, place by place."""
-    before[:] = 0
+def _look_back(levels: Array, used: Array, tile: int, across: int, higher: Array, sums: Array, before: Array) -> None:
+    """Weighted sum of magnitudes in the tiles to the left and above: the same place, and the next ones along and down."""
+    count = before.shape[0]
+    sums[:] = 0
     if tile % across > 0 and used[tile - 1]:
-        for k in range(before.shape[0]):
-            before[k] += abs(levels[tile - 1, k])
+        for k in range(count):
+            sums[k] += abs(levels[tile - 1, k])
     if tile >= across and used[tile - across]:
-        for k in range(before.shape[0]):
-            before[k] += abs(levels[tile - across, k])
+        for k in range(count):
+            sums[k] += abs(levels[tile - across, k])
+    for k in range(1, count):
+        before[k] = 4 * sums[k] + sums[np.uintp(higher[k, 0])] + sums[np.uintp(higher[k, 1])]
 
 
 @njit(cache=True, nogil=True, _nrt=False)
@@ -213,18 +213,18 @@ def encode_levels(
     ends: Array,
     used: Array,
     across: int,
-    tables: tuple[Array, Array, Array],
+    tables: tuple[Array, Array, Array, Array],
     states: Array,
-    scratch: tuple[Array, Array, Array],
+    scratch: tuple[Array, Array, Array, Array],
     buffer: Array,
     coder: Coder,
 ) -> tuple[Coder, bool]:
     """Write all tiles of a plane; False where the buffer is too short (then nothing of it counts)."""
-    places, zones, classes = tables
+    places, zones, classes, higher = tables
     tiles, count = levels.shape
     side = _side(count)
     limit = _bit_length(count - 1)
-    magnitudes, before, residuals = scratch
+    magnitudes, sums, before, residuals = scratch
     for tile in range(tiles):
         if not used[tile]:
             continue
@@ -241,7 +241,7 @@ def encode_levels(
             coder = encode_raw(buffer, coder, 1 if residual < 0 else 0, 1)
         end = ends[tile]
         coder = _encode_end(buffer, coder, states, around, end, limit)
-        _look_back(levels, used, tile, across, before)
+        _look_back(levels, used, tile, across, higher, sums, before)
         magnitudes[:] = 0
         magnitudes[places[0]] = size
         for k in range(1, end + 1):
@@ -272,18 +272,18 @@ def decode_levels(
     ends: Array,
     used: Array,
     across: int,
-    tables: tuple[Array, Array, Array],
+    tables: tuple[Array, Array, Array, Array],
     states: Array,
-    scratch: tuple[Array, Array, Array],
+    scratch: tuple[Array, Array, Array, Array],
     buffer: Array,
     coder: Coder,
 ) -> tuple[Coder, bool]:
     """Read all tiles of a plane into zeroed levels and ends; False where the bytes are no code."""
-    places, zones, classes = tables
+    places, zones, classes, higher = tables
     tiles, count = levels.shape
     side = _side(count)
     limit = _bit_length(count - 1)
-    magnitudes, before, residuals = scratch
+    magnitudes, sums, before, residuals = scratch
     for tile in range(tiles):
         if not used[tile]:
             continue
@@ -301,7 +301,7 @@ def decode_levels(
             return coder, False
         levels[tile, 0] = level
         ends[tile] = end
-        _look_back(levels, used, tile, across, before)
+        _look_back(levels, used, tile, across, higher, sums, before)
         magnitudes[:] = 0
         magnitudes[places[0]] = size
         for k in range(1, end + 1):
@@ -317,6 +317,11 @@ def decode_levels(
     return coder, True
 
 
-def new_scratch(tiles: int, count: int) -> tuple[Array, Array, Array]:
-    """Work space of the coders: magnitudes of a tile with a margin, of the tiles before, differences of constants."""
-    return np.zeros(_side(count) ** 2, np.int64), np.zeros(count, np.int64), np.zeros(tiles, np.int64)
+def new_scratch(tiles: int, count: int) -> tuple[Array, Array, Array, Array]:
+    """Work space: magnitudes of a tile with a margin, two sums over the tiles before, differences of constants."""
+    return (
+        np.zeros(_side(count) ** 2, np.int64),
+        np.zeros(count + 1, np.int64),
+        np.zeros(count, np.int64),
+        np.zeros(tiles, np.int64),
+    )

@@ -20,6 +20,8 @@ Array: TypeAlias = npt.NDArray[Any]
 
 OFFSET = 1.0 / 3.0
 """Rounding offset of all coefficients but the constant."""
+THIN_FROM = 1024
+"""In planes of at least so many tiles the shifts are measured on every fourth."""
 
 
 @njit(cache=True, nogil=True)
@@ -48,6 +50,8 @@ def quantise(coefficients: Array, steps: Array, used: Array, levels: Array, ends
         if not used[tile]:
             continue
         ends[tile] = _quantise_tile(coefficients[tile], steps, levels[tile])
+        if tile & 3 and coefficients.shape[0] >= THIN_FROM:
+            continue
         for k in range(1, ends[tile] + 1):
             level = abs(levels[tile, k])
             if level:
