@@ -97,7 +97,7 @@ def noise_share(x_mm: Image, y_mm: Image) -> Image:
 
 
 def _noise(series: _Series, rng: np.random.Generator) -> Image:
-    """Band-passed noise whose strength and direction depend on the position."""
+    """Band-limited noise whose strength and direction depend on the position."""
     grid = series.grid
     shape, cutoff = (grid.rows, grid.columns), CUTOFF[series.kernel]
     blank = Canvas(grid, 0.0)
@@ -207,48 +207,50 @@ def ct_body(
     grid = Grid(rows, columns, FIELD_MM / min(rows, columns))
     series = _Series(grid, seed, noise_sd_hu, kernel, storage, thickness_mm, contrasts_hu)
     patient = patient or Patient(1 + seed % 99)
-    options = (
-        rows,
-        columns,
-        slices,
-        noise_sd_hu,
-        thickness_mm,
-        kernel,
-        storage,
-        contrasts_hu,
-        patient.number,
-    )
-    scope = Scope("ct_body", seed, options)
+    scope = Scope("ct_body", seed, (series, slices, patient.number))
     positions = tuple((index - (slices - 1) / 2) * thickness_mm for index in range(slices))
-    tissue = weave_tissue(grid, seed)
-    files, uids = [], []
+    files = _write_slices(folder, series, scope, patient, positions)
+    return _truth_of(series, scope, patient, positions, files)
+
+
+def _write_slices(
+    folder: Path, series: _Series, scope: Scope, patient: Patient, positions: tuple[float, ...]
+) -> tuple[Path, ...]:
+    """Write one file for each position along z."""
+    tissue = weave_tissue(series.grid, series.seed)
+    files = []
     for index, z_mm in enumerate(positions):
-        rng = np.random.default_rng([seed, 21, index])
+        rng = np.random.default_rng([series.seed, 21, index])
         values = _draw_slice(series, tissue, z_mm) + _noise(series, rng)
         header = start_header("CT", scope, patient, index + 1)
         _describe(header, series, scope, z_mm)
         place_pixels(header, _store(series, values))
-        path = folder / f"ct_{index + 1:04d}.dcm"
-        write_file(path, header)
-        files.append(path)
-        uids.append(str(header.SOPInstanceUID))
+        files.append(folder / f"ct_{index + 1:04d}.dcm")
+        write_file(files[-1], header)
+    return tuple(files)
+
+
+def _truth_of(
+    series: _Series, scope: Scope, patient: Patient, positions: tuple[float, ...], files: tuple[Path, ...]
+) -> Truth:
+    """Gather what is known of the series."""
     return Truth(
         kind="ct_body",
-        seed=seed,
-        files=tuple(files),
+        seed=series.seed,
+        files=files,
         patient_id=patient.identifier,
         study_uid=scope.uid("study"),
         series_uid=scope.uid("series"),
-        instance_uids=tuple(uids),
-        grid=grid,
+        instance_uids=tuple(scope.uid("instance", index + 1) for index in range(len(files))),
+        grid=series.grid,
         unit="HU",
         slice_positions_mm=positions,
-        noise_sd=noise_sd_hu,
+        noise_sd=series.noise_sd_hu,
         padding_value=series.padding,
         field_circle=series.field_circle,
         targets=series.targets(),
         background=series.background(),
         uniform=series.uniform(),
         edge=series.edge(),
-        properties={"kernel": kernel, "storage": storage, "thickness_mm": thickness_mm},
+        properties={"kernel": series.kernel, "storage": series.storage, "thickness_mm": series.thickness_mm},
     )

@@ -43,7 +43,7 @@ def band_passed(rng: np.random.Generator, shape: tuple[int, int], cutoff: float)
 
 
 def streaked(rng: np.random.Generator, shape: tuple[int, int], cutoff: float) -> Image:
-    """Noise of starved views: correlated along rows, band-passed across them."""
+    """Noise of starved views: correlated along rows, band-limited across them."""
     vertical, horizontal = frequencies(shape)
     power = np.abs(vertical) * np.exp(-((vertical / cutoff) ** 2) - (horizontal / (0.12 * cutoff)) ** 2)
     return _shaped(rng, shape, power)

@@ -71,9 +71,9 @@ def draw_recesses(canvas: Canvas, z_mm: float) -> None:
     if depth_mm < 1.0:
         return
     box, inside = canvas.cover(_CAVITY.grown(-1.0), 1.0)
-    inner = Blob(0, -depth_mm, _CAVITY.half_width_mm - 0.6 * depth_mm, _CAVITY.half_height_mm, 0, (), 2.35)
+    inner = Blob(0, -depth_mm, _CAVITY.half_width_mm - 1.0, _CAVITY.half_height_mm, 0, (), 2.35)
     rest = np.clip(0.5 + inner.distance_mm(canvas.x_mm[:, box[1]], canvas.y_mm[box[0], :]) / 1.5, 0, 1)
-    flank = np.clip((np.abs(canvas.x_mm[:, box[1]]) - 52) / 6, 0, 1) * np.clip((canvas.y_mm[box[0], :] - 22) / 6, 0, 1)
+    flank = np.clip((np.abs(canvas.x_mm[:, box[1]]) - 52) / 6, 0, 1) * np.clip((canvas.y_mm[box[0], :] - 4) / 12, 0, 1)
     lung = inside * rest * flank
     canvas.values[box] += lung * (_LUNG_HU - canvas.values[box])
     canvas.texture[box] += lung * (55 - canvas.texture[box])

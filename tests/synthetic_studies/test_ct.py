@@ -34,7 +34,7 @@ def _inside(truth: Truth, disc: Disc) -> npt.NDArray[np.bool_]:
 
 @pytest.fixture(scope="module")
 def series(tmp_path_factory: pytest.TempPathFactory) -> Truth:
-    return ct_body(tmp_path_factory.mktemp("ct"), seed=7, slices=10)
+    return ct_body(tmp_path_factory.mktemp("ct"), seed=7, slices=8)
 
 
 @pytest.fixture(scope="module")
@@ -44,7 +44,7 @@ def values(series: Truth) -> Image:
 
 @pytest.fixture(scope="module")
 def quiet(tmp_path_factory: pytest.TempPathFactory) -> tuple[Truth, Image]:
-    truth = ct_body(tmp_path_factory.mktemp("quiet"), seed=7, slices=10, noise_sd_hu=0.0)
+    truth = ct_body(tmp_path_factory.mktemp("quiet"), seed=7, slices=8, noise_sd_hu=0.0)
     return truth, _read_hu(truth)
 
 

@@ -90,3 +90,11 @@ def test_a_package_import_brings_in_nothing_but_numpy_and_pydicom() -> None:
         for name in ("safecheck", "scipy", "skimage", "PIL", "imagecodecs"):
             assert f"import {name}" not in text
             assert f"from {name}" not in text
+
+
+def test_the_truth_names_the_instances_as_they_are_written(tmp_path: Path) -> None:
+    truth = made.ct_body(tmp_path, seed=1, rows=32, columns=32, slices=3)
+    headers = [dcmread(path, stop_before_pixels=True) for path in truth.files]
+    assert tuple(header.SOPInstanceUID for header in headers) == truth.instance_uids
+    assert {header.SeriesInstanceUID for header in headers} == {truth.series_uid}
+    assert [header.InstanceNumber for header in headers] == [1, 2, 3]

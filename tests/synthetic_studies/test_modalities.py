@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import tracemalloc
 from pathlib import Path
 
 import numpy as np
 import pytest
 from pydicom import dcmread
 
-from synthetic_studies import archive, mr_head, radiograph, us_cine
+from synthetic_studies import archive, big_multiframe, mr_head, radiograph, us_cine
 from synthetic_studies.identity import Patient
 from synthetic_studies.lettering import draw_text
 
@@ -85,3 +86,15 @@ def test_patients_are_named_by_their_number(number: int, name: str) -> None:
 def test_text_with_an_unknown_letter_is_refused() -> None:
     with pytest.raises(ValueError, match="expected capitals"):
         draw_text("é")
+
+
+def test_a_long_run_is_written_in_memory_that_does_not_grow_with_it(tmp_path: Path) -> None:
+    peaks = []
+    for frames in (5, 100):
+        tracemalloc.start()
+        big_multiframe(tmp_path / f"{frames}.dcm", frames, 128, 128)
+        peaks.append(tracemalloc.get_traced_memory()[1])
+        tracemalloc.stop()
+    assert peaks[1] < 1.1 * peaks[0]
+    frames_read = dcmread(tmp_path / "100.dcm").pixel_array
+    assert len({frame.tobytes() for frame in frames_read}) == 100
