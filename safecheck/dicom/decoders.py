@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import itertools
 import struct
+import sys
 from collections.abc import Callable
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -113,8 +114,18 @@ def _jpeg2000_second(code: bytes, header: PixelHeader, facts: StreamFacts | None
     return np.asarray(openjpeg.decode(code, j2k_format=0))
 
 
-def _htj2k(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
-    return np.asarray(imagecodecs.htj2k_decode(code))
+def _htj2k_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
+    """OpenJPH. Its binding drops the library's errors and gives an array half filled: hence never the pinned one."""
+    dropped: list[object] = []
+    before = sys.unraisablehook
+    sys.unraisablehook = dropped.append
+    try:
+        samples = np.asarray(imagecodecs.htj2k_decode(code))
+    finally:
+        sys.unraisablehook = before
+    if dropped:
+        raise InputRefused("decode", "the decoder dropped an error")
+    return samples
 
 
 def _jpeg_xl(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
@@ -136,10 +147,10 @@ def rebuild_jpeg(code: bytes) -> bytes:
 
 
 _TURBO, _SOF3 = "libjpeg-turbo (imagecodecs)", "jpegsof3 (imagecodecs)"
-_OPENJPEG, _OPENJPH = "OpenJPEG (imagecodecs)", "OpenJPH (imagecodecs)"
+_OPENJPEG = "OpenJPEG (imagecodecs)"
 _LOSSLESS = Decoder(_TURBO, _jpeg, ("lossless",), _SOF3, _jpeg_lossless_second)
 _J2K = Decoder(_OPENJPEG, _jpeg2000, ("jpeg2000",), "OpenJPEG (pylibjpeg-openjpeg)", _jpeg2000_second)
-_HT = Decoder(_OPENJPH, _htj2k, ("htj2k",), _OPENJPEG, _jpeg2000)
+_HT = Decoder(_OPENJPEG, _jpeg2000, ("htj2k",), "OpenJPH (imagecodecs)", _htj2k_second)
 _XL = Decoder("libjxl (imagecodecs)", _jpeg_xl)
 
 DECODERS: MappingProxyType[str, Decoder] = MappingProxyType(

@@ -25,9 +25,9 @@ def value_of(dataset: Dataset, keyword: str) -> Any:  # noqa: ANN401
     try:
         with quiet_library():
             value = dataset.get(keyword)
-    except Exception as error:
+    except Exception:
         # The library raises many kinds here, some with the value in their text.
-        raise InputRefused("header", f"{keyword} cannot be read") from error
+        raise InputRefused("header", f"{keyword} cannot be read") from None
     return None if value is None or value in ("", b"") else value
 
 
@@ -48,8 +48,8 @@ def whole_number(dataset: Dataset, keyword: str, *, missing: int | None = None) 
         return int(value)
     try:
         return int(str(value))
-    except ValueError as error:
-        raise InputRefused("header", f"{keyword} is not one whole number") from error
+    except ValueError:
+        raise InputRefused("header", f"{keyword} is not one whole number") from None
 
 
 def real_numbers(dataset: Dataset, keyword: str) -> tuple[float, ...] | None:
