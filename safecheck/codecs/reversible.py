@@ -138,7 +138,7 @@ def _unsigned(format: PixelFormat) -> np.dtype[np.uint8] | np.dtype[np.uint16]: 
 
 @dataclass(frozen=True, slots=True)
 class Jpeg2000Lossless:
-    """JPEG 2000 with the 5/3 wavelet and, for colour, the reversible colour transform: exact at every size."""
+    """JPEG 2000 with the 5/3 wavelet and, for colour, the reversible colour transform: exact from 2 bits on."""
 
     name: ClassVar[str] = "jpeg2000-reversible"
     archive_can_write: ClassVar[bool] = True
@@ -155,9 +155,9 @@ class Jpeg2000Lossless:
         return _version(_library("JPEG2K").jpeg2k_version())
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
-        """Refuse colour of one bit a channel, whose samples the library loses, and what no header can say."""
-        if format.channels == 3 and format.bits_stored == 1:
-            return "colour with 1 bit stored, expected at least 2"
+        """Refuse one bit, which the library cannot write or loses where it is noise, and what no header can say."""
+        if format.bits_stored == 1:
+            return "1 bit stored, expected at least 2"
         return _too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:

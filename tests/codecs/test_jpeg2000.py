@@ -14,6 +14,7 @@ from PIL import Image
 from safecheck.codecs.base import RATE_TOLERANCE, Reached
 from safecheck.codecs.jpeg2000 import RATIO_LOWEST, Jpeg2000
 from safecheck.codecs.reversible import best_reversible
+from safecheck.codecs.search import MOST_ENCODES
 from safecheck.errors import CannotEncode
 from safecheck.frames import PixelFormat, Raster, SizeBasis
 from tests.codecs import contract, images
@@ -65,6 +66,18 @@ def test_noise_that_no_reversible_code_shrinks_reaches_the_ceiling() -> None:
 def test_frames_whose_target_is_tiny_say_so() -> None:
     raster = contract.raster(PixelFormat(16, 12, False, "MONOCHROME2"), (32, 32), "noise")
     assert Jpeg2000().encode_to_size(raster, 70).reached is Reached.SMALL_FRAME
+
+
+def test_noise_has_few_sizes_and_the_nearest_is_told() -> None:
+    rng = np.random.default_rng(0)
+    told = []
+    for side in (96, 128):
+        samples = np.clip(rng.normal(2000, 100, (side, side)), 0, 4095).astype(np.uint16)
+        raster = Raster(samples, PixelFormat(16, 12, False, "MONOCHROME2"))
+        size = raster.size_bytes(SizeBasis.BITS_STORED)
+        told += [Jpeg2000().encode_to_size(raster, size / ratio) for ratio in (1.8, 2, 2.2, 2.4)]
+    assert {encoded.reached for encoded in told} == {Reached.COARSE_STEPS, Reached.ASKED}
+    assert all(encoded.encodes <= MOST_ENCODES for encoded in told)
 
 
 @pytest.mark.parametrize("target", [0, -1, float("nan"), float("inf")])

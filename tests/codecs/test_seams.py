@@ -154,6 +154,30 @@ def test_imagecodecs_told_few_bits_of_sixteen_writes_sixteen() -> None:
     assert openjpeg.utils.get_parameters(ours)["precision"] == 6
 
 
+def test_openjpeg_loses_noise_of_one_bit_a_channel_in_silence() -> None:
+    # Why JPEG 2000 of one bit is refused: a code larger than the library's buffer, no error, other samples.
+    form = PixelFormat(8, 1, False, "RGB")
+    lost = 0
+    for seed in range(6):
+        samples = contract.raster(form, (33, 41), "noise", seed).samples
+        code = openjpeg.utils.encode_array(samples, bits_stored=1, photometric_interpretation=1)
+        lost += not np.array_equal(openjpeg.utils.decode(code), samples)
+    assert lost > 0
+
+
+def test_openjpeg_cannot_write_a_larger_frame_of_one_bit_noise() -> None:
+    samples = contract.raster(PixelFormat(8, 1, False, "MONOCHROME2"), (200, 256), "noise").samples
+    with pytest.raises(imagecodecs.Jpeg2kError, match="opj_encode"):
+        imagecodecs.jpeg2k_encode(samples, reversible=True, codecformat="j2k", bitspersample=1)
+
+
+@pytest.mark.parametrize("bits", range(2, 17))
+def test_noise_of_two_bits_and_more_is_kept_by_jpeg_2000(bits: int) -> None:
+    # Noise makes codes larger than the frame, which is where one bit goes wrong.
+    form = PixelFormat(8 if bits <= 8 else 16, bits, False, "RGB")
+    contract.check_round_trip(Jpeg2000Lossless(), contract.raster(form, (200, 128), "noise"))
+
+
 def test_a_near_lossless_code_is_no_reversible_one() -> None:
     near = imagecodecs.jpegls_encode(RASTER.samples, level=2)
     with pytest.raises(CorruptCode, match="coding parameters"):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import math
 import statistics
 from collections.abc import Callable
@@ -14,6 +15,7 @@ from hypothesis import strategies as st
 
 from safecheck.codecs import search
 from safecheck.codecs.base import RATE_TOLERANCE, Reached
+from safecheck.frames import Raster, SizeBasis
 from tests.codecs.images import real
 
 
@@ -144,6 +146,24 @@ def test_the_quality_of_jpeg_is_bracketed_on_a_real_frame() -> None:
     assert len(steps) == 2
     assert len(steps[0].code) <= 60000 < len(steps[1].code)
     assert steps[1].dial == steps[0].dial + 1
+
+
+def htj2k(raster: Raster, step: float) -> bytes:
+    """Write with imagecodecs' OpenJPH: a quantiser step relative to the range; a finer step makes a larger code."""
+    samples = (raster.samples.astype(np.int32) - raster.format.lowest).astype(np.uint16)
+    return bytes(imagecodecs.htj2k_encode(samples, level=step, reversible=False))
+
+
+def test_the_step_of_htj2k_is_found_on_real_frames() -> None:
+    counts = []
+    for name in ("693_UNCR", "MR2_UNCR"):
+        raster = real(name)
+        for ratio in (8, 10, 20):
+            target = raster.size_bytes(SizeBasis.BITS_STORED) / ratio
+            found = search.turn(functools.partial(htj2k, raster), target, search.Dial(1e-6, 0.5, -0.7), 0.002)
+            assert found.end == "met"
+            counts.append(found.encodes)
+    assert statistics.median(counts) <= 6
 
 
 def test_a_start_outside_the_range_is_refused() -> None:
