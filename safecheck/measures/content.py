@@ -23,13 +23,13 @@ LEAST_SHARE = 0.05
 
 AIR_BELOW_HU = -500.0
 """A pixel below may belong to air; half way between air and water, so that noise in air stays below."""
-AIR_MEAN_BELOW_HU = -930.0
+AIR_MEAN_BELOW_HU = -900.0
 """A connected area counts as surrounding air only if its mean lies below: lung cut by the field of view does not."""
 
 BORDER_SHARE = 32
 """The border of an MR frame is one part in so many of its shorter side wide, and at least `BORDER_LEAST` pixels."""
 BORDER_LEAST = 4
-LEVEL_OVER_SIGMA = 4.0
+LEVEL_OVER_SIGMA = 2.5
 RAYLEIGH_QUARTILE = math.sqrt(-2 * math.log(0.75))
 """First quartile of the Rayleigh distribution with sigma 1 (noise of a magnitude image: Gudbjartsson and Patz 1995)."""
 LEVEL_UNDER_BRIGHT = 0.25
@@ -118,27 +118,45 @@ def _outside_ct(values: Plane, padded: Mask) -> Mask:
 
 
 def _background_level(values: Plane, padded: Mask) -> tuple[float | None, str]:
-    """Level that noise of the background stays below, from the border; or None and why there is none."""
-    if values.min() < 0:
+    """Level that noise of the background stays below, from the border; or None and why there is none.
+
+    Scanners fill what lies outside the image with one value: what is filled moves the border inwards.
+    """
+    least = float(values.min())
+    if least < 0:
         return None, "values below zero: not a magnitude image"
-    width = max(BORDER_LEAST, min(values.shape) // BORDER_SHARE)
-    border = np.ones(values.shape, np.bool_)
-    border[width:-width, width:-width] = False
-    found = values[border & ~padded]
-    if found.size == 0:
-        return None, "the border is padding"
-    level = LEVEL_OVER_SIGMA * float(np.percentile(found, 25)) / RAYLEIGH_QUARTILE
-    bright = float(np.percentile(values[~padded], 99))
-    if level > LEVEL_UNDER_BRIGHT * bright:
-        return None, "the border is not background"
-    return level, ""
+    filled = _touching(values == least, padded)
+    border = _near_rim(filled | padded) & ~(filled | padded)
+    if not border.any():
+        return None, "nothing but padding and filled surroundings"
+    level = LEVEL_OVER_SIGMA * float(np.percentile(values[border], 25)) / RAYLEIGH_QUARTILE
+    if level <= LEVEL_UNDER_BRIGHT * float(np.percentile(values[~(filled | padded)], 99)):
+        return max(level, least), ""
+    return (least, "") if filled.any() else (None, "the border is not background")
+
+
+def _near_rim(outside: Mask) -> Mask:
+    """Pixels within the border's width of the frame's rim or of what lies outside."""
+    from scipy.ndimage import maximum_filter
+
+    width = max(BORDER_LEAST, min(outside.shape) // BORDER_SHARE)
+    near = maximum_filter(outside, 2 * width + 1, mode="nearest")
+    inner = np.zeros(outside.shape, np.bool_)
+    inner[width:-width, width:-width] = True
+    return np.asarray(near | ~inner, dtype=np.bool_)
 
 
 def _outside_mr(values: Plane, padded: Mask, level: float) -> Mask:
     """Background: areas at or below the level, after a mean of 3x3, that touch the border or padding."""
     from scipy.ndimage import uniform_filter
 
-    areas, touching = _touching_areas(uniform_filter(values, 3, mode="nearest") <= level, padded)
+    smooth = uniform_filter(values, 3, mode="nearest")
+    return _touching((smooth <= level) | (values == values.min()), padded)
+
+
+def _touching(low: Mask, padded: Mask) -> Mask:
+    """Those 4-connected areas of low values that touch the border or padding."""
+    areas, touching = _touching_areas(low, padded)
     return np.asarray(touching[areas], dtype=np.bool_)
 
 
