@@ -231,7 +231,7 @@ class Geometry:
     along_rows: tuple[float, float, float]
     """Unit vector in which the row index grows."""
     frame_of_reference: str = ""
-    """Raw UID, for matching only: never written."""
+    """Keyed pseudonym; '' where the file names none."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -160,6 +160,7 @@ def _instance(content: Content, facts: Facts) -> Instance:
         pixel_bytes=facts.pixel_bytes or 0,
         derived=bool(facts.derived),
         origin=facts.origin,
+        frame_of_reference=facts.frame_of_reference,
         uid=facts.uid,
         source_uids=facts.source_uids,
     )

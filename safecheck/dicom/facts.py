@@ -18,7 +18,7 @@ __all__ = ["Facts", "facts_of"]
 _PATIENT_ID, _STUDY_UID, _SERIES_UID, _INSTANCE_UID = 0x00100020, 0x0020000D, 0x0020000E, 0x00080018
 _SERIES_NUMBER, _INSTANCE_NUMBER, _FRAMES = 0x00200011, 0x00200013, 0x00280008
 _ROWS, _COLUMNS, _ALLOCATED, _STORED = 0x00280010, 0x00280011, 0x00280100, 0x00280101
-_PHOTOMETRIC, _IMAGE_TYPE = 0x00280004, 0x00080008
+_PHOTOMETRIC, _IMAGE_TYPE, _REFERENCE = 0x00280004, 0x00080008, 0x00200052
 _SOURCE_IMAGES, _REFERENCED_UID = 0x00082112, 0x00081155
 
 
@@ -49,6 +49,8 @@ class Facts:
     pixel_bytes: int | None
     """None without pixel data."""
     origin: Origin
+    frame_of_reference: str
+    """Pseudonym, or '' where the file names none."""
     uid: str
     """Raw SOP Instance UID, for matching only: never written."""
     source_uids: tuple[str, ...]
@@ -92,6 +94,7 @@ def facts_of(header: Header, content: str, pseudonyms: Pseudonyms) -> Facts:
         derived=image_type[0].upper() == "DERIVED" if image_type else None,
         pixel_bytes=pixel_bytes,
         origin=origin_of(header, history_of(header), pixel_bytes or 0, pseudonyms, object_class),
+        frame_of_reference=pseudonyms.name("frame", reference) if (reference := text(dataset, _REFERENCE)) else "",
         uid=uid,
         source_uids=_source_uids(dataset),
     )

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from pydicom.dataset import Dataset
 
-from safecheck.dicom.elements import real_numbers, value_of
+from safecheck.dicom.elements import real_numbers
 from safecheck.dicom.functional_groups import FunctionalGroups
 from safecheck.dicom.origin import slice_position_mm, slice_thickness_class
 from safecheck.frames import Geometry
@@ -32,17 +32,18 @@ class Place:
     notes: tuple[str, ...]
 
 
-def read_place(dataset: Dataset, groups: FunctionalGroups, index: int) -> Place:
+def read_place(dataset: Dataset, groups: FunctionalGroups, index: int, reference: str) -> Place:
     """Read geometry of a frame (from 0); what is missing or malformed is None, with a note where it misleads.
 
-    The spacing of ultrasound regions is not used: it holds for parts of the frame only.
+    The spacing of ultrasound regions is not used: it holds for parts of the frame only. `reference` is the keyed
+    pseudonym of the frame of reference.
     """
     measures = groups.of(index, "PixelMeasuresSequence")
     spacing_mm, notes = _spacing(dataset, measures)
     position = real_numbers(groups.of(index, "PlanePositionSequence"), "ImagePositionPatient")
     orientation = real_numbers(groups.of(index, "PlaneOrientationSequence"), "ImageOrientationPatient")
     thickness = real_numbers(measures, "SliceThickness")
-    geometry = _geometry(position, orientation, str(value_of(dataset, "FrameOfReferenceUID") or ""))
+    geometry = _geometry(position, orientation, reference)
     if orientation is not None and position is not None and geometry is None:
         notes = (*notes, "position or orientation in the patient is malformed and was left aside")
     return Place(

@@ -52,5 +52,7 @@ class Instance:
     """With `source_bytes` and `slice_position_mm` of the instance; the reader sets those of each frame."""
     uid: str
     """Raw SOP Instance UID, for matching only: never written."""
+    frame_of_reference: str = ""
+    """Pseudonym, or '' where the file names none."""
     source_uids: tuple[str, ...] = ()
     """Raw UIDs of the Source Image Sequence, for matching only: never written."""

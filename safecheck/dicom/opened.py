@@ -45,6 +45,8 @@ class OpenedFile:
     """'OB', 'OW' or ''."""
     end: int
     """Length of the stream."""
+    packed_share: float = 1.0
+    """Bytes in the file for each byte of the stream: below 1 for a data set that is deflated as a whole."""
     notes: tuple[str, ...] = ()
 
 
@@ -58,7 +60,7 @@ def open_file(stream: BinaryIO) -> OpenedFile:
     """
     try:
         with quiet_library():
-            stream, dataset, declared = _parse(stream)
+            parsed, dataset, declared, packed_share = _parse(stream)
     except InputRefused:
         raise
     except Exception as error:
@@ -69,14 +71,23 @@ def open_file(stream: BinaryIO) -> OpenedFile:
     syntax = syntax_of(uid)
     if syntax.coding in (Coding.VIDEO, Coding.REFERENCED, Coding.UNKNOWN):
         raise InputRefused("syntax", syntax.name)
-    offset, length, representation = _pixel_element(stream, implicit=bool(implicit), little_endian=bool(little_endian))
-    end = stream.seek(0, io.SEEK_END)
-    notes = () if declared else (f"no transfer syntax in the file; read as {syntax.name}",)
-    return OpenedFile(stream, dataset, syntax, bool(little_endian), offset, length, representation, end, notes)
+    offset, length, representation = _pixel_element(parsed, implicit=bool(implicit), little_endian=bool(little_endian))
+    return OpenedFile(
+        stream=parsed,
+        dataset=dataset,
+        syntax=syntax,
+        little_endian=bool(little_endian),
+        value_offset=offset,
+        value_length=length,
+        representation=representation,
+        end=parsed.seek(0, io.SEEK_END),
+        packed_share=packed_share,
+        notes=() if declared else (f"no transfer syntax in the file; read as {syntax.name}",),
+    )
 
 
-def _parse(stream: BinaryIO) -> tuple[BinaryIO, Dataset, str]:
-    """Return the stream at its pixel data, the header, and the transfer syntax as declared."""
+def _parse(stream: BinaryIO) -> tuple[BinaryIO, Dataset, str, float]:
+    """Return the stream at its pixel data, the header, the transfer syntax as declared, and the packed share."""
     stream.seek(0)
     read_preamble(stream, force=True)
     meta = read_dataset(stream, is_implicit_VR=False, is_little_endian=True, stop_when=_past_meta)
@@ -88,9 +99,9 @@ def _parse(stream: BinaryIO) -> tuple[BinaryIO, Dataset, str]:
         whole = io.BytesIO(inflate(packed))
         dataset = read_dataset(whole, is_implicit_VR=False, is_little_endian=True, stop_when=_at_pixels)
         dataset.set_original_encoding(False, True)
-        return whole, dataset, declared
+        return whole, dataset, declared, len(packed) / whole.getbuffer().nbytes
     stream.seek(0)
-    return stream, read_partial(stream, stop_when=_at_pixels, force=True), declared
+    return stream, read_partial(stream, stop_when=_at_pixels, force=True), declared, 1.0
 
 
 def _past_meta(tag: BaseTag, representation: str | None, length: int) -> bool:  # noqa: ARG001

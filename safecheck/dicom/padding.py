@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from pydicom.dataset import Dataset
 
@@ -10,23 +12,29 @@ from safecheck.dicom.pixel_header import PixelHeader
 from safecheck.errors import InputRefused
 from safecheck.frames import Mask, PixelFormat, Samples
 
-__all__ = ["padding_mask"]
+__all__ = ["Padding", "read_padding"]
 
 
-def padding_mask(dataset: Dataset, header: PixelHeader, samples: Samples) -> tuple[Mask | None, tuple[str, ...]]:
-    """Pixels that hold the padding value, or lie between it and the range limit, both ends included.
+@dataclass(frozen=True, slots=True)
+class Padding:
+    """What a header declares as padding."""
 
-    Parameters
-    ----------
-    dataset, header
-        Of the file.
-    samples
-        (rows, columns) stored values with their sign read; colour gives None.
+    range: tuple[int, int] | None = None
+    """Least and largest stored value, both included; None where no pixel can hold padding."""
+    notes: tuple[str, ...] = ()
+    """What was set right or left aside."""
 
-    Returns
-    -------
-    mask, notes
-        (rows, columns), None where no pixel is padding; and what was set right or left aside.
+    def mask(self, samples: Samples) -> Mask | None:
+        """(rows, columns) of stored values -> where padding stands; None where none does."""
+        if self.range is None:
+            return None
+        low, high = self.range
+        found = (samples >= low) & (samples <= high) if low != high else samples == low
+        return found if found.any() else None
+
+
+def read_padding(dataset: Dataset, header: PixelHeader) -> Padding:
+    """Read the padding value and its range limit; colour has none.
 
     Raises
     ------
@@ -35,11 +43,11 @@ def padding_mask(dataset: Dataset, header: PixelHeader, samples: Samples) -> tup
     """
     value, limit = _whole(dataset, "PixelPaddingValue"), _whole(dataset, "PixelPaddingRangeLimit")
     if value is None and limit is None:
-        return None, ()
+        return Padding()
     if header.channels == 3:
-        return None, ("a padding value is declared for colour, where it has no meaning; not applied",)
+        return Padding(notes=("a padding value is declared for colour, where it has no meaning; not applied",))
     if value is None:
-        return None, ("a padding range limit is declared without a padding value; not applied",)
+        return Padding(notes=("a padding range limit is declared without a padding value; not applied",))
     notes: list[str] = []
     first = _in_range(value, header, notes)
     last = first if limit is None else _in_range(limit, header, notes)
@@ -47,9 +55,9 @@ def padding_mask(dataset: Dataset, header: PixelHeader, samples: Samples) -> tup
         notes.append("the padding range limit lies on the other side of the padding value than the standard asks")
     low, high = min(first, last), max(first, last)
     if high < header.format.lowest or low > header.format.highest:
-        return None, (*notes, "the padding value lies outside the stored range; no pixel can hold it")
-    mask = (samples >= low) & (samples <= high) if low != high else samples == low
-    return (mask if mask.any() else None), tuple(notes)
+        notes.append("the padding value lies outside the stored range; no pixel can hold it")
+        return Padding(notes=tuple(notes))
+    return Padding((low, high), tuple(notes))
 
 
 def _whole(dataset: Dataset, keyword: str) -> int | None:

@@ -15,7 +15,8 @@ from safecheck.errors import UsageError
 __all__ = ["KEY_BYTES", "Kind", "Pseudonyms", "default_key_path", "load_or_make_key", "short_form"]
 
 KEY_BYTES = 32
-Kind: TypeAlias = Literal["patient", "study", "series", "instance", "input", "kernel"]
+Kind: TypeAlias = Literal["patient", "study", "series", "instance", "input", "kernel", "frame"]
+"""`frame` is a frame of reference."""
 
 _LETTERS: dict[str, str] = {
     "patient": "P",
@@ -24,6 +25,7 @@ _LETTERS: dict[str, str] = {
     "instance": "I",
     "input": "F",
     "kernel": "K",
+    "frame": "G",
 }
 # Crockford's base 32: no I, L, O or U, so that a form read aloud or typed again is not mistaken.
 _ALPHABET = "0123456789ABCDEFGHJKMNPQRSTVWXYZ"

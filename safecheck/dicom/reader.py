@@ -15,7 +15,7 @@ from safecheck.dicom.geometry import Place, read_place
 from safecheck.dicom.instance import Instance
 from safecheck.dicom.modality import LUMA_UNIT, Modality, read_modality
 from safecheck.dicom.opened import OpenedFile, open_file
-from safecheck.dicom.padding import padding_mask
+from safecheck.dicom.padding import read_padding
 from safecheck.dicom.pixel_header import PixelHeader, read_pixel_header
 from safecheck.dicom.source import open_source
 from safecheck.dicom.stored_bits import bits_needed
@@ -116,22 +116,23 @@ class InstanceReader:
         index = self._index(number)
         opened, header = self._opened, self._header
         pixels = read_frame_pixels(self._bytes.read(index), opened.syntax, header, little_endian=opened.little_endian)
-        padding, padding_notes = padding_mask(opened.dataset, header, pixels.samples)
+        padding = read_padding(opened.dataset, header)
         modality = self._modality(index)
         displays, display_notes = read_displays(
             opened.dataset, self._groups, index, header, modality.transform, little_endian=opened.little_endian
         )
-        place = read_place(opened.dataset, self._groups, index)
-        notes = (*opened.notes, *self._bytes.notes, *pixels.notes, *padding_notes, *display_notes, *place.notes)
+        place = read_place(opened.dataset, self._groups, index, self._instance.frame_of_reference)
+        notes = (*opened.notes, *self._bytes.notes, *pixels.notes, *padding.notes, *display_notes, *place.notes)
         return Frame(
             key=self._key(number),
             origin=self._origin(pixels, place, notes),
-            raster=Raster(pixels.samples, header.format, padding),
+            raster=Raster(pixels.samples, header.format, padding.mask(pixels.samples)),
             bits_used=bits_needed(pixels.samples),
             unit=modality.unit,
             modality_transform=modality.transform,
             spacing_mm=place.spacing_mm,
             geometry=place.geometry,
+            padding_range=padding.range,
             displays=displays,
         )
 
@@ -185,7 +186,7 @@ class InstanceReader:
         own_thickness = place.slice_thickness_class if self._groups.enhanced else ""
         return dataclasses.replace(
             known,
-            source_bytes=pixels.source_bytes,
+            source_bytes=round(pixels.source_bytes * self._opened.packed_share),
             slice_position_mm=place.slice_position_mm,
             slice_thickness_class=own_thickness or known.slice_thickness_class,
             may_show_text=text,

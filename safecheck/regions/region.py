@@ -55,7 +55,7 @@ class Grid:
     along_columns: Vector | None = None
     along_rows: Vector | None = None
     frame_of_reference: str = ""
-    """Pseudonym or raw, the same kind as in the regions it is held against."""
+    """Keyed pseudonym."""
 
 
 class OnFrames(Document):

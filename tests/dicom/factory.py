@@ -66,6 +66,7 @@ def instance_at(path: Path, *, modality: str = "CT", object_class: str = CT_NAME
         pixel_bytes=0,
         derived=False,
         origin=origin,
+        frame_of_reference="frame of reference",
         uid="1.2.3",
     )
 

@@ -132,7 +132,10 @@ def test_uncompressed_grey_comes_back(
     assert frame.raster.format.photometric == photometric
     assert (frame.raster.format.bits_stored, frame.raster.format.signed) == (stored, signed)
     assert frame.bits_used == stored
-    assert frame.origin.source_bytes == samples.nbytes
+    if syntax == DEFLATED:  # the share of this frame in a file that is deflated as a whole
+        assert 0 < frame.origin.source_bytes < samples.nbytes * 1.2
+    else:
+        assert frame.origin.source_bytes == samples.nbytes
 
 
 @pytest.mark.parametrize(("allocated", "stored", "signed"), FORMATS)

@@ -193,6 +193,7 @@ def test_the_padding_range_includes_both_its_ends(tmp_path: Path, photometric: s
     frame = padded(
         tmp_path, LADDER, representation="SS", value=value, limit=limit, PhotometricInterpretation=photometric
     )
+    assert frame.padding_range == (min(value, limit), max(value, limit))
     assert frame.raster.padding is not None
     assert np.array_equal(frame.raster.padding, (min(value, limit) <= LADDER) & (max(value, limit) >= LADDER))
     assert frame.origin.notes == ()
@@ -223,13 +224,14 @@ def test_a_padding_value_of_the_other_sign_is_read_by_its_bits(tmp_path: Path) -
 
 def test_a_padding_value_that_no_sample_can_hold_marks_nothing(tmp_path: Path) -> None:
     frame = padded(tmp_path, GREY, representation="US", value=63536)
-    assert frame.raster.padding is None
+    assert (frame.raster.padding, frame.padding_range) == (None, None)
     assert any("outside the stored range" in note for note in frame.origin.notes)
 
 
 def test_a_padding_value_found_nowhere_gives_no_mask(tmp_path: Path) -> None:
     frame = padded(tmp_path, LADDER, representation="SS", value=-2000)
-    assert (frame.raster.padding, frame.origin.notes) == (None, ())
+    assert (frame.raster.padding, frame.padding_range) == (None, (-2000, -2000))
+    assert frame.origin.notes == ()
 
 
 def test_a_limit_without_a_value_is_not_applied(tmp_path: Path) -> None:
@@ -329,7 +331,7 @@ def test_position_orientation_and_reference_are_read(tmp_path: Path) -> None:
     assert frame.geometry.position_mm == (-120.5, -80, 33.25)
     assert frame.geometry.along_columns == (1, 0, 0)
     assert frame.geometry.along_rows == pytest.approx((0, 0.6, -0.8))
-    assert frame.geometry.frame_of_reference == "1.2.840.1"
+    assert frame.geometry.frame_of_reference == "frame of reference"
     assert frame.spacing_mm == (0.7, 0.5)
     # Normal (1,0,0) x (0,0.6,-0.8) = (0, 0.8, 0.6); computed from the stated definition.
     assert frame.origin.slice_position_mm == pytest.approx(-80 * 0.8 + 33.25 * 0.6)
