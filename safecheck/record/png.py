@@ -34,7 +34,7 @@ def png_bytes(pixels: npt.NDArray[np.uint8] | npt.NDArray[np.uint16]) -> bytes:
     ValueError
         If the shape or type is another.
     """
-    if pixels.dtype not in (np.uint8, np.uint16) or not 0 < max(pixels.shape[:2]) <= _LARGEST_SIDE:
+    if pixels.dtype not in (np.uint8, np.uint16) or not all(0 < n <= _LARGEST_SIDE for n in pixels.shape[:2]):
         raise ValueError(f"pixels of type {pixels.dtype} and shape {pixels.shape} are not written as PNG")
     if pixels.ndim not in (2, 3) or (pixels.ndim == 3 and (pixels.shape[2] != 3 or pixels.dtype != np.uint8)):
         raise ValueError(f"pixels of shape {pixels.shape} are not written as PNG")
@@ -98,4 +98,6 @@ def _chunks(data: bytes) -> dict[bytes, bytes]:
             raise ValueError("chunk")
         found[kind] = body
         position = end + 4
+    if list(found) != [b"IHDR", b"IDAT", b"IEND"]:
+        raise ValueError("chunks")
     return found

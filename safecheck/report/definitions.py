@@ -27,9 +27,9 @@ TERMS: tuple[tuple[str, str], ...] = (
     ),
     (
         "Bases of a ratio",
-        "bits stored: pixels × channels × bits stored ÷ 8; bits allocated: the same with bits allocated; content: the "
-        "first, content pixels only; lossless: bytes of the smaller of JPEG-LS and JPEG 2000 5/3; now: bytes as they lie "
-        "in the archive. The bytes after are those of the code stream alone",
+        "bits stored: pixels × channels × bits stored ÷ 8; bits allocated: the same with bits allocated; content: "
+        "the first, content pixels only; lossless: bytes of the smaller of JPEG-LS and JPEG 2000 5/3; now: bytes as they "
+        "lie in the archive. The bytes after are those of the code stream alone",
     ),
     ("Content", "pixels that are not padding and, where the rule of the modality says so, not surrounding air"),
     ("Patch", "complete window of 8×8 pixels on a fixed grid from (0, 0), with at least half content"),
@@ -44,8 +44,8 @@ TERMS: tuple[tuple[str, str], ...] = (
     ),
     (
         "Bound",
-        "exact one-sided 95 % upper bound (Clopper and Pearson 1934) on the share of patients with an exceedance; stands "
-        "only where studies were drawn at random",
+        "exact one-sided 95 % upper bound (Clopper and Pearson 1934) on the share of patients with an exceedance; "
+        "stands only where studies were drawn at random",
     ),
     ("Percentiles", "over frames, with linear interpolation between the two nearest"),
 )

@@ -33,7 +33,7 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         ),
         "psnr_peak_bits_db": (
             "PSNR, frame, peak of stored bits",
-            "20 log₁₀(peak ÷ RMSE) over all pixels; peak: span that the stored bits can express, in the unit of the error",
+            "20 log₁₀(peak ÷ RMSE) over all pixels; peak: span that the stored bits can express",
             _COMMON,
         ),
         "psnr_peak_range_db": (
@@ -157,7 +157,7 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         ),
         "region_cnr_after": (
             "CNR after, region",
-            "(mean of the region − mean of its background) ÷ SD of the background, after; read beside the noise removed",
+            "(mean of the region − mean of its background) ÷ SD of that, after; read beside the noise removed",
             _COMMON,
         ),
     }

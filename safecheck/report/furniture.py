@@ -9,6 +9,7 @@ from reportlab.lib.units import mm
 from reportlab.platypus import Paragraph
 
 from safecheck.report.blocks import Report
+from safecheck.report.folio import place_folio
 from safecheck.report.theme import (
     FIRST_TOP,
     INK,
@@ -36,14 +37,14 @@ MARKS_HEIGHT = 9 * mm
 _RIGHT = LEFT + TEXT_WIDTH
 
 
-def draw_page(canvas: Any, report: Report, page: int, pages: int) -> None:  # noqa: ANN401 - reportlab's canvas
+def draw_page(canvas: Any, report: Report, page: int) -> None:  # noqa: ANN401 - reportlab's canvas
     """Draw what every page carries, over its content."""
     canvas.saveState()
     if page > 1:
         _head(canvas, report)
     if report.marks:
         _marks(canvas, report.marks, FIRST_TOP if page == 1 else TOP)
-    _foot(canvas, report, page, pages)
+    _foot(canvas, report, page)
     if report.across:
         _across(canvas, report.across)
     canvas.restoreState()
@@ -69,16 +70,18 @@ def _head(canvas: Any, report: Report) -> None:  # noqa: ANN401 - reportlab's ca
 
 def _marks(canvas: Any, marks: tuple[str, ...], top: float) -> None:  # noqa: ANN401 - reportlab's canvas
     """A dark strip with what holds for the whole record."""
-    text = fit_text("   ·   ".join(marks), MEDIUM, 8.2, TEXT_WIDTH - 12)
+    text = "   ·   ".join(marks)
+    # Never cut: several marks at once stand smaller.
+    size = min(8.4, (TEXT_WIDTH - 12) / text_width(text, MEDIUM, 1))
     y = PAGE_HEIGHT - top - 5 * mm
     canvas.setFillColor(INK)
     canvas.rect(LEFT, y, TEXT_WIDTH, 5.6 * mm, stroke=0, fill=1)
     canvas.setFillColor(WHITE)
-    canvas.setFont(MEDIUM, 8.2)
+    canvas.setFont(MEDIUM, size)
     canvas.drawString(LEFT + 6, y + 1.9 * mm, text)
 
 
-def _foot(canvas: Any, report: Report, page: int, pages: int) -> None:  # noqa: ANN401 - reportlab's canvas
+def _foot(canvas: Any, report: Report, page: int) -> None:  # noqa: ANN401 - reportlab's canvas
     """Short caution on the left; page number and the beginning of the record's hash on the right."""
     y = 17.5 * mm
     canvas.setStrokeColor(RULE)
@@ -87,9 +90,7 @@ def _foot(canvas: Any, report: Report, page: int, pages: int) -> None:  # noqa: 
     caution = Paragraph(markup(SHORT_CAUTION), style("small-label"))
     _, height = caution.wrap(TEXT_WIDTH - 48 * mm, 30)
     caution.drawOn(canvas, LEFT, y - 4 - height)
-    canvas.setFillColor(INK)
-    canvas.setFont(REGULAR, 8)
-    canvas.drawRightString(_RIGHT, y - 11, f"Page {page} of {pages}")
+    place_folio(canvas, page)
     canvas.setFillColor(MID)
     canvas.setFont(REGULAR, 7.2)
     canvas.drawRightString(_RIGHT, y - 21.5, f"Record {report.record_sha256[:16]}")

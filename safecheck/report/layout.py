@@ -24,14 +24,15 @@ from safecheck.report.blocks import (
     Title,
 )
 from safecheck.report.figures import bars_drawing, chart_drawing
+from safecheck.report.folio import PageNumber
 from safecheck.report.sketches import cards_flowables
 from safecheck.report.tables import table_flowable
 from safecheck.report.theme import ACCENT, INK, RULE, TEXT_WIDTH, markup, style
 
-__all__ = ["ContentsEntry", "flowables_of"]
+__all__ = ["ContentsEntry", "flow"]
 
-ContentsEntry: TypeAlias = tuple[str, str, int]
-"""Key of the bookmark, title, page."""
+ContentsEntry: TypeAlias = tuple[str, str]
+"""Key of the bookmark, title."""
 
 _PLAIN = [
     ("VALIGN", (0, 0), (-1, -1), "TOP"),
@@ -42,13 +43,37 @@ _PLAIN = [
 ]
 
 
-def flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowable]:
+def flow(head: Sequence[Flowable], blocks: Sequence[Block], contents: Sequence[ContentsEntry]) -> list[Flowable]:
+    """Lay out blocks after a head.
+
+    Headings and sentences wait for what they introduce, so that none of them stands alone at the foot of a page.
+    """
+    story: list[Flowable] = []
+    waiting, kept = list(head), len(head)
+    for block in blocks:
+        made = _flowables_of(block, contents)
+        if isinstance(block, Heading) and len(waiting) > kept:
+            story += waiting
+            waiting, kept = [], 0
+        if isinstance(block, Heading | Prose):
+            waiting += made
+            continue
+        story += [KeepTogether([*waiting, *made])] if isinstance(made, _Whole) else [*waiting, *made]
+        waiting, kept = [], 0
+    return story + waiting
+
+
+class _Whole(list[Flowable]):
+    """Flowables that never part over pages."""
+
+
+def _flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowable]:
     """Lay out one block; `contents` is what the list of contents shows."""
     match block:
         case Title():
             return _title(block)
         case Heading(text):
-            return [CondPageBreak(136), _paragraph(text, "heading")]
+            return [_paragraph(text, "heading")]
         case Prose():
             return [_prose(block)]
         case Numbered():
@@ -58,9 +83,9 @@ def flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowab
         case Table():
             return _table(block)
         case Charts():
-            return [_charts(block)]
+            return _charts(block)
         case Bars():
-            return [KeepTogether([_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH), Spacer(1, 6)])]
+            return _Whole([_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH), Spacer(1, 6)])
         case Places():
             return cards_flowables(block.cards)
         case Signatures():
@@ -125,15 +150,20 @@ def _facts(block: Facts) -> Flowable:
     return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
 
 
+_TOGETHER = 24
+"""Rows up to which a table never breaks over pages."""
+
+
 def _table(block: Table) -> list[Flowable]:
-    """Caption, table and note; at least the head and a few rows stay together."""
-    flowables: list[Flowable] = [CondPageBreak(96)]
-    if block.caption:
-        flowables.append(_paragraph(block.caption, "caption"))
-    return [*flowables, table_flowable(block)]
+    """Caption and table: short ones stay whole, of long ones at least the head and a few rows."""
+    parts: list[Flowable] = [_paragraph(block.caption, "caption")] if block.caption else []
+    parts.append(table_flowable(block))
+    if len(block.rows) <= _TOGETHER:
+        return _Whole(parts)
+    return [CondPageBreak(96), *parts]
 
 
-def _charts(block: Charts) -> Flowable:
+def _charts(block: Charts) -> list[Flowable]:
     """Charts side by side above their caption."""
     gap = 18.0
     width = (TEXT_WIDTH - gap) / 2
@@ -141,7 +171,7 @@ def _charts(block: Charts) -> Flowable:
     cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
     side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])
     parts: list[Flowable] = [Spacer(1, 4), side_by_side, Spacer(1, 3)]
-    return KeepTogether([*parts, _paragraph(block.caption, "note")] if block.caption else parts)
+    return _Whole([*parts, _paragraph(block.caption, "note")] if block.caption else parts)
 
 
 def _signatures(block: Signatures) -> Flowable:
@@ -158,11 +188,11 @@ def _signature(head: str, role: str, width: float) -> PlatypusTable:
     """One block: room for an opinion, name, date and signature."""
     rows = [[_paragraph(head, "card-head"), ""], [_paragraph(role, "small-label"), ""]]
     heights: list[float | None] = [None, None]
-    for label, height in (("", 26), ("", 22), ("", 22), ("", 22), ("Name", 26), ("Date", 26), ("Signature", 34)):
+    for label, height in (("", 24), ("", 20), ("", 20), ("Name", 22), ("Date", 22), ("Signature", 28)):
         rows.append([_paragraph(label, "small-label"), ""])
         heights.append(height)
     table = PlatypusTable(rows, colWidths=[44, width - 44], rowHeights=heights, hAlign="LEFT")
-    lines: list[tuple[Any, ...]] = [("LINEBELOW", (0, row), (-1, row), 0.35, RULE) for row in range(2, 9)]
+    lines: list[tuple[Any, ...]] = [("LINEBELOW", (0, row), (-1, row), 0.35, RULE) for row in range(2, 8)]
     lines += [("SPAN", (0, row), (-1, row)) for row in (0, 1)]
     table.setStyle(
         [
@@ -179,9 +209,9 @@ def _signature(head: str, role: str, width: float) -> PlatypusTable:
 def _contents(entries: Sequence[ContentsEntry]) -> list[Flowable]:
     """Sections with their pages."""
     rows: list[list[Any]] = []
-    for key, title, page in entries:
+    for key, title in entries:
         link = Paragraph(f'<a href="#{key}">{markup(title)}</a>', style("contents"))
-        rows.append([link, Paragraph(str(page), style("contents-page"))])
+        rows.append([link, PageNumber(key, 40)])
     rules = [
         ("LINEBELOW", (0, 0), (-1, -1), 0.25, RULE),
         ("TOPPADDING", (0, 0), (-1, -1), 1.6),

@@ -126,12 +126,13 @@ def _compared(folder: Path, members: set[str], seal: Seal, data: bytes) -> Itera
 
 
 def _own_files(folder: Path, seal: Seal, data: bytes) -> Iterator[Difference]:
-    """Yield which of the seal's two files contradicts the other."""
+    """Yield the seal's two files where they contradict each other; which of them changed may not show."""
     written = (folder / SUMS).read_bytes()
     if written == _sums(seal.files, data):
         return
-    names_this_seal = f"{hashlib.sha256(data).hexdigest()}  {SEAL}\n".encode() in written
-    yield Difference(SUMS if names_this_seal else SEAL, "changed")
+    yield Difference(SUMS, "changed")
+    if f"{hashlib.sha256(data).hexdigest()}  {SEAL}\n".encode() not in written:
+        yield Difference(SEAL, "changed")
 
 
 def _sorted(differences: list[Difference]) -> tuple[Difference, ...]:
@@ -140,7 +141,7 @@ def _sorted(differences: list[Difference]) -> tuple[Difference, ...]:
 
 
 def _members(folder: Path) -> Iterator[tuple[str, bool]]:
-    """Yield everything below the folder that is not itself a folder, and whether it is a regular file; links unfollowed."""
+    """Yield all that lies below the folder but folders, and whether it is a regular file; links are not followed."""
     for path in sorted(folder.iterdir(), key=lambda item: item.name):
         mode = path.lstat().st_mode
         if stat.S_ISDIR(mode):
@@ -158,4 +159,5 @@ def _sums(entries: tuple[SealedFile, ...] | list[SealedFile], seal: bytes) -> by
 def _sum_line(path: str, sha256: str) -> str:
     """A line as coreutils writes it: names with a backslash or a line break are escaped and marked."""
     escaped = path.replace("\\", "\\\\").replace("\n", "\\n").replace("\r", "\\r")
-    return f"{'\\' if escaped != path else ''}{sha256}  {escaped}\n"
+    mark = "\\" if escaped != path else ""
+    return f"{mark}{sha256}  {escaped}\n"

@@ -31,18 +31,20 @@ from safecheck.report.theme import (
 
 __all__ = ["cards_flowables", "sketch_drawing"]
 
-_BOX = 84.0
+_BOX = 72.0
 """Largest side of a sketch, in points."""
+_SMALL_BOX = 58.0
+"""The same beside pictures."""
 _MARGIN = 15.0
-_PICTURE = 104.0
+_PICTURE = 112.0
 
 
-def sketch_drawing(card: PlaceCard) -> Drawing:
+def sketch_drawing(card: PlaceCard, box: float = _BOX) -> Drawing:
     """Draw the frame's outline to scale with the patch on it; its row and column stand at the edges."""
     load_fonts()
-    scale = _BOX / max(card.rows, card.columns)
+    scale = box / max(card.rows, card.columns)
     wide, high = card.columns * scale, card.rows * scale
-    drawing = Drawing(_BOX + _MARGIN + 8, high + _MARGIN)
+    drawing = Drawing(box + _MARGIN + 8, high + _MARGIN)
     left, bottom = _MARGIN + 8, 0.6
     drawing.add(Rect(left, bottom, wide, high, fillColor=FAINT, strokeColor=INK, strokeWidth=0.6))
     if card.row is None or card.column is None:
@@ -127,7 +129,7 @@ def _wide(card: PlaceCard, pictures: Pictures) -> Flowable:
         _Picture(pictures.recompressed, pictures.mark, "recompressed", pictures.window),
         _Picture(pictures.difference, pictures.mark, "after minus before", "", (pictures.scale, pictures.unit)),
     ]
-    cells = [[[*_words(card), sketch_drawing(card)], *shown]]
+    cells = [[[*_words(card), sketch_drawing(card, _SMALL_BOX)], *shown]]
     table = Table(cells, colWidths=[first, *[_PICTURE + 8] * 3], hAlign="LEFT")
     table.setStyle(_CARD_STYLE)
     return table

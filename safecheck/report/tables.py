@@ -5,9 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from typing import Any
 
-from reportlab.platypus import Paragraph
+from reportlab.platypus import Paragraph, TableStyle
 from reportlab.platypus import Table as PlatypusTable
-from reportlab.platypus import TableStyle
 
 from safecheck.report.blocks import Column, Row, Table
 from safecheck.report.theme import (
@@ -32,6 +31,8 @@ _SIZE, _HEAD_SIZE = 7.6, 7.3
 _PAD = 3.2
 _LONGEST_WORD = 120.0
 """Points: a longer word is broken rather than given more."""
+_SHORT = 62.0
+"""Points: cells up to this width never wrap."""
 _STRONG = 2
 """Cells at the beginning of a strong row that stand in a heavier face."""
 _BLANK = 96.0
@@ -52,13 +53,13 @@ def table_flowable(table: Table) -> PlatypusTable:
         *_over_style(table.columns, over=over),
         *_base_style(len(heads), len(table.rows), numbers),
         *_row_style(table.rows, len(heads)),
-        *_note_style(len(heads) + len(table.rows), bool(table.note)),
+        *_note_style(len(heads) + len(table.rows), note=bool(table.note)),
     ]
     flowable.setStyle(TableStyle(commands))
     return flowable
 
 
-def _note_style(row: int, note: bool) -> list[tuple[Any, ...]]:  # noqa: FBT001 - one private call
+def _note_style(row: int, *, note: bool) -> list[tuple[Any, ...]]:
     """The note spans the table, without a rule."""
     if not note:
         return []
@@ -141,9 +142,9 @@ def _natural(table: Table, index: int) -> float:
 def _head_width(column: Column) -> float:
     """Width at which a head needs at most about three lines and breaks no word."""
     words = [text_width(word, MEDIUM, _HEAD_SIZE) for word in printable(column.head).split(" ")]
-    unit = text_width(printable(column.unit), REGULAR, _HEAD_SIZE)
+    unit = max((text_width(word, REGULAR, _HEAD_SIZE) for word in printable(column.unit).split(" ")), default=0.0)
     whole = text_width(printable(column.head), MEDIUM, _HEAD_SIZE)
-    return max([*words, min(unit, _LONGEST_WORD), whole / 2.6 if column.number else 0.0])
+    return max([*words, unit, whole / 2.6 if column.number else 0.0])
 
 
 def _least(table: Table, index: int, natural: float) -> float:
@@ -153,7 +154,7 @@ def _least(table: Table, index: int, natural: float) -> float:
         return natural
     words = (text_width(word, MEDIUM, _SIZE) for cell in _cells(table, index) for word in cell.split())
     longest = min(max(words, default=0.0), _LONGEST_WORD)
-    return min(natural, max(longest, _head_width(column)) + 2 * _PAD + 1)
+    return min(natural, max(longest, _head_width(column), _SHORT) + 2 * _PAD + 1)
 
 
 def _base_style(heads: int, rows: int, numbers: Sequence[bool]) -> list[tuple[Any, ...]]:

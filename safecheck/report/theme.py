@@ -168,7 +168,6 @@ def style(name: str) -> ParagraphStyle:
         "head-over": lambda: _style(MEDIUM, 7.3, 9, alignment=TA_CENTER),
         "head-number": lambda: _style(MEDIUM, 7.3, 9, alignment=TA_RIGHT),
         "contents": lambda: _style(REGULAR, 8.6, 12),
-        "contents-page": lambda: _style(REGULAR, 8.6, 12, alignment=TA_RIGHT),
         "card-head": lambda: _style(MEDIUM, 8.4, 11),
         "card-value": lambda: _style(LIGHT, 12.5, 16),
         "card": lambda: _style(REGULAR, 7.6, 10.2),

@@ -157,7 +157,7 @@ def window_figures(stratum: StratumEntry, name: str, error: float) -> list[Figur
                 least=1 - 4 * loss,
                 largest=1 - loss / 3,
                 worst=a_place(3),
-            )  # fmt: skip
+            )
         )
         found.append(
             FigureEntry(
@@ -171,7 +171,7 @@ def window_figures(stratum: StratumEntry, name: str, error: float) -> list[Figur
                 least=share / 3,
                 largest=min(share * 2.2, 100),
                 worst=a_place(4),
-            )  # fmt: skip
+            )
         )
     return found
 
@@ -340,7 +340,7 @@ def regions() -> list[RegionEntry]:
                 cnr_after=1.31 + error * 0.02,
                 noise_removed_percent=3.1 * error,
                 worst=a_place(6),
-            )  # fmt: skip
+            )
         )
         found.append(
             RegionEntry(
@@ -354,7 +354,7 @@ def regions() -> list[RegionEntry]:
                 bias_median=0.004,
                 bias_largest_absolute=0.11,
                 max_largest=error * 4,
-            )  # fmt: skip
+            )
         )
     return found
 

@@ -91,7 +91,8 @@ def plan(view: View) -> Section:
     lines = [Row((path, value)) for path, value in _flat("", entry.content)]
     blocks: tuple[Block, ...] = (
         Prose(
-            f"Read from the {entry.source}. Keys left out stand with their default. SHA-256 of the plan: {entry.sha256}",
+            f"Read from the {entry.source}. Keys left out stand with their default. "
+            f"SHA-256 of the plan: {entry.sha256}",
             "note",
         ),
         Table(
@@ -154,7 +155,7 @@ def keeping(view: View) -> Section:
 def signatures(view: View) -> Section:
     """The section Opinions: blank blocks for named roles."""
     text = (
-        "Each signatory states an opinion of their own. A signature here neither alters the figures nor is asked for by "
-        f"this record, whose hash is {view.record_sha256[:16]}…"
+        "Each signatory states an opinion of their own. A signature here neither alters the figures nor is asked for "
+        f"by this record, whose hash is {view.record_sha256[:16]}…"
     )
     return Section("Opinions", (Prose(text, "note"), Signatures("Opinion of the signatory", ROLES)), room_mm=160)

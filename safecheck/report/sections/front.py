@@ -15,8 +15,8 @@ from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, SHORT_CAUTION
 
 __all__ = ["front", "limit_words", "outcome_words", "ratio_groups"]
 
-LINES_ON_FIRST_PAGE = 14
-"""Outcomes shown on the first page; those outside come first, so that none of them is cut for one within."""
+ROWS_ON_FIRST_PAGE = 22
+"""Rows of the table of outcomes; those outside come first, so that none of them is cut for one within."""
 
 
 def front(view: View) -> tuple[Block, ...]:
@@ -147,12 +147,20 @@ def _outcome_table(lines: Sequence[OutcomeEntry]) -> Table:
         Column("Studies within"),
         Column("Bound on patients not assessed"),
     )
-    shown = lines[:LINES_ON_FIRST_PAGE]
+    shown = _shown(lines)
     rows: list[Row] = []
     for name in dict.fromkeys(item.limit for item in shown):
         same = [item for item in shown if item.limit == name]
         rows += [Row((limit_words(same[0]),), group=True), *(_outcome_row(item) for item in same)]
-    return Table(columns, tuple(rows), note=_rest(lines[LINES_ON_FIRST_PAGE:]))
+    return Table(columns, tuple(rows), note=_rest(lines[len(shown) :]))
+
+
+def _shown(lines: Sequence[OutcomeEntry]) -> Sequence[OutcomeEntry]:
+    """As many lines as fit, each limit taking a row of its own."""
+    for size in range(len(lines), 0, -1):
+        if size + len({item.limit for item in lines[:size]}) <= ROWS_ON_FIRST_PAGE:
+            return lines[:size]
+    return lines[:1]
 
 
 def limit_words(item: OutcomeEntry) -> str:

@@ -32,8 +32,8 @@ _COLUMNS = (
 def ledger(view: View) -> Section:
     """The section Ratio ledger."""
     intro = (
-        "One code has another ratio on each basis. “10:1” says nothing until the basis is named: bits stored counts the "
-        "bits that hold values, bits allocated the bits of the file, content only pixels that are neither padding nor "
+        "One code has another ratio on each basis. “10:1” says nothing until the basis is named: bits stored counts "
+        "the bits that hold values, bits allocated the bits of the file, content only pixels that are neither padding nor "
         "air. What an archive gains stands in the last two columns: against the smallest reversible code, and against "
         "the bytes that lie there now."
     )

@@ -42,6 +42,9 @@ def regions(view: View) -> Section:
         return Section("Regions", (Prose("No region was drawn."),))
     entries = _ordered(view)
     blocks: list[Block] = []
+    if record.regions_without_frame:
+        names = joined(record.regions_without_frame)
+        blocks.append(Prose(f"These regions lie on no frame that was assessed: {names}."))
     keys = list(dict.fromkeys((item.region, item.unit) for item in entries))
     groups = [[item for item in entries if (item.region, item.unit) == key] for key in keys[:REGIONS]]
     if groups:
@@ -52,9 +55,6 @@ def regions(view: View) -> Section:
     rest = rest_sentence(REGIONS, len(keys))
     if rest:
         blocks.append(Prose(rest, "note"))
-    if record.regions_without_frame:
-        names = joined(record.regions_without_frame)
-        blocks.append(Prose(f"These regions lie on no frame that was assessed: {names}."))
     return Section("Regions", tuple(blocks))
 
 

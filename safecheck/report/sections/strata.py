@@ -31,6 +31,7 @@ STRATA_IN_DETAIL = 24
 PER_TABLE = 5
 """Candidates per table of further measures: two columns each."""
 
+_SHORT_UNIT = 8
 _MAIN = ("rmse_content", "max_content", "worst_patch_rmse")
 _WINDOW = ("ssim", "changed_5_levels_percent")
 
@@ -92,7 +93,8 @@ def _detail(view: View, stratum: StratumEntry) -> Section:
     if charts:
         caption = (
             "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio "
-            "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. Curves stand slightly apart, so that bars do not hide each other."
+            "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. "
+            "Curves stand slightly apart, so that bars do not hide each other."
         )
         blocks.append(Charts(charts, caption))
     blocks += [_errors(view, stratum, candidates), *_windows(view, stratum, candidates)]
@@ -148,19 +150,13 @@ def _bounds(view: View, stratum: StratumEntry, measure: str) -> tuple[Bound, ...
 
 def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
     """RMSE, maximum and worst patch beside the ratio that was reached."""
-    unit = stratum.unit
     columns = (
         Column("Candidate"),
         Column("Frames", number=True),
-        Column("median", "to 1", number=True, over="Achieved ratio, bits stored"),
-        Column("least", "to 1", number=True, over="Achieved ratio, bits stored"),
-        Column("median", unit, number=True, over="RMSE, content"),
-        Column("95th pct.", unit, number=True, over="RMSE, content"),
-        Column("largest", unit, number=True, over="RMSE, content"),
-        Column("median", unit, number=True, over="Largest error, content"),
-        Column("largest", unit, number=True, over="Largest error, content"),
-        Column("median", unit, number=True, over="RMSE, worst patch 8×8"),
-        Column("largest", unit, number=True, over="RMSE, worst patch 8×8"),
+        *_heads("Achieved ratio, bits stored", "to 1", "median", "least"),
+        *_heads("RMSE, content", stratum.unit, "median", "95th\u00a0pct.", "largest"),
+        *_heads("Largest error, content", stratum.unit, "median", "largest"),
+        *_heads("RMSE, worst patch 8×8", stratum.unit, "median", "largest"),
     )
     ledgers = [view.ledger.get((item.candidate, stratum.stratum)) for item in candidates]
     rmse, largest, patch = (
@@ -179,6 +175,13 @@ def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
     return Table(columns, tuple(Row(row) for row in cells), caption="Errors: after minus before, over frames")
 
 
+def _heads(over: str, unit: str, *heads: str) -> list[Column]:
+    """Columns below a shared head, which takes a unit that is too long for each of them."""
+    if len(unit) > _SHORT_UNIT:
+        return [Column(head, "", number=True, over=f"{over}; {unit}") for head in heads]
+    return [Column(head, unit, number=True, over=over) for head in heads]
+
+
 def _of(entries: Sequence[FigureEntry | None], part: str) -> list[float | None]:
     """One statistic of each entry."""
     return [None if item is None else getattr(item, part) for item in entries]
@@ -195,12 +198,8 @@ def _windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
     """SSIM and share of pixels changed, for each window."""
     columns = (
         Column("Window and candidate"),
-        Column("median", "1", number=True, over="SSIM, content"),
-        Column("5th pct.", "1", number=True, over="SSIM, content"),
-        Column("least", "1", number=True, over="SSIM, content"),
-        Column("median", "%", number=True, over="Content changed by 5 levels of 255 or more"),
-        Column("95th pct.", "%", number=True, over="Content changed by 5 levels of 255 or more"),
-        Column("largest", "%", number=True, over="Content changed by 5 levels of 255 or more"),
+        *_heads("SSIM, content", "1", "median", "5th\u00a0pct.", "least"),
+        *_heads("Content changed by 5 levels of 255 or more", "%", "median", "95th\u00a0pct.", "largest"),
     )
     rows: list[Row] = []
     for window in view.windows(stratum.stratum):
@@ -228,9 +227,8 @@ def _further(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
     if not others:
         return []
     blocks: list[Block] = [Heading("Further measures")]
-    for start in range(0, len(candidates), PER_TABLE):
-        blocks.append(_further_table(view, stratum.stratum, candidates[start : start + PER_TABLE], others))
-    return blocks
+    parts = [candidates[start : start + PER_TABLE] for start in range(0, len(candidates), PER_TABLE)]
+    return [*blocks, *(_further_table(view, stratum.stratum, part, others) for part in parts)]
 
 
 def _further_table(
@@ -246,7 +244,10 @@ def _further_table(
         values = [part for item in entries for part in (item.median if item else None, _worst(item))]
         label = f"{label_of(measure)}, {window}" if window else label_of(measure)
         rows.append(Row((label, unit, *aligned(values))))
-    note = "Worst: the largest value where more is worse, the least where less is worse; of signed measures the one farther from zero."
+    note = (
+        "Worst: the largest value where more is worse, the least where less is worse; "
+        "of signed measures the one farther from zero."
+    )
     return Table(tuple(columns), tuple(rows), note=note)
 
 

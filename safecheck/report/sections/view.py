@@ -19,7 +19,16 @@ from safecheck.record.run import RunFacts
 from safecheck.report.numbers import NONE, count, plural
 from safecheck.wording import CAUTIONS_WHEN, RECORD_TITLE
 
-__all__ = ["View", "place_short", "place_words", "rest_sentence", "view_of"]
+__all__ = [
+    "View",
+    "dash",
+    "names_with_status",
+    "place_short",
+    "place_words",
+    "rest_sentence",
+    "stratum_line",
+    "view_of",
+]
 
 
 @dataclass(frozen=True, slots=True)
@@ -121,8 +130,16 @@ def stratum_line(stratum: StratumEntry) -> str:
 
 
 def names_with_status(candidates: Sequence[CandidateEntry]) -> tuple[str, ...]:
-    """Name candidates, each with 'context' where it is not proposed."""
-    return tuple(item.candidate if item.status == "proposed" else f"{item.candidate} (context)" for item in candidates)
+    """Name candidates with what a reader of the row must know: 'context', 'second generation'."""
+    return tuple(_name(item) for item in candidates)
+
+
+def _name(item: CandidateEntry) -> str:
+    """One candidate's name with its marks."""
+    marks = ["context"] if item.status == "context" else []
+    if "second generation" in item.note:
+        marks.append("second generation")
+    return f"{item.candidate} ({', '.join(marks)})" if marks else item.candidate
 
 
 def dash(text: str) -> str:
