@@ -105,11 +105,14 @@ def check_determinism(codec: Codec, before: Raster) -> None:
 
 def check_values_beyond_the_bits(codec: Codec) -> None:
     """Samples outside their own format are refused, never clipped in silence."""
-    form = PixelFormat(16, 12, False, "MONOCHROME2")
-    samples = np.zeros((64, 64), np.uint16)
-    samples[5, 7] = 4096
-    with pytest.raises(CannotEncode, match=r"0 to 4096, expected 0 to 4095"):
-        codec.encode(Raster(samples, form))
+    for form, value, message in (
+        (PixelFormat(16, 12, False, "MONOCHROME2"), 4096, r"0 to 4096, expected 0 to 4095"),
+        (PixelFormat(16, 12, True, "MONOCHROME2"), -2049, r"-2049 to 0, expected -2048 to 2047"),
+    ):
+        samples = np.zeros((64, 64), form.dtype)
+        samples[5, 7] = value
+        with pytest.raises(CannotEncode, match=message):
+            codec.encode(Raster(samples, form))
 
 
 def check_other_frame_is_corrupt(codec: Codec) -> None:
