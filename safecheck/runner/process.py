@@ -7,13 +7,11 @@ able to run anything in the process that outlives it.
 from __future__ import annotations
 
 import json
-import logging
 import os
 import pickle
 import queue
 import signal
 import threading
-import warnings
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, BinaryIO
@@ -46,12 +44,13 @@ def main() -> None:
 
 
 def _silence() -> None:
-    """Let nothing that a library prints, warns or logs about a file out of this process; leave Ctrl-C to the parent."""
+    """Keep what libraries print from the answers, and standard error, which holds warnings and logs, from anyone.
+
+    Either may name a file or a patient. Ctrl-C is the parent's business.
+    """
     nowhere = os.open(os.devnull, os.O_RDWR)
     for descriptor in (0, 1, 2):
         os.dup2(nowhere, descriptor)
-    warnings.simplefilter("ignore")
-    logging.disable(logging.CRITICAL)
     signal.signal(signal.SIGINT, signal.SIG_IGN)
 
 

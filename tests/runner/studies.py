@@ -160,11 +160,11 @@ class FakeEvaluation:
             Path(self.breaks).touch()
         if self.chatty:
             _chat()
-        if self.takes_s:
-            time.sleep(self.takes_s)
         if self.log:
             with Path(self.log).open("a") as file:
                 file.write(f"{place[0]} {place[1]}\n")
+        if self.takes_s:
+            time.sleep(self.takes_s)
         if place in self.dies_on:
             self._die()
         if place in self.raises_on:

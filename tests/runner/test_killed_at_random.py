@@ -27,16 +27,16 @@ def undisturbed(tmp_path_factory: pytest.TempPathFactory) -> Path:
     return dossier
 
 
-def start(dossier: Path, log: Path, workers: int = 2) -> ForkServerProcess:
+def start(dossier: Path, log: Path, workers: int = 2, takes_s: float = TAKES_S) -> ForkServerProcess:
     """Do a whole run in a process of its own."""
-    process = PROCESSES.Process(target=whole_run, args=(dossier, log, workers))
+    process = PROCESSES.Process(target=whole_run, args=(dossier, log, workers, takes_s))
     process.start()
     return process
 
 
-def whole_run(dossier: Path, log: Path, workers: int) -> None:
+def whole_run(dossier: Path, log: Path, workers: int, takes_s: float) -> None:
     """What that process does."""
-    run_study(dossier, study(), workers=workers, evaluation=FakeEvaluation(takes_s=TAKES_S, log=str(log)))
+    run_study(dossier, study(), workers=workers, evaluation=FakeEvaluation(takes_s=takes_s, log=str(log)))
 
 
 def wait_for_frames(log: Path, frames: int, process: ForkServerProcess) -> None:
@@ -99,8 +99,9 @@ def test_workers_killed_at_random_cost_no_frame(tmp_path: Path, undisturbed: Pat
 
 def test_workers_do_not_outlive_a_run_that_is_killed(tmp_path: Path) -> None:
     dossier, log = tmp_path / "d", tmp_path / "log"
-    process = start(dossier, log)
-    wait_for_frames(log, 3, process)
+    # Each frame takes a minute: nobody is to wait until it is done.
+    process = start(dossier, log, takes_s=60)
+    wait_for_frames(log, 2, process)
     workers = Killed.workers_of(process.pid or 0)
     assert len(workers) == 2
     assert kill(process)

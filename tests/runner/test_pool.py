@@ -147,9 +147,11 @@ def test_a_dossier_that_can_no_longer_be_written_stops_the_run_without_naming_it
 
 
 def test_nothing_that_a_library_prints_or_warns_of_leaves_a_worker(tmp_path: Path) -> None:
+    # Had anything mixed with a worker's answers, its frames would be refused.
     code = (
         "from pathlib import Path; from tests.runner.studies import *; "
-        f"run_study(Path({str(tmp_path / 'd')!r}), study(1, 3, 1), evaluation=FakeEvaluation(chatty=True))"
+        f"merged = run_study(Path({str(tmp_path / 'd')!r}), study(1, 3, 1), evaluation=FakeEvaluation(chatty=True)); "
+        "assert merged.left_out == ()"
     )
     ran = subprocess.run([sys.executable, "-c", code], capture_output=True, check=True, env=environment())
     assert ran.stdout + ran.stderr == b""
