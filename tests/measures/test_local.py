@@ -53,8 +53,8 @@ def test_patches_are_those_counted_by_hand(
     _close(measure_patches(grid, before, after), _by_hand(before, after, content, height, width, covered))
 
 
-def test_patches_of_real_pairs_are_those_counted_by_hand(real_pair: tuple[str, Plane, Plane]) -> None:
-    _, before, after = real_pair
+def test_patches_of_a_real_pair_are_those_counted_by_hand(ct_pair: tuple[Plane, Plane]) -> None:
+    before, after = ct_pair
     content = before > np.median(before)
     covered = np.zeros(before.shape, np.bool_)
     covered[: before.shape[0] // 2] = True

@@ -91,7 +91,7 @@ def test_places_in_another_frame_are_refused() -> None:
         measure_noise(places, before[:-8])
 
 
-# Computed by hand: the halves with the least spread are 1 2 2.1 3, then 2 2.1 (3 halves to 2 of 3).
+# Computed by hand: of 1 2 2.1 3 7 9 the half of least spread is 2 2.1 3, and of that 2 2.1.
 def test_the_mode_by_halving_of_a_small_sample() -> None:
     assert half_sample_mode(np.array([9.0, 1.0, 2.0, 2.1, 3.0, 7.0])) == pytest.approx(2.05)
     assert half_sample_mode(np.array([4.0])) == 4

@@ -94,7 +94,7 @@ def test_padding_takes_no_part() -> None:
     before[0] = -2000
     padding = before == -2000
     everything = np.ones(before.shape, np.bool_)
-    figures = measure_region(prepare_region(before, everything * 1.0, everything, padding), before + 1)
+    figures = measure_region(prepare_region(before, np.ones(before.shape), everything, padding), before + 1)
     assert (figures.mean_before, figures.sd_before, figures.bias) == (10, 0, 1)
 
 
@@ -138,6 +138,6 @@ def test_the_map_of_a_region_is_averaged_where_it_is_defined() -> None:
     inside = np.zeros(before.shape, np.bool_)
     inside[1] = True
     picture = np.array([[9, 9, 9], [0.5, 0.7, np.nan], [9, 9, 9]])
-    baseline = prepare_region(before, inside * 1.0, inside)
+    baseline = prepare_region(before, inside.astype(np.float64), inside)
     assert average_map(baseline, picture) == pytest.approx(0.6)
     assert average_map(baseline, np.full((3, 3), np.nan)) is None
