@@ -7,6 +7,7 @@ precision counts as none: the dial keeps clear of both.
 
 from __future__ import annotations
 
+import functools
 import importlib
 import importlib.metadata
 import math
@@ -42,6 +43,13 @@ def _library() -> ModuleType:
         raise CodecUnavailable("jpeg2000: pylibjpeg-openjpeg is not on this machine") from error
 
 
+@functools.cache
+def _version(numbers: tuple[int, ...]) -> str:
+    """(2, 5, 2) -> 'OpenJPEG 2.5.2 in pylibjpeg-openjpeg 2.6.0'; kept, since every row asks and files are read."""
+    carrier = importlib.metadata.version("pylibjpeg-openjpeg")
+    return f"OpenJPEG {'.'.join(str(number) for number in numbers)} in pylibjpeg-openjpeg {carrier}"
+
+
 @dataclass(frozen=True, slots=True)
 class Jpeg2000:
     """Irreversible JPEG 2000 with one quality layer."""
@@ -67,8 +75,7 @@ class Jpeg2000:
     @property
     def version(self) -> str:
         """OpenJPEG's version and that of the package that carries it."""
-        numbers = ".".join(str(number) for number in _library().get_openjpeg_version())
-        return f"OpenJPEG {numbers} in pylibjpeg-openjpeg {importlib.metadata.version('pylibjpeg-openjpeg')}"
+        return _version(_library().get_openjpeg_version())
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
         """Refuse frames smaller than the wavelet decompositions need, and colour of one bit a channel."""

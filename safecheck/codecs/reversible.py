@@ -7,6 +7,7 @@ larger than one at the true precision.
 
 from __future__ import annotations
 
+import functools
 import importlib
 import importlib.metadata
 from dataclasses import dataclass
@@ -41,8 +42,9 @@ def _library(part: Literal["JPEGLS", "JPEG2K"]) -> ModuleType:
     return library
 
 
+@functools.cache
 def _version(library_version: str) -> str:
-    """'charls 2.4.3' -> 'charls 2.4.3 in imagecodecs 2026.3.6'."""
+    """'charls 2.4.3' -> 'charls 2.4.3 in imagecodecs 2026.3.6'; kept, since every row asks and files are read."""
     return f"{library_version} in imagecodecs {importlib.metadata.version('imagecodecs')}"
 
 
@@ -97,8 +99,7 @@ class JpegLs:
         """
         admit(self, raster)
         library, form = _library("JPEGLS"), raster.format
-        offset = np.int32(-form.lowest)
-        unsigned = (raster.samples.astype(np.int32) + offset).astype(_unsigned(form))
+        unsigned = _offset(raster.samples, -form.lowest).astype(_unsigned(form), copy=False)
         try:
             # Noise can come out larger than it went in, for which the library's own buffer is too small.
             code = bytes(library.jpegls_encode(unsigned, level=0, out=2 * unsigned.nbytes + _HEADROOM_BYTES))
@@ -126,9 +127,12 @@ class JpegLs:
             decoded = library.jpegls_decode(code)
         except LIBRARY_ERRORS as error:
             raise CorruptCode(f"{self.name}: CharLS cannot read the code: {error}") from error
-        if format.signed:
-            decoded = decoded.astype(np.int32) + np.int32(format.lowest)
-        return fitted(decoded, self.name, format, shape)
+        return fitted(_offset(decoded, format.lowest), self.name, format, shape)
+
+
+def _offset(samples: Samples, offset: int) -> Samples:
+    """Add a constant, in a type that holds the sum."""
+    return samples.astype(np.int32) + np.int32(offset) if offset else samples
 
 
 def _unsigned(format: PixelFormat) -> np.dtype[np.uint8] | np.dtype[np.uint16]:  # noqa: A002
