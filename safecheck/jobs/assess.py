@@ -26,6 +26,7 @@ from safecheck.policy.plan import Scope
 from safecheck.record.document import CodecCheckEntry, RecordDocument
 from safecheck.record.run import RunFacts
 from safecheck.regions.region import RegionSet
+from safecheck.runner.executor import Executor
 from safecheck.runner.manifest import Manifest, begin, describe, finish
 from safecheck.runner.merge import Merged, merge
 from safecheck.runner.pool import LocalPool, cores
@@ -138,7 +139,9 @@ def _loaded(request: AssessRequest) -> LoadedPlan:
     return LoadedPlan(plan, loaded.source, request.regions_file or loaded.regions_file)
 
 
-def assess(request: AssessRequest, tell: Tell, report: Callable[[Progress], None]) -> RecordDocument:
+def assess(
+    request: AssessRequest, tell: Tell, report: Callable[[Progress], None], executor: Executor | None = None
+) -> RecordDocument:
     """Run the main job, or go on with one that was stopped, and write the dossier.
 
     Parameters
@@ -149,6 +152,8 @@ def assess(request: AssessRequest, tell: Tell, report: Callable[[Progress], None
         Takes sentences for the user.
     report
         Takes how far the run is.
+    executor
+        Who performs the tasks; None for processes on this machine.
 
     Raises
     ------
@@ -164,14 +169,14 @@ def assess(request: AssessRequest, tell: Tell, report: Callable[[Progress], None
     started, sessions = _open_session(work)
     declared = prepared.site.declared(prepared.loaded.sha256, prepared.studies)
     clock = {"start": time.monotonic()}
-    workers = request.workers or cores()
+    executor = executor or LocalPool(request.workers or cores())
     tell("Checking codecs")
     checks = selftest.run()
     run(
         prepared.tasks,
         Treatment(prepared.assignment, evaluate, open_instance),
         work,
-        executor=LocalPool(workers),
+        executor=executor,
         warm_up=lambda: _warm_up(tell),
         report=report,
     )
@@ -184,7 +189,7 @@ def assess(request: AssessRequest, tell: Tell, report: Callable[[Progress], None
     facts = RunFacts(
         started=started,
         finished=datetime.datetime.now(datetime.UTC),
-        workers=workers,
+        workers=executor.workers,
         seconds={
             "assess": round(clock["assessed"] - clock["start"], 3),
             "record": round(time.monotonic() - clock["assessed"], 3),
