@@ -111,6 +111,8 @@ def _listed(content: Content, listing: Listing) -> tuple[str, str]:
 
 def _doubt(header: Header, facts: Facts) -> tuple[str, str] | None:
     """(reason code, detail) where the header or the pixel element forbids any further reading."""
+    if header.cut:
+        return "truncated", "the file ends before its header does"
     if not header.syntax_declared:
         return "header", "Transfer Syntax UID is missing"
     if header.syntax.coding in (Coding.UNKNOWN, Coding.REFERENCED):

@@ -10,6 +10,7 @@ import struct
 from dataclasses import dataclass
 from typing import BinaryIO
 
+from pydicom.dataelem import RawDataElement
 from pydicom.dataset import Dataset
 from pydicom.filereader import read_dataset
 from pydicom.tag import BaseTag, Tag
@@ -66,6 +67,8 @@ class Header:
     object_uid: str
     """SOP Class UID, of the data set or else of the file meta information."""
     pixels: PixelElement | None
+    cut: bool
+    """Whether the file ends within an element before any pixel data."""
 
 
 def read_header(stream: BinaryIO) -> Header:
@@ -129,6 +132,7 @@ def _read(stream: BinaryIO) -> Header:
         syntax_declared=bool(uid),
         object_uid=text(dataset, 0x00080016) or text(meta, 0x00020002),
         pixels=pixels,
+        cut=pixels is None and _is_cut(dataset, stream.seek(0, os.SEEK_END)),
     )
 
 
@@ -149,6 +153,20 @@ def _encoding(uid: str, stream: BinaryIO) -> tuple[bool, bool]:
     stream.seek(-len(start), os.SEEK_CUR)
     explicit = start[4:6].isalpha() and start[4:6].isupper()
     return not explicit, not (explicit and start[:1] == b"\0")
+
+
+def _is_cut(dataset: Dataset, end: int) -> bool:
+    """Whether the last element read reaches beyond the end of the file, or leaves a rest too short for another.
+
+    The library takes both for the end of the data set. A sequence of undefined length as the last element tells
+    nothing.
+    """
+    if not dataset:
+        return False
+    last = dataset.get_item(max(dataset.keys()), keep_deferred=True)
+    if not isinstance(last, RawDataElement) or last.length == _UNDEFINED:
+        return False
+    return last.value_tell + last.length != end
 
 
 def _locate_pixels(stream: BinaryIO, little: bool, syntax: Syntax) -> PixelElement | None:

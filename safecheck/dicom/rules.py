@@ -113,7 +113,7 @@ def _not_an_image(header: Header, facts: Facts) -> str:
 
 
 def _no_pixels(header: Header, facts: Facts) -> str:
-    return "" if header.pixels else (facts.object_class or "no object class")
+    return "" if header.pixels or header.cut else (facts.object_class or "no object class")
 
 
 def _video(header: Header, _: Facts) -> str:
@@ -173,7 +173,7 @@ RULES: tuple[Rule, ...] = (
         "",
         _not_an_image,
     ),
-    Rule("no-pixels", "No Pixel Data element.", "", _no_pixels),
+    Rule("no-pixels", "No Pixel Data element, in a file that does not end within its header.", "", _no_pixels),
     Rule("video", "Transfer syntax of MPEG-2, AVC/H.264, HEVC/H.265 or SMPTE ST 2110.", "", _video),
     Rule(
         "dose-page",

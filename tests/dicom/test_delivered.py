@@ -90,7 +90,7 @@ def source(uid: str) -> list[Dataset]:
         ({}, "geometry and numbers"),
         ({"SeriesInstanceUID": f"{ROOT}3.7"}, "geometry and numbers"),
         ({"InstanceNumber": 40}, "geometry"),
-        ({"ImagePositionPatient": ["0", "0", "5.004"]}, "geometry and numbers"),
+        ({"ImagePositionPatient": ["0", "0", "5.006"]}, "geometry and numbers"),
         ({"ImagePositionPatient": None}, "series and instance number"),
         ({"ImagePositionPatient": None, "SeriesInstanceUID": f"{ROOT}3.7"}, "series and instance number"),
         ({"PatientID": None}, "geometry and numbers"),
@@ -129,6 +129,13 @@ def test_a_contradiction_is_said_and_no_weaker_way_tried(tmp_path: Path, changes
     found = match([original], [copy])
     assert [each.why for each in found.unmatched_originals] == [why]
     assert [each.why for each in found.unmatched_delivered] == [why]
+
+
+def test_a_copy_that_names_another_original_is_not_given_to_the_one_it_resembles(tmp_path: Path) -> None:
+    named = made(tmp_path, "o1", 1)
+    alike = made(tmp_path, "o2", 2, Rows=4, Columns=16)
+    copy = made(tmp_path, "d", 2, **NEW, Rows=4, Columns=16, SourceImageSequence=source(f"{ROOT}4.1"))
+    assert match([named, alike], [copy]).pairs == ()
 
 
 def test_a_series_is_matched_slice_by_slice_in_any_order(tmp_path: Path) -> None:

@@ -145,6 +145,15 @@ def test_a_cut_file_is_refused(tmp_path: Path) -> None:
     assert take_in(path).counts == {"assessed": 0, "truncated": 1}
 
 
+@pytest.mark.parametrize("left", [3, 9, 44])
+def test_a_file_cut_within_its_header_is_not_taken_for_one_without_pixels(tmp_path: Path, left: int) -> None:
+    path = save(image(1, PixelData=None, ImageComments="x" * 200), tmp_path / "a")
+    assert take_in(path).counts == {"assessed": 0, "no-pixels": 1}
+    content = path.read_bytes()
+    path.write_bytes(content[: content.index(b"\x28\x00\x10\x00US") + left])
+    assert take_in(path).counts == {"assessed": 0, "truncated": 1}
+
+
 def test_a_deflated_file_is_read(tmp_path: Path) -> None:
     path = save(image(1, Rows=64, Columns=64, PixelData=bytes(8192)), tmp_path / "a", DEFLATED)
     (found,) = take_in(path).instances
