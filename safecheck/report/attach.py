@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 
 from pypdf import PdfReader, PdfWriter
+from pypdf.generic import NameObject, TextStringObject
 
 from safecheck.errors import DossierError
 
@@ -16,7 +17,11 @@ ATTACHMENT = "record.json"
 def attached(pdf: bytes, record: bytes) -> bytes:
     """Return the PDF with the record's bytes attached; the same input gives the same bytes."""
     writer = PdfWriter(clone_from=io.BytesIO(pdf))
-    writer.add_attachment(ATTACHMENT, record)
+    embedded = writer.add_attachment(ATTACHMENT, record)
+    # Readers differ in which of the two names they show.
+    embedded.alternative_name = TextStringObject(ATTACHMENT)
+    embedded.description = TextStringObject("The record, canonical JSON")
+    embedded.subtype = NameObject("/application/json")
     buffer = io.BytesIO()
     writer.write(buffer)
     return buffer.getvalue()

@@ -200,6 +200,7 @@ class PlaceCard:
 
     head: str
     value: str
+    unit: str
     measure: str
     lines: tuple[tuple[str, str], ...]
     """Label and value."""

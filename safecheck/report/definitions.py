@@ -28,12 +28,16 @@ TERMS: tuple[tuple[str, str], ...] = (
     (
         "Bases of a ratio",
         "bits stored: pixels × channels × bits stored ÷ 8; bits allocated: the same with bits allocated; content: "
-        "the first, content pixels only; lossless: bytes of the smaller of JPEG-LS and JPEG 2000 5/3; now: bytes as they "
-        "lie in the archive. The bytes after are those of the code stream alone",
+        "the first, content pixels only; lossless: bytes of the smaller of JPEG-LS and JPEG 2000 5/3; now: bytes as "
+        "they lie in the archive. The bytes after are those of the code stream alone",
     ),
     ("Content", "pixels that are not padding and, where the rule of the modality says so, not surrounding air"),
     ("Patch", "complete window of 8×8 pixels on a fixed grid from (0, 0), with at least half content"),
-    ("Window", "a display window that turns values into display levels from 0 to 255, here unrounded"),
+    (
+        "Window",
+        "a display window that turns values into display levels from 0 to 255, here unrounded. A window of the file is "
+        "the one that each file carries; its centre and width stand with each row of windows.parquet",
+    ),
     (
         "Group of like images",
         "images that a policy would treat alike: modality, body part, class of slice thickness, kernel",

@@ -42,7 +42,11 @@ def draw_pdf(report: Report) -> bytes:
     buffer = io.BytesIO()
 
     def furnish(canvas: Any, _document: Any) -> None:  # noqa: ANN401 - reportlab's own objects
-        draw_page(canvas, report, canvas.getPageNumber())
+        page = canvas.getPageNumber()
+        if page == 1:
+            canvas.setViewerPreference("DisplayDocTitle", "true")
+            canvas.showOutline()
+        draw_page(canvas, report, page)
 
     document = BaseDocTemplate(
         buffer,

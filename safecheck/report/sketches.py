@@ -23,7 +23,6 @@ from safecheck.report.theme import (
     RULE,
     TEXT_WIDTH,
     WHITE,
-    fit_text,
     load_fonts,
     markup,
     style,
@@ -33,10 +32,11 @@ __all__ = ["cards_flowables", "sketch_drawing"]
 
 _BOX = 72.0
 """Largest side of a sketch, in points."""
-_SMALL_BOX = 58.0
+_SMALL_BOX = 46.0
 """The same beside pictures."""
 _MARGIN = 15.0
-_PICTURE = 112.0
+_PICTURE = 93.0
+_BAR_HEIGHT = 15.0
 
 
 def sketch_drawing(card: PlaceCard, box: float = _BOX) -> Drawing:
@@ -110,7 +110,7 @@ def _words(card: PlaceCard) -> list[Paragraph]:
     """What, how much and where, in words."""
     lines = [
         Paragraph(markup(card.head), style("card-head")),
-        Paragraph(markup(card.value), style("card-value")),
+        Paragraph(f'<font size="12.5">{markup(card.value)}</font> {markup(card.unit)}', style("card-value")),
         Paragraph(markup(card.measure), style("card")),
     ]
     for label, value in card.lines:
@@ -122,15 +122,16 @@ def _words(card: PlaceCard) -> list[Paragraph]:
 
 
 def _wide(card: PlaceCard, pictures: Pictures) -> Flowable:
-    """Words and sketch on the left, three pictures on the right."""
-    first = TEXT_WIDTH - 3 * (_PICTURE + 8)
+    """Words, sketch and three pictures side by side."""
+    sketch = _SMALL_BOX + _MARGIN + 14
+    first = TEXT_WIDTH - sketch - 3 * (_PICTURE + 6)
     shown = [
         _Picture(pictures.original, pictures.mark, "original", pictures.window),
         _Picture(pictures.recompressed, pictures.mark, "recompressed", pictures.window),
-        _Picture(pictures.difference, pictures.mark, "after minus before", "", (pictures.scale, pictures.unit)),
+        _Picture(pictures.difference, pictures.mark, "after minus before", f"in {pictures.unit}", pictures.scale),
     ]
-    cells = [[[*_words(card), sketch_drawing(card, _SMALL_BOX)], *shown]]
-    table = Table(cells, colWidths=[first, *[_PICTURE + 8] * 3], hAlign="LEFT")
+    cells = [[_words(card), sketch_drawing(card, _SMALL_BOX), *shown]]
+    table = Table(cells, colWidths=[first, sketch, *[_PICTURE + 6] * 3], hAlign="LEFT")
     table.setStyle(_CARD_STYLE)
     return table
 
@@ -139,46 +140,37 @@ class _Picture(Flowable):  # type: ignore[misc] # reportlab is untyped
     """A crop, its patch outlined, with what it shows and its window or scale below."""
 
     def __init__(
-        self,
-        pixels: Grey,
-        mark: tuple[int, int, int, int],
-        name: str,
-        window: str,
-        scale: tuple[float, str] | None = None,
+        self, pixels: Grey, mark: tuple[int, int, int, int], name: str, about: str, scale: float | None = None
     ) -> None:
         super().__init__()
-        self._pixels, self._mark, self._name, self._window, self._scale = pixels, mark, name, window, scale
+        self._pixels, self._mark, self._scale = pixels, mark, scale
         rows, columns = pixels.shape[:2]
         self._zoom = _PICTURE / max(rows, columns)
-        self.width, self.height = columns * self._zoom, rows * self._zoom + 30
+        self.width = columns * self._zoom
+        self._caption = Paragraph(f"{markup(name)}<br/>{markup(about)}", style("picture"))
+        self._below = self._caption.wrap(_PICTURE, 100)[1] + 2 + (_BAR_HEIGHT if scale is not None else 0)
+        self.height = rows * self._zoom + self._below
 
     def wrap(self, *_available: float) -> tuple[float, float]:
         """Size in points."""
         return self.width, self.height
 
     def draw(self) -> None:
-        """Draw the crop from the bottom up: scale or window, name, pixels, outline of the patch."""
+        """Draw the crop, the outline of the patch, the scale and the caption."""
         canvas = self.canv
         rows, columns = self._pixels.shape[:2]
-        high = rows * self._zoom
         # Whole copies of each pixel, so that no reader smooths the crop.
         copies = max(1, 320 // max(rows, columns))
         enlarged = np.repeat(np.repeat(self._pixels, copies, axis=0), copies, axis=1)
         reader = ImageReader(io.BytesIO(png_bytes(enlarged)))
-        canvas.drawImage(reader, 0, 30, self.width, high)
+        canvas.drawImage(reader, 0, self._below, self.width, rows * self._zoom)
         canvas.setStrokeColor(INK)
         canvas.setLineWidth(0.4)
-        canvas.rect(0, 30, self.width, high)
-        self._outline(30 + high)
-        canvas.setFillColor(INK)
-        canvas.setFont(REGULAR, 7.2)
-        canvas.drawString(0, 21, self._name)
-        if self._scale is None:
-            canvas.setFont(REGULAR, 6.2)
-            canvas.setFillColor(MID)
-            canvas.drawString(0, 13, fit_text(self._window, REGULAR, 6.2, _PICTURE))
-        else:
-            self._bar(*self._scale)
+        canvas.rect(0, self._below, self.width, rows * self._zoom)
+        self._outline(self.height)
+        self._caption.drawOn(canvas, 0, 0)
+        if self._scale is not None:
+            self._bar(self._scale, self._below - _BAR_HEIGHT)
 
     def _outline(self, top: float) -> None:
         """The patch, in white on black, so that it shows on any grey."""
@@ -189,17 +181,16 @@ class _Picture(Flowable):  # type: ignore[misc] # reportlab is untyped
             self.canv.setLineWidth(width)
             self.canv.rect(column * zoom, top - (row + rows) * zoom, columns * zoom, rows * zoom)
 
-    def _bar(self, scale: float, unit: str) -> None:
+    def _bar(self, scale: float, base: float) -> None:
         """Greys from minus to plus the scale, with their figures."""
         canvas, steps = self.canv, 32
         for step in range(steps):
             canvas.setFillGray(step / (steps - 1))
-            canvas.rect(self.width * step / steps, 11, self.width / steps + 0.3, 6, stroke=0, fill=1)
+            canvas.rect(self.width * step / steps, base + 7, self.width / steps + 0.3, 5, stroke=0, fill=1)
         canvas.setStrokeColor(HAIR)
-        canvas.rect(0, 11, self.width, 6)
-        canvas.setFillColor(MID)
-        canvas.setFont(REGULAR, 6.2)
-        text = figure(scale)
-        canvas.drawString(0, 4, f"\u2212{text}")
-        canvas.drawCentredString(self.width / 2, 4, "0")
-        canvas.drawRightString(self.width, 4, fit_text(f"+{text} {unit}", REGULAR, 6.2, self.width / 2))
+        canvas.rect(0, base + 7, self.width, 5)
+        canvas.setFillColor(INK)
+        canvas.setFont(REGULAR, 6.4)
+        canvas.drawString(0, base + 1, f"\u2212{figure(scale)}")
+        canvas.drawCentredString(self.width / 2, base + 1, "0")
+        canvas.drawRightString(self.width, base + 1, f"+{figure(scale)}")

@@ -102,7 +102,7 @@ def _body_row(row: Row, numbers: Sequence[bool]) -> list[Any]:
 
 
 def column_widths(table: Table, total: float = TEXT_WIDTH) -> list[float]:
-    """Share out the width: figures get what they need, words what is left, in proportion to their length.
+    """Share out the width: figures get what they need, words what is left, the longest giving way first.
 
     Returns
     -------
@@ -116,13 +116,28 @@ def column_widths(table: Table, total: float = TEXT_WIDTH) -> list[float]:
         weights = [1.0 if column.number else 2.5 for column in table.columns]
         share = spare / sum(weights)
         return [width + share * weight for width, weight in zip(natural, weights, strict=True)]
-    room = [width - low for width, low in zip(natural, least, strict=True)]
-    needed = -spare
-    if needed <= sum(room):
-        part = needed / sum(room)
-        return [width - part * extra for width, extra in zip(natural, room, strict=True)]
-    scale = total / sum(least)
-    return [width * scale for width in least]
+    if sum(least) >= total:
+        return [width * total / sum(least) for width in least]
+    return _filled(natural, least, total)
+
+
+def _filled(natural: Sequence[float], least: Sequence[float], total: float) -> list[float]:
+    """Cut the widest columns to one width, so that narrow ones keep theirs and do not wrap."""
+    low, high = 0.0, max(natural)
+    for _ in range(50):
+        cap = (low + high) / 2
+        if _used(natural, least, cap) > total:
+            high = cap
+        else:
+            low = cap
+    widths = [max(small, min(width, low)) for width, small in zip(natural, least, strict=True)]
+    widths[widths.index(max(widths))] += total - sum(widths)
+    return widths
+
+
+def _used(natural: Sequence[float], least: Sequence[float], cap: float) -> float:
+    """Width of all columns if none is wider than `cap`, short of what it needs at least."""
+    return sum(max(small, min(width, cap)) for width, small in zip(natural, least, strict=True))
 
 
 def _cells(table: Table, index: int) -> Iterator[str]:

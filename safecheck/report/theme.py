@@ -169,7 +169,8 @@ def style(name: str) -> ParagraphStyle:
         "head-number": lambda: _style(MEDIUM, 7.3, 9, alignment=TA_RIGHT),
         "contents": lambda: _style(REGULAR, 8.6, 12),
         "card-head": lambda: _style(MEDIUM, 8.4, 11),
-        "card-value": lambda: _style(LIGHT, 12.5, 16),
+        "card-value": lambda: _style(REGULAR, 8, 15.5),
+        "picture": lambda: _style(REGULAR, 6.6, 8.2),
         "card": lambda: _style(REGULAR, 7.6, 10.2),
     }
     return styles[name]()

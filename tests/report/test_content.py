@@ -158,7 +158,7 @@ def test_controls_not_held_are_named_with_their_place() -> None:
 
 def test_every_ledger_has_all_bases_and_marks_the_analysis_codec() -> None:
     blocks = section(report(), "Ratio ledger")
-    table = tables(blocks)[0]
+    table = tables(blocks)[1]
     heads = {f"{column.over} {column.head}".strip() for column in table.columns}
     assert {"Bits stored total", "Bits allocated", "Content", "Smaller than lossless", "Smaller than now"} <= heads
     names = [row.cells[0] for row in table.rows]
@@ -202,7 +202,7 @@ def test_cut_lists_of_worst_places_keep_the_worst_of_every_candidate_and_group()
     blocks = section(report(), "Worst places")
     cards = next(block for block in blocks if isinstance(block, Places)).cards
     record = make_record()
-    ranks = [int(card.head.rpartition(" ")[2]) for card in cards]
+    ranks = [int(card.head.rpartition("\u00a0")[2]) for card in cards]
     assert ranks.count(1) == len(record.candidates) * len(record.strata)
     assert f"and {len(record.worst_places) - len(cards)} more" in words(blocks)
     assert all(card.pictures is None for card in cards)
@@ -225,3 +225,43 @@ def test_the_plan_stands_as_read_and_the_key_by_its_short_hash() -> None:
     assert "change.reference" in plan
     assert "codec tiled; ratio 5; basis bits-stored; status proposed" in plan
     assert "7f3a90c1" in words(section(made, "What to keep, and review"))
+
+
+def test_a_window_of_the_plan_stands_with_its_centre_and_width() -> None:
+    record = make_record()
+    windows = [{"label": "brain", "centre": 40.0, "width": 80.0, "unit": "HU", "function": "LINEAR", "modality": ""}]
+    plan = record.plan.model_copy(update={"content": record.plan.content | {"windows": windows}})
+    seen = view(record.model_copy(update={"plan": plan}))
+    assert seen.window_words("brain") == "brain (centre 40, width 80 HU)"
+    assert seen.window_words("file window 1") == "file window 1"
+
+
+def test_further_measures_stand_in_groups_of_one_unit() -> None:
+    blocks = section(report(), f"Figures: {CT}")
+    further = [table for table in tables(blocks) if table.columns[0].head == "Measure"]
+    assert len(further) == 2
+    for table in further:
+        assert [row.cells[0] for row in table.rows if row.group] == ["in HU", "in %", "in dB", "in times", "in pixels"]
+        assert {len(row.cells) for row in table.rows if not row.group} == {len(table.columns)}
+
+
+def test_the_worst_of_a_signed_measure_is_the_one_farther_from_zero() -> None:
+    record = make_record(strata=(stratum_of(CT, "CT", 9),))
+    moved = [
+        item.model_copy(update={"least": -0.5, "largest": 0.2}) if item.measure == "bias_content" else item
+        for item in record.figures
+    ]
+    made = report(record.model_copy(update={"figures": tuple(moved)}))
+    further = [table for table in tables(section(made, f"Figures: {CT}")) if table.columns[0].head == "Measure"]
+    row = next(row for row in further[0].rows if row.cells[0] == "Mean error, content")
+    assert all(float(cell.replace("\u2212", "-")) == -0.5 for cell in row.cells[2::2])
+
+
+def test_second_generation_stands_beside_each_candidate_and_on_each_page() -> None:
+    record = make_record(cautions=(*CAUTIONS, CAUTIONS_WHEN["already_lossy"]))
+    note = "second generation: some sources were already lossy"
+    lossy = tuple(item.model_copy(update={"note": note}) for item in record.candidates)
+    made = report(record.model_copy(update={"candidates": lossy}))
+    assert made.marks == ("SECOND GENERATION: sources were already lossy",)
+    names = [row.cells[0] for row in tables(section(made, f"Figures: {CT}"))[0].rows]
+    assert all("second generation" in name for name in names)

@@ -26,6 +26,15 @@ def test_figures_get_the_width_that_they_need_however_long_the_words() -> None:
     assert min(column_widths(table)[1:]) >= text_width(number, REGULAR, 7.6) + 6
 
 
+def test_a_long_column_gives_way_before_short_ones_wrap() -> None:
+    columns = (Column("Candidate"), Column("Outcome"), Column("Place"))
+    outcome = "outside declared limits"
+    table = Table(columns, (Row(("jpeg2000 20:1", outcome, "patient, study, series and image " * 9)),))
+    widths = column_widths(table)
+    assert widths[1] >= text_width(outcome, MEDIUM, 7.6) + 6
+    assert widths[2] == max(widths)
+
+
 def test_a_cut_text_fits_and_ends_in_an_ellipsis() -> None:
     text = fit_text("Recompress archive copies of head CT " * 9, MEDIUM, 8, 100)
     assert text.endswith("…")

@@ -6,8 +6,8 @@ from collections.abc import Sequence
 
 from safecheck.record.document import CandidateEntry, LedgerEntry, StratumEntry
 from safecheck.report.blocks import Bar, Bars, Block, Column, Heading, Prose, Row, Section, Table
-from safecheck.report.numbers import aligned, bytes_text, count, joined
-from safecheck.report.sections.view import View, names_with_status, rest_sentence
+from safecheck.report.numbers import aligned, bytes_text, count, joined, plural
+from safecheck.report.sections.view import View, is_analysis, names_with_status, rest_sentence
 from safecheck.wording import ANALYSIS_CODEC
 
 __all__ = ["ledger"]
@@ -33,20 +33,20 @@ def ledger(view: View) -> Section:
     """The section Ratio ledger."""
     intro = (
         "One code has another ratio on each basis. “10:1” says nothing until the basis is named: bits stored counts "
-        "the bits that hold values, bits allocated the bits of the file, content only pixels that are neither padding nor "
-        "air. What an archive gains stands in the last two columns: against the smallest reversible code, and against "
-        "the bytes that lie there now."
+        "the bits that hold values, bits allocated the bits of the file, content only pixels that are neither padding "
+        "nor air. What an archive gains stands in the last two columns: against the smallest reversible code, and "
+        "against the bytes that lie there now."
     )
     blocks: list[Block] = [Prose(intro)]
-    if any(not item.archive_can_write for item in view.candidates):
+    if any(is_analysis(item) for item in view.candidates):
         blocks.append(Prose(f"* {ANALYSIS_CODEC}. Codecs that an archive can write stand first.", "note"))
+    blocks += _reached(view)
     strata = view.record.strata
     for stratum in strata[:STRATA]:
         blocks += _of_stratum(view, stratum)
     rest = rest_sentence(STRATA, len(strata), "their ledgers stand in record.json")
     if rest:
         blocks.append(Prose(rest, "note"))
-    blocks += _reached(view)
     return Section("Ratio ledger", tuple(blocks))
 
 
@@ -83,7 +83,7 @@ def _of_stratum(view: View, stratum: StratumEntry) -> list[Block]:
 def _starred(candidates: Sequence[CandidateEntry]) -> list[str]:
     """Mark analysis codecs with a star."""
     names = names_with_status(candidates)
-    return [name if item.archive_can_write else f"{name} *" for name, item in zip(names, candidates, strict=True)]
+    return [f"{name} *" if is_analysis(item) else name for name, item in zip(names, candidates, strict=True)]
 
 
 def _bars(names: Sequence[str], entries: Sequence[LedgerEntry], stratum: StratumEntry) -> list[Block]:
@@ -96,7 +96,7 @@ def _bars(names: Sequence[str], entries: Sequence[LedgerEntry], stratum: Stratum
         bars.append(Bar("smallest reversible", stratum.lossless_bytes, text, before=True))
     pairs = zip(names, entries, strict=True)
     bars += [Bar(name, item.code_bytes, bytes_text(item.code_bytes)) for name, item in pairs]
-    return [Bars(tuple(bars), f"Bytes of the same {count(stratum.frames)} frames")]
+    return [Bars(tuple(bars), f"Bytes of the same {plural(stratum.frames, 'frame')}")]
 
 
 def _reversible(entries: Sequence[LedgerEntry]) -> str:
@@ -104,7 +104,7 @@ def _reversible(entries: Sequence[LedgerEntry]) -> str:
     codecs = max((item.lossless_codecs for item in entries), key=lambda table: sum(table.values()))
     if not codecs:
         return "No reversible code was written for these frames."
-    parts = joined([f"{codec} for {count(frames)} frames" for codec, frames in sorted(codecs.items())])
+    parts = joined([f"{codec} for {plural(frames, 'frame')}" for codec, frames in sorted(codecs.items())])
     return (
         f"Smallest reversible code: {parts}. Ratios are of totals over frames; least and largest are of single frames."
     )

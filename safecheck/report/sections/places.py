@@ -69,8 +69,9 @@ def _card(entry: WorstPlaceEntry, crops: Path | None) -> PlaceCard:
     hidden = entry.may_show_text
     pictures = _pictures(crops, entry) if crops is not None and entry.crop and not hidden else None
     return PlaceCard(
-        head=f"{entry.candidate}, place {entry.rank}",
-        value=f"{figure(entry.value)} {entry.unit}",
+        head=f"{entry.candidate}, place\u00a0{entry.rank}",
+        value=figure(entry.value),
+        unit=entry.unit,
         measure=label_of(entry.measure),
         lines=tuple(lines),
         rows=entry.rows,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 from safecheck.measures.catalogue import MEASURES
@@ -210,10 +211,10 @@ def _windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
         cells = zip(
             names_with_status(candidates),
             *(aligned(_of(ssim, part), 4) for part in ("median", "p05", "least")),
-            *_same_decimals(_of(changed, "median"), _of(changed, "p95"), _of(changed, "largest")),
+            *(aligned(_of(changed, part), 2) for part in ("median", "p95", "largest")),
             strict=True,
         )
-        rows += [Row((window,), group=True), *(Row(row) for row in cells)]
+        rows += [Row((view.window_words(window),), group=True), *(Row(row) for row in cells)]
     if not rows:
         return [Prose("No window figures: no display window applies to this group.", "note")]
     return [Table(columns, tuple(rows), caption="On the display windows, over frames")]
@@ -227,26 +228,29 @@ def _further(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
     if not others:
         return []
     blocks: list[Block] = [Heading("Further measures")]
-    parts = [candidates[start : start + PER_TABLE] for start in range(0, len(candidates), PER_TABLE)]
+    size = math.ceil(len(candidates) / math.ceil(len(candidates) / PER_TABLE))
+    parts = [candidates[start : start + size] for start in range(0, len(candidates), size)]
     return [*blocks, *(_further_table(view, stratum.stratum, part, others) for part in parts)]
 
 
 def _further_table(
     view: View, stratum: str, candidates: Sequence[CandidateEntry], measures: Sequence[tuple[str, str, str]]
 ) -> Table:
-    """Median and worst of each measure for up to `PER_TABLE` candidates."""
-    columns = [Column("Measure"), Column("Unit")]
+    """Median and worst of each measure for up to `PER_TABLE` candidates, in groups of one unit."""
+    columns = [Column("Measure")]
     for name in names_with_status(candidates):
         columns += [Column(part, "", number=True, over=name) for part in ("median", "worst")]
-    rows = []
-    for measure, window, unit in measures:
-        entries = [view.figure(item.candidate, stratum, measure, window) for item in candidates]
-        values = [part for item in entries for part in (item.median if item else None, _worst(item))]
-        label = f"{label_of(measure)}, {window}" if window else label_of(measure)
-        rows.append(Row((label, unit, *aligned(values))))
+    rows: list[Row] = []
+    for unit in dict.fromkeys(unit for _, _, unit in measures):
+        rows.append(Row((f"in {unit}" if unit != "1" else "plain numbers",), group=True))
+        for measure, window, _ in (key for key in measures if key[2] == unit):
+            entries = [view.figure(item.candidate, stratum, measure, window) for item in candidates]
+            values = [part for item in entries for part in (item.median if item else None, _worst(item))]
+            label = f"{label_of(measure)}; {view.window_words(window)}" if window else label_of(measure)
+            rows.append(Row((label, *aligned(values))))
     note = (
-        "Worst: the largest value where more is worse, the least where less is worse; "
-        "of signed measures the one farther from zero."
+        "Worst: the largest value where more is worse, the least where less is worse; of signed measures the one "
+        "farther from zero."
     )
     return Table(tuple(columns), tuple(rows), note=note)
 

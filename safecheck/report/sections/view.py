@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 from safecheck.record.document import (
     CandidateEntry,
@@ -22,6 +23,7 @@ from safecheck.wording import CAUTIONS_WHEN, RECORD_TITLE
 __all__ = [
     "View",
     "dash",
+    "is_analysis",
     "names_with_status",
     "place_short",
     "place_words",
@@ -74,6 +76,10 @@ class View:
         """Figures of one measure, or None."""
         return self.figures.get((candidate, stratum, measure, window))
 
+    def window_words(self, label: str) -> str:
+        """Name a window with its centre and width where the plan declares them; those of files differ by file."""
+        return label + _window_setting(label, self.record.plan.content.get("windows"))
+
     def outcomes(self, status: str = "") -> list[OutcomeEntry]:
         """Outcomes of all candidates or those of one status: outside first, then not evaluated, then within."""
         rank = {item.candidate: index for index, item in enumerate(self.candidates)}
@@ -89,10 +95,18 @@ class View:
 _ORDER = ("outside declared limits", "not evaluated", "within declared limits")
 
 
+def _window_setting(label: str, windows: Any) -> str:  # noqa: ANN401 - a table of the plan as read
+    """Centre and width of a window that the plan declares, or nothing."""
+    for window in windows if isinstance(windows, list | tuple) else ():
+        if isinstance(window, dict) and window.get("label") == label:
+            return f" (centre {window['centre']:g}, width {window['width']:g} {window['unit']})"
+    return ""
+
+
 def view_of(record: RecordDocument, record_sha256: str, run: RunFacts, crops: Path | None) -> View:
     """Index a record."""
     rank = {"candidate": 0, "delivered": 1}
-    ordered = sorted(record.candidates, key=lambda item: (not item.archive_can_write, rank[item.role]))
+    ordered = sorted(record.candidates, key=lambda item: (is_analysis(item), rank[item.role]))
     figures = {(item.candidate, item.stratum, item.measure, item.window): item for item in record.figures}
     ledger = {(item.candidate, item.stratum): item for item in record.ledger}
     return View(record, run, record_sha256, crops, tuple(ordered), figures, ledger)
@@ -127,6 +141,11 @@ def stratum_line(stratum: StratumEntry) -> str:
         f"{plural(stratum.studies, 'study', 'studies')}, {plural(stratum.patients, 'patient')}. "
         f"Errors in {stratum.unit}."
     )
+
+
+def is_analysis(item: CandidateEntry) -> bool:
+    """Whether a candidate's codec is one that no archive can write; delivered copies came from an archive."""
+    return item.role == "candidate" and not item.archive_can_write
 
 
 def names_with_status(candidates: Sequence[CandidateEntry]) -> tuple[str, ...]:
