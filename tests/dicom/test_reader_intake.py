@@ -88,6 +88,22 @@ def test_an_extended_offset_table_is_followed(tmp_path: Path) -> None:
             assert np.array_equal(reader.frame(number).raster.samples, frames[number - 1])
 
 
+def test_an_extended_offset_table_tells_apart_what_no_marker_does(tmp_path: Path) -> None:
+    frames = [noise((12, 10), 12, seed=seed) for seed in range(3)]
+    codes = [bytes(imagecodecs.jpegxl_encode(each, lossless=True)) for each in frames]
+    codes = [code + b"\x00" * (len(code) % 2) for code in codes]
+    halves = [part for code in codes for part in (code[:8], code[8:])]
+    starts = np.cumsum([0] + [len(code) + 16 for code in codes[:-1]])  # two items of 8 bytes each
+    dataset = header_for(frames[0], BitsStored=12, NumberOfFrames=3)
+    with pytest.raises(InputRefused, match=r"^frames"):
+        open_instance(write_instance(tmp_path, dataset, halves, J + "110", offset_table=False))
+    dataset.ExtendedOffsetTable = starts.astype("<u8").tobytes()
+    dataset.ExtendedOffsetTableLengths = bytes(24)
+    with open_instance(write_instance(tmp_path, dataset, halves, J + "110", offset_table=False)) as reader:
+        for number in (2, 3, 1):
+            assert np.array_equal(reader.frame(number).raster.samples, frames[number - 1])
+
+
 def test_no_refusal_repeats_what_the_header_holds(tmp_path: Path) -> None:
     canary = "CANARY^NAME"
     for changes in (
