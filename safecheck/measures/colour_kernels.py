@@ -7,11 +7,8 @@ import math
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.measures.compiled import INTEGERS, MASK, VECTOR, WORK_ROW, compiled, types
+from safecheck.measures.compiled import CUBE, CUBE_WORK, INTEGERS, MASK, VECTOR, WORK_ROW, compiled, types
 from safecheck.measures.planes import Mask, Vector
-
-_LAB = types.Array(types.float64, 3, "C", readonly=True)
-_LAB_WORK = types.Array(types.float64, 3, "C")
 
 
 @compiled(types.float64)
@@ -31,7 +28,7 @@ def _to_lab(red: float, green: float, blue: float) -> tuple[float, float, float]
     return 116.0 * y - 16.0, 500.0 * (x - y), 200.0 * (y - z)
 
 
-@compiled(INTEGERS, VECTOR, _LAB_WORK)
+@compiled(INTEGERS, VECTOR, CUBE_WORK)
 def fill_lab(samples: npt.NDArray[np.uint16], light: Vector, lab: npt.NDArray[np.float64]) -> None:
     """L*a*b* of every pixel; `light` gives the linear light of each stored level."""
     for row in range(samples.shape[0]):
@@ -98,7 +95,7 @@ def difference(l1: float, a1: float, b1: float, l2: float, a2: float, b2: float)
     return math.sqrt(square) if square > 0.0 else 0.0
 
 
-@compiled(INTEGERS, _LAB, INTEGERS, VECTOR, MASK, WORK_ROW)
+@compiled(INTEGERS, CUBE, INTEGERS, VECTOR, MASK, WORK_ROW)
 def fill_differences(
     before: npt.NDArray[np.uint16],
     lab: npt.NDArray[np.float64],

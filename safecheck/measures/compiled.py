@@ -13,13 +13,16 @@ from typing import Any, TypeVar
 from numba import njit, types
 
 __all__ = [
-    "BYTES",
+    "CUBE",
+    "CUBE_WORK",
+    "FLAGS",
     "INDEX",
     "INTEGERS",
     "MASK",
     "PLACES",
     "PLANE",
     "REAL",
+    "SPANS",
     "VECTOR",
     "WORK",
     "WORK_ROW",
@@ -33,7 +36,10 @@ PLANE = types.Array(types.float64, 2, "C", readonly=True)
 VECTOR = types.Array(types.float64, 1, "C", readonly=True)
 MASK = types.Array(types.boolean, 2, "C", readonly=True)
 PLACES = types.Array(types.int64, 1, "C", readonly=True)
-BYTES = types.Array(types.uint8, 2, "C", readonly=True)
+FLAGS = types.Array(types.boolean, 1, "C", readonly=True)
+SPANS = types.Array(types.int64, 2, "C", readonly=True)
+CUBE = types.Array(types.float64, 3, "C", readonly=True)
+CUBE_WORK = types.Array(types.float64, 3, "C")
 INTEGERS = types.Array(types.uint16, 3, "C", readonly=True)
 WORK = types.Array(types.float64, 2, "C")
 WORK_ROW = types.Array(types.float64, 1, "C")

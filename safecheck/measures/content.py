@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.measures.planes import Mask, Plane, check_mask, check_plane
+from safecheck.measures.planes import Mask, Plane, check_mask, check_plane, spread
 
 __all__ = ["CT_AIR", "LEAST_SHARE", "MR_BACKGROUND", "PADDING_ONLY", "Content", "find_content"]
 
@@ -137,13 +137,11 @@ def _background_level(values: Plane, padded: Mask) -> tuple[float | None, str]:
 
 def _near_rim(outside: Mask) -> Mask:
     """Pixels within the border's width of the frame's rim or of what lies outside."""
-    from scipy.ndimage import maximum_filter
-
     width = max(BORDER_LEAST, min(outside.shape) // BORDER_SHARE)
-    near = maximum_filter(outside, 2 * width + 1, mode="nearest")
+    near = spread(outside, width)
     inner = np.zeros(outside.shape, np.bool_)
     inner[width:-width, width:-width] = True
-    return np.asarray(near | ~inner, dtype=np.bool_)
+    return near | ~inner
 
 
 def _outside_mr(values: Plane, padded: Mask, level: float) -> Mask:

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.measures.planes import Mask, Places, Plane, check_mask, check_plane
+from safecheck.measures.planes import Mask, Places, Plane, check_mask, check_plane, spread
 from safecheck.measures.selection import percentile
 
 __all__ = [
@@ -172,11 +172,8 @@ def find_edge_band(content: Mask, padding: Mask | None = None) -> EdgeBand:
     ValueError
         If the shapes differ.
     """
-    from scipy.ndimage import maximum_filter, minimum_filter
-
     content = check_mask(content, content.shape)
-    side = 2 * BAND_PIXELS + 1
-    near = maximum_filter(content, side, mode="nearest") & ~minimum_filter(content, side, mode="nearest")
+    near = spread(content, BAND_PIXELS) & spread(~content, BAND_PIXELS)
     if padding is not None:
         near &= ~check_mask(padding, content.shape)
     return EdgeBand(np.flatnonzero(near).astype(np.int64))

@@ -7,7 +7,7 @@ from typing import Any, TypeAlias
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["Mask", "Places", "Plane", "Vector", "check_mask", "check_plane"]
+__all__ = ["Mask", "Places", "Plane", "Vector", "check_mask", "check_plane", "spread"]
 
 Plane: TypeAlias = npt.NDArray[np.float64]
 """(rows, columns), values in one stated unit."""
@@ -45,3 +45,16 @@ def check_mask(mask: npt.NDArray[Any], shape: tuple[int, ...]) -> Mask:
     if mask.dtype != np.bool_ or mask.shape != shape:
         raise ValueError(f"expected a boolean mask of shape {shape}, found {mask.dtype} of shape {mask.shape}")
     return np.ascontiguousarray(mask)
+
+
+def spread(mask: Mask, reach: int) -> Mask:
+    """Pixels within `reach` rows and columns of a True one, itself included."""
+    tall = mask.copy()
+    for step in range(1, min(reach, mask.shape[0] - 1) + 1):
+        tall[step:] |= mask[:-step]
+        tall[:-step] |= mask[step:]
+    wide = tall.copy()
+    for step in range(1, min(reach, mask.shape[1] - 1) + 1):
+        wide[:, step:] |= tall[:, :-step]
+        wide[:, :-step] |= tall[:, step:]
+    return wide

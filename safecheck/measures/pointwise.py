@@ -108,11 +108,11 @@ def _upper_percentile(before: Plane, after: Plane, mask: Mask, tops: Plane, coun
     largest error, and only groups above it need be looked into.
     """
     from safecheck.measures.pointwise_kernels import GROUP, collect_above
+    from safecheck.measures.selection_kernels import select_pair
 
     rank, part = rank_of(count, _PERCENT)
     needed = count - rank
-    flat = tops.ravel()
-    bound = float(np.partition(flat, flat.size - needed)[flat.size - needed])
+    bound, _ = select_pair(tops.ravel(), tops.size - needed)
     above = collect_above(before, after, mask, tops, bound, GROUP * needed)
     lower = float(above[needed - 1]) if above.size >= needed else bound
     upper = float(above[needed - 2]) if above.size >= needed - 1 else bound

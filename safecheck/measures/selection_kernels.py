@@ -19,6 +19,18 @@ def _fill(values: Vector, low: float, scale: float, counts: np.ndarray) -> None:
 
 
 @compiled()
+def _ends(values: Vector) -> tuple[float, float]:
+    """Least and largest value."""
+    low = high = values[0]
+    for value in values:
+        if value < low:
+            low = value
+        if value > high:
+            high = value
+    return low, high
+
+
+@compiled()
 def _take(values: Vector, low: float, scale: float, first: int, last: int, size: int) -> Vector:
     """Values of the bins first to last."""
     kept = np.empty(size)
@@ -34,9 +46,11 @@ def _take(values: Vector, low: float, scale: float, first: int, last: int, size:
 @compiled(VECTOR, INDEX)
 def select_pair(values: Vector, rank: int) -> tuple[float, float]:
     """Value of the given rank (0 for the least) and the next one, or the same where there is no next."""
-    kept = values.copy()
+    kept = values
     while kept.size > _FEW:
-        low, high = kept.min(), kept.max()
+        low, high = _ends(kept)
+        if low == high:
+            return low, low
         scale = (_BINS - 1) / (high - low)
         if not scale < 1e300:
             break

@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.lib.stride_tricks import sliding_window_view
 
 from safecheck.measures.display import TOP_LEVEL, Rendering, find_clipped, render
 from safecheck.measures.planes import Mask, Places, Plane, Vector, check_mask, check_plane
@@ -41,8 +42,8 @@ class WindowBaseline:
     content: Mask
     scored: Mask
     """Content not clipped in the original, where the 11x11 window lies wholly in the frame."""
-    spans: tuple[Places, Places]
-    """First and end of the columns of the valid part needed: by frame row for filtering, then by row of centres."""
+    spans: Places
+    """(6, rows): see `structural_kernels.compare`."""
     scored_pixels: int
     content_pixels: int
     share_clipped_percent: float | None
@@ -110,7 +111,7 @@ def prepare_window(before: Plane, content: Mask, rendering: Rendering, wanted: M
         variances=variances,
         content=content,
         scored=scored,
-        spans=_spans(reach),
+        spans=_spans(reach, content),
         scored_pixels=int(np.count_nonzero(scored)),
         content_pixels=content_pixels,
         share_clipped_percent=share,
@@ -162,7 +163,7 @@ def measure_window(
         baseline.variances,
         baseline.content,
         baseline.scored,
-        *baseline.spans,
+        baseline.spans,
         scores,
         picture,
         by_column,
@@ -230,18 +231,31 @@ def _valid(shape: tuple[int, ...]) -> Mask:
     return valid
 
 
-def _spans(reach: Mask) -> tuple[Places, Places]:
-    """Columns of the valid part that are needed: by frame row for filtering along, then by row of centres."""
-    rows, columns = reach.shape
+def _spans(reach: Mask, content: Mask) -> Places:
+    """Columns needed in each row: of the valid part for filtering along and down, and of the frame for showing."""
+    columns = reach.shape[1]
     half = SIDE // 2
-    some = reach.any(axis=1)
-    firsts = np.where(some, reach.argmax(axis=1) - half, columns)
-    lasts = np.where(some, columns - reach[:, ::-1].argmax(axis=1) - half, 0)
-    wide_firsts, wide_lasts = np.full(rows, columns), np.zeros(rows, np.int64)
-    for row in range(rows):
-        around = slice(max(row - half, 0), row + half + 1)
-        wide_firsts[row], wide_lasts[row] = firsts[around].min(), lasts[around].max()
-    return (
-        np.concatenate([wide_firsts, firsts]).astype(np.int64),
-        np.concatenate([wide_lasts, lasts]).astype(np.int64),
-    )
+    firsts, lasts = _ends(reach)
+    # A window centred on any of eleven rows reaches this one.
+    wide_firsts = sliding_window_view(np.pad(firsts, half, constant_values=columns), SIDE).min(axis=1)
+    wide_lasts = sliding_window_view(np.pad(lasts, half), SIDE).max(axis=1)
+    shown_firsts, shown_lasts = _ends(content)
+    return np.stack(
+        [
+            wide_firsts - half,
+            wide_lasts - half,
+            firsts - half,
+            lasts - half,
+            np.minimum(shown_firsts, np.maximum(wide_firsts - half, 0)),
+            np.maximum(shown_lasts, np.where(wide_lasts > 0, wide_lasts + half, 0)),
+        ]
+    ).astype(np.int64)
+
+
+def _ends(mask: Mask) -> tuple[Places, Places]:
+    """First column and end of the True pixels of each row; where there is none, an end before its beginning."""
+    some = mask.any(axis=1)
+    columns = mask.shape[1]
+    firsts = np.where(some, mask.argmax(axis=1), columns)
+    lasts = np.where(some, columns - mask[:, ::-1].argmax(axis=1), 0)
+    return firsts, lasts

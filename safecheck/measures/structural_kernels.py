@@ -4,7 +4,20 @@ from __future__ import annotations
 
 import numpy as np
 
-from safecheck.measures.compiled import INDEX, MASK, PLACES, PLANE, VECTOR, WORK, WORK_ROW, compiled, types
+from safecheck.measures.compiled import (
+    CUBE,
+    CUBE_WORK,
+    FLAGS,
+    INDEX,
+    MASK,
+    PLANE,
+    SPANS,
+    VECTOR,
+    WORK,
+    WORK_ROW,
+    compiled,
+    types,
+)
 from safecheck.measures.planes import Mask, Places, Plane, Vector
 
 SIDE = 11
@@ -92,31 +105,49 @@ def take_moments(before: Plane, ramp: Vector, inverted: bool, taps: Vector, mean
                 variances[top, c] -= means[top, c] * means[top, c]
 
 
-@compiled(VECTOR, VECTOR, MASK, INDEX, WORK)
-def count_levels(before: Vector, after: Vector, content: Mask, row: int, columns_of: Plane) -> None:
+@compiled(VECTOR, VECTOR, FLAGS, WORK, INDEX)
+def count_levels(before: Vector, after: Vector, content: Mask, tallies: Plane, first: int) -> None:
     """By column: how many content pixels changed by five levels or more, and the largest change."""
+    changed, largest = tallies[0, first : first + before.size], tallies[1, first : first + before.size]
     for c in range(before.size):
-        change = abs(after[c] - before[c]) if content[row, c] else 0.0
-        columns_of[0, c] += 1.0 if change >= _CHANGED_FROM else 0.0
+        change = abs(after[c] - before[c]) if content[c] else 0.0
+        changed[c] += 1.0 if change >= _CHANGED_FROM else 0.0
     for c in range(before.size):
-        change = abs(after[c] - before[c]) if content[row, c] else 0.0
-        top = columns_of[1, c]
-        columns_of[1, c] = change if change > top else top
+        change = abs(after[c] - before[c]) if content[c] else 0.0
+        top = largest[c]
+        largest[c] = change if change > top else top
 
 
-@compiled(VECTOR, VECTOR, VECTOR, VECTOR, VECTOR, VECTOR, WORK_ROW)
+@compiled(VECTOR, VECTOR, CUBE_WORK, INDEX, VECTOR, WORK_ROW, INDEX)
+def fill_rings(before: Vector, after: Vector, rings: Plane, slot: int, taps: Vector, work: Vector, first: int) -> None:
+    """Filter one row of values after, of their squares and of their products with those before."""
+    last = first + before.size - SIDE + 1
+    filter_along(after, rings[0, slot, first:last], taps)
+    multiply(after, after, work)
+    filter_along(work, rings[1, slot, first:last], taps)
+    multiply(before, after, work)
+    filter_along(work, rings[2, slot, first:last], taps)
+
+
+@compiled(VECTOR, VECTOR, CUBE, INDEX, VECTOR, VECTOR, WORK, INDEX)
 def compare_row(
     mean_b: Vector,
     variance_b: Vector,
-    mean_a: Vector,
-    square_a: Vector,
-    product: Vector,
+    rings: Plane,
+    oldest: int,
+    taps: Vector,
     constants: Vector,
-    target: Vector,
+    lines: Plane,
+    first: int,
 ) -> None:
-    """SSIM of one row from local moments."""
+    """SSIM of one row from eleven rows of the rings, into the last of the lines."""
+    size = mean_b.size
+    mean_a, square_a, product, target = lines[0, :size], lines[1, :size], lines[2, :size], lines[3, :size]
+    filter_down(rings[0], oldest, mean_a, taps, first)
+    filter_down(rings[1], oldest, square_a, taps, first)
+    filter_down(rings[2], oldest, product, taps, first)
     c1, c2 = constants[0], constants[1]
-    for c in range(target.size):
+    for c in range(size):
         both = mean_b[c] * mean_a[c]
         variance_a = square_a[c] - mean_a[c] * mean_a[c]
         covariance = product[c] - both
@@ -125,9 +156,17 @@ def compare_row(
         target[c] = above / below
 
 
-@compiled(
-    PLANE, PLANE, VECTOR, types.boolean, VECTOR, VECTOR, PLANE, PLANE, MASK, MASK, PLACES, PLACES, WORK_ROW, WORK, WORK
-)
+@compiled(VECTOR, FLAGS, INDEX, WORK_ROW, INDEX)
+def gather(line: Vector, scored: Mask, first: int, scores: Vector, found: int) -> int:
+    """Append the values of the scored pixels of one row; return how many there are by now."""
+    for c in range(line.size):
+        if scored[first + c]:
+            scores[found] = line[c]
+            found += 1
+    return found
+
+
+@compiled(PLANE, PLANE, VECTOR, types.boolean, VECTOR, VECTOR, PLANE, PLANE, MASK, MASK, SPANS, WORK_ROW, WORK, WORK)
 def compare(
     before: Plane,
     after: Plane,
@@ -139,56 +178,42 @@ def compare(
     variances: Plane,
     content: Mask,
     scored: Mask,
-    firsts: Places,
-    lasts: Places,
+    spans: Places,
     scores: Vector,
     picture: Plane,
-    columns_of: Plane,
+    tallies: Plane,
 ) -> int:
     """Fill `scores` with SSIM at the scored pixels, row by row, `picture` (if any) with the map; return how many.
 
-    `firsts` and `lasts` hold, for each row of the frame, the columns of the valid part that any window reaching this
-    row needs; rows that none needs have an empty span.
+    `spans` holds, for each row of the frame, first column and end of three spans: what is filtered along, what is
+    filtered down (both counted in the valid part), and what is shown (in the frame). An end before its first column
+    means that nothing is needed there.
     """
     rows, columns = before.shape
     width = max(columns - SIDE + 1, 0)
     shown_b, shown_a, work = np.empty(columns), np.empty(columns), np.empty(columns)
-    means_a, squares, products = np.empty((SIDE, width)), np.empty((SIDE, width)), np.empty((SIDE, width))
-    mean_a, square_a, product, line = np.empty(width), np.empty(width), np.empty(width), np.empty(width)
+    rings, lines = np.empty((3, SIDE, width)), np.empty((4, width))
     found = 0
     for row in range(rows):
-        show_row(before[row], ramp, inverted, shown_b)
-        show_row(after[row], ramp, inverted, shown_a)
-        count_levels(shown_b, shown_a, content, row, columns_of)
-        first, last = firsts[row], lasts[row]
+        first, last = spans[4, row], spans[5, row]
         if first < last:
-            slot = row % SIDE
-            seen_b, seen_a = shown_b[first : last + SIDE - 1], shown_a[first : last + SIDE - 1]
-            filter_along(seen_a, means_a[slot, first:last], taps)
-            multiply(seen_a, seen_a, work)
-            filter_along(work, squares[slot, first:last], taps)
-            multiply(seen_b, seen_a, work)
-            filter_along(work, products[slot, first:last], taps)
-        top = row - SIDE + 1
-        centre = row - SIDE // 2
-        if top < 0 or not firsts[centre + rows] < lasts[centre + rows]:
+            show_row(before[row, first:last], ramp, inverted, shown_b[first:last])
+            show_row(after[row, first:last], ramp, inverted, shown_a[first:last])
+            count_levels(shown_b[first:last], shown_a[first:last], content[row, first:last], tallies, first)
+        first, last = spans[0, row], spans[1, row]
+        if first < last:
+            seen = slice(first, last + SIDE - 1)
+            fill_rings(shown_b[seen], shown_a[seen], rings, row % SIDE, taps, work, first)
+        top, centre = row - SIDE + 1, row - SIDE // 2
+        if top < 0 or not spans[2, centre] < spans[3, centre]:
             continue
-        first, last = firsts[centre + rows], lasts[centre + rows]
-        oldest = (row + 1) % SIDE
-        span = last - first
-        filter_down(means_a, oldest, mean_a[:span], taps, first)
-        filter_down(squares, oldest, square_a[:span], taps, first)
-        filter_down(products, oldest, product[:span], taps, first)
+        first, last = spans[2, centre], spans[3, centre]
         compare_row(
-            means[top, first:last], variances[top, first:last], mean_a, square_a, product, constants, line[:span]
+            means[top, first:last], variances[top, first:last], rings, (row + 1) % SIDE, taps, constants, lines, first
         )
-        for c in range(span):
-            if scored[centre, first + c + SIDE // 2]:
-                scores[found] = line[c]
-                found += 1
+        found = gather(lines[3, : last - first], scored[centre], first + SIDE // 2, scores, found)
         if picture.size:
-            for c in range(span):
-                picture[centre, first + c + SIDE // 2] = line[c]
+            picture[centre, first + SIDE // 2 : last + SIDE // 2] = lines[3, : last - first]
     return found
 
 
