@@ -82,15 +82,7 @@ def _count(stratum: str, instances: list[Instance]) -> StratumCount:
         bits_stored=tuple(sorted({each.bits_stored for each in instances})),
         syntaxes=tuple(sorted({each.origin.source_syntax for each in instances})),
         bytes_now=sum(each.pixel_bytes for each in instances),
-        bytes_bits_stored=sum(
-            each.rows
-            * each.columns
-            * each.frames
-            * (1 if each.photometric.startswith("MONO") else 3)
-            * each.bits_stored
-            / 8
-            for each in instances
-        ),
+        bytes_bits_stored=sum(each.frames * pixels_of(each) * each.bits_stored / 8 for each in instances),
     )
 
 

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import contextlib
+import dataclasses
 import hashlib
 import os
 from collections.abc import Iterable, Iterator
 from pathlib import Path
 
-from safecheck.jobs.inputs import Inputs, input_rows
+from safecheck.jobs.inputs import Inputs, Refused, Side, input_rows
 from safecheck.record.canonical import document_bytes, sha256_of_file
 from safecheck.record.document import RecordDocument, TableEntry
 from safecheck.record.rows import TABLES
@@ -52,12 +53,12 @@ def _aside(path: Path) -> Iterator[Path]:
     aside.replace(path)
 
 
-def _refused(left_out: Iterable[LeftOut]) -> dict[str, tuple[int, str, str]]:
-    """Input pseudonym -> frames refused, with reason and detail of the first."""
-    found: dict[str, tuple[int, str, str]] = {}
+def _refused(left_out: Iterable[LeftOut]) -> dict[tuple[Side, str], Refused]:
+    """What was refused of each input of each side; one file may stand on both."""
+    found: dict[tuple[Side, str], Refused] = {}
     for each in left_out:
-        frames, reason, detail = found.get(each.input, (0, each.reason, each.detail))
-        found[each.input] = (frames + 1, reason, detail)
+        first = found.get((each.side, each.input), Refused(0, each.reason, each.detail))
+        found[each.side, each.input] = dataclasses.replace(first, frames=first.frames + 1)
     return found
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any, Literal
+from typing import Any, Literal, TypeAlias
 
 from safecheck.dicom.delivered import Matching, Pair, match
 from safecheck.dicom.facts import Facts
@@ -16,10 +16,23 @@ from safecheck.dicom.rules import Include
 from safecheck.policy.plan import Scope
 from safecheck.record.rows import InputRow
 
-__all__ = ["UNMATCHED", "Inputs", "gather_inputs", "input_rows"]
+__all__ = ["UNMATCHED", "Inputs", "Refused", "Side", "gather_inputs", "input_rows"]
 
 UNMATCHED = "unmatched"
-Side = Literal["original", "delivered"]
+Side: TypeAlias = Literal["original", "delivered"]
+
+
+@dataclass(frozen=True, slots=True)
+class Refused:
+    """Frames of one input that gave no rows."""
+
+    frames: int
+    reason: str
+    """Of the first."""
+    detail: str
+
+
+_NOTHING = Refused(0, "", "")
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,7 +93,7 @@ def _in_scope(instance: Instance, scope: Scope) -> bool:
 
 
 def input_rows(
-    inputs: Inputs, assessed_frames: Mapping[str, int], refused_frames: Mapping[str, tuple[int, str, str]]
+    inputs: Inputs, assessed_frames: Mapping[str, int], refused: Mapping[tuple[Side, str], Refused]
 ) -> list[InputRow]:
     """One row per file, in an order that does not depend on how the files were handed in.
 
@@ -90,31 +103,31 @@ def input_rows(
         As gathered.
     assessed_frames
         Input pseudonym -> frames assessed.
-    refused_frames
-        Input pseudonym -> (frames refused, reason of the first, detail).
+    refused
+        (side, input pseudonym) -> what was refused of it.
     """
-    rows = [*_original_rows(inputs, assessed_frames, refused_frames), *_delivered_rows(inputs, refused_frames)]
+    rows = [*_original_rows(inputs, assessed_frames, refused), *_delivered_rows(inputs, refused)]
     return sorted(rows, key=lambda row: (row.side != "original", row.study, row.series, row.instance, row.input))
 
 
 def _original_rows(
-    inputs: Inputs, assessed_frames: Mapping[str, int], refused_frames: Mapping[str, tuple[int, str, str]]
+    inputs: Inputs, assessed_frames: Mapping[str, int], refused: Mapping[tuple[Side, str], Refused]
 ) -> Iterator[InputRow]:
     """Rows of the originals."""
     matched = {pair.original.input: (pair.how, pair.delivered.input) for pair in _pairs(inputs)}
     for each in inputs.assessed:
         done = assessed_frames.get(each.input, 0)
-        refused, reason, detail = refused_frames.get(each.input, (0, "", ""))
+        lost = refused.get(("original", each.input), _NOTHING)
         how, pair = matched.get(each.input, (UNMATCHED if inputs.matching else "", ""))
         yield _row(
             "original",
             each.input,
             _known(each) | {"bytes": each.size_bytes},
             status="assessed" if done else "refused",
-            reason=reason,
-            detail=detail,
+            reason=lost.reason,
+            detail=lost.detail,
             frames_assessed=done,
-            frames_refused=refused,
+            frames_refused=lost.frames,
             matched=how,
             pair=pair,
         )
@@ -126,23 +139,23 @@ def _original_rows(
         yield _left_out_row("original", left)
 
 
-def _delivered_rows(inputs: Inputs, refused_frames: Mapping[str, tuple[int, str, str]]) -> Iterator[InputRow]:
+def _delivered_rows(inputs: Inputs, refused: Mapping[tuple[Side, str], Refused]) -> Iterator[InputRow]:
     """Rows of the delivered copies."""
     if inputs.delivered is None:
         return
     matched = {pair.delivered.input: pair for pair in _pairs(inputs)}
     for each in inputs.delivered.instances:
-        refused, reason, detail = refused_frames.get(each.input, (0, "", ""))
+        lost = refused.get(("delivered", each.input), _NOTHING)
         pair = matched.get(each.input)
         yield _row(
             "delivered",
             each.input,
             _known(each) | {"bytes": each.size_bytes},
-            status="refused" if refused else "assessed",
-            reason=reason,
-            detail=detail,
-            frames_assessed=each.frames - refused if pair else 0,
-            frames_refused=refused,
+            status="refused" if lost.frames else "assessed",
+            reason=lost.reason,
+            detail=lost.detail,
+            frames_assessed=each.frames - lost.frames if pair else 0,
+            frames_refused=lost.frames,
             new_uid=each.uid != pair.original.uid if pair else None,
             matched=pair.how if pair else UNMATCHED,
             pair=pair.original.input if pair else "",

@@ -162,7 +162,11 @@ def _assess(each: FrameTask, bench: _Bench) -> None:
     else:
         for name, table in tables.items():
             bench.tables[name].append(table)
-        bench.notes.update(set(frame.origin.notes))
+        bench.notes.update({*frame.origin.notes, *result.notes})
+        if each.delivered is not None and result.delivered_differs:
+            bench.left_out.append(
+                _without_copy(each.delivered, each.number, "delivered-differs", result.delivered_differs)
+            )
 
 
 def _read_delivered(each: FrameTask, bench: _Bench) -> Frame | None:
@@ -175,10 +179,13 @@ def _read_delivered(each: FrameTask, bench: _Bench) -> Frame | None:
         reason, detail = refusal.reason, refusal.detail
     except Exception as error:
         reason, detail = "internal", type(error).__name__
-    bench.left_out.append(
-        LeftOut(input=each.delivered.input, side="delivered", frame=each.number, reason=reason, detail=detail)
-    )
+    bench.left_out.append(_without_copy(each.delivered, each.number, reason, detail))
     return None
+
+
+def _without_copy(delivered: Instance, number: int, reason: str, detail: str) -> LeftOut:
+    """Entry of a delivered copy that gave no row."""
+    return LeftOut(input=delivered.input, side="delivered", frame=number, reason=reason, detail=detail)
 
 
 def _left_out(each: FrameTask, reason: str, detail: str) -> LeftOut:
