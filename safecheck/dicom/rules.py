@@ -113,7 +113,10 @@ def _not_an_image(header: Header, facts: Facts) -> str:
 
 
 def _no_pixels(header: Header, facts: Facts) -> str:
-    return "" if header.pixels or header.cut else (facts.object_class or "no object class")
+    # Pixels that lie elsewhere (JPIP) are a matter of the syntax.
+    if header.pixels or header.cut or header.syntax.coding is Coding.REFERENCED:
+        return ""
+    return facts.object_class or "no object class"
 
 
 def _video(header: Header, _: Facts) -> str:

@@ -20,7 +20,8 @@ EXPLICIT = "1.2.840.10008.1.2.1"
 
 
 def reason_for(tmp_path: Path, syntax: str = EXPLICIT, include: Include | None = None, **changes: Any) -> str:
-    dataset = image(**changes) if syntax == EXPLICIT else coded(b"code", **changes)
+    plain = syntax == EXPLICIT or "PixelData" in changes
+    dataset = image(**changes) if plain else coded(b"code", **changes)
     intake = take_in(save(dataset, tmp_path / "f", syntax), include=include)
     assert sum(intake.counts.values()) == 1
     return intake.left_out[0].reason if intake.left_out else "assessed"
@@ -125,6 +126,7 @@ def test_video_is_left_out(tmp_path: Path, uid: str) -> None:
     ("syntax", "changes", "reason"),
     [
         ("1.2.840.10008.1.2.4.94", {}, "syntax"),
+        ("1.2.840.10008.1.2.4.204", {"PixelData": None}, "syntax"),
         ("1.3.6.1.4.1.99999.2", {}, "syntax"),
         (EXPLICIT, {"Rows": None}, "header"),
         (EXPLICIT, {"Columns": 0}, "header"),
