@@ -105,7 +105,9 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
         pseudonyms=site.pseudonyms,
         progress=lambda done, found: tell(f"Reading headers: {done} of {found} files"),
     )
-    regions = load_regions(loaded.regions_file, site.pseudonyms, inputs) if loaded.regions_file else None
+    regions = load_regions(loaded.regions_file, site.pseudonyms) if loaded.regions_file else None
+    for sentence in regions.refused if regions else ():
+        tell(f"Left out of the regions: {sentence}")
     assignment = Assignment(tuple(map(Candidate.of, loaded.plan.candidates)), loaded.plan.windows, regions)
     manifest = describe(
         inputs.assessed,
@@ -248,11 +250,11 @@ def _check_entry(check: selftest.CodecCheck) -> CodecCheckEntry:
 
 
 def _without_frame(regions: RegionSet | None, folder: Path) -> tuple[str, ...]:
-    """Labels of regions that cover no frame assessed: named, not dropped."""
+    """Labels of regions that cover no frame assessed, and what the carrier's reader refused: named, not dropped."""
     if regions is None:
         return ()
     _, found = readers(folder)["regions"].codes("region")
-    return tuple(region.label for region in regions.regions if region.name not in found)
+    return (*(region.label for region in regions.regions if region.name not in found), *regions.refused)
 
 
 def _open_session(work: Path) -> tuple[datetime.datetime, int]:

@@ -119,7 +119,7 @@ def _recompute(
         raise DossierError("the dossier was written under another site key; name that key by --key")
     plan = Plan.model_validate_json(json.dumps(record.plan.content), strict=True)
     inputs = gather_inputs(images, delivered, scope=plan.scope, pseudonyms=site.pseudonyms)
-    regions = load_regions(regions_file, site.pseudonyms, inputs) if regions_file else None
+    regions = load_regions(regions_file, site.pseudonyms) if regions_file else None
     assignment = Assignment(tuple(map(Candidate.of, plan.candidates)), plan.windows, regions)
     measures = readers(dossier)["measures"].whole().to_pylist()
     rows: dict[tuple[str, int], list[dict[str, Any]]] = {}

@@ -121,7 +121,9 @@ class MaskOnGrid:
 
     grid: Grid
     fractions: npt.NDArray[np.float64]
-    """(rows, columns), 0 to 1."""
+    """0 to 1; (rows, columns) of the grid, or of a box in it outside which nothing is covered."""
+    corner: tuple[int, int] = (0, 0)
+    """(row, column) of the box's first pixel."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -144,6 +146,8 @@ class RegionSet:
     regions: tuple[Region, ...]
     sha256: str
     """Of the file that they came from."""
+    refused: tuple[str, ...] = ()
+    """One sentence for each region of the file, or part of one, that was left out."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -208,18 +212,23 @@ def _on_grid(
 
 def _of_mask(mask: MaskOnGrid, grid: Grid) -> Covered | None:
     """Fractions of a segmentation on a frame of the same grid."""
-    if mask.fractions.shape != (grid.rows, grid.columns) or not _is_same(mask.grid, grid):
+    if (mask.grid.rows, mask.grid.columns) != (grid.rows, grid.columns) or not _is_same(mask.grid, grid):
         return None
-    return Covered(mask.fractions, mask.fractions >= 0.5)
+    (row, column), (height, width) = mask.corner, mask.fractions.shape
+    fractions = np.zeros((grid.rows, grid.columns))
+    fractions[row : row + height, column : column + width] = mask.fractions
+    return Covered(fractions, fractions >= 0.5)
 
 
 def _is_same(one: Grid, other: Grid) -> bool:
-    """Whether two grids are the frame of one instance, or lie in one place of one frame of reference."""
-    if one.instance and (one.instance, one.frame) == (other.instance, other.frame):
-        return True
-    if not one.frame_of_reference or one.frame_of_reference != other.frame_of_reference:
-        return False
-    return _corner_distance_mm(one, other) < SAME_MM
+    """Whether two grids lie in one place of one frame of reference; without geometry, whether they are one frame."""
+    if one.frame_of_reference and other.frame_of_reference:
+        distance_mm = _corner_distance_mm(one, other)
+        # The instance that a mask was derived from need not lie on the mask's grid: where both grids say where they
+        # lie, that alone counts.
+        if one.frame_of_reference != other.frame_of_reference or np.isfinite(distance_mm):
+            return one.frame_of_reference == other.frame_of_reference and distance_mm < SAME_MM
+    return bool(one.instance) and (one.instance, one.frame) == (other.instance, other.frame)
 
 
 def _corner_distance_mm(one: Grid, other: Grid) -> float:

@@ -1,0 +1,1 @@
+"""Carriers of regions: DICOM objects in which other programs hold what a person drew."""
