@@ -147,6 +147,11 @@ _PIXELS = (
     ),
 )
 
+_CHANNELS = tuple(
+    Measure(name, "measures", name, "stored levels", "higher", f"{text} of all samples of all channels.")
+    for name, text in (("rmse_channels", "Root mean square error"), ("max_channels", "Largest absolute error"))
+)
+
 _COLOUR = tuple(
     Measure(
         name, "measures", name, "CIEDE2000", "higher", f"{text} colour difference over content, sRGB and D65 assumed."
@@ -212,7 +217,7 @@ _REGIONS = (
 MEASURES: MappingProxyType[str, Measure] = MappingProxyType(
     {
         measure.name: measure
-        for group in (_FRAME, _PLACES, _NOISE, _PIXELS, _COLOUR, _WINDOWS, _REGIONS)
+        for group in (_FRAME, _PLACES, _NOISE, _PIXELS, _CHANNELS, _COLOUR, _WINDOWS, _REGIONS)
         for measure in group
     }
 )

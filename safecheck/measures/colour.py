@@ -35,7 +35,12 @@ class ColourBaseline:
 
 @dataclass(frozen=True, slots=True)
 class ColourFigures:
-    """CIEDE2000 over content; None where there is none."""
+    """Errors of the channels over the frame, and CIEDE2000 over content; None where there is none."""
+
+    rmse_channels: float | None = None
+    """Root mean square error of all samples of all channels, in stored levels."""
+    max_channels: float | None = None
+    """Largest absolute error of any sample of any channel, in stored levels."""
 
     ciede2000_mean: float | None = None
     ciede2000_p95: float | None = None
@@ -83,11 +88,13 @@ def measure_colour(baseline: ColourBaseline, after: _RGB) -> ColourFigures:
     from safecheck.measures.colour_kernels import fill_differences
 
     samples = _levels(after, baseline.samples.shape, baseline.light.size - 1)
+    errors = samples.astype(np.float64) - baseline.samples
+    of_channels = float(np.sqrt(np.mean(errors * errors))), float(np.abs(errors).max())
     if baseline.pixels == 0:
-        return ColourFigures()
+        return ColourFigures(*of_channels)
     found = np.empty(baseline.pixels)
     fill_differences(baseline.samples, baseline.lab, samples, baseline.light, baseline.content, found)
-    return ColourFigures(float(found.mean()), percentile(found, 95), float(found.max()))
+    return ColourFigures(*of_channels, float(found.mean()), percentile(found, 95), float(found.max()))
 
 
 def to_lab(samples: _RGB, highest: int) -> npt.NDArray[np.float64]:

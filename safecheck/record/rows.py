@@ -169,6 +169,8 @@ class MeasureRow(TreatedFrame):
     outside_flattened_max: float | None = optional(IMAGE_UNIT, "With outside = flatten: largest change made to air.")
 
     # Colour
+    rmse_channels: float | None = optional("stored levels", "Root mean square error of all samples of all channels.")
+    max_channels: float | None = optional("stored levels", "Largest absolute error of any sample of any channel.")
     ciede2000_mean: float | None = optional("CIEDE2000", "Mean colour difference over content, sRGB and D65 assumed.")
     ciede2000_p95: float | None = optional("CIEDE2000", "95th percentile of it.")
     ciede2000_max: float | None = optional("CIEDE2000", "Largest of it.")

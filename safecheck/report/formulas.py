@@ -7,7 +7,7 @@ from types import MappingProxyType
 __all__ = ["FORMULAS"]
 
 _STATED = "definition stated here"
-_WANG = "Wang, Bovik, Sheikh and Simoncelli, IEEE Trans. Image Process. 13 (2004) 600"
+_WANG = "Wang et al. 2004, IEEE TIP 13:600"
 _COMMON = "common definition"
 _E = "e = after − before"
 
@@ -88,6 +88,12 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         "padding_changed": ("Padding pixels changed", "padding pixels of the original whose value changed", _STATED),
         "became_padding": ("Pixels that became padding", "other pixels whose value lies in the padding range", _STATED),
         "outside_flattened_max": ("Largest change made to air", "max |e| over air that was flattened", _STATED),
+        "rmse_channels": (
+            "RMSE, colour channels",
+            "√(Σ e² ÷ n) over all samples of red, green and blue, in stored levels",
+            _COMMON,
+        ),
+        "max_channels": ("Largest error, colour channels", "max |e| over all samples of red, green and blue", _COMMON),
         "ciede2000_mean": (
             "Colour difference, mean",
             "mean CIEDE2000 over content; sRGB and D65 assumed",

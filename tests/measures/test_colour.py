@@ -76,6 +76,9 @@ def test_a_real_colour_pair_is_that_of_scikit_image(colour_pair: tuple[Levels, L
     expected = deltaE_ciede2000(rgb2lab(before), rgb2lab(after))[content]
     figures = measure_colour(prepare_colour(before, content, 255), after)
     assert figures.ciede2000_mean == pytest.approx(float(expected.mean()), rel=1e-9)
+    error = after.astype(float) - before
+    assert figures.rmse_channels == pytest.approx(float(np.sqrt((error**2).mean())), rel=1e-9)
+    assert figures.max_channels == np.abs(error).max()
     assert figures.ciede2000_p95 == pytest.approx(float(np.percentile(expected, 95)), rel=1e-9)
     assert figures.ciede2000_max == pytest.approx(float(expected.max()), rel=1e-9)
 
@@ -89,8 +92,8 @@ def test_more_bits_of_the_same_colours_give_the_same_lab() -> None:
 def test_nothing_changed_gives_no_colour_difference(colour_pair: tuple[Levels, Levels]) -> None:
     before, _ = colour_pair
     content = np.ones(before.shape[:2], np.bool_)
-    assert measure_colour(prepare_colour(before, content, 255), before) == ColourFigures(0.0, 0.0, 0.0)
-    assert measure_colour(prepare_colour(before, ~content, 255), before) == ColourFigures()
+    assert measure_colour(prepare_colour(before, content, 255), before) == ColourFigures(0.0, 0.0, 0.0, 0.0, 0.0)
+    assert measure_colour(prepare_colour(before, ~content, 255), before) == ColourFigures(0.0, 0.0)
 
 
 @pytest.mark.parametrize(
