@@ -73,7 +73,10 @@ def census(
     allow_lossy_source: LossySources = False,
     quiet: Quiet = False,
 ) -> None:
-    """Say what is there: studies, strata, bits, syntaxes, sizes, already lossy, left out and why."""
+    """Say what is there, and what is left out and why.
+
+    Studies, groups of like images, bits, transfer syntaxes, sizes, and what is already lossy.
+    """
     from safecheck.jobs import census as job
 
     screen = _Screen(quiet=quiet)
@@ -126,7 +129,7 @@ def assess(
     allow_lossy_source: LossySources = False,
     quiet: Quiet = False,
 ) -> None:
-    """Recompress, measure, hold against declared limits, and write the record.
+    """Recompress, measure and write the record.
 
     The same command into the same dossier goes on where it was stopped.
     """
@@ -161,7 +164,10 @@ def report(
     dossier: Annotated[Path, typer.Argument(help="Dossier of a finished run.")],
     out: Annotated[Path, typer.Option("--out", metavar="FILE", help="PDF to write, outside the dossier.")],
 ) -> None:
-    """Draw the PDF again from the record, without images; every page says REDRAWN."""
+    """Draw the PDF again from the record.
+
+    Without images; every page says REDRAWN.
+    """
     from safecheck.jobs.redraw import redraw
 
     redraw(dossier, out)
@@ -185,7 +191,7 @@ def verify(
     seed: Annotated[int, typer.Option("--seed", help="Another seed draws other frames.")] = 1,
     key: Key = None,
 ) -> None:
-    """Check the seal; with images, compute a seeded sample of rows again."""
+    """Check the seal; with images, compute rows again."""
     from safecheck.jobs.verify import verify as job
 
     found = job(
@@ -210,7 +216,10 @@ def lookup(
     paths: Paths,
     key: Key = None,
 ) -> None:
-    """Turn a pseudonym back, on this screen only: the images are read again, nothing is kept."""
+    """Turn a pseudonym back, on this screen only.
+
+    The images are read again; nothing is kept.
+    """
     from safecheck.jobs.lookup import lookup as job
 
     if not sys.stdout.isatty():
@@ -221,7 +230,10 @@ def lookup(
 
 @app.command()
 def selftest() -> None:
-    """Say which codecs work on this machine, and whether the reversible ones are bit-exact."""
+    """Say which codecs work on this machine.
+
+    And whether the reversible ones are bit-exact.
+    """
     from safecheck.jobs.selftest import selftest_lines
 
     held = True
@@ -240,7 +252,7 @@ def demo(
     key: Key = None,
     quiet: Quiet = False,
 ) -> None:
-    """Make a synthetic study, run the main job on it, and say where the record is."""
+    """Assess a synthetic study, to see a record."""
     from safecheck.jobs.assess import AssessRequest
     from safecheck.jobs.demo import STUDY, write_demo
 
