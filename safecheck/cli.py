@@ -39,8 +39,15 @@ app = typer.Typer(
     ),
 )
 
-Paths = Annotated[list[Path], typer.Argument(help="Files, folders, zip archives or a DICOMDIR; mixed as you like.")]
-Key = Annotated[Path | None, typer.Option("--key", help="Site key file; by default in your configuration folder.")]
+Paths = Annotated[
+    list[Path],
+    typer.Argument(
+        metavar="PATH...", help="Files, folders, zip archives, a DICOMDIR or a list file; mixed as you like."
+    ),
+]
+Key = Annotated[
+    Path | None, typer.Option("--key", metavar="FILE", help="Site key file; by default in your configuration folder.")
+]
 Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress on the screen.")]
 Localizers = Annotated[bool, typer.Option("--localizers", help="Take localizers too.")]
 Captures = Annotated[bool, typer.Option("--secondary-captures", help="Take secondary captures too.")]
@@ -101,10 +108,10 @@ def assess(
     paths: Paths,
     out: Annotated[Path | None, typer.Option("--out", metavar="DOSSIER", help="Folder for the dossier.")] = None,
     plan: Annotated[Path | None, typer.Option("--plan", metavar="FILE", help="Plan declared before the run.")] = None,
-    ratios: Annotated[str, typer.Option("--ratios", help="Ratios on the bits-stored basis, without a plan.")] = (
-        "5,8,10,15,20"
-    ),
-    codecs: Annotated[str, typer.Option("--codecs", help="Codecs, without a plan.")] = "tiled,jpeg2000",
+    ratios: Annotated[
+        str, typer.Option("--ratios", metavar="LIST", help="Ratios on the bits-stored basis, without a plan.")
+    ] = ("5,8,10,15,20"),
+    codecs: Annotated[str, typer.Option("--codecs", metavar="LIST", help="Codecs, without a plan.")] = "tiled,jpeg2000",
     regions: Annotated[
         Path | None,
         typer.Option("--regions", metavar="FILE", help="Region file, DICOM segmentation or RT Structure Set."),
@@ -122,7 +129,9 @@ def assess(
     no_attachment: Annotated[
         bool, typer.Option("--no-attachment", help="Leave the record out of the PDF's attachments.")
     ] = False,
-    workers: Annotated[int | None, typer.Option("--workers", min=1, help="Processes; by default one per core.")] = None,
+    workers: Annotated[
+        int | None, typer.Option("--workers", min=1, metavar="NUMBER", help="Processes; by default one per core.")
+    ] = None,
     key: Key = None,
     localizers: Localizers = False,
     secondary_captures: Captures = False,

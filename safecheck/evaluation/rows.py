@@ -17,6 +17,7 @@ from safecheck.measures.psnr import measure_psnr_db
 from safecheck.measures.region import RegionFigures, average_map, measure_contrast, measure_region
 from safecheck.measures.structural import measure_window
 from safecheck.record.rows import MeasureRow, RegionRow, WindowRow
+from safecheck.wording import ANALYSIS_CODEC
 
 __all__ = ["measure_row", "region_rows", "window_rows"]
 
@@ -91,6 +92,7 @@ def _written(original: Original, treated: Treated) -> dict[str, Any]:
         "codec_version": treated.codec_version,
         "settings": treated.settings,
         "archive_can_write": treated.archive_can_write,
+        "codec_note": "" if treated.archive_can_write or treated.role == "planted" else ANALYSIS_CODEC,
         "ratio_asked": treated.ratio_asked,
         "basis": treated.basis,
         "reached": treated.reached.value,

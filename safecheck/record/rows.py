@@ -101,6 +101,7 @@ class MeasureRow(TreatedFrame):
     codec_version: str = column("", "Library and version that wrote the code.")
     settings: str = column("", "Settings that wrote the code, as canonical JSON.")
     archive_can_write: bool = column("", "Whether a DICOM transfer syntax exists for the codec.")
+    codec_note: str = column("", "What must be known of the codec, e.g. that no archive writes it, or empty.")
     ratio_asked: float | None = optional("to 1", "Ratio asked for, on the basis named beside it.")
     basis: str = column("", "Basis of the ratio asked for.")
     reached: str = column("", "asked, or why the ratio was not met.")
