@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import os
 from collections import Counter
 from collections.abc import Iterator, Sequence
@@ -16,6 +17,9 @@ from safecheck.runner.shards import SHARD_TABLES, LeftOut, Paper, paper_of, read
 from safecheck.runner.tasks import Task
 
 __all__ = ["Merged", "merge"]
+
+_AT_ONCE = 16
+"""Shards in memory at once."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -91,10 +95,11 @@ def _paper(work: Path, task: Task) -> Paper:
 
 
 def _batches(tasks: Sequence[Task], rows: Sequence[int], work: Path, table: str) -> Iterator[pa.Table]:
-    """Read one shard after the other."""
-    for task, count in zip(tasks, rows, strict=True):
-        if count:
-            yield read_shard(work, task, table)
+    """Read the shards in order, a few at once."""
+    filled = iter([task for task, count in zip(tasks, rows, strict=True) if count])
+    while few := list(itertools.islice(filled, _AT_ONCE)):
+        # Joined, since a hundred columns of a few rows each take far more memory in pieces than in one.
+        yield pa.concat_tables([read_shard(work, task, table) for task in few]).combine_chunks()
 
 
 def _write(path: Path, table: str, batches: Iterator[pa.Table]) -> int:
