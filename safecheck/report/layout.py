@@ -58,7 +58,10 @@ def flow(head: Sequence[Flowable], blocks: Sequence[Block], contents: Sequence[C
         if isinstance(block, Heading | Prose):
             waiting += made
             continue
-        story += [KeepTogether([*waiting, *made])] if isinstance(made, _Whole) else [*waiting, *made]
+        if isinstance(made, _Whole):
+            story.append(KeepTogether([*waiting, *made]))
+        else:
+            story += [CondPageBreak(_ROOM + _ROOM_PER_LINE * len(waiting)), *waiting, *made]
         waiting, kept = [], 0
     return story + waiting
 
@@ -150,6 +153,8 @@ def _facts(block: Facts) -> Flowable:
     return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
 
 
+_ROOM, _ROOM_PER_LINE = 96.0, 24.0
+"""Points that must be left for what can part over pages, and for each line that introduces it."""
 _TOGETHER = 24
 """Rows up to which a table never breaks over pages."""
 
@@ -160,7 +165,7 @@ def _table(block: Table) -> list[Flowable]:
     parts.append(table_flowable(block))
     if len(block.rows) <= _TOGETHER:
         return _Whole(parts)
-    return [CondPageBreak(96), *parts]
+    return parts
 
 
 def _charts(block: Charts) -> list[Flowable]:
@@ -218,4 +223,4 @@ def _contents(entries: Sequence[ContentsEntry]) -> list[Flowable]:
         ("BOTTOMPADDING", (0, 0), (-1, -1), 2.2),
     ]
     table = _plain_table(rows, [TEXT_WIDTH - 40, 40], [*rules, ("RIGHTPADDING", (0, 0), (-1, -1), 0)])
-    return [CondPageBreak(120), _paragraph("In this record", "heading"), table]
+    return [_paragraph("In this record", "heading"), table]

@@ -17,6 +17,7 @@ from safecheck.report.blocks import (
     Prose,
     Report,
     Table,
+    Title,
 )
 from safecheck.report.content import report_of
 from safecheck.report.formulas import FORMULAS
@@ -112,7 +113,7 @@ def test_a_limit_that_the_over_compressed_control_meets_is_marked() -> None:
     [
         ("before the first results", "declared before the first results"),
         ("after the first results", "FIRST SEEN AFTER RESULTS OF THE SAME INPUTS"),
-        ("not known", "when it was declared is not known"),
+        ("not known", "declared at a time that is not known"),
     ],
 )
 def test_the_first_page_says_when_the_plan_was_declared(declared: str, says: str) -> None:
@@ -265,3 +266,49 @@ def test_second_generation_stands_beside_each_candidate_and_on_each_page() -> No
     assert made.marks == ("SECOND GENERATION: sources were already lossy",)
     names = [row.cells[0] for row in tables(section(made, f"Figures: {CT}"))[0].rows]
     assert all("second generation" in name for name in names)
+
+
+@pytest.mark.parametrize(("ratio", "drawn"), [(25.0, True), (300.0, False)], ids=["near", "far beyond"])
+def test_delivered_copies_far_beyond_the_candidates_are_named_and_not_drawn(ratio: float, drawn: bool) -> None:
+    record = make_record(strata=(stratum_of(CT, "CT", 9),))
+    name = {"candidate": "delivered copies"}
+    copies = record.candidates[0].model_copy(update=name | {"role": "delivered", "ratio_asked": None})
+    figures = [item.model_copy(update=name) for item in record.figures if item.candidate == "tiled 20:1"]
+    ledger = record.ledger[0].model_copy(update=name | {"ratio_bits_stored_median": ratio})
+    more = {
+        "candidates": (*record.candidates, copies),
+        "figures": (*record.figures, *figures),
+        "ledger": (*record.ledger, ledger),
+    }
+    blocks = section(report(record.model_copy(update=more)), f"Figures: {CT}")
+    charts = next(block for block in blocks if isinstance(block, Charts))
+    assert ("delivered copies" in {item.name for item in charts.charts[0].series}) == drawn
+    assert ("delivered copies lie beyond the charts, at 300 to 1" in charts.caption) == (not drawn)
+
+
+def test_a_plan_from_the_command_line_is_named_as_such() -> None:
+    record = make_record()
+    change = {"title": "Candidates given on the command line", "declared_by": "no plan declared", "declared_on": None}
+    content = {"change": change, "sample": {"drawn": "chosen"}}
+    plan = record.plan.model_copy(update={"source": "command line", "content": content})
+    made = report(record.model_copy(update={"plan": plan}), plan_declared="not known")
+    text = words(made.front)
+    assert "Candidates were given on the command line, without a plan file" in text
+    assert "None" not in text
+    assert isinstance(made.front[0], Title)
+    assert dict(made.front[0].facts)["Plan declared on"] == "not stated"
+
+
+def test_frames_without_a_value_are_named_with_the_reason() -> None:
+    record = make_record(strata=(stratum_of(CT, "CT", 9),))
+    reason = {"without_value": 2, "reason": "infinite: nothing changed"}
+    some = [
+        item.model_copy(update=reason) if item.measure == "psnr_peak_bits_content_db" else item
+        for item in record.figures
+    ]
+    notes = [
+        table.note
+        for table in tables(section(report(record.model_copy(update={"figures": tuple(some)})), f"Figures: {CT}"))
+    ]
+    says = "Some frames have no value of: PSNR, content, peak of stored bits (infinite: nothing changed)."
+    assert sum(says in note for note in notes) == 2

@@ -46,10 +46,10 @@ def _asked(view: View) -> tuple[str, ...]:
     """What the plan asks."""
     change, content = view.change, view.record.plan.content
     lines = []
-    if change.get("compressed_copy"):
+    if view.record.plan.source == "file":
         lines.append(
-            f"What recompression would do to: {change['compressed_copy']}, recompressed "
-            f"{change.get('compressed_when') or 'at a time not stated'}."
+            f"What recompression would do to: {change.get('compressed_copy')}, recompressed "
+            f"{change.get('compressed_when')}."
         )
     lines.append(_sample_line(content.get("sample")))
     proposed = [item for item in view.candidates if item.status == "proposed"]
@@ -85,13 +85,14 @@ def ratio_groups(candidates: Sequence[CandidateEntry]) -> tuple[str, ...]:
 def _plan_line(view: View) -> str:
     """Where the plan came from, and when it was declared."""
     plan, run = view.record.plan, view.run
-    source = "The plan is a file" if plan.source == "file" else "The plan is the command line"
+    if plan.source == "command line":
+        return f"Candidates were given on the command line, without a plan file; hash {plan.sha256[:16]}."
     when = {
         "before the first results": "declared before the first results",
         "after the first results": "FIRST SEEN AFTER RESULTS OF THE SAME INPUTS",
-        "not known": "and when it was declared is not known",
+        "not known": "declared at a time that is not known",
     }[run.plan_declared]
-    return f"{source}, {when}; its hash begins {plan.sha256[:16]}."
+    return f"The plan is a file, {when}; its hash begins {plan.sha256[:16]}."
 
 
 def _run(view: View) -> tuple[str, ...]:

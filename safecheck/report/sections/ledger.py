@@ -116,7 +116,7 @@ def _reached(view: View) -> list[Block]:
         Row((item.candidate, reached, count(frames), count(item.frames)))
         for item in view.candidates
         for reached, frames in sorted(item.reached.items())
-        if reached != "asked"
+        if reached != "asked" and item.ratio_asked is not None
     ]
     if not rows:
         return [Prose("Every frame reached the ratio that was asked for.", "note")]

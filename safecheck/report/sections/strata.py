@@ -9,20 +9,17 @@ from safecheck.measures.catalogue import MEASURES
 from safecheck.record.document import CandidateEntry, FigureEntry, StratumEntry
 from safecheck.report.blocks import (
     Block,
-    Bound,
-    Chart,
     Charts,
     Column,
     Heading,
-    Point,
     Prose,
     Row,
     Section,
-    Series,
     Table,
 )
 from safecheck.report.definitions import label_of
 from safecheck.report.numbers import NONE, aligned, count
+from safecheck.report.sections.curves import beyond, curves
 from safecheck.report.sections.view import View, names_with_status, rest_sentence, stratum_line
 from safecheck.wording import SHORT_CAUTION
 
@@ -90,63 +87,17 @@ def _detail(view: View, stratum: StratumEntry) -> Section:
     blocks: list[Block] = [Prose(stratum_line(stratum)), Prose(SHORT_CAUTION, "caution")]
     if not candidates:
         return Section(title, (*blocks, Prose("No candidate has figures in this group.")))
-    charts = tuple(_charts(view, stratum, candidates))
+    charts = tuple(curves(view, stratum, candidates))
     if charts:
         caption = (
             "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio "
             "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. "
             "Curves stand slightly apart, so that bars do not hide each other."
         )
-        blocks.append(Charts(charts, caption))
+        blocks.append(Charts(charts, f"{caption}{beyond(view, stratum, candidates)}"))
     blocks += [_errors(view, stratum, candidates), *_windows(view, stratum, candidates)]
     blocks += _further(view, stratum, candidates)
     return Section(title, tuple(blocks), room_mm=125)
-
-
-def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Chart]:
-    """Error against achieved ratio, for the content's RMSE and the worst patch."""
-    charts = []
-    for measure in ("rmse_content", "worst_patch_rmse"):
-        series: dict[str, list[Point]] = {}
-        for item in candidates:
-            point = _point(view, stratum.stratum, item.candidate, measure)
-            if point:
-                series.setdefault(_codec_name(item), []).append(point)
-        drawn = tuple(Series(name, tuple(sorted(points, key=lambda p: p.x))) for name, points in series.items())
-        if drawn:
-            title, bounds = label_of(measure), _bounds(view, stratum, measure)
-            charts.append(Chart(title, "Achieved ratio, to 1", stratum.unit, drawn, bounds))
-    return charts
-
-
-def _codec_name(item: CandidateEntry) -> str:
-    """Name of a curve: the codec, with settings that differ from the default kept apart."""
-    if item.role == "delivered":
-        return "delivered copies"
-    _, comma, settings = item.candidate.partition(", ")
-    return f"{item.codec}{comma}{settings}"
-
-
-def _point(view: View, stratum: str, candidate: str, measure: str) -> Point | None:
-    """One candidate on the chart."""
-    ledger = view.ledger.get((candidate, stratum))
-    found = view.figure(candidate, stratum, measure)
-    if ledger is None or found is None or found.median is None:
-        return None
-    return Point(ledger.ratio_bits_stored_median, found.median, found.p05, found.p95, found.largest)
-
-
-def _bounds(view: View, stratum: StratumEntry, measure: str) -> tuple[Bound, ...]:
-    """Declared upper limits on the measure that reach this group's values."""
-    found = {
-        item.limit: Bound(item.bound, f"declared limit {item.bound:g}")
-        for item in view.record.outcomes
-        if item.measure == measure
-        and item.side == "at most"
-        and item.unit == stratum.unit
-        and item.outcome != "not evaluated"
-    }
-    return tuple(found.values()) if len(found) == 1 else ()
 
 
 def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
@@ -199,17 +150,19 @@ def _windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEn
     """SSIM and share of pixels changed, for each window."""
     columns = (
         Column("Window and candidate"),
+        Column("Frames", number=True),
         *_heads("SSIM, content", "1", "median", "5th\u00a0pct.", "least"),
         *_heads("Content changed by 5 levels of 255 or more", "%", "median", "95th\u00a0pct.", "largest"),
     )
     rows: list[Row] = []
     for window in view.windows(stratum.stratum):
+        seen = [item for item in candidates if view.figure(item.candidate, stratum.stratum, "ssim", window)]
         ssim, changed = (
-            [view.figure(item.candidate, stratum.stratum, measure, window) for item in candidates]
-            for measure in _WINDOW
+            [view.figure(item.candidate, stratum.stratum, measure, window) for item in seen] for measure in _WINDOW
         )
         cells = zip(
-            names_with_status(candidates),
+            names_with_status(seen),
+            [count(item.frames) if item else NONE for item in ssim],
             *(aligned(_of(ssim, part), 4) for part in ("median", "p05", "least")),
             *(aligned(_of(changed, part), 2) for part in ("median", "p95", "largest")),
             strict=True,
@@ -252,7 +205,18 @@ def _further_table(
         "Worst: the largest value where more is worse, the least where less is worse; of signed measures the one "
         "farther from zero."
     )
-    return Table(tuple(columns), tuple(rows), note=note)
+    return Table(tuple(columns), tuple(rows), note=f"{note}{_without_value(view, stratum, candidates)}")
+
+
+def _without_value(view: View, stratum: str, candidates: Sequence[CandidateEntry]) -> str:
+    """Say of which measures some frames have no value, and why."""
+    names = {item.candidate for item in candidates}
+    found: dict[str, dict[str, None]] = {}
+    for item in view.record.figures:
+        if item.without_value and item.stratum == stratum and item.candidate in names:
+            found.setdefault(item.reason, {})[label_of(item.measure)] = None
+    parts = [f"{'; '.join(labels)} ({reason})" for reason, labels in found.items()]
+    return f" Some frames have no value of: {'; '.join(parts)}." if parts else ""
 
 
 def _worst(item: FigureEntry | None) -> float | None:

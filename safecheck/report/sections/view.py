@@ -53,7 +53,7 @@ class View:
     def change(self) -> dict[str, str]:
         """The plan's table on the change, as read; empty where the plan has none."""
         table = self.record.plan.content.get("change")
-        return {key: str(value) for key, value in table.items()} if isinstance(table, dict) else {}
+        return {key: str(value) for key, value in table.items() if value is not None} if isinstance(table, dict) else {}
 
     @property
     def subject(self) -> str:
