@@ -31,6 +31,7 @@ __all__ = [
     "StratumEntry",
     "TableEntry",
     "WorstPlaceEntry",
+    "WorstStudyEntry",
 ]
 
 SCHEMA_VERSION = "1"
@@ -257,6 +258,26 @@ class WorstPlaceEntry(Document):
     may_show_text: bool = False
 
 
+class WorstStudyEntry(Document):
+    """A study of those that a candidate moved most, with its worst series and frame."""
+
+    candidate: str
+    stratum: str
+    rank: int
+    measure: str
+    unit: str
+    frames: int
+    series: int
+    """Series of the study in this stratum."""
+    median: float
+    """Over the frames of the study."""
+    largest: float
+    worst: Place
+    """Its worst frame, which lies in its worst series."""
+    worst_series_median: float
+    """Over the frames of that series."""
+
+
 class RegionEntry(Document):
     """One region under one candidate, over the frames it covers."""
 
@@ -361,6 +382,7 @@ class RecordDocument(Document):
     controls: tuple[ControlEntry, ...]
     controls_held: bool
     worst_places: tuple[WorstPlaceEntry, ...]
+    worst_studies: tuple[WorstStudyEntry, ...] = ()
     regions: tuple[RegionEntry, ...]
     regions_without_frame: tuple[str, ...] = ()
     """Labels of regions that lie on no frame assessed."""

@@ -34,6 +34,7 @@ from safecheck.statistics.ledger import ledger
 from safecheck.statistics.outcomes import outcomes
 from safecheck.statistics.places import worst_places
 from safecheck.statistics.regions import region_entries
+from safecheck.statistics.studies import worst_studies
 from safecheck.wording import NO_LIMITS, RECORD_TITLE
 
 __all__ = ["Surroundings", "summarise"]
@@ -94,6 +95,7 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
         controls=checks,
         controls_held=controls_held,
         worst_places=tuple(worst_places(measures, candidates)),
+        worst_studies=tuple(worst_studies(measures, candidates)),
         regions=tuple(region_entries(groups["regions"], candidates)),
         regions_without_frame=around.regions_without_frame,
         delivered=delivered_entry(tables["inputs"], measures),
