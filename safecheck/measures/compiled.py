@@ -20,6 +20,7 @@ __all__ = [
     "INTEGERS",
     "MASK",
     "PLACES",
+    "PLACES_WORK",
     "PLANE",
     "REAL",
     "SPANS",
@@ -37,6 +38,7 @@ VECTOR = types.Array(types.float64, 1, "C", readonly=True)
 MASK = types.Array(types.boolean, 2, "C", readonly=True)
 PLACES = types.Array(types.int64, 1, "C", readonly=True)
 FLAGS = types.Array(types.boolean, 1, "C", readonly=True)
+PLACES_WORK = types.Array(types.int64, 1, "C")
 SPANS = types.Array(types.int64, 2, "C", readonly=True)
 CUBE = types.Array(types.float64, 3, "C", readonly=True)
 CUBE_WORK = types.Array(types.float64, 3, "C")

@@ -160,10 +160,14 @@ def _touching(low: Mask, padded: Mask) -> Mask:
 
 def _touching_areas(low: Mask, padded: Mask) -> tuple[npt.NDArray[np.int32], npt.NDArray[np.bool_]]:
     """Number 4-connected areas of low values outside padding (0: none), and which touch the border or padding."""
-    from scipy.ndimage import binary_dilation, label
+    from scipy.ndimage import label
 
     areas, count = label(low & ~padded)
-    rim = binary_dilation(padded) if padded.any() else np.zeros(low.shape, np.bool_)
+    rim = padded.copy()
+    rim[1:] |= padded[:-1]
+    rim[:-1] |= padded[1:]
+    rim[:, 1:] |= padded[:, :-1]
+    rim[:, :-1] |= padded[:, 1:]
     rim[[0, -1], :] = True
     rim[:, [0, -1]] = True
     touching = np.zeros(count + 1, np.bool_)

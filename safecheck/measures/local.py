@@ -19,6 +19,7 @@ __all__ = [
     "EdgeBand",
     "PatchFigures",
     "PatchGrid",
+    "count_patches",
     "find_edge_band",
     "lay_grid",
     "lay_grid_mm",
@@ -106,8 +107,10 @@ def lay_grid(content: Mask, height: int, width: int, covered: Mask | None = None
     if height < 1 or width < 1:
         raise ValueError(f"a patch of {height} by {width} pixels does not exist")
     content = check_mask(content, content.shape)
-    counts = _count(content, height, width)
-    touched = np.zeros(counts.shape) if covered is None else _count(check_mask(covered, content.shape), height, width)
+    counts = count_patches(content, height, width)
+    touched = (
+        np.zeros(counts.shape) if covered is None else count_patches(check_mask(covered, content.shape), height, width)
+    )
     return PatchGrid(height, width, content, counts, 2 * counts >= height * width, touched == 0)
 
 
@@ -159,6 +162,15 @@ def measure_patches(grid: PatchGrid, before: Plane, after: Plane) -> PatchFigure
     )
 
 
+def count_patches(mask: Mask, height: int, width: int) -> npt.NDArray[np.float64]:
+    """Count the True pixels of each complete patch of the grid from (0, 0): (patch rows, patch columns)."""
+    from safecheck.measures import local_kernels
+
+    counts = np.zeros((mask.shape[0] // height, mask.shape[1] // width))
+    local_kernels.count_patches(mask, height, width, counts)
+    return counts
+
+
 def find_edge_band(content: Mask, padding: Mask | None = None) -> EdgeBand:
     """Find the places near the content's edge: the frame's own border is no edge.
 
@@ -198,13 +210,6 @@ def measure_band(band: EdgeBand, before: Plane, after: Plane) -> BandFigures:
     square, largest, at = sum_places(before, after, band.places)
     row, column = divmod(int(at), before.shape[1])
     return BandFigures(math.sqrt(square / band.places.size), float(largest), row, column)
-
-
-def _count(mask: Mask, height: int, width: int) -> npt.NDArray[np.float64]:
-    """True pixels of each complete patch."""
-    down, across = mask.shape[0] // height, mask.shape[1] // width
-    cut = mask[: down * height, : across * width]
-    return np.asarray(cut.reshape(down, height, across, width).sum(axis=(1, 3)), dtype=np.float64)
 
 
 def _worst(grid: PatchGrid, rmse: Plane, among: npt.NDArray[np.bool_]) -> tuple[float | None, int | None, int | None]:

@@ -26,6 +26,22 @@ def sum_patches(before: Plane, after: Plane, content: Mask, height: int, width: 
             sums[patch_row, patch_column] = total
 
 
+@compiled(MASK, INDEX, INDEX, WORK)
+def count_patches(mask: Mask, height: int, width: int, counts: Plane) -> None:
+    """Count the True pixels of each complete patch of the grid."""
+    band = np.empty(mask.shape[1])
+    for patch_row in range(counts.shape[0]):
+        band[:] = 0.0
+        for row in range(patch_row * height, (patch_row + 1) * height):
+            for column in range(mask.shape[1]):
+                band[column] += 1.0 if mask[row, column] else 0.0
+        for patch_column in range(counts.shape[1]):
+            total = 0.0
+            for column in range(width):
+                total += band[patch_column * width + column]
+            counts[patch_row, patch_column] = total
+
+
 @compiled(PLANE, PLANE, PLACES)
 def sum_places(before: Plane, after: Plane, places: Places) -> tuple[float, float, int]:
     """Sum of squared errors over a list of places, the largest absolute error, and its place."""

@@ -12,6 +12,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from safecheck.measures.local import PATCH_SIDE as _SIDE
+from safecheck.measures.local import count_patches
 from safecheck.measures.planes import Mask, Places, Plane, Vector, check_mask, check_plane
 
 __all__ = ["EDGE_OVER_MODE", "LEAST_PATCHES", "NoisePlaces", "choose_noise_places", "half_sample_mode", "measure_noise"]
@@ -21,7 +23,6 @@ EDGE_OVER_MODE = 1.5
 LEAST_PATCHES = 16
 """With fewer places noise is not evaluated."""
 _DEGREES = 61
-_SIDE = 8
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -105,10 +106,7 @@ def half_sample_mode(values: Vector) -> float:
 
 def _content_patches(content: Mask) -> tuple[Places, Places]:
     """First rows and columns of the complete patches that are wholly content."""
-    down, across = content.shape[0] // _SIDE, content.shape[1] // _SIDE
-    cut = content[: down * _SIDE, : across * _SIDE]
-    whole = cut.reshape(down, _SIDE, across, _SIDE).all(axis=(1, 3))
-    rows, columns = np.nonzero(whole)
+    rows, columns = np.nonzero(count_patches(content, _SIDE, _SIDE) == _SIDE * _SIDE)
     return rows * _SIDE, columns * _SIDE
 
 

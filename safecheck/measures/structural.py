@@ -100,7 +100,8 @@ def prepare_window(before: Plane, content: Mask, rendering: Rendering, wanted: M
     scored = content & ~clipped & _valid(before.shape)
     reach = scored if wanted is None else scored | (check_mask(wanted, before.shape) & _valid(before.shape))
     levels = render(before, rendering) if rendering.ramp is None else None
-    means, variances = _moments(before if levels is None else levels, rendering)
+    spans = _spans(reach, content)
+    means, variances = _moments(before if levels is None else levels, rendering, spans)
     content_pixels = int(np.count_nonzero(content))
     share = 100 * int(np.count_nonzero(content & clipped)) / content_pixels if content_pixels else None
     return WindowBaseline(
@@ -111,7 +112,7 @@ def prepare_window(before: Plane, content: Mask, rendering: Rendering, wanted: M
         variances=variances,
         content=content,
         scored=scored,
-        spans=_spans(reach, content),
+        spans=spans,
         scored_pixels=int(np.count_nonzero(scored)),
         content_pixels=content_pixels,
         share_clipped_percent=share,
@@ -210,15 +211,14 @@ def _ramp_of(rendering: Rendering) -> tuple[Vector, bool]:
     return np.array([ramp.low, ramp.high, ramp.centre, ramp.width]), rendering.inverted
 
 
-def _moments(before: Plane, rendering: Rendering) -> tuple[Plane, Plane]:
-    """Local means and variances of the original's display values."""
+def _moments(before: Plane, rendering: Rendering, spans: Places) -> tuple[Plane, Plane]:
+    """Local means and variances of the original's display values, where they are needed."""
     from safecheck.measures.structural_kernels import take_moments
 
     shape = (max(before.shape[0] - SIDE + 1, 0), max(before.shape[1] - SIDE + 1, 0))
     means, variances = np.empty(shape), np.empty(shape)
-    if means.size:
-        ramp, inverted = _ramp_of(rendering)
-        take_moments(before, ramp, inverted, gaussian(), means, variances)
+    ramp, inverted = _ramp_of(rendering)
+    take_moments(before, ramp, inverted, gaussian(), spans, means, variances)
     return means, variances
 
 
@@ -254,8 +254,8 @@ def _spans(reach: Mask, content: Mask) -> Places:
 
 def _ends(mask: Mask) -> tuple[Places, Places]:
     """First column and end of the True pixels of each row; where there is none, an end before its beginning."""
-    some = mask.any(axis=1)
-    columns = mask.shape[1]
-    firsts = np.where(some, mask.argmax(axis=1), columns)
-    lasts = np.where(some, columns - mask[:, ::-1].argmax(axis=1), 0)
+    from safecheck.measures.structural_kernels import find_ends
+
+    firsts, lasts = np.empty(mask.shape[0], np.int64), np.empty(mask.shape[0], np.int64)
+    find_ends(mask, firsts, lasts)
     return firsts, lasts

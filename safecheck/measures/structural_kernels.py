@@ -10,6 +10,7 @@ from safecheck.measures.compiled import (
     FLAGS,
     INDEX,
     MASK,
+    PLACES_WORK,
     PLANE,
     SPANS,
     VECTOR,
@@ -85,24 +86,46 @@ def multiply(one: Vector, other: Vector, target: Vector) -> None:
         target[c] = one[c] * other[c]
 
 
-@compiled(PLANE, VECTOR, types.boolean, VECTOR, WORK, WORK)
-def take_moments(before: Plane, ramp: Vector, inverted: bool, taps: Vector, means: Plane, variances: Plane) -> None:
-    """Local mean and variance of the original's display values, over the valid part."""
+@compiled(PLANE, VECTOR, types.boolean, VECTOR, SPANS, WORK, WORK)
+def take_moments(
+    before: Plane, ramp: Vector, inverted: bool, taps: Vector, spans: Places, means: Plane, variances: Plane
+) -> None:
+    """Local mean and variance of the original's display values, in the spans of `compare`."""
     rows, columns = before.shape
-    width = columns - SIDE + 1
+    width = max(columns - SIDE + 1, 0)
     shown, squares = np.empty(columns), np.empty(columns)
     ring, square_ring = np.empty((SIDE, width)), np.empty((SIDE, width))
     for row in range(rows):
-        show_row(before[row], ramp, inverted, shown)
-        multiply(shown, shown, squares)
-        filter_along(shown, ring[row % SIDE], taps)
-        filter_along(squares, square_ring[row % SIDE], taps)
-        top = row - SIDE + 1
-        if top >= 0:
-            filter_down(ring, (row + 1) % SIDE, means[top], taps, 0)
-            filter_down(square_ring, (row + 1) % SIDE, variances[top], taps, 0)
-            for c in range(width):
-                variances[top, c] -= means[top, c] * means[top, c]
+        first, last = spans[0, row], spans[1, row]
+        if first < last:
+            seen = shown[first : last + SIDE - 1]
+            show_row(before[row, first : last + SIDE - 1], ramp, inverted, seen)
+            multiply(seen, seen, squares)
+            filter_along(seen, ring[row % SIDE, first:last], taps)
+            filter_along(squares, square_ring[row % SIDE, first:last], taps)
+        top, centre = row - SIDE + 1, row - SIDE // 2
+        if top < 0 or not spans[2, centre] < spans[3, centre]:
+            continue
+        first, last = spans[2, centre], spans[3, centre]
+        mean, variance = means[top, first:last], variances[top, first:last]
+        filter_down(ring, (row + 1) % SIDE, mean, taps, first)
+        filter_down(square_ring, (row + 1) % SIDE, variance, taps, first)
+        for c in range(mean.size):
+            variance[c] -= mean[c] * mean[c]
+
+
+@compiled(MASK, PLACES_WORK, PLACES_WORK)
+def find_ends(mask: Mask, firsts: Places, lasts: Places) -> None:
+    """First column and end of the True pixels of each row; without any, the number of columns and 0."""
+    rows, columns = mask.shape
+    for row in range(rows):
+        first, last = 0, columns
+        while first < columns and not mask[row, first]:
+            first += 1
+        while last > first and not mask[row, last - 1]:
+            last -= 1
+        firsts[row] = first
+        lasts[row] = last if first < columns else 0
 
 
 @compiled(VECTOR, VECTOR, FLAGS, WORK, INDEX)
