@@ -103,7 +103,7 @@ def _jpeg_facts(frame: tuple[int, bytes], scan: bytes, adobe: int | None, *, jfi
 
 
 def _check_scan(process: str, scan: bytes) -> None:
-    """Hold the last three bytes of the scan header against T.81 Table B.3, which decoders often let pass."""
+    """Hold the last three bytes of the scan header against T.81 Table B.3, which decoders often overlook."""
     start, end, approximation = scan[1 + 2 * scan[0] : 4 + 2 * scan[0]]
     if process in ("baseline", "extended") and (start, end, approximation) != (0, 63, 0):
         raise InputRefused("decode", "the scan header of a sequential JPEG names other than all coefficients")

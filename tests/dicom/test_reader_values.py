@@ -128,6 +128,27 @@ def test_a_modality_table_gives_the_values_that_pydicom_gives(
     assert frame.unit == "rescaled, unit unspecified"
 
 
+@pytest.mark.parametrize("signed", [False, True])
+def test_the_first_mapped_value_is_read_by_the_sign_of_the_samples(tmp_path: Path, signed: bool) -> None:
+    # PS3.3 C.11.1.1: the second value of the descriptor takes the representation of the samples; here it is written
+    # with the other one.
+    samples = SIGNED if signed else GREY
+    table = Dataset()
+    table.add_new("LUTDescriptor", "SS", [1000, -500, 16])
+    table.add_new("LUTData", "US", list(range(1000)))
+    dataset = header_for(samples, BitsStored=12)
+    dataset.ModalityLUTSequence = [table]
+    instance = write_instance(tmp_path, dataset, samples.tobytes())
+    content = instance.source.path.read_bytes()
+    tag = b"\x28\x00\x02\x30"
+    assert content.count(tag + b"SS") == 1
+    instance.source.path.write_bytes(content.replace(tag + b"SS", tag + (b"US" if signed else b"SS")))
+    with open_instance(instance) as reader:
+        transform = reader.frame(1).modality_transform
+    assert isinstance(transform, ModalityTable)
+    assert transform.first == (-500 if signed else 65536 - 500)
+
+
 def test_a_table_of_65536_entries_is_coded_as_zero(tmp_path: Path) -> None:
     # PS3.3 C.11.1.1: the first value of the descriptor is then 0.
     dataset = grey_header()
