@@ -66,9 +66,7 @@ def _predict(levels: Array, used: Array, tile: int, across: int) -> int:
 
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _encode_magnitude(
-    buffer: Array, coder: Coder, states: Array, zone: int, grade: int, value: int
-) -> Coder:
+def _encode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, grade: int, value: int) -> Coder:
     """Write a magnitude above zero; that it is above zero is written by the caller."""
     coder = encode_bit(buffer, coder, states, ONE + zone * CLASSES + grade, 1 if value > 1 else 0)
     if value == 1:
@@ -194,7 +192,7 @@ def _expected(magnitudes: Array, place: int, side: int, before: Array, k: int) -
 
 @njit(cache=True, nogil=True, _nrt=False)
 def _look_back(levels: Array, used: Array, tile: int, across: int, higher: Array, sums: Array, before: Array) -> None:
-    """Weighted sum of magnitudes in the tiles to the left and above: the same place, and the next ones along and down."""
+    """Weighted sum of magnitudes in the tiles to the left and above: the same place and the two next higher."""
     count = before.shape[0]
     sums[:] = 0
     if tile % across > 0 and used[tile - 1]:

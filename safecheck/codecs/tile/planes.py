@@ -79,16 +79,14 @@ def _fill_tile(tile: Array, known: Array) -> None:
 
 
 @njit(cache=True, nogil=True)
-def _fill(plane: Array, known: Array, size: int) -> None:
-    for top in range(0, plane.shape[0], size):
-        for left in range(0, plane.shape[1], size):
-            part = known[top : top + size, left : left + size]
-            found = 0
-            for r in range(size):
-                for c in range(size):
-                    found += part[r, c]
-            if 0 < found < size * size:
-                _fill_tile(plane[top : top + size, left : left + size], part)
+def _fill(plane: Array, known: Array, size: int, mixed: Array) -> None:
+    """Fill each tile of which some pixels are known and some are not."""
+    across = plane.shape[1] // size
+    for tile in range(mixed.shape[0]):
+        if mixed[tile]:
+            top = tile // across * size
+            left = tile % across * size
+            _fill_tile(plane[top : top + size, left : left + size], known[top : top + size, left : left + size])
 
 
 def _known(shape: tuple[int, int], padding: Mask | None, size: int) -> npt.NDArray[np.uint8]:
@@ -97,17 +95,20 @@ def _known(shape: tuple[int, int], padding: Mask | None, size: int) -> npt.NDArr
     return known
 
 
+def _over_tiles(reduce: np.ufunc, known: npt.NDArray[np.uint8], size: int) -> npt.NDArray[np.uint8]:
+    """Reduce zeros and ones over each tile: (tiles,)."""
+    rows, columns = known.shape
+    strips = reduce.reduce(known.reshape(rows // size, size, columns), axis=1)
+    found: npt.NDArray[np.uint8] = reduce.reduce(strips.reshape(rows // size, columns // size, size), axis=2).ravel()
+    return found
+
+
 def used_tiles(shape: tuple[int, int], padding: Mask | None, size: int) -> npt.NDArray[np.uint8]:
     """1 for each tile in raster order that holds a pixel that is not padding: (tiles,)."""
     rows, columns = padded_shape(shape, size)
     if padding is None:
         return np.ones(rows // size * (columns // size), dtype=np.uint8)
-    known = _known(shape, padding, size)
-    strips = np.bitwise_or.reduce(known.reshape(rows // size, size, columns), axis=1)
-    used: npt.NDArray[np.uint8] = np.bitwise_or.reduce(
-        strips.reshape(rows // size, columns // size, size), axis=2
-    ).ravel()
-    return used
+    return _over_tiles(np.bitwise_or, _known(shape, padding, size), size)
 
 
 def to_planes(
@@ -126,8 +127,9 @@ def to_planes(
         channels = [(red + green + blue) / 4, (red - blue) / 2, (red - 2 * green + blue) / 4]
     if padding is not None or channels[0].shape != shape:
         known = _known(shape, padding, size)
+        mixed = _over_tiles(np.bitwise_or, known, size) - _over_tiles(np.bitwise_and, known, size)
         for plane in channels:
-            _fill(plane, known, size)
+            _fill(plane, known, size, mixed)
     return channels
 
 

@@ -1,6 +1,6 @@
 """The header of a code: everything a decoder needs, checked before anything is allocated.
 
-Little endian, 68 bytes, then the payload; see docs/tiled_codec.md for each field.
+Little endian, 58 bytes, then the payload; see docs/tiled_codec.md for each field.
 """
 
 from __future__ import annotations
