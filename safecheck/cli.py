@@ -243,13 +243,12 @@ def selftest() -> None:
 
     And whether the reversible ones are bit-exact.
     """
-    from safecheck.jobs.selftest import selftest_lines
+    from safecheck.jobs.selftest import lines_of, run_selftest
 
-    held = True
-    for line, good in selftest_lines():
-        held = held and good
+    checks = run_selftest()
+    for line in lines_of(checks):
         typer.echo(line)
-    if not held:
+    if any(check.reversible_exact is False for check in checks):
         raise typer.Exit(ExitCondition.CONTROLS)
 
 

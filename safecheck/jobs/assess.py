@@ -11,7 +11,6 @@ from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from safecheck.codecs import selftest
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import UsageError
 from safecheck.evaluation import Assignment, Candidate, evaluate, load_kernels
@@ -20,6 +19,7 @@ from safecheck.jobs.inputs import Inputs, gather_inputs
 from safecheck.jobs.places import write_places
 from safecheck.jobs.plans import DEFAULT_CODECS, DEFAULT_RATIOS, LoadedPlan, load_plan, plan_of_command_line
 from safecheck.jobs.regions import load_regions
+from safecheck.jobs.selftest import run_selftest
 from safecheck.jobs.site import Site, open_site
 from safecheck.jobs.versions import versions
 from safecheck.policy.plan import Scope
@@ -173,7 +173,7 @@ def assess(
     clock = {"start": time.monotonic()}
     executor = executor or LocalPool(request.workers or cores())
     tell("Checking codecs")
-    checks = selftest.run()
+    checks = run_selftest()
     run(
         prepared.tasks,
         Treatment(prepared.assignment, evaluate, open_instance),
@@ -213,16 +213,14 @@ def _warm_up(tell: Tell) -> None:
     load_kernels()
 
 
-def _record(
-    prepared: Prepared, merged: Merged, folder: Path, checks: tuple[selftest.CodecCheck, ...]
-) -> RecordDocument:
+def _record(prepared: Prepared, merged: Merged, folder: Path, checks: tuple[CodecCheckEntry, ...]) -> RecordDocument:
     """The record from the tables, with crops where they were asked for."""
     tables = write_tables(folder, prepared.inputs, merged)
     around = Surroundings(
         plan_source=prepared.loaded.source,
         key_id=prepared.site.pseudonyms.key_id,
         versions=versions(),
-        selftest=tuple(_check_entry(check) for check in checks),
+        selftest=checks,
         tables=tables,
         notes=merged.notes,
         patient_unknown_studies=prepared.inputs.patient_unknown_studies,
@@ -235,18 +233,6 @@ def _record(
         folder, record.worst_places, prepared.inputs.assessed, prepared.inputs.pairs, prepared.assignment
     )
     return record.model_copy(update={"worst_places": places})
-
-
-def _check_entry(check: selftest.CodecCheck) -> CodecCheckEntry:
-    """A line of the selftest as the record holds it."""
-    return CodecCheckEntry(
-        codec=check.codec,
-        library=check.library,
-        version=check.version,
-        available=check.available,
-        reversible_exact=check.reversible_exact,
-        detail=check.detail,
-    )
 
 
 def _without_frame(regions: RegionSet | None, folder: Path) -> tuple[str, ...]:
