@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import textwrap
+from collections.abc import Sequence
 
 from safecheck.record.document import OutcomeEntry, RecordDocument
 from safecheck.record.run import RunFacts
 from safecheck.report.numbers import count, figure, joined, plural
-from safecheck.report.sections.front import ratio_groups
+from safecheck.report.sections.front import outcome_words, ratio_groups
 from safecheck.report.sections.view import View, view_of
 from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, RUN_INVALID
 
@@ -68,26 +69,30 @@ def _asked_and_run(view: View) -> list[str]:
 
 
 def _outcomes(view: View) -> list[str]:
-    """One line per limit and proposed candidate, those outside first."""
+    """Proposed candidates by limit and outcome, those outside first."""
     record, lines = view.record, view.outcomes("proposed")
     if not lines:
         return [f"Outcomes: {record.outcomes_text or NO_LIMITS}.", ""]
-    shown = [_wrapped(_outcome(item), "- ", "  ") for item in lines[:OUTCOMES]]
-    if len(lines) > OUTCOMES:
-        shown.append(f"- and {len(lines) - OUTCOMES} more; all stand in the record")
+    groups: dict[tuple[object, ...], list[OutcomeEntry]] = {}
+    for item in lines:
+        key = (item.limit, outcome_words(item), item.studies_within, item.studies, item.bound_text)
+        groups.setdefault(key, []).append(item)
+    shown = [_wrapped(_outcome(same), "- ", "  ") for same in list(groups.values())[:OUTCOMES]]
+    if len(groups) > OUTCOMES:
+        shown.append(f"- and {len(groups) - OUTCOMES} more; all stand in the record")
     return [f"Outcomes: {record.outcomes_text.rstrip('.')}.", *shown, ""]
 
 
-def _outcome(item: OutcomeEntry) -> str:
-    """One outcome in words."""
-    unit = "" if item.unit == "1" else f" {item.unit}"
-    text = (
-        f"{item.limit} ({item.side} {figure(item.bound)}{unit}), {item.candidate}: {item.outcome}, in "
-        f"{count(item.studies_within)} of {count(item.studies)} studies; {item.bound_text}"
+def _outcome(same: Sequence[OutcomeEntry]) -> str:
+    """One limit with the candidates that share an outcome."""
+    first = same[0]
+    unit = "" if first.unit == "1" else f" {first.unit}"
+    mark = outcome_words(first).removeprefix(first.outcome)
+    return (
+        f"{first.limit} ({first.side} {figure(first.bound)}{unit}): {first.outcome} with "
+        f"{joined([item.candidate for item in same])}, in {count(first.studies_within)} of {count(first.studies)} "
+        f"studies{mark}; {first.bound_text}"
     )
-    if item.over_compressed_also_within:
-        text += "; does not tell the over-compressed control apart"
-    return text
 
 
 def _exit(record: RecordDocument) -> str:
