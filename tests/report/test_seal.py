@@ -4,6 +4,7 @@ import json
 import os
 import shutil
 import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -122,3 +123,9 @@ def test_sha256sum_checks_the_dossier_without_this_program(dossier: Path) -> Non
     assert subprocess.run(command, cwd=dossier, capture_output=True, check=False).returncode == 0
     (dossier / "record.json").write_bytes(b"{}")
     assert subprocess.run(command, cwd=dossier, capture_output=True, check=False).returncode != 0
+
+
+def test_checking_a_seal_loads_no_drawing_library() -> None:
+    code = "import sys, safecheck.report.seal, safecheck.report.summary; print('reportlab' in sys.modules)"
+    found = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert found.stdout.strip() == "False"
