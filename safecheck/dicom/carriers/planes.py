@@ -50,6 +50,7 @@ whether it falls to the one plane, to both or to none.
 _CROSSED_MM = 0.01
 """Crossings less deep than this change no area that counts."""
 _NO_AREA_MM2 = 1e-6
+_CROSSED = "contours cross themselves or each other"
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -100,6 +101,8 @@ def stack(contours: Sequence[Contour]) -> Stack:
     loops = [loop for contour in contours for loop in _loops(contour)]
     areas = [_vector_area(loop) for loop in loops]
     sizes = np.array([float(np.linalg.norm(area)) for area in areas])
+    if any(_lobes_cancel(loop) for loop in itertools.compress(loops, sizes < _NO_AREA_MM2)):
+        raise RegionError(_CROSSED)
     if not loops or sizes.max() < _NO_AREA_MM2:
         raise RegionError("no contour encloses an area")
     normal = _common_normal(areas, sizes)
@@ -115,7 +118,7 @@ def stack(contours: Sequence[Contour]) -> Stack:
     found.sort(key=lambda item: item[0])
     planes = _by_plane(found)
     if any(_cross(rings) for _, rings in planes):
-        raise RegionError("contours cross themselves or each other")
+        raise RegionError(_CROSSED)
     bounds = slabs_mm([position for position, _ in planes])
     drawn = tuple(ContourPlane(tuple(rings), *each) for (_, rings), each in zip(planes, bounds, strict=True))
     empty = sum(float(np.linalg.norm(_vector_area(contour))) < _NO_AREA_MM2 for contour in contours)
@@ -180,6 +183,14 @@ def _vector_area(loop: Contour) -> _Direction:
     points = loop - loop.mean(axis=0)
     total: _Direction = np.cross(points, np.roll(points, -1, axis=0)).sum(axis=0) / 2
     return total
+
+
+def _lobes_cancel(loop: Contour) -> bool:
+    """Whether a loop without area is no line: its lobes then run in opposite senses."""
+    points = loop - loop[0]
+    reach = np.linalg.norm(points, axis=1)
+    along = points[int(reach.argmax())] / reach.max()
+    return bool(np.linalg.norm(np.cross(points, along), axis=1).max() > _CROSSED_MM)
 
 
 def _common_normal(areas: Sequence[_Direction], sizes: npt.NDArray[np.float64]) -> _Direction:
