@@ -4,8 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-
-import numpy as np
+from importlib import import_module
 
 from safecheck.measures.display import Rendering
 from safecheck.measures.local import PATCH_SIDE as _SIDE
@@ -219,10 +218,8 @@ def measure_frame(baseline: Baseline, after: Plane) -> FrameFigures:
 
 def load_kernels() -> None:
     """Compile the kernels, or take them from the disk: once in a parent process, before workers start."""
-    plane = np.zeros((16, 16))
-    everything = np.ones(plane.shape, np.bool_)
-    rendering = Rendering("LINEAR", 0.0, 2.0)
-    measure_frame(prepare_baseline(plane, everything, peak_bits=1.0, stored_unit=1.0, renderings=(rendering,)), plane)
+    for module in ("colour", "local", "noise", "pointwise", "selection", "structural"):
+        import_module(f"safecheck.measures.{module}_kernels")
 
 
 def _noise(places: NoisePlaces | None, after: Plane) -> tuple[float | None, float | None]:

@@ -35,9 +35,7 @@ def plain(before: Plane, after: Plane) -> tuple[float, ...]:
     for centre, width in WINDOWS:
         shown = [np.clip((x - (centre - 0.5)) / (width - 1) + 0.5, 0, 1) * 255 for x in (before, after)]
         figures.append(
-            structural_similarity(
-                *shown, gaussian_weights=True, sigma=1.5, use_sample_covariance=False, data_range=255
-            )
+            structural_similarity(*shown, gaussian_weights=True, sigma=1.5, use_sample_covariance=False, data_range=255)
         )
     error = after - before
     figures.append(peak_signal_noise_ratio(before, after, data_range=16383))
@@ -89,6 +87,11 @@ def time_of(call: Callable[[], object]) -> float:
     return (time.process_time() - start) * 1e3
 
 
+def say(line: str) -> None:
+    """Write one line of the result."""
+    sys.stdout.write(line + "\n")
+
+
 def compare(name: str, before: Plane, padding: Mask) -> None:
     """Print medians and ratios for one frame."""
     after = before + np.round(np.random.default_rng(0).normal(0, 5, before.shape))
@@ -100,12 +103,12 @@ def compare(name: str, before: Plane, padding: Mask) -> None:
         times["prepare"].append(time_of(lambda: prepare(before, padding)))
         times["measure"].append(time_of(lambda: measure(baseline, after)))
     script, prepared, measured = (statistics.median(times[key]) for key in ("plain", "prepare", "measure"))
-    print(f"{name}: {before.shape[0]}x{before.shape[1]}, content {100 * baseline.content.mean():.0f} %")
-    print(f"  plain script            {script:8.2f} ms a candidate")
-    print(f"  measures                {measured:8.2f} ms a candidate  ({script / measured:.1f} times faster)")
-    print(f"  prepared once a frame   {prepared:8.2f} ms")
+    say(f"{name}: {before.shape[0]}x{before.shape[1]}, content {100 * baseline.content.mean():.0f} %")
+    say(f"  plain script            {script:8.2f} ms a candidate")
+    say(f"  measures                {measured:8.2f} ms a candidate  ({script / measured:.1f} times faster)")
+    say(f"  prepared once a frame   {prepared:8.2f} ms")
     share = measured + prepared / CANDIDATES
-    print(f"  with {CANDIDATES} candidates       {share:8.2f} ms a candidate  ({script / share:.1f} times faster)")
+    say(f"  with {CANDIDATES} candidates       {share:8.2f} ms a candidate  ({script / share:.1f} times faster)")
 
 
 def large_frame() -> None:
@@ -124,7 +127,7 @@ def large_frame() -> None:
     measured = time_of(lambda: measure(baseline, after))
     unit = 1024 * (1024 if sys.platform == "darwin" else 1)
     grown = (resource.getrusage(resource.RUSAGE_SELF).ru_maxrss - start) / unit
-    print(f"2000x2500, two windows: prepared {prepared:.0f} ms, a candidate {measured:.0f} ms, memory +{grown:.0f} MB")
+    say(f"2000x2500, two windows: prepared {prepared:.0f} ms, a candidate {measured:.0f} ms, memory +{grown:.0f} MB")
 
 
 def main() -> None:

@@ -1,10 +1,13 @@
 import dataclasses
 import math
+import sys
+from pathlib import Path
 
 import numpy as np
 import pytest
 from hypothesis import given, settings
 
+from safecheck.measures import baseline
 from safecheck.measures.baseline import FrameFigures, load_kernels, measure_frame, prepare_baseline
 from safecheck.measures.colour import ColourFigures
 from safecheck.measures.display import Rendering
@@ -35,9 +38,9 @@ def test_figures_are_named_as_columns(figures: type, row: type) -> None:
 @given(two_planes())
 def test_every_figure_is_finite_or_null(planes: tuple[Plane, Plane, Mask]) -> None:
     before, after, content = planes
-    baseline = prepare_baseline(before, content, peak_bits=4095, stored_unit=1, spacing_mm=(0.9, 0.9))
+    prepared = prepare_baseline(before, content, peak_bits=4095, stored_unit=1, spacing_mm=(0.9, 0.9))
     for candidate in (before, after):
-        for name, value in dataclasses.asdict(measure_frame(baseline, candidate)).items():
+        for name, value in dataclasses.asdict(measure_frame(prepared, candidate)).items():
             assert value is None or math.isfinite(value), name
 
 
@@ -58,7 +61,7 @@ def test_a_real_frame_is_measured_in_one_go(ct_pair: tuple[Plane, Plane]) -> Non
     before, after = ct_pair
     content = before > -500
     padding = before == before.min()
-    baseline = prepare_baseline(
+    prepared = prepare_baseline(
         before,
         content,
         peak_bits=16383,
@@ -67,7 +70,7 @@ def test_a_real_frame_is_measured_in_one_go(ct_pair: tuple[Plane, Plane]) -> Non
         spacing_mm=(0.478516, 0.478516),
         renderings=(Rendering("LINEAR", 40, 80), Rendering("LINEAR", 40, 400)),
     )
-    figures = measure_frame(baseline, after)
+    figures = measure_frame(prepared, after)
     error = (after - before)[content]
     mse = float(np.mean(error**2))
     assert figures.rmse_content == pytest.approx(math.sqrt(mse), rel=1e-9)
@@ -80,16 +83,16 @@ def test_a_real_frame_is_measured_in_one_go(ct_pair: tuple[Plane, Plane]) -> Non
     assert figures.noise_sd_after is not None
     assert figures.noise_sd_kept_percent == pytest.approx(100 * figures.noise_sd_after / figures.noise_sd, rel=1e-12)
     assert figures.rmse_over_noise == pytest.approx(math.sqrt(mse) / figures.noise_sd, rel=1e-9)
-    assert len([measure_window(window, after) for window in baseline.windows]) == 2
+    assert len([measure_window(window, after) for window in prepared.windows]) == 2
 
 
 def test_the_same_call_gives_the_same_bits(ct_pair: tuple[Plane, Plane]) -> None:
     before, after = ct_pair
-    baseline = prepare_baseline(
+    prepared = prepare_baseline(
         before, before > -500, peak_bits=16383, stored_unit=1, renderings=(Rendering("LINEAR", 40, 400),)
     )
-    assert measure_frame(baseline, after) == measure_frame(baseline, after.copy())
-    assert measure_window(baseline.windows[0], after)[0] == measure_window(baseline.windows[0], after.copy())[0]
+    assert measure_frame(prepared, after) == measure_frame(prepared, after.copy())
+    assert measure_window(prepared.windows[0], after)[0] == measure_window(prepared.windows[0], after.copy())[0]
 
 
 def test_a_frame_of_one_pixel_is_measured() -> None:
@@ -100,5 +103,9 @@ def test_a_frame_of_one_pixel_is_measured() -> None:
     assert (figures.bias_frame, figures.max_content, figures.worst_patch_rmse, figures.noise_sd) == (2, 2, None, None)
 
 
-def test_kernels_can_be_loaded_beforehand() -> None:
+def test_loading_kernels_loads_all_there_are() -> None:
     load_kernels()
+    folder = Path(baseline.__file__).parent
+    names = {f"safecheck.measures.{path.stem}" for path in folder.glob("*_kernels.py")}
+    assert len(names) == 6
+    assert names <= set(sys.modules)

@@ -112,6 +112,12 @@ def test_only_the_flat_ends_are_clipped(centre: float, width: float, function: s
     assert ((inside > -1e-9) & (inside < 255 + 1e-9)).all()
 
 
+# Computed by hand from the standard's two conditions: at or below the low end, above the high end.
+def test_the_low_end_is_clipped_and_the_high_end_is_not() -> None:
+    values = np.array([[-161.0, -160.0, -159.0, 239.0, 240.0]])
+    assert find_clipped(values, Rendering("LINEAR", 40, 400)).tolist() == [[True, True, False, False, True]]
+
+
 def test_sigmoid_clips_nothing_and_does_not_overflow() -> None:
     rendering = Rendering("SIGMOID", 0, 1e-3)
     values = np.array([[-1e6, 0.0, 1e6]])

@@ -157,12 +157,14 @@ def test_a_frame_smaller_than_the_window_has_no_ssim_but_counts_levels() -> None
     assert figures.max_levels == 5
 
 
-# A change of exactly five levels counts, although 5 * 255 / 255 need not come out as 5: computed by hand.
+# A change of exactly five levels counts, although the difference of two doubles need not come out as 5.
 @pytest.mark.parametrize("width", [255.0, 51.0, 510.0, 127.5])
 def test_a_change_of_exactly_five_levels_counts(width: float) -> None:
-    before = np.full((12, 12), 3.1)
+    before = np.linspace(-0.4, 0.4, 400).reshape(20, 20) * width
     step = 5 * width / 255
-    rendering = Rendering("LINEAR_EXACT", 3.1, width)
+    rendering = Rendering("LINEAR_EXACT", 0, width)
+    change = render(before + step, rendering) - render(before, rendering)
+    assert (change < 5).any()
     baseline = prepare_window(before, _everywhere(before), rendering)
     assert measure_window(baseline, before + step)[0].changed_5_levels_percent == 100
     assert measure_window(baseline, before + step * 0.999)[0].changed_5_levels_percent == 0
