@@ -76,7 +76,7 @@ CAUTIONS: tuple[str, ...] = (
 CAUTIONS_WHEN: MappingProxyType[str, str] = MappingProxyType(
     {
         "mammography": "Mammography is among the images: several jurisdictions forbid irreversible compression of it.",
-        "radiotherapy": "Radiotherapy planning images are among the images: dose depends on their values.",
+        "radiotherapy": "CT is among the images: where it serves radiotherapy planning, dose depends on its values.",
         "quantification": "PET or NM images are among the images: quantities are read from their values.",
         "density": "Bone density, calcium or lung density may be read from these images: small shifts of value matter.",
         "ai_or_cad": "These images may be the input of AI or CAD, whose response to recompression was not examined.",
