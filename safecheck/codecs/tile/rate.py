@@ -98,6 +98,7 @@ COSTS = np.array(
 FIRST_COST = -192
 """Where `COSTS` begins, in 1/128 octave of (weighted sum of magnitudes, see `magnitude_counts`) over step."""
 MOST_TRIES = 16
+BISECT_FROM = 5
 
 
 def predicted_bytes(counts: npt.NDArray[np.int64], index: int) -> int:
@@ -115,13 +116,22 @@ def _step_for(counts: npt.NDArray[np.int64], wanted: float) -> int:
     return min(bisect.bisect_left(range(STEPS), -wanted, key=lambda k: -predicted_bytes(counts, k)), STEPS - 1)
 
 
+def _secant(tried: dict[int, bytes], target_bytes: float) -> int:
+    """Step index at which the line through the two codes nearest to the asked size has it."""
+    first, second = sorted(tried, key=lambda k: (abs(len(tried[k]) - target_bytes), k))[:2]
+    rise = len(tried[second]) - len(tried[first])
+    if rise == 0:
+        return (first + second) // 2
+    return first + round((second - first) * (target_bytes - len(tried[first])) / rise)
+
+
 def search(
     write: Callable[[int], bytes], counts: npt.NDArray[np.int64], fixed_bytes: int, target_bytes: float
 ) -> tuple[int, bytes, int]:
     """Find the step whose code has the asked size.
 
-    The first step comes from the counts alone; each further one from the counts corrected by the last try, or halfway
-    between known bounds where that does not close in.
+    The first step comes from the counts alone, the second from the counts corrected by the first try, further ones
+    from the line through the two nearest tries, or halfway between known bounds where that does not close in.
 
     Parameters
     ----------
@@ -153,9 +163,12 @@ def search(
             coarser = index
         if coarser - finer <= 1:
             break
-        factor = max(len(code) - fixed_bytes, 1) / max(predicted_bytes(counts, index), 1)
-        guess = _step_for(counts, (target_bytes - fixed_bytes) / factor)
-        if len(tried) > 3:
+        if len(tried) == 1:
+            factor = max(len(code) - fixed_bytes, 1) / max(predicted_bytes(counts, index), 1)
+            guess = _step_for(counts, (target_bytes - fixed_bytes) / factor)
+        elif len(tried) < BISECT_FROM:
+            guess = _secant(tried, target_bytes)
+        else:
             guess = (finer + coarser) // 2
         index = min(max(guess, finer + 1), coarser - 1)
     best = min(tried, key=lambda k: (abs(len(tried[k]) - target_bytes), k))

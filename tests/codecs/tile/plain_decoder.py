@@ -173,7 +173,8 @@ def table(transform: int, n: int) -> Array:
     else:
         pairs = [kind(2 * np.pi * f * x / n) * math.sqrt(2 / n) for f in range(1, n // 2) for kind in (np.cos, np.sin)]
         rows = [np.full(n, 1 / math.sqrt(n)), *pairs, (-1.0) ** x / math.sqrt(n)]
-    return np.rint(np.array(rows) * 2**22) / 2**22
+    rounded: Array = np.rint(np.array(rows) * 2**22) / 2**22
+    return rounded
 
 
 def weight(weighting: int, n: int, plane: int) -> Array:
