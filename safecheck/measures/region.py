@@ -12,6 +12,7 @@ from safecheck.measures.pointwise import PERCENTILE_FROM
 from safecheck.measures.selection import percentile
 
 __all__ = [
+    "LEAST_COVERAGE",
     "ContrastFigures",
     "RegionBaseline",
     "RegionFigures",
@@ -20,6 +21,9 @@ __all__ = [
     "measure_region",
     "prepare_region",
 ]
+
+LEAST_COVERAGE = 1e-9
+"""A smaller share is rounding of the coverage, not a piece of the region."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -77,7 +81,7 @@ def prepare_region(before: Plane, coverage: Plane, inside: Mask, padding: Mask |
     before
         (rows, columns), in the frame's unit.
     coverage
-        (rows, columns), 0 to 1.
+        (rows, columns), 0 to 1; below `LEAST_COVERAGE` a pixel takes no part.
     inside
         (rows, columns), boolean: pixels whose centre is inside.
     padding
@@ -94,7 +98,7 @@ def prepare_region(before: Plane, coverage: Plane, inside: Mask, padding: Mask |
     if not (coverage.min() >= 0 and coverage.max() <= 1 + 1e-12):
         raise ValueError("a coverage lies outside 0 to 1")
     native = np.ones(before.shape, np.bool_) if padding is None else ~check_mask(padding, before.shape)
-    places = np.flatnonzero((coverage > 0) & native)
+    places = np.flatnonzero((coverage > LEAST_COVERAGE) & native)
     centres = np.flatnonzero(inside & native)
     flat = before.ravel()
     shape = (before.shape[0], before.shape[1])

@@ -98,6 +98,13 @@ def test_padding_takes_no_part() -> None:
     assert (figures.mean_before, figures.sd_before, figures.bias) == (10, 0, 1)
 
 
+def test_rounding_of_the_coverage_is_no_piece_of_a_region() -> None:
+    coverage = np.full((5, 5), 1e-16)
+    coverage[2, 2] = 1
+    baseline = prepare_region(np.zeros((5, 5)), coverage, coverage > 0.5)
+    assert baseline.places.tolist() == [12]
+
+
 @pytest.mark.parametrize("coverage", [0.0, 0.3], ids=["none", "edges only"])
 def test_a_region_with_no_centre_inside_has_no_largest_error(coverage: float) -> None:
     before = np.zeros((4, 4))
