@@ -180,16 +180,14 @@ def _of_part(part: Part, grid: Grid) -> Covered | None:
     if isinstance(placement, OnFrames):
         rings = part.shape.rings() if placement.holds(grid) else None
     else:
-        rings = _on_grid(part.shape.rings(), placement, grid)
+        rings = _on_grid(part.shape, placement, grid)
     if rings is None:
         return None
     return Covered(cover(rings, grid.rows, grid.columns), find_centres(rings, grid.rows, grid.columns))
 
 
-def _on_grid(
-    rings: list[npt.NDArray[np.float64]], placement: InPatient, grid: Grid
-) -> list[npt.NDArray[np.float64]] | None:
-    """Bring rings in a plane of the patient to (row, column) of a parallel frame within the slab."""
+def _on_grid(shape: Shape, placement: InPatient, grid: Grid) -> list[npt.NDArray[np.float64]] | None:
+    """Bring a shape's rings in a plane of the patient to (row, column) of a parallel frame within the slab."""
     if grid.position_mm is None or grid.along_rows is None or grid.along_columns is None or grid.spacing_mm is None:
         return None
     if not grid.frame_of_reference or grid.frame_of_reference != placement.frame_of_reference:
@@ -204,7 +202,7 @@ def _on_grid(
     if not -placement.depth_mm / 2 < distance <= placement.depth_mm / 2:
         return None
     brought = []
-    for ring in rings:
+    for ring in shape.rings():
         points = origin + ring[:, :1] * plane_down + ring[:, 1:] * plane_right
         brought.append(np.column_stack([points @ down / grid.spacing_mm[0], points @ right / grid.spacing_mm[1]]))
     return brought

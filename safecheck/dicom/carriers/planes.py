@@ -50,6 +50,7 @@ whether it falls to the one plane, to both or to none.
 _CROSSED_MM = 0.01
 """Crossings less deep than this change no area that counts."""
 _NO_AREA_MM2 = 1e-6
+_PART = 256
 _CROSSED = "contours cross themselves or each other"
 
 
@@ -224,16 +225,22 @@ def _cross(rings: Sequence[_Flat]) -> bool:
     """Whether any two edges of a plane cross by more than a touch."""
     starts = np.concatenate(rings)
     ends = np.concatenate([np.roll(ring, -1, axis=0) for ring in rings])
+    low, high = np.minimum(starts, ends).T, np.maximum(starts, ends).T
     # By parts, so that memory stays bounded for contours of many points.
-    parts = range(0, len(starts), 256)
-    return any(_parts_cross(starts[at : at + 256], ends[at : at + 256], starts, ends) for at in parts)
+    for at in range(0, len(starts), _PART):
+        part = slice(at, at + _PART)
+        near = (low[0, part, None] <= high[0]) & (low[0] <= high[0, part, None])
+        near &= (low[1, part, None] <= high[1]) & (low[1] <= high[1, part, None])
+        one, other = np.nonzero(near)
+        if _pairs_cross(starts[at + one], ends[at + one], starts[other], ends[other]):
+            return True
+    return False
 
 
-def _parts_cross(starts: _Flat, ends: _Flat, other_starts: _Flat, other_ends: _Flat) -> bool:
-    one = _distances(starts[:, None], ends[:, None], other_starts[None])
-    two = _distances(starts[:, None], ends[:, None], other_ends[None])
-    three = _distances(other_starts[None], other_ends[None], starts[:, None])
-    four = _distances(other_starts[None], other_ends[None], ends[:, None])
+def _pairs_cross(starts: _Flat, ends: _Flat, other_starts: _Flat, other_ends: _Flat) -> bool:
+    """Whether edges of equal place cross: each separates the ends of the other."""
+    one, two = _distances(starts, ends, other_starts), _distances(starts, ends, other_ends)
+    three, four = _distances(other_starts, other_ends, starts), _distances(other_starts, other_ends, ends)
     deep = np.minimum.reduce([np.abs(one), np.abs(two), np.abs(three), np.abs(four)]) > _CROSSED_MM
     return bool(np.any(deep & (one * two < 0) & (three * four < 0)))
 
