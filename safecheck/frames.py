@@ -335,6 +335,18 @@ class Frame:
         return self.modality_transform.apply(samples)
 
     @property
+    def stratum(self) -> str:
+        """Group of like images: that of the origin, and the unit where it is not the usual one, since units never mix."""
+        usual = (
+            "luma level"
+            if self.raster.format.channels == 3
+            else "HU"
+            if self.origin.modality == "CT"
+            else "stored value"
+        )
+        return self.origin.stratum if self.unit == usual else f"{self.origin.stratum}, in units of {self.unit!r}"
+
+    @property
     def peak_of_bits(self) -> float:
         """Largest less least value that the stored bits can express, in the frame's unit."""
         ends = np.array([[self.raster.format.lowest, self.raster.format.highest]])

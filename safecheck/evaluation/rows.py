@@ -12,6 +12,7 @@ from safecheck.evaluation.treatment import Treated
 from safecheck.frames import DisplayWindow, Rescale, SizeBasis, Values
 from safecheck.measures.baseline import measure_frame
 from safecheck.measures.colour import ColourFigures, measure_colour
+from safecheck.measures.local import PATCH_SIDE
 from safecheck.measures.padding import count_became_padding, count_padding_changed
 from safecheck.measures.psnr import measure_psnr_db
 from safecheck.measures.region import RegionFigures, average_map, measure_contrast, measure_region
@@ -33,6 +34,7 @@ def measure_row(original: Original, treated: Treated) -> MeasureRow:
         **dataclasses.asdict(figures),
         **_padding(original, treated),
         **dataclasses.asdict(_colour(original, treated)),
+        worst_patch_region=_touched(original, figures.worst_patch_row, figures.worst_patch_column),
         outside_flattened_max=treated.flattened_max,
         unchanged=samples.shape == treated.samples.shape and bool(np.array_equal(samples, treated.samples)),
     )
@@ -43,7 +45,7 @@ def _named(original: Original, treated: Treated) -> dict[str, Any]:
     frame = original.frame
     return {
         **dataclasses.asdict(frame.key),
-        "stratum": frame.origin.stratum,
+        "stratum": frame.stratum,
         "modality": frame.origin.modality,
         "body_part": frame.origin.body_part,
         "unit": frame.unit,
@@ -108,6 +110,15 @@ def _written(original: Original, treated: Treated) -> dict[str, Any]:
         "times_smaller_than_lossless": smallest.size_bytes / code_bytes,
         "times_smaller_than_now": original.frame.origin.source_bytes / code_bytes,
     }
+
+
+def _touched(original: Original, row: int | None, column: int | None) -> str:
+    """Label of the first region that touches a patch, or ''."""
+    if row is None or column is None:
+        return ""
+    inside = np.s_[row : row + PATCH_SIDE, column : column + PATCH_SIDE]
+    touching = (placed.region.label for placed in original.regions if placed.covered.fractions[inside].any())
+    return next(touching, "")
 
 
 def _padding(original: Original, treated: Treated) -> dict[str, Any]:

@@ -288,7 +288,7 @@ class RegionEntry(Document):
     unit: str
     frames: int
     area_mm2: float | None = None
-    """Mean over frames."""
+    """Median over frames, as are the means, SDs, CNR and noise removed."""
     area_pixels: float
     rmse_median: float | None = None
     rmse_largest: float | None = None

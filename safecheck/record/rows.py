@@ -144,6 +144,7 @@ class MeasureRow(TreatedFrame):
     worst_patch_rmse: float | None = optional(IMAGE_UNIT, "Largest RMSE of the 8x8 patches with half content or more.")
     worst_patch_row: int | None = optional("pixels", "First row of that patch.")
     worst_patch_column: int | None = optional("pixels", "First column of that patch.")
+    worst_patch_region: str = column("", "Label of a drawn region that touches that patch, or empty.")
     patch_p95_rmse: float | None = optional(IMAGE_UNIT, "95th percentile of the patches' RMSE.")
     patch_median_rmse: float | None = optional(IMAGE_UNIT, "Median of the patches' RMSE.")
     window_mm: float | None = optional("mm", "Side of the larger patch; null without a spacing.")

@@ -16,6 +16,8 @@ Coverage = npt.NDArray[np.float64]
 Centres = npt.NDArray[np.bool_]
 """(rows, columns); pixels whose centre is inside."""
 
+_LEAST = 1e-11
+
 
 def cover(rings: Sequence[Ring], rows: int, columns: int) -> Coverage:
     """Fraction of each pixel inside a set of rings, by the even-odd rule.
@@ -48,8 +50,11 @@ def cover(rings: Sequence[Ring], rows: int, columns: int) -> Coverage:
         # From pixel centres on whole numbers to pixel corners on whole numbers.
         accumulate_ring(one, np.ascontiguousarray(ring) + 0.5)
         sums += sense * one
-    covered = np.cumsum(sums, axis=1)[:, :columns]
-    return np.clip(covered, 0.0, 1.0)
+    covered = np.clip(np.cumsum(sums, axis=1)[:, :columns], 0.0, 1.0)
+    # What the sums leave by rounding beside a shape is not coverage.
+    covered[covered < _LEAST] = 0.0
+    covered[covered > 1 - _LEAST] = 1.0
+    return covered
 
 
 def find_centres(rings: Sequence[Ring], rows: int, columns: int) -> Centres:

@@ -27,7 +27,7 @@ def worst_places(groups: Groups, candidates: tuple[CandidateEntry, ...]) -> Iter
             order = known[np.argsort(-values[known], kind="stable")][:PLACES_PER_STRATUM]
             listed = [int(index) for index in order]
             places = places_at(groups.reader, listed, row="worst_patch_row", column="worst_patch_column")
-            extents = groups.reader.at(listed, ("rows", "columns", "unit", "may_show_text"))
+            extents = groups.reader.at(listed, ("rows", "columns", "unit", "may_show_text", "worst_patch_region"))
             for rank, (index, place, extent) in enumerate(zip(listed, places, extents, strict=True), start=1):
                 yield WorstPlaceEntry(
                     candidate=candidate.candidate,
@@ -41,5 +41,6 @@ def worst_places(groups: Groups, candidates: tuple[CandidateEntry, ...]) -> Iter
                     columns=extent["columns"],
                     size_rows=PATCH,
                     size_columns=PATCH,
+                    in_region=extent["worst_patch_region"],
                     may_show_text=extent["may_show_text"],
                 )

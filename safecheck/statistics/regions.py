@@ -12,7 +12,7 @@ from safecheck.statistics.groups import Groups, Indices, place_at
 
 __all__ = ["region_entries"]
 
-_MEANS = (
+_MIDDLES = (
     "area_mm2",
     "area_pixels",
     "mean_before",
@@ -23,7 +23,7 @@ _MEANS = (
     "cnr_after",
     "noise_removed_percent",
 )
-"""Columns of which the entry holds the mean over frames."""
+"""Columns of which the entry holds the median over frames."""
 
 
 def region_entries(groups: Groups, candidates: tuple[CandidateEntry, ...]) -> Iterator[RegionEntry]:
@@ -32,7 +32,7 @@ def region_entries(groups: Groups, candidates: tuple[CandidateEntry, ...]) -> It
         return
     region_of, regions = groups.reader.codes("region")
     unit_of, units = groups.reader.codes("unit")
-    numbers = {name: groups.reader.numbers(name) for name in (*_MEANS, "rmse", "bias", "max")}
+    numbers = {name: groups.reader.numbers(name) for name in (*_MIDDLES, "rmse", "bias", "max")}
     for candidate in candidates:
         rows = groups.of_candidate(candidate.candidate)
         for region in np.unique(region_of[rows]):
@@ -54,7 +54,7 @@ def _entry(
     texts = groups.reader.at([int(rows[0])], ("label", "region_role", "background"))[0]
     known = rows[~np.isnan(numbers["max"][rows])]
     worst = int(known[np.argmax(numbers["max"][known])]) if len(known) else None
-    means = {name: _mean(numbers[name][rows]) for name in _MEANS}
+    middles = {name: _median(numbers[name][rows]) for name in _MIDDLES}
     return RegionEntry(
         candidate=candidate,
         region=region,
@@ -62,8 +62,8 @@ def _entry(
         role=texts["region_role"],
         unit=unit,
         frames=len(rows),
-        area_mm2=means.pop("area_mm2"),
-        area_pixels=means.pop("area_pixels") or 0.0,
+        area_mm2=middles.pop("area_mm2"),
+        area_pixels=middles.pop("area_pixels") or 0.0,
         rmse_median=_median(numbers["rmse"][rows]),
         rmse_largest=_largest(numbers["rmse"][rows]),
         bias_median=_median(numbers["bias"][rows]),
@@ -71,18 +71,12 @@ def _entry(
         max_largest=_largest(numbers["max"][rows]),
         background=texts["background"],
         worst=None if worst is None else place_at(groups.reader, worst, row="max_row", column="max_column"),
-        **means,
+        **middles,
     )
 
 
 def _known(values: npt.NDArray[np.float64]) -> npt.NDArray[np.float64]:
     return values[~np.isnan(values)]
-
-
-def _mean(values: npt.NDArray[np.float64]) -> float | None:
-    """Mean of what is known; None of nothing."""
-    known = _known(values)
-    return float(known.mean()) if len(known) else None
 
 
 def _median(values: npt.NDArray[np.float64]) -> float | None:

@@ -58,6 +58,15 @@ def test_a_ring_inside_another_cuts_a_hole_whatever_its_sense() -> None:
         assert covered[8, 8] == 0.0
 
 
+def test_no_rounding_is_left_beside_a_shape() -> None:
+    shape = Ellipse(centre=(100.3, 200.7), height=33.3, width=21.1, angle_degrees=31)
+    covered = cover(shape.rings(), 512, 512)
+    near = np.zeros((512, 512), dtype=bool)
+    near[80:122, 180:222] = True
+    assert not covered[~near].any()
+    assert (covered[98:103, 199:203] == 1.0).all()
+
+
 def test_what_lies_outside_the_image_is_cut_off() -> None:
     assert cover(Rectangle(centre=(0, 0), height=4, width=4).rings(), 8, 8).sum() == pytest.approx(6.25)
     assert cover(Rectangle(centre=(4, 7), height=4, width=40).rings(), 8, 8).sum() == pytest.approx(32)

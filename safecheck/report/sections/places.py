@@ -9,14 +9,15 @@ import numpy as np
 
 from safecheck.record.crops import read_crop
 from safecheck.record.document import WorstPlaceEntry
-from safecheck.report.blocks import Block, Pictures, PlaceCard, Places, Prose, Section
+from safecheck.report.blocks import Block, Column, Heading, Pictures, PlaceCard, Places, Prose, Row, Section, Table
 from safecheck.report.definitions import label_of
 from safecheck.report.numbers import NONE, count, figure
-from safecheck.report.sections.view import View, rest_sentence
+from safecheck.report.sections.view import View, place_short, rest_sentence
 
 __all__ = ["places"]
 
 CARDS = 30
+STUDIES = 20
 _TEXT = "No picture: the frame may carry text."
 
 
@@ -35,19 +36,57 @@ def places(view: View) -> Section:
     blocks: list[Block] = [Prose(intro, "note"), Places(cards)]
     if rest:
         blocks.append(Prose(rest, "note"))
-    return Section("Worst places", tuple(blocks))
+    return Section("Worst places", (*_studies(view), *blocks))
+
+
+def _studies(view: View) -> list[Block]:
+    """The studies with the worst frames, each with its worst series and frame."""
+    entries = sorted(view.record.worst_studies, key=lambda item: (item.rank, *_place_in_order(view, item.candidate)))
+    if not entries:
+        return []
+    shown = entries[:STUDIES]
+    columns = (
+        Column("Candidate"),
+        Column("Group of like images"),
+        Column("Study"),
+        Column("Frames", number=True),
+        Column("median", number=True, over=label_of(shown[0].measure)),
+        Column("worst frame", number=True, over=label_of(shown[0].measure)),
+        Column("Unit"),
+        Column("Worst frame"),
+        Column("Median of its series", number=True),
+    )
+    cells = zip(
+        [item.candidate for item in shown],
+        [item.stratum for item in shown],
+        [item.worst.study for item in shown],
+        [count(item.frames) for item in shown],
+        [figure(item.median) for item in shown],
+        [figure(item.largest) for item in shown],
+        [item.unit for item in shown],
+        [f"series {_index(item.worst.series_number)}, {place_short(item.worst)}" for item in shown],
+        [figure(item.worst_series_median) for item in shown],
+        strict=True,
+    )
+    note = rest_sentence(len(shown), len(entries), "all stand in record.json")
+    table = Table(columns, tuple(Row(row) for row in cells), note=note)
+    return [Heading("Worst studies, by their worst frame"), table, Heading("Worst patches")]
 
 
 def _order(view: View) -> Callable[[WorstPlaceEntry], tuple[int, bool, int, str]]:
     """Sort by rank first, so that a cut list keeps the worst place of every candidate and group."""
-    status = {item.candidate: index for index, item in enumerate(view.candidates)}
-    proposed = {item.candidate for item in view.candidates if item.status == "proposed"}
 
     def key(entry: WorstPlaceEntry) -> tuple[int, bool, int, str]:
-        order = status.get(entry.candidate, len(status))
-        return entry.rank, entry.candidate not in proposed, order, entry.stratum
+        return entry.rank, *_place_in_order(view, entry.candidate), entry.stratum
 
     return key
+
+
+def _place_in_order(view: View, candidate: str) -> tuple[bool, int]:
+    """Proposed candidates first, each kind in the order of the view."""
+    names = [item.candidate for item in view.candidates]
+    proposed = {item.candidate for item in view.candidates if item.status == "proposed"}
+    return candidate not in proposed, names.index(candidate) if candidate in names else len(names)
 
 
 def _card(entry: WorstPlaceEntry, crops: Path | None) -> PlaceCard:
