@@ -336,7 +336,7 @@ class Frame:
 
     @property
     def stratum(self) -> str:
-        """Group of like images: that of the origin, and the unit where it is not the usual one, since units never mix."""
+        """Group of like images: that of the origin, with the unit where it is not the usual one: units never mix."""
         grey = "HU" if self.origin.modality == "CT" else "stored value"
         usual = "luma level" if self.raster.format.channels == 3 else grey
         return self.origin.stratum if self.unit == usual else f"{self.origin.stratum}, in units of {self.unit!r}"

@@ -13,13 +13,12 @@ import numpy.typing as npt
 from safecheck.dicom.decoders import DECODERS
 from safecheck.dicom.frame_pixels import read_frame_pixels, second_frame_pixels
 from safecheck.dicom.pixel_header import PixelHeader
-from safecheck.dicom.syntaxes import syntax_of
+from safecheck.dicom.syntaxes import ROOT, syntax_of
 from safecheck.errors import InputRefused
 from safecheck.frames import Samples
 
 __all__ = ["DecoderCheck", "check_decoders"]
 
-_ROOT = "1.2.840.10008.1.2"
 _ROWS, _COLUMNS, _BITS = 67, 83, 12
 
 
@@ -47,7 +46,7 @@ def check_decoders() -> tuple[DecoderCheck, ...]:
 
 def _check(uid: str, samples: Samples) -> DecoderCheck:
     decoder = DECODERS[uid]
-    encode = _ENCODERS.get(uid.removeprefix(_ROOT))
+    encode = _ENCODERS.get(uid.removeprefix(ROOT))
     exact = agree = None
     if encode is not None:
         exact, agree = _round_trip(uid, encode(samples), samples)

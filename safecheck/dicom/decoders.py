@@ -25,13 +25,13 @@ from pydicom.uid import RLELossless
 from safecheck.dicom.pixel_header import PixelHeader
 from safecheck.dicom.quiet import quiet_library
 from safecheck.dicom.stream_facts import StreamFacts
+from safecheck.dicom.syntaxes import ROOT
 from safecheck.errors import InputRefused
 
 __all__ = ["DECODERS", "Decoder", "decode", "rebuild_jpeg", "second_opinion"]
 
 _Array = npt.NDArray[Any]
 _Decode = Callable[[bytes, PixelHeader, "StreamFacts | None"], _Array]
-_ROOT = "1.2.840.10008.1.2"
 
 
 @dataclass(frozen=True, slots=True)
@@ -155,23 +155,23 @@ _XL = Decoder("libjxl (imagecodecs)", _jpeg_xl)
 
 DECODERS: MappingProxyType[str, Decoder] = MappingProxyType(
     {
-        f"{_ROOT}.5": Decoder("PackBits (imagecodecs)", _rle, (), "pydicom", _rle_second),
-        f"{_ROOT}.4.50": Decoder(_TURBO, _jpeg, ("baseline",)),
-        f"{_ROOT}.4.51": Decoder(_TURBO, _jpeg, ("baseline", "extended")),
-        f"{_ROOT}.4.53": Decoder(_TURBO, _jpeg, ("progressive",)),
-        f"{_ROOT}.4.55": Decoder(_TURBO, _jpeg, ("progressive",)),
-        f"{_ROOT}.4.57": _LOSSLESS,
-        f"{_ROOT}.4.70": _LOSSLESS,
-        f"{_ROOT}.4.80": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
-        f"{_ROOT}.4.81": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
-        f"{_ROOT}.4.90": _J2K,
-        f"{_ROOT}.4.91": _J2K,
-        f"{_ROOT}.4.201": _HT,
-        f"{_ROOT}.4.202": _HT,
-        f"{_ROOT}.4.203": _HT,
-        f"{_ROOT}.4.110": _XL,
-        f"{_ROOT}.4.111": _XL,
-        f"{_ROOT}.4.112": _XL,
+        f"{ROOT}.5": Decoder("PackBits (imagecodecs)", _rle, (), "pydicom", _rle_second),
+        f"{ROOT}.4.50": Decoder(_TURBO, _jpeg, ("baseline",)),
+        f"{ROOT}.4.51": Decoder(_TURBO, _jpeg, ("baseline", "extended")),
+        f"{ROOT}.4.53": Decoder(_TURBO, _jpeg, ("progressive",)),
+        f"{ROOT}.4.55": Decoder(_TURBO, _jpeg, ("progressive",)),
+        f"{ROOT}.4.57": _LOSSLESS,
+        f"{ROOT}.4.70": _LOSSLESS,
+        f"{ROOT}.4.80": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
+        f"{ROOT}.4.81": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
+        f"{ROOT}.4.90": _J2K,
+        f"{ROOT}.4.91": _J2K,
+        f"{ROOT}.4.201": _HT,
+        f"{ROOT}.4.202": _HT,
+        f"{ROOT}.4.203": _HT,
+        f"{ROOT}.4.110": _XL,
+        f"{ROOT}.4.111": _XL,
+        f"{ROOT}.4.112": _XL,
     }
 )
 """Pinned decoder by transfer syntax UID; uncompressed syntaxes need none."""

@@ -10,16 +10,13 @@ from typing import BinaryIO, Protocol
 from pydicom.dataset import Dataset
 
 from safecheck.dicom.elements import value_of
+from safecheck.dicom.fragments import Ending, walk_items
 from safecheck.dicom.opened import UNDEFINED_LENGTH, OpenedFile
 from safecheck.dicom.pixel_header import PixelHeader
-from safecheck.dicom.syntaxes import Coding
+from safecheck.dicom.syntaxes import ENCAPSULATED_UNCOMPRESSED, Coding
 from safecheck.errors import InputRefused
 
 __all__ = ["CodedFrames", "FrameBytes", "NativeFrames", "locate_frames"]
-
-_ITEM = b"\xfe\xff\x00\xe0"
-_DELIMITER = b"\xfe\xff\xdd\xe0"
-_ENCAPSULATED_UNCOMPRESSED = "1.2.840.10008.1.2.1.98"
 
 
 class FrameBytes(Protocol):
@@ -80,7 +77,7 @@ def locate_frames(opened: OpenedFile, header: PixelHeader) -> FrameBytes:
     InputRefused
         'truncated', 'length', 'frames' or 'header'.
     """
-    encapsulated = opened.syntax.coding is not Coding.NATIVE or opened.syntax.uid == _ENCAPSULATED_UNCOMPRESSED
+    encapsulated = opened.syntax.coding is not Coding.NATIVE or opened.syntax.uid == ENCAPSULATED_UNCOMPRESSED
     if encapsulated != (opened.value_length == UNDEFINED_LENGTH):
         raise InputRefused("length", "pixel data is framed in another way than its transfer syntax asks for")
     return _coded_frames(opened, header) if encapsulated else _native_frames(opened, header)
@@ -113,31 +110,21 @@ def _coded_frames(opened: OpenedFile, header: PixelHeader) -> CodedFrames:
         return CodedFrames(opened.stream, _grouped(fragments, bounds))
     notes = ("the offset table contradicts the fragments and was not used",) if offsets else ()
     if header.frames == 1:
-        return CodedFrames(opened.stream, (tuple(fragments),), notes)
+        return CodedFrames(opened.stream, (fragments,), notes)
     if len(fragments) != header.frames:
         return CodedFrames(opened.stream, _by_end_marker(opened, fragments, header.frames), notes)
     return CodedFrames(opened.stream, tuple((each,) for each in fragments), notes)
 
 
-def _scan_items(opened: OpenedFile) -> list[tuple[int, int]]:
-    """(offset, bytes) of every item of the pixel data, the offset table first (PS3.5 A.4)."""
-    found: list[tuple[int, int]] = []
-    at = opened.value_offset
-    while True:
-        opened.stream.seek(at)
-        head = opened.stream.read(8)
-        if len(head) < 8 or head[:4] not in (_ITEM, _DELIMITER):
-            raise InputRefused("truncated", "the fragments end without their delimiter")
-        if head[:4] == _DELIMITER:
-            break
-        size = struct.unpack_from("<I", head, 4)[0]
-        if at + 8 + size > opened.end:
-            raise InputRefused("truncated", "a fragment is cut")
-        found.append((at + 8, size))
-        at += 8 + size
-    if not found:
+def _scan_items(opened: OpenedFile) -> tuple[tuple[int, int], ...]:
+    """(offset, bytes) of every item of the pixel data, the offset table first."""
+    items = walk_items(opened.stream, opened.value_offset, opened.end)
+    if items.ending is not Ending.CLOSED:
+        cut = items.ending is Ending.CUT
+        raise InputRefused("truncated", "a fragment is cut" if cut else "the fragments end without their delimiter")
+    if not items.places:
         raise InputRefused("header", "the offset table is missing")
-    return found
+    return items.places
 
 
 def _basic_offsets(stream: BinaryIO, table: tuple[int, int]) -> list[int]:
@@ -159,12 +146,12 @@ def _rising(offsets: list[int], starts: dict[int, int]) -> bool:
     return ordered and all(offset in starts for offset in offsets)
 
 
-def _grouped(fragments: list[tuple[int, int]], bounds: list[int]) -> tuple[tuple[tuple[int, int], ...], ...]:
-    return tuple(tuple(fragments[a:b]) for a, b in itertools.pairwise(bounds))
+def _grouped(fragments: tuple[tuple[int, int], ...], bounds: list[int]) -> tuple[tuple[tuple[int, int], ...], ...]:
+    return tuple(fragments[a:b] for a, b in itertools.pairwise(bounds))
 
 
 def _by_end_marker(
-    opened: OpenedFile, fragments: list[tuple[int, int]], frames: int
+    opened: OpenedFile, fragments: tuple[tuple[int, int], ...], frames: int
 ) -> tuple[tuple[tuple[int, int], ...], ...]:
     """Without a usable table, a frame ends in the fragment whose last bytes hold the end marker FFD9."""
     if opened.syntax.coding not in (Coding.JPEG, Coding.JPEG_LS, Coding.JPEG_2000):

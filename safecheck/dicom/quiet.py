@@ -9,21 +9,30 @@ import contextlib
 import logging
 import warnings
 from collections.abc import Iterator
+from contextvars import ContextVar
 
 import pydicom.config
 
 __all__ = ["quiet_library"]
 
+_QUIET: ContextVar[bool] = ContextVar("quiet", default=False)
+
 
 @contextlib.contextmanager
 def quiet_library() -> Iterator[None]:
     """Within: no warning and no log line of pydicom, and no check of values that we do not use."""
+    if _QUIET.get():
+        # Each element that is read asks for quiet; within a call that asked already this costs nothing.
+        yield
+        return
     logger = logging.getLogger("pydicom")
     before = logger.disabled
     logger.disabled = True
+    quiet = _QUIET.set(True)
     try:
         with warnings.catch_warnings(), pydicom.config.disable_value_validation():
             warnings.simplefilter("ignore")
             yield
     finally:
+        _QUIET.reset(quiet)
         logger.disabled = before

@@ -11,9 +11,28 @@ from types import MappingProxyType
 
 from pydicom.uid import UID
 
-__all__ = ["SYNTAXES", "Coding", "Loss", "Syntax", "syntax_named", "syntax_of"]
+__all__ = [
+    "BIG_ENDIAN",
+    "DEFLATED",
+    "ENCAPSULATED_UNCOMPRESSED",
+    "EXPLICIT",
+    "IMPLICIT",
+    "ROOT",
+    "SYNTAXES",
+    "Coding",
+    "Loss",
+    "Syntax",
+    "syntax_named",
+    "syntax_of",
+]
 
-_ROOT = "1.2.840.10008.1.2"
+ROOT = "1.2.840.10008.1.2"
+"""Beginning of every transfer syntax UID of the standard."""
+IMPLICIT = ROOT
+EXPLICIT = f"{ROOT}.1"
+ENCAPSULATED_UNCOMPRESSED = f"{ROOT}.1.98"
+DEFLATED = f"{ROOT}.1.99"
+BIG_ENDIAN = f"{ROOT}.2"
 
 
 class Loss(enum.Enum):
@@ -78,10 +97,10 @@ def _wavelet_and_newer() -> list[Syntax]:
         _known(".4.201", Coding.JPEG_2000, Loss.REVERSIBLE, ht),
         _known(".4.202", Coding.JPEG_2000, Loss.REVERSIBLE, ht),
         _known(".4.203", Coding.JPEG_2000, Loss.EITHER, ht),
-        Syntax(f"{_ROOT}.4.110", "JPEG XL Lossless", Coding.JPEG_XL, Loss.REVERSIBLE, jxl),
+        Syntax(f"{ROOT}.4.110", "JPEG XL Lossless", Coding.JPEG_XL, Loss.REVERSIBLE, jxl),
         # The JPEG inside keeps its own record: its loss is that of JPEG.
-        Syntax(f"{_ROOT}.4.111", "JPEG XL JPEG Recompression", Coding.JPEG_XL, Loss.IRREVERSIBLE, "ISO_10918_1"),
-        Syntax(f"{_ROOT}.4.112", "JPEG XL", Coding.JPEG_XL, Loss.EITHER, jxl),
+        Syntax(f"{ROOT}.4.111", "JPEG XL JPEG Recompression", Coding.JPEG_XL, Loss.IRREVERSIBLE, "ISO_10918_1"),
+        Syntax(f"{ROOT}.4.112", "JPEG XL", Coding.JPEG_XL, Loss.EITHER, jxl),
     ]
 
 
@@ -95,7 +114,7 @@ def _moving_and_referenced() -> list[Syntax]:
 
 
 def _known(suffix: str, coding: Coding, loss: Loss, method: str = "") -> Syntax:
-    uid = UID(_ROOT + suffix)
+    uid = UID(ROOT + suffix)
     return Syntax(str(uid), uid.name, coding, loss, method)
 
 

@@ -26,7 +26,7 @@ Array: TypeAlias = npt.NDArray[Any]
 PLANE_SCALES = {1: (1.0,), 3: (math.sqrt(3.0) / 4, math.sqrt(2.0) / 2, math.sqrt(6.0) / 4)}
 """Lengths of the planes' axes, by number of channels."""
 SWEEPS = 16
-"""Smoothing passes over what is filled."""
+"""How often what is filled is smoothed."""
 
 
 def padded_shape(shape: tuple[int, int], size: int) -> tuple[int, int]:

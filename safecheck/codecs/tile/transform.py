@@ -1,7 +1,7 @@
 """Separable orthonormal block transforms, exact on every processor.
 
 A basis table is rounded to multiples of 2**-22, samples are whole numbers below 2**15 (quarters of them for colour),
-and what passes from the first direction to the second is rounded to multiples of 2**-8. So every product and every
+and what goes from the first direction to the second is rounded to multiples of 2**-8. So every product and every
 partial sum is a multiple of 2**-30 below 2**23 and fits the 53 bits of a double: no operation rounds, in whatever order
 and with or without fused multiply-add. Coefficients are whole numbers of 2**-8 stored units.
 """
