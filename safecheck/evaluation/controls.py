@@ -4,11 +4,13 @@ from __future__ import annotations
 
 import dataclasses
 import hashlib
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
+from functools import partial
+from typing import TypeAlias
 
 import numpy as np
 
-from safecheck.codecs.base import Reached
+from safecheck.codecs.base import Codec, Reached
 from safecheck.codecs.registry import reversible_form
 from safecheck.codecs.reversible import cheapest
 from safecheck.evaluation.assignment import Assignment, Candidate
@@ -19,7 +21,10 @@ from safecheck.frames import Samples
 from safecheck.measures.local import PATCH_SIDE
 from safecheck.record.rows import MeasureRow
 
-__all__ = ["full_controls", "pipe_control"]
+__all__ = ["ControlWork", "full_controls", "pipe_control"]
+
+ControlWork: TypeAlias = Callable[[], tuple[Treated, MeasureRow]]
+"""Runs one control and measures it over the frame."""
 
 PLANTED_SHARE = 64
 """The planted displacement is the span of the values used over this: large enough for any unit, small beside edges."""
@@ -33,8 +38,8 @@ def pipe_control(original: Original) -> MeasureRow:
 
 def full_controls(
     original: Original, assignment: Assignment, candidates: tuple[MeasureRow, ...]
-) -> Iterator[tuple[Treated, MeasureRow]]:
-    """Yield the controls that a seeded share of frames carries, each codec's own among them, measured over the frame.
+) -> Iterator[ControlWork]:
+    """Yield the controls that a seeded share of frames carries, each codec's own among them; none depends on another.
 
     Parameters
     ----------
@@ -44,17 +49,34 @@ def full_controls(
     for candidate in _one_of_each_codec(assignment, {row.candidate for row in candidates}):
         own = reversible_form(candidate.codec)
         if own is not None and own.refuses(original.frame.raster.format, original.frame.raster.shape) is None:
-            treated = reverse(original, own)
-            yield treated, _marked(measure_row(original, treated), *_unchanged(original, treated))
+            yield partial(_reversed, original, own)
         first = next(row for row in candidates if row.candidate == candidate.name)
-        again = recompress(original, candidate, "repeat")
-        yield again, _marked(measure_row(original, again), *_repeated(first, again))
-        over = over_compress(original, candidate, assignment.largest_ratio)
-        row = measure_row(original, over)
-        yield over, _marked(row, *_over_compressed(original, row, candidates))
+        yield partial(_repeat, original, candidate, first)
+        yield partial(_over_compress, original, candidate, assignment.largest_ratio, candidates)
     planted = _plant(original)
     if planted is not None:
-        yield planted
+        yield lambda: planted
+
+
+def _reversed(original: Original, own: Codec) -> tuple[Treated, MeasureRow]:
+    """A codec's own reversible form."""
+    treated = reverse(original, own)
+    return treated, _marked(measure_row(original, treated), *_unchanged(original, treated))
+
+
+def _repeat(original: Original, candidate: Candidate, first: MeasureRow) -> tuple[Treated, MeasureRow]:
+    """A candidate once more."""
+    again = recompress(original, candidate, "repeat")
+    return again, _marked(measure_row(original, again), *_repeated(first, again))
+
+
+def _over_compress(
+    original: Original, candidate: Candidate, largest_ratio: float, candidates: tuple[MeasureRow, ...]
+) -> tuple[Treated, MeasureRow]:
+    """A candidate's codec far beyond every ratio asked for."""
+    over = over_compress(original, candidate, largest_ratio)
+    row = measure_row(original, over)
+    return over, _marked(row, *_over_compressed(original, row, candidates))
 
 
 def _marked(row: MeasureRow, held: bool, found: str) -> MeasureRow:

@@ -2,23 +2,26 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from functools import partial
+from typing import TypeAlias
 
 from safecheck.errors import CannotEncode
-from safecheck.evaluation.assignment import Assignment
-from safecheck.evaluation.controls import full_controls as sampled_controls
-from safecheck.evaluation.controls import pipe_control
+from safecheck.evaluation.assignment import Assignment, Candidate
+from safecheck.evaluation.controls import ControlWork, pipe_control
+from safecheck.evaluation.controls import full_controls as controls_of
 from safecheck.evaluation.original import Original, prepare
 from safecheck.evaluation.rows import measure_row, region_rows, window_rows
 from safecheck.evaluation.treatment import Treated, deliver, recompress
 from safecheck.frames import Frame
-from safecheck.record.rows import FrameResult, MeasureRow, RegionRow, WindowRow
+from safecheck.record.rows import FrameResult
 
 __all__ = ["evaluate", "load_kernels"]
 
 
 def evaluate(
-    frame: Frame, assignment: Assignment, *, full_controls: bool, delivered: Frame | None = None
+    frame: Frame, assignment: Assignment, *, full_controls: bool, delivered: Frame | None = None, threads: int = 1
 ) -> FrameResult:
     """Recompress one frame with every candidate and control, and measure.
 
@@ -33,6 +36,8 @@ def evaluate(
         planted, and each codec's own reversible form. The pipe's reversible control runs on every frame.
     delivered
         The copy that the archive returned for this frame, measured like a candidate.
+    threads
+        How many candidates are treated at once, at least 1; rows do not depend on it.
 
     Returns
     -------
@@ -40,51 +45,60 @@ def evaluate(
         A candidate whose codec does not take the frame has no row; `notes` says so.
     """
     original = prepare(frame, assignment)
-    rows = _Rows()
-    notes = []
-    for candidate in assignment.candidates:
-        try:
-            rows.add(original, recompress(original, candidate))
-        except CannotEncode as error:
-            notes.append(f"{candidate.name} not run: {error}")
     differs = _differs(frame, delivered) if delivered is not None else ""
+    works: list[_Work] = [partial(_recompressed, original, candidate) for candidate in assignment.candidates]
     if delivered is not None and not differs:
-        rows.add(original, deliver(delivered))
-    candidates = tuple(row for row in rows.measures if row.role == "candidate")
-    rows.measures.append(pipe_control(original))
+        works.append(lambda: _measured(original, deliver(delivered)))
+    works.append(lambda: FrameResult((pipe_control(original),)))
+    results = _done(works, threads)
     if full_controls:
-        for treated, row in sampled_controls(original, assignment, candidates):
-            rows.measures.append(row)
-            if treated.role == "over-compressed":
-                # Limits on windows and regions are held against this control too.
-                rows.add_details(original, treated)
+        candidates = tuple(row for result in results for row in result.measures if row.role == "candidate")
+        results += _done(
+            [partial(_controlled, original, control) for control in controls_of(original, assignment, candidates)],
+            threads,
+        )
     return FrameResult(
-        measures=tuple(rows.measures),
-        windows=tuple(rows.windows),
-        regions=tuple(rows.regions),
-        notes=tuple(notes),
+        measures=tuple(row for result in results for row in result.measures),
+        windows=tuple(row for result in results for row in result.windows),
+        regions=tuple(row for result in results for row in result.regions),
+        notes=tuple(note for result in results for note in result.notes),
         delivered_differs=differs,
     )
 
 
-@dataclass(slots=True)
-class _Rows:
-    """Rows of one frame as they come."""
+_Work: TypeAlias = Callable[[], FrameResult]
 
-    measures: list[MeasureRow] = field(default_factory=list)
-    windows: list[WindowRow] = field(default_factory=list)
-    regions: list[RegionRow] = field(default_factory=list)
 
-    def add(self, original: Original, treated: Treated) -> None:
-        """Measure over frame, windows and regions."""
-        self.measures.append(measure_row(original, treated))
-        self.add_details(original, treated)
+def _done(works: Sequence[_Work], threads: int) -> list[FrameResult]:
+    """Results in the order of the works; codecs and kernels leave the interpreter's lock, so threads share cores."""
+    if threads == 1 or len(works) == 1:
+        return [work() for work in works]
+    with ThreadPoolExecutor(threads) as pool:
+        return list(pool.map(lambda work: work(), works))
 
-    def add_details(self, original: Original, treated: Treated) -> None:
-        """Measure over windows and regions."""
-        at_windows, ssim_map = window_rows(original, treated)
-        self.windows += at_windows
-        self.regions += region_rows(original, treated, ssim_map)
+
+def _recompressed(original: Original, candidate: Candidate) -> FrameResult:
+    """Rows of a candidate, or why it was not run."""
+    try:
+        return _measured(original, recompress(original, candidate))
+    except CannotEncode as error:
+        return FrameResult(notes=(f"{candidate.name} not run: {error}",))
+
+
+def _measured(original: Original, treated: Treated) -> FrameResult:
+    """Measure over frame, windows and regions."""
+    windows, ssim_map = window_rows(original, treated)
+    regions = region_rows(original, treated, ssim_map)
+    return FrameResult((measure_row(original, treated),), tuple(windows), tuple(regions))
+
+
+def _controlled(original: Original, control: ControlWork) -> FrameResult:
+    """Rows of a control; limits on windows and regions are held against over-compression too."""
+    treated, row = control()
+    if treated.role != "over-compressed":
+        return FrameResult((row,))
+    windows, ssim_map = window_rows(original, treated)
+    return FrameResult((row,), tuple(windows), tuple(region_rows(original, treated, ssim_map)))
 
 
 def _differs(frame: Frame, delivered: Frame) -> str:

@@ -8,7 +8,9 @@ import platform
 import shutil
 import time
 from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, field
+from functools import partial
 from pathlib import Path
 
 from safecheck.dicom.reader import open_instance
@@ -172,16 +174,18 @@ def assess(
     declared = prepared.site.declared(prepared.loaded.sha256, prepared.studies)
     clock = {"start": time.monotonic()}
     executor = executor or LocalPool(request.workers or cores())
-    tell("Checking codecs")
-    checks = run_selftest()
-    run(
-        prepared.tasks,
-        Treatment(prepared.assignment, evaluate, open_instance),
-        work,
-        executor=executor,
-        warm_up=lambda: _warm_up(tell),
-        report=report,
-    )
+    # The selftest runs beside the workers, whose start it would otherwise hold up.
+    with ThreadPoolExecutor(1) as beside:
+        checking = beside.submit(run_selftest)
+        run(
+            prepared.tasks,
+            Treatment(prepared.assignment, partial(evaluate, threads=_threads(prepared, executor)), open_instance),
+            work,
+            executor=executor,
+            warm_up=lambda: _warm_up(prepared.site, tell),
+            report=report,
+        )
+        checks = checking.result()
     clock["assessed"] = time.monotonic()
     tell("Writing the record")
     final = _fresh(work / _FINAL)
@@ -207,10 +211,20 @@ def assess(
     return record
 
 
-def _warm_up(tell: Tell) -> None:
-    """Compile once, here, before workers start."""
+def _threads(prepared: Prepared, executor: Executor) -> int:
+    """Threads of each worker: more than one only where there are fewer tasks than cores, as with a single film."""
+    busy = max(1, min(executor.workers, len(prepared.tasks)))
+    return max(1, executor.workers // busy)
+
+
+def _warm_up(site: Site, tell: Tell) -> None:
+    """Compile once, here, before workers start; nothing to do where these versions have been compiled before."""
+    made_of = versions()
+    if site.has_kernels(made_of):
+        return
     tell("Preparing compiled code (some seconds on the first run after an installation)")
     load_kernels()
+    site.see_kernels(made_of)
 
 
 def _record(prepared: Prepared, merged: Merged, folder: Path, checks: tuple[CodecCheckEntry, ...]) -> RecordDocument:

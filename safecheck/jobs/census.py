@@ -90,7 +90,8 @@ def lines_of(census: Census) -> Iterator[str]:
     """Yield the lines that the command prints."""
     inputs = census.inputs
     files = len(inputs.assessed) + len(inputs.out_of_scope) + len(inputs.left_out)
-    yield f"{files} files: {len(inputs.assessed)} images that could be assessed, {files - len(inputs.assessed)} left out"
+    taken = len(inputs.assessed)
+    yield f"{files} files: {taken} images that could be assessed, {files - taken} left out"
     for stratum in census.strata:
         bits = "/".join(map(str, stratum.bits_stored))
         yield ""

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import contextlib
 import datetime
+import hashlib
+import json
 import sqlite3
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Literal
@@ -18,6 +20,7 @@ Declared = Literal["before the first results", "after the first results", "not k
 
 _SCHEMA = """
 create table if not exists plans (sha256 text primary key, first_seen text not null);
+create table if not exists kernels (versions text primary key);
 create table if not exists results (study text primary key, first_seen text not null);
 """
 
@@ -41,6 +44,20 @@ class Site:
         with contextlib.suppress(sqlite3.Error), self._open() as journal:
             rows = [(study, _now()) for study in sorted(set(studies))]
             journal.executemany("insert or ignore into results values (?, ?)", rows)
+
+    def see_kernels(self, versions: Mapping[str, str]) -> None:
+        """Remember that kernels were compiled and cached under these versions."""
+        with contextlib.suppress(sqlite3.Error), self._open() as journal:
+            journal.execute("insert or ignore into kernels values (?)", (_text(versions),))
+
+    def has_kernels(self, versions: Mapping[str, str]) -> bool:
+        """Whether kernels were compiled and cached under these versions; if not so, workers compile them again."""
+        try:
+            with self._open() as journal:
+                found = journal.execute("select 1 from kernels where versions = ?", (_text(versions),)).fetchone()
+        except sqlite3.Error:
+            return False
+        return found is not None
 
     def declared(self, sha256: str, studies: Iterable[str]) -> Declared:
         """Whether a plan was first seen before or after the first results of any of the studies."""
@@ -78,6 +95,12 @@ def open_site(key_file: Path | None) -> Site:
     key = load_or_make_key(key_file)
     beside = key_file or default_key_path()
     return Site(key, Pseudonyms(key), beside.with_name(f"{beside.name}.journal"))
+
+
+def _text(versions: Mapping[str, str]) -> str:
+    """Versions, and a hash of where this installation lies, since compiled code is cached beside it."""
+    place = hashlib.sha256(__file__.encode()).hexdigest()[:16]
+    return json.dumps({**versions, "installation": place}, sort_keys=True)
 
 
 def _now() -> str:
