@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import sys
 import time
 from collections.abc import Callable
@@ -383,6 +384,9 @@ def _guarded(call: Callable[[], object]) -> int:
         return _say(str(error), ExitCondition.DIFFERENCE)
     except SafecheckError as error:
         return _say(str(error), ExitCondition.INTERNAL)
+    except OSError as error:
+        # Its own text names the path; the system's words for the fault do not.
+        return _say(f"the system refused to read or write: {os.strerror(error.errno or 0)}", ExitCondition.INTERNAL)
     except Exception as error:
         # A foreign exception's text may hold identifiers or paths; its class cannot.
         return _say(f"internal error ({type(error).__name__})", ExitCondition.INTERNAL)

@@ -100,6 +100,8 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
     missing = [path for path in (*request.paths, *request.delivered) if not path.exists()]
     if missing:
         raise UsageError(f"{len(missing)} of the paths given do not exist; expected files or folders")
+    if request.out is not None and _lies_in(request.out, (*request.paths, *request.delivered)):
+        raise UsageError("the dossier would lie among the images; name a folder elsewhere with --out")
     inputs = gather_inputs(
         request.paths,
         request.delivered,
@@ -130,6 +132,12 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
         seed=controls.seed,
     )
     return Prepared(request, loaded, site, inputs, assignment, manifest, tasks)
+
+
+def _lies_in(out: Path, paths: tuple[Path, ...]) -> bool:
+    """Whether a folder lies in one of the folders given: its files would be taken for inputs."""
+    place = out.resolve()
+    return any(place.is_relative_to(path.resolve()) for path in paths if path.is_dir())
 
 
 def _loaded(request: AssessRequest) -> LoadedPlan:
