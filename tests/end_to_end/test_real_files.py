@@ -1,0 +1,109 @@
+"""Real originals with the copies that archives delivered, and an independent script that computes the figures again."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import pytest
+from pydicom.data import get_testdata_file
+
+from tests.end_to_end import independent
+from tests.end_to_end.command import run
+from tests.end_to_end.hospital import rows_of
+
+pytestmark = pytest.mark.slow
+
+
+@dataclass(frozen=True, slots=True)
+class Twins:
+    """An original and what was delivered for it, both of pydicom-data.
+
+    Figures: computed once with pydicom, pylibjpeg-openjpeg and NumPy over the whole frame, in modality units; colour
+    over all samples. Ratios against the header of the copy and against its bytes.
+    """
+
+    original: str
+    delivered: str
+    maximum: float
+    rmse: float
+    ratio_allocated: float
+    ratio_stored: float
+    header_ratio: str
+
+
+TWINS = (
+    Twins("693_UNCR.dcm", "693_J2KI.dcm", 2080.0, 121.042, 338.7, 296.4, "338.6873"),
+    Twins("RG1_UNCR.dcm", "RG1_J2KI.dcm", 403.0, 63.333, 10.67, 10.00, "10"),
+    Twins("RG3_UNCR.dcm", "RG3_J2KI.dcm", 9.0, 1.311, 30.15, 18.85, "30"),
+    Twins("MR2_UNCR.dcm", "MR2_J2KI.dcm", 120.8, 20.929, 18.82, 14.12, "18"),
+    Twins("US1_UNCR.dcm", "US1_J2KI.dcm", 124.0, 3.788, 16.0, 16.0, "16"),
+    Twins("JPEG-LL.dcm", "JPEG2000.dcm", 101.0, 7.141, 2097.0, 2097.0, "2097"),
+)
+
+
+def real_file(name: str) -> Path:
+    found = get_testdata_file(name, download=False)
+    assert isinstance(found, str), name
+    return Path(found)
+
+
+@pytest.fixture(scope="module")
+def dossier(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    folder = tmp_path_factory.mktemp("real")
+    arguments: list[str | Path] = ["assess", *(real_file(twins.original) for twins in TWINS)]
+    for twins in TWINS:
+        arguments += ["--delivered", real_file(twins.delivered)]
+    arguments += ["--secondary-captures", "--codecs", "jpeg2000", "--ratios", "10", "--key", "key", "--out", "d"]
+    ended = run(*arguments, folder=folder)
+    assert ended.code == 0, ended.err
+    return folder / "d"
+
+
+def test_an_independent_script_computes_the_same_figures(dossier: Path) -> None:
+    found = list(
+        independent.compare(
+            dossier,
+            [real_file(twins.original) for twins in TWINS],
+            [real_file(twins.delivered) for twins in TWINS],
+        )
+    )
+    # Six images, each once recompressed and once delivered, with over 25 figures over the frame and 7 at a window.
+    assert len(found) > 12 * (25 + 7)
+    assert [each for each in found if each.relative > 1e-9] == []
+
+
+@pytest.mark.parametrize("twins", TWINS, ids=[twins.original for twins in TWINS])
+def test_delivered_copies_are_matched_and_measured(dossier: Path, twins: Twins) -> None:
+    image = independent.read_image(real_file(twins.original))
+    shape = [str(length) for length in image.values.shape]
+    row = next(
+        row
+        for row in rows_of(dossier, "measures")
+        if row["role"] == "delivered" and [row["rows"], row["columns"]] == shape
+    )
+    maximum, rmse = ("max_channels", "rmse_channels") if image.is_colour else ("max_frame", "rmse_frame")
+    assert float(row[maximum]) == pytest.approx(twins.maximum, abs=0.05)
+    assert float(row[rmse]) == pytest.approx(twins.rmse, abs=5e-4)
+    # A copy of 1.5 kB ends in a pad byte, which the header's ratio counts and the code stream does not.
+    assert float(row["ratio_bits_allocated"]) == pytest.approx(twins.ratio_allocated, rel=1e-3)
+    assert float(row["ratio_bits_stored"]) == pytest.approx(twins.ratio_stored, rel=1e-3)
+    copy = next(
+        each
+        for each in rows_of(dossier, "inputs")
+        if each["side"] == "delivered" and [each["rows"], each["columns"]] == shape
+    )
+    assert copy["matched"] not in ("", "unmatched")
+    assert copy["lossy_ratio"].startswith(twins.header_ratio)
+
+
+def test_every_ratio_asked_was_reached_and_every_control_held(dossier: Path) -> None:
+    rows = rows_of(dossier, "measures")
+    candidates = [row for row in rows if row["role"] == "candidate"]
+    assert [row["reached"] for row in candidates] == ["asked"] * len(TWINS)
+    assert [float(row["ratio_bits_stored"]) for row in candidates] == pytest.approx([10.0] * len(TWINS), rel=0.01)
+    controls = [row for row in rows if row["role"] not in ("candidate", "delivered")]
+    assert {row["role"] for row in controls} == {"reversible", "repeat", "over-compressed", "planted"}
+    assert {row["control_held"] for row in controls} == {"true"}
+    reversible = [row for row in rows if row["role"] == "reversible"]
+    assert {float(row["max_frame"]) for row in reversible} == {0.0}
