@@ -5,11 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 from pathlib import PurePosixPath
 
-from safecheck.dicom.header import Header, items, words
+from safecheck.dicom.elements import readable_items, words
+from safecheck.dicom.header import Header
 
 __all__ = ["Listing", "listing_of"]
-
-_RECORDS, _FILE_ID = 0x00041220, 0x00041500
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,8 +25,8 @@ def listing_of(header: Header) -> Listing:
     """Files listed in a DICOMDIR (PS3.10 8.6, PS3.3 F.3)."""
     files: dict[PurePosixPath, None] = {}
     outside = 0
-    for record in items(header.dataset, _RECORDS):
-        parts = words(record, _FILE_ID)
+    for record in readable_items(header.dataset, "DirectoryRecordSequence"):
+        parts = words(record, "ReferencedFileID")
         if not parts:
             continue
         if any(part in ("", ".", "..") or "/" in part or "\\" in part or "\0" in part for part in parts):

@@ -7,19 +7,15 @@ from dataclasses import dataclass
 from pydicom.dataset import Dataset
 
 from safecheck.dicom import terms
-from safecheck.dicom.header import Header, items, text, whole, words
+from safecheck.dicom.elements import readable_items, text, whole, whole_number, words
+from safecheck.dicom.header import Header
 from safecheck.dicom.history import history_of
 from safecheck.dicom.origin import origin_of
 from safecheck.dicom.pseudonyms import Pseudonyms
+from safecheck.errors import InputRefused
 from safecheck.frames import Origin
 
 __all__ = ["Facts", "facts_of"]
-
-_PATIENT_ID, _STUDY_UID, _SERIES_UID, _INSTANCE_UID = 0x00100020, 0x0020000D, 0x0020000E, 0x00080018
-_SERIES_NUMBER, _INSTANCE_NUMBER, _FRAMES = 0x00200011, 0x00200013, 0x00280008
-_ROWS, _COLUMNS, _ALLOCATED, _STORED = 0x00280010, 0x00280011, 0x00280100, 0x00280101
-_PHOTOMETRIC, _IMAGE_TYPE, _REFERENCE = 0x00280004, 0x00080008, 0x00200052
-_SOURCE_IMAGES, _REFERENCED_UID = 0x00082112, 0x00081155
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -70,31 +66,32 @@ def facts_of(header: Header, content: str, pseudonyms: Pseudonyms) -> Facts:
         Names under the site key.
     """
     dataset = header.dataset
-    uid = text(dataset, _INSTANCE_UID)
-    study_uid, series_uid = text(dataset, _STUDY_UID), text(dataset, _SERIES_UID)
-    patient = text(dataset, _PATIENT_ID)
+    uid = text(dataset, "SOPInstanceUID")
+    study_uid, series_uid = text(dataset, "StudyInstanceUID"), text(dataset, "SeriesInstanceUID")
+    patient = text(dataset, "PatientID")
     study = pseudonyms.name("study", study_uid) if study_uid else content
-    image_type = words(dataset, _IMAGE_TYPE)
+    image_type = words(dataset, "ImageType")
     object_class = terms.object_class(header.object_uid)
     pixel_bytes = header.pixels.size_bytes if header.pixels else None
+    reference = text(dataset, "FrameOfReferenceUID")
     return Facts(
         patient=pseudonyms.name("patient", patient) if patient else study,
         study=study,
         series=pseudonyms.name("series", series_uid) if series_uid else study,
         instance=pseudonyms.name("instance", uid) if uid else content,
-        series_number=whole(dataset, _SERIES_NUMBER),
-        instance_number=whole(dataset, _INSTANCE_NUMBER),
+        series_number=whole(dataset, "SeriesNumber"),
+        instance_number=whole(dataset, "InstanceNumber"),
         object_class=object_class,
         frames=_frames(dataset),
-        rows=whole(dataset, _ROWS),
-        columns=whole(dataset, _COLUMNS),
-        bits_allocated=whole(dataset, _ALLOCATED),
-        bits_stored=whole(dataset, _STORED),
-        photometric=terms.photometric(text(dataset, _PHOTOMETRIC)),
+        rows=whole(dataset, "Rows"),
+        columns=whole(dataset, "Columns"),
+        bits_allocated=whole(dataset, "BitsAllocated"),
+        bits_stored=whole(dataset, "BitsStored"),
+        photometric=terms.photometric(text(dataset, "PhotometricInterpretation")),
         derived=image_type[0].upper() == "DERIVED" if image_type else None,
         pixel_bytes=pixel_bytes,
         origin=origin_of(header, history_of(header), pixel_bytes or 0, pseudonyms, object_class),
-        frame_of_reference=pseudonyms.name("frame", reference) if (reference := text(dataset, _REFERENCE)) else "",
+        frame_of_reference=pseudonyms.name("frame", reference) if reference else "",
         uid=uid,
         source_uids=_source_uids(dataset),
     )
@@ -102,15 +99,12 @@ def facts_of(header: Header, content: str, pseudonyms: Pseudonyms) -> Facts:
 
 def _frames(dataset: Dataset) -> int | None:
     """Number of frames; an empty element counts as absent, a malformed one as unknown."""
-    if _FRAMES not in dataset:
-        return 1
     try:
-        empty = dataset[_FRAMES].value in (None, "")
-    except Exception:  # The library quotes the malformed value.
+        return whole_number(dataset, "NumberOfFrames", missing=1)
+    except InputRefused:
         return None
-    return 1 if empty else whole(dataset, _FRAMES)
 
 
 def _source_uids(dataset: Dataset) -> tuple[str, ...]:
-    found = (text(each, _REFERENCED_UID) for each in items(dataset, _SOURCE_IMAGES))
+    found = (text(each, "ReferencedSOPInstanceUID") for each in readable_items(dataset, "SourceImageSequence"))
     return tuple(uid for uid in found if uid)

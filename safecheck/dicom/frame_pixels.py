@@ -10,20 +10,21 @@ import numpy.typing as npt
 
 from safecheck.dicom.colour import rgb_from_ybr, spread_422
 from safecheck.dicom.decoders import DECODERS, decode, rebuild_jpeg, second_opinion
-from safecheck.dicom.jxl_header import holds_jpeg, read_jpeg_xl
+from safecheck.dicom.jpeg_heads import strip_jp2
+from safecheck.dicom.jpegxl_head import holds_jpeg
 from safecheck.dicom.pixel_header import PixelHeader
 from safecheck.dicom.stored_bits import stored_values
-from safecheck.dicom.stream_facts import StreamFacts, coded_length, read_jpeg, read_jpeg2000, strip_jp2
-from safecheck.dicom.syntaxes import Coding, Syntax, syntax_of
+from safecheck.dicom.stream_facts import StreamFacts, coded_length, facts_of_stream, read_jpeg, read_jpegxl
+from safecheck.dicom.syntaxes import ROOT, Coding, Syntax, syntax_of
 from safecheck.errors import InputRefused
 from safecheck.frames import Samples
 
 __all__ = ["FramePixels", "check_syntax", "read_frame_pixels", "second_frame_pixels"]
 
 _JPEG_SYNTAXES = {
-    "baseline": "1.2.840.10008.1.2.4.50",
-    "extended": "1.2.840.10008.1.2.4.51",
-    "progressive": "1.2.840.10008.1.2.4.55",
+    "baseline": f"{ROOT}.4.50",
+    "extended": f"{ROOT}.4.51",
+    "progressive": f"{ROOT}.4.55",
 }
 _TRANSFORMED = ("YBR_RCT", "YBR_ICT")
 
@@ -85,11 +86,8 @@ def read_frame_pixels(data: bytes, syntax: Syntax, header: PixelHeader, *, littl
         return _native(data, header, little_endian=little_endian)
     if syntax.coding is Coding.JPEG_XL and holds_jpeg(data):
         return _rebuilt_jpeg(data, header)
-    code = strip_jp2(data) if syntax.coding is Coding.JPEG_2000 else data
-    facts = _facts(code, syntax)
+    code, facts = _checked_stream(data, syntax, header)
     size_bytes = _code_bytes(code, syntax)
-    if facts is not None:
-        _check_facts(facts, syntax, header)
     samples, notes = _from_decoded(decode(syntax.uid, code, header, facts), header, syntax, facts)
     if len(code) != len(data):
         notes = ("the code stream was wrapped in a JP2 file; its boxes were left aside", *notes)
@@ -104,10 +102,9 @@ def second_frame_pixels(data: bytes, syntax: Syntax, header: PixelHeader) -> Sam
     InputRefused
         As `read_frame_pixels`.
     """
-    if syntax.coding is Coding.NATIVE:
+    if syntax.coding is Coding.NATIVE or DECODERS[syntax.uid].second is None:
         return None
-    code = strip_jp2(data) if syntax.coding is Coding.JPEG_2000 else data
-    facts = _facts(code, syntax)
+    code, facts = _checked_stream(data, syntax, header)
     decoded = second_opinion(syntax.uid, code, header, facts)
     return None if decoded is None else _from_decoded(decoded, header, syntax, facts)[0]
 
@@ -130,6 +127,7 @@ def _native(data: bytes, header: PixelHeader, *, little_endian: bool) -> FramePi
 
 def _rebuilt_jpeg(data: bytes, header: PixelHeader) -> FramePixels:
     """Decode the JPEG stream inside, so that the values are those of the file before it was recompressed."""
+    _check_size(read_jpegxl(data), header)
     jpeg = rebuild_jpeg(data)
     syntax = syntax_of(_JPEG_SYNTAXES.get(read_jpeg(jpeg).process, ""))
     if syntax.coding is not Coding.JPEG:
@@ -138,14 +136,13 @@ def _rebuilt_jpeg(data: bytes, header: PixelHeader) -> FramePixels:
     return FramePixels(inside.samples, len(data), ("decoded as the JPEG stream it was made from", *inside.notes))
 
 
-def _facts(code: bytes, syntax: Syntax) -> StreamFacts | None:
-    if syntax.coding in (Coding.JPEG, Coding.JPEG_LS):
-        return read_jpeg(code)
-    if syntax.coding is Coding.JPEG_2000:
-        return read_jpeg2000(code)
-    if syntax.coding is Coding.JPEG_XL:
-        return read_jpeg_xl(code)
-    return None
+def _checked_stream(data: bytes, syntax: Syntax, header: PixelHeader) -> tuple[bytes, StreamFacts | None]:
+    """Bare code stream and its own header, held against the DICOM header before memory is spent on it."""
+    code = strip_jp2(data) if syntax.coding is Coding.JPEG_2000 else data
+    facts = facts_of_stream(syntax.coding, code)
+    if facts is not None:
+        _check_facts(facts, syntax, header)
+    return code, facts
 
 
 def _code_bytes(code: bytes, syntax: Syntax) -> int:
@@ -158,17 +155,20 @@ def _code_bytes(code: bytes, syntax: Syntax) -> int:
 
 
 def _check_facts(facts: StreamFacts, syntax: Syntax, header: PixelHeader) -> None:
-    """Hold the code stream's own header against the DICOM header before memory is spent on it."""
     processes = DECODERS[syntax.uid].processes
     if processes and facts.process not in processes:
         raise InputRefused("syntax", f"a code stream of process {facts.process} under {syntax.name}")
-    if (facts.rows, facts.columns, facts.channels) != (header.rows, header.columns, header.channels):
-        raise InputRefused("length", "the code stream is of other rows, columns or channels than the header declares")
+    _check_size(facts, header)
     if facts.precision > header.bits_allocated:
         raise InputRefused("bits", f"{facts.precision} bits in the code stream, {header.bits_allocated} allocated")
     _check_sign(facts, syntax, header)
     if facts.channels == 3:
         _check_colour(facts, syntax, header)
+
+
+def _check_size(facts: StreamFacts, header: PixelHeader) -> None:
+    if (facts.rows, facts.columns, facts.channels) != (header.rows, header.columns, header.channels):
+        raise InputRefused("length", "the code stream is of other rows, columns or channels than the header declares")
 
 
 def _check_sign(facts: StreamFacts, syntax: Syntax, header: PixelHeader) -> None:

@@ -18,20 +18,20 @@ class FunctionalGroups:
     dataset
         Header of the instance.
     frames
-        Number of frames declared.
+        Number of frames declared; None for an instance that is described and not read.
 
     Raises
     ------
     InputRefused
-        'frames': the per-frame groups are not one for each frame.
+        'header': they cannot be read; 'frames': the per-frame groups are not one for each frame.
     """
 
-    def __init__(self, dataset: Dataset, frames: int) -> None:
+    def __init__(self, dataset: Dataset, frames: int | None = None) -> None:
         self._dataset = dataset
         shared = items(dataset, "SharedFunctionalGroupsSequence")
         self._shared = shared[0] if shared else None
         self._each = items(dataset, "PerFrameFunctionalGroupsSequence")
-        if self._each and len(self._each) != frames:
+        if self._each and frames is not None and len(self._each) != frames:
             raise InputRefused("frames", "the per-frame functional groups are not one for each frame")
 
     @property

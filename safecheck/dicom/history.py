@@ -9,7 +9,8 @@ from collections.abc import Iterator
 
 from pydicom.dataset import Dataset
 
-from safecheck.dicom.header import Header, items, text, words
+from safecheck.dicom.elements import readable_items, text, words
+from safecheck.dicom.header import Header
 from safecheck.dicom.stream_loss import Finding, Verdict, look_into
 from safecheck.dicom.syntaxes import Loss
 from safecheck.dicom.terms import decimal, loss_method
@@ -17,9 +18,6 @@ from safecheck.frames import LossHistory
 
 __all__ = ["history_of"]
 
-_FLAG, _RATIO, _METHOD = 0x00282110, 0x00282112, 0x00282114
-_DERIVATION_CODES, _SOURCE_IMAGES, _PURPOSE = 0x00089215, 0x00082112, 0x0040A170
-_CODE_VALUE = 0x00080100
 _CODE_LOSSY = "113040"
 _CODE_FROM_LOSSY = "121330"
 
@@ -37,9 +35,9 @@ def history_of(header: Header) -> LossHistory:
     LossHistory
         With evidence for either answer. A code stream whose kind cannot be told counts as lossy.
     """
-    flag = text(header.dataset, _FLAG)
-    ratios = tuple(decimal(each) for each in words(header.dataset, _RATIO))
-    methods = tuple(loss_method(each) for each in words(header.dataset, _METHOD))
+    flag = text(header.dataset, "LossyImageCompression")
+    ratios = tuple(decimal(each) for each in words(header.dataset, "LossyImageCompressionRatio"))
+    methods = tuple(loss_method(each) for each in words(header.dataset, "LossyImageCompressionMethod"))
     finding = _finding(header)
     against = [*_declared(header, flag, ratios, methods), *_implied(header), *_found(finding)]
     if against:
@@ -61,9 +59,9 @@ def _declared(header: Header, flag: str, ratios: tuple[str, ...], methods: tuple
         yield "a lossy ratio is recorded (0028,2112)"
     if flag != "01" and any(methods):
         yield "a lossy method is recorded (0028,2114)"
-    if any(text(each, _CODE_VALUE) == _CODE_LOSSY for each in items(header.dataset, _DERIVATION_CODES)):
+    if any(text(each, "CodeValue") == _CODE_LOSSY for each in readable_items(header.dataset, "DerivationCodeSequence")):
         yield "lossy compression is among the derivation codes"
-    if any(_came_from_lossy(each) for each in items(header.dataset, _SOURCE_IMAGES)):
+    if any(_came_from_lossy(each) for each in readable_items(header.dataset, "SourceImageSequence")):
         yield "a source image is named as a lossy predecessor"
 
 
@@ -75,8 +73,8 @@ def _speaks_for_loss(ratio: str) -> bool:
 
 
 def _came_from_lossy(source: Dataset) -> bool:
-    purposes = items(source, _PURPOSE)
-    return any(text(each, _CODE_VALUE) == _CODE_FROM_LOSSY for each in purposes)
+    purposes = readable_items(source, "PurposeOfReferenceCodeSequence")
+    return any(text(each, "CodeValue") == _CODE_FROM_LOSSY for each in purposes)
 
 
 def _implied(header: Header) -> Iterator[str]:

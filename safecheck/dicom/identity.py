@@ -5,8 +5,11 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from pathlib import Path
 
+from pydicom.datadict import dictionary_description
+
+from safecheck.dicom.elements import text
 from safecheck.dicom.facts import Facts
-from safecheck.dicom.header import read_header, text
+from safecheck.dicom.header import read_header
 from safecheck.dicom.instance import Instance, Source
 from safecheck.dicom.intake import gather
 from safecheck.dicom.pseudonyms import Pseudonyms
@@ -18,12 +21,12 @@ from safecheck.errors import InputExcluded, InputRefused
 __all__ = ["identities"]
 
 _TELLS = (
-    ("patient", (("Patient's Name", 0x00100010), ("Patient ID", 0x00100020))),
-    ("study", (("Study Date", 0x00080020), ("Accession Number", 0x00080050), ("Study Instance UID", 0x0020000D))),
-    ("series", (("Series Number", 0x00200011), ("Series Instance UID", 0x0020000E))),
-    ("instance", (("Instance Number", 0x00200013), ("SOP Instance UID", 0x00080018))),
+    ("PatientName", "PatientID"),
+    ("StudyDate", "AccessionNumber", "StudyInstanceUID"),
+    ("SeriesNumber", "SeriesInstanceUID"),
+    ("InstanceNumber", "SOPInstanceUID"),
 )
-"""What each kind of pseudonym stands for; a kind is told with all kinds above it."""
+"""What a pseudonym of a patient, study, series and instance stands for; each is told with all above it."""
 
 
 def identities(pseudonym: str, paths: Sequence[Path], pseudonyms: Pseudonyms) -> Iterator[str]:
@@ -55,7 +58,8 @@ def _header_lines(source: Source, kinds: int) -> str:
     try:
         with open_source(source) as stream, quiet_library():
             dataset = read_header(stream).dataset
-            parts = [f"{name}: {text(dataset, tag)}" for _, tells in _TELLS[:kinds] for name, tag in tells]
+            told = (keyword for keywords in _TELLS[:kinds] for keyword in keywords)
+            parts = [f"{dictionary_description(keyword)}: {text(dataset, keyword)}" for keyword in told]
     except (InputExcluded, InputRefused):
         return "the header cannot be read again"
     return "; ".join(parts)

@@ -112,12 +112,18 @@ def open_file(stream: BinaryIO) -> OpenedFile:
     Raises
     ------
     InputRefused
-        As `parse_file`; 'syntax', 'no-pixels', or 'bits' for floating point samples.
+        As `parse_file`; 'syntax', 'no-pixels', 'length' for value representations where the syntax has none or the
+        reverse, 'bits' for floating point samples.
     """
     opened = parse_file(stream)
     if opened.syntax.coding in (Coding.VIDEO, Coding.REFERENCED, Coding.UNKNOWN):
         raise InputRefused("syntax", opened.syntax.name)
-    if opened.place.floating:
+    place = opened.place
+    implicit, _ = opened.dataset.original_encoding
+    if implicit != (opened.syntax.uid == IMPLICIT):
+        # The library reads on as it finds the elements; where the pixel data begins would then be a guess of ours.
+        raise InputRefused("length", "the data set is encoded in another way than its transfer syntax asks for")
+    if place.floating:
         raise InputRefused("bits", "samples are floating point")
     return opened
 

@@ -8,19 +8,15 @@ from pydicom.dataset import Dataset
 
 from safecheck.dicom import terms
 from safecheck.dicom.age import under_18
-from safecheck.dicom.header import Header, items, real, text
+from safecheck.dicom.burned_in import may_show_text
+from safecheck.dicom.elements import real_numbers, text
+from safecheck.dicom.functional_groups import FunctionalGroups
+from safecheck.dicom.header import Header
 from safecheck.dicom.pseudonyms import Pseudonyms
+from safecheck.errors import InputRefused
 from safecheck.frames import LossHistory, Origin
 
 __all__ = ["origin_of", "slice_position_mm", "slice_thickness_class"]
-
-_MODALITY, _BODY_PART, _MAKER = 0x00080060, 0x00180015, 0x00080070
-_KERNEL, _THICKNESS, _BURNED_IN = 0x00181210, 0x00180050, 0x00280301
-_POSITION, _ORIENTATION = 0x00200032, 0x00200037
-_SHARED, _PER_FRAME = 0x52009229, 0x52009230
-_RECONSTRUCTION, _MEASURES = 0x00189314, 0x00289110
-# Modalities whose images carry annotation in the pixels as a rule; common practice, no source.
-_WRITTEN_ON = frozenset(("US", "IVUS", "BDUS", "OT", "SC", "XC", "ES", "GM", "RF", "DG", "TG", "LS", "DF", "HC", "OP"))
 
 
 def origin_of(
@@ -42,32 +38,32 @@ def origin_of(
         Name of its SOP class.
     """
     dataset = header.dataset
-    modality = terms.modality(text(dataset, _MODALITY))
+    modality = terms.modality(text(dataset, "Modality"))
     return Origin(
         modality=modality,
-        body_part=terms.body_part(text(dataset, _BODY_PART)),
-        slice_thickness_class=slice_thickness_class(_functional(dataset, _THICKNESS, _MEASURES)),
-        kernel=terms.kernel(_functional(dataset, _KERNEL, _RECONSTRUCTION), pseudonyms),
-        manufacturer=terms.manufacturer(text(dataset, _MAKER)),
+        body_part=terms.body_part(text(dataset, "BodyPartExamined")),
+        slice_thickness_class=slice_thickness_class(_functional(dataset, "PixelMeasuresSequence", "SliceThickness")),
+        kernel=terms.kernel(_functional(dataset, "CTReconstructionSequence", "ConvolutionKernel"), pseudonyms),
+        manufacturer=terms.manufacturer(text(dataset, "Manufacturer")),
         source_syntax=header.syntax.name,
         source_bytes=source_bytes,
         history=history,
-        slice_position_mm=slice_position_mm(real(dataset, _POSITION), real(dataset, _ORIENTATION)),
+        slice_position_mm=slice_position_mm(
+            real_numbers(dataset, "ImagePositionPatient") or (), real_numbers(dataset, "ImageOrientationPatient") or ()
+        ),
         under_18=under_18(dataset),
-        may_show_text=_may_show_text(dataset, modality, object_class),
+        may_show_text=may_show_text(dataset, modality, object_class),
     )
 
 
-def _functional(dataset: Dataset, tag: int, group: int) -> str:
-    """Text of an element, or of the functional group that holds it in enhanced images (first frame's if not shared)."""
-    if found := text(dataset, tag):
-        return found
-    for whole in (_SHARED, _PER_FRAME):
-        for frame in items(dataset, whole)[:1]:
-            for each in items(frame, group)[:1]:
-                if found := text(each, tag):
-                    return found
-    return ""
+def _functional(dataset: Dataset, group: str, keyword: str) -> str:
+    """Text of an element of the first frame's functional group, or of the header itself."""
+    try:
+        found = FunctionalGroups(dataset).find(0, group)
+    except InputRefused:  # the file is described all the same; the pixel path refuses it
+        found = None
+    own = "" if found is None else text(found, keyword)
+    return own or text(dataset, keyword)
 
 
 def slice_thickness_class(thickness_mm: str) -> str:
@@ -104,9 +100,3 @@ def slice_position_mm(position: tuple[float, ...], orientation: tuple[float, ...
     length = math.hypot(*normal)
     along = x * normal[0] + y * normal[1] + z * normal[2]
     return round(along / length, 6) if length > 1e-6 else None
-
-
-def _may_show_text(dataset: Dataset, modality: str, object_class: str) -> bool:
-    """Declared, or likely by modality or class; a declared NO is not relied on there, since it is often a default."""
-    declared = text(dataset, _BURNED_IN).upper() == "YES"
-    return declared or modality in _WRITTEN_ON or modality == "" or "Secondary Capture" in object_class

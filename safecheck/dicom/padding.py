@@ -7,9 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from pydicom.dataset import Dataset
 
-from safecheck.dicom.elements import value_of
+from safecheck.dicom.elements import value_of, whole_number
 from safecheck.dicom.pixel_header import PixelHeader
-from safecheck.errors import InputRefused
 from safecheck.frames import Mask, PixelFormat, Samples
 
 __all__ = ["Padding", "read_padding"]
@@ -66,9 +65,7 @@ def _whole(dataset: Dataset, keyword: str) -> int | None:
         return None
     if isinstance(value, bytes) and len(value) == 2:
         return int.from_bytes(value, "little")
-    if not isinstance(value, int):
-        raise InputRefused("header", f"{keyword} is not one whole number")
-    return value
+    return whole_number(dataset, keyword)
 
 
 def _in_range(value: int, header: PixelHeader, notes: list[str]) -> int:

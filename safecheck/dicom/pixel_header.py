@@ -7,8 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from pydicom.dataset import Dataset
 
-from safecheck.dicom.elements import term, whole_number
-from safecheck.dicom.quiet import quiet_library
+from safecheck.dicom.elements import term, whole, whole_number
 from safecheck.errors import InputRefused
 from safecheck.frames import PixelFormat
 
@@ -153,17 +152,8 @@ def _overlay_bits(dataset: Dataset, allocated: int) -> frozenset[int]:
     for group in range(0x6000, 0x6020, 2):
         if (group, 0x0102) not in dataset or (group, 0x3000) in dataset:
             continue
-        allocated_of_plane, position = (_plane_number(dataset, group, element) for element in (0x0100, 0x0102))
-        if allocated_of_plane == allocated and 0 <= position < allocated:
+        # A malformed number is None, and its plane masks nothing.
+        allocated_of_plane, position = (whole(dataset, group << 16 | element) for element in (0x0100, 0x0102))
+        if allocated_of_plane == allocated and position is not None and 0 <= position < allocated:
             found.add(position)
     return frozenset(found)
-
-
-def _plane_number(dataset: Dataset, group: int, element: int) -> int:
-    """Whole number of an overlay group; -1 where absent or malformed, so that its plane masks nothing."""
-    try:
-        with quiet_library():
-            value = dataset[group, element].value
-    except Exception:  # the library raises many kinds here; the plane then simply masks nothing
-        return -1
-    return value if isinstance(value, int) else -1

@@ -6,7 +6,6 @@ import dataclasses
 from types import TracebackType
 from typing import BinaryIO
 
-from safecheck.dicom.burned_in import may_show_text
 from safecheck.dicom.display import read_displays
 from safecheck.dicom.frame_bytes import FrameBytes, locate_frames
 from safecheck.dicom.frame_pixels import FramePixels, check_syntax, read_frame_pixels, second_frame_pixels
@@ -180,15 +179,11 @@ class InstanceReader:
 
     def _origin(self, pixels: FramePixels, place: Place, notes: tuple[str, ...]) -> Origin:
         known = self._instance.origin
-        text = known.may_show_text or may_show_text(
-            self._opened.dataset, acquisition=known.modality, capture=self._capture
-        )
         own_thickness = place.slice_thickness_class if self._groups.enhanced else ""
         return dataclasses.replace(
             known,
             source_bytes=round(pixels.source_bytes * self._opened.packed_share),
             slice_position_mm=place.slice_position_mm,
             slice_thickness_class=own_thickness or known.slice_thickness_class,
-            may_show_text=text,
             notes=tuple(dict.fromkeys((*known.notes, *notes))),
         )

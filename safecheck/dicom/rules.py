@@ -9,8 +9,10 @@ import re
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from safecheck.dicom.elements import text, words
 from safecheck.dicom.facts import Facts
-from safecheck.dicom.header import DIRECTORY_CLASS, Header, text, words
+from safecheck.dicom.header import Header
+from safecheck.dicom.opened import DIRECTORY_CLASS
 from safecheck.dicom.syntaxes import Coding
 from safecheck.wording import sentence_of
 
@@ -124,11 +126,11 @@ def _video(header: Header, _: Facts) -> str:
 
 
 def _described(header: Header) -> str:
-    return " ".join(text(header.dataset, tag) for tag in (0x0008103E, 0x00181030, 0x00204000))
+    return " ".join(text(header.dataset, each) for each in ("SeriesDescription", "ProtocolName", "ImageComments"))
 
 
 def _types(header: Header) -> str:
-    return "\\".join(words(header.dataset, 0x00080008)[2:])
+    return "\\".join(words(header.dataset, "ImageType")[2:])
 
 
 def _dose_page(header: Header, _: Facts) -> str:
@@ -153,8 +155,8 @@ def _secondary_capture(header: Header, facts: Facts) -> str:
     if _SCREEN_TYPES.search(_types(header)):
         return "by Image Type"
     # Some scanners fill Conversion Type for images as acquired, which Image Type then calls primary.
-    primary = "PRIMARY" in (each.upper() for each in words(header.dataset, 0x00080008)[:2])
-    converted = text(header.dataset, 0x00080064) in _SCREEN_CONVERSIONS
+    primary = "PRIMARY" in (each.upper() for each in words(header.dataset, "ImageType")[:2])
+    converted = text(header.dataset, "ConversionType") in _SCREEN_CONVERSIONS
     return "by Conversion Type" if converted and not primary else ""
 
 

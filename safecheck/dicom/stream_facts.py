@@ -1,19 +1,19 @@
-"""What a code stream says of itself: size, channels, precision, sign, colour transform, process."""
+"""What a code stream says of its samples: size, channels, precision, sign, colour transform, process."""
 
 from __future__ import annotations
 
 import struct
-from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Literal
 
+from safecheck.dicom.jpeg_heads import JpegHead, read_jpeg2000_head, read_jpeg_head
+from safecheck.dicom.jpegxl_head import read_jpegxl_head
+from safecheck.dicom.syntaxes import Coding
 from safecheck.errors import InputRefused
 
-__all__ = ["StreamFacts", "coded_length", "read_jpeg", "read_jpeg2000", "strip_jp2"]
+__all__ = ["StreamFacts", "coded_length", "facts_of_stream", "read_jpeg", "read_jpeg2000", "read_jpegxl"]
 
-_START_OF_FRAME = frozenset(range(0xC0, 0xD0)) - {0xC4, 0xC8, 0xCC} | {0xF7}
 _PROCESSES = {0xC0: "baseline", 0xC1: "extended", 0xC2: "progressive", 0xC3: "lossless", 0xF7: "jpeg-ls"}
-_CODESTREAM_2000 = b"\xff\x4f\xff\x51"
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,73 +38,55 @@ def coded_length(code: bytes) -> int | None:
     return len(stripped) if stripped.endswith(b"\xff\xd9") else None
 
 
+def facts_of_stream(coding: Coding, code: bytes) -> StreamFacts | None:
+    """Facts of a code stream of some family, bare for JPEG 2000; None for a family whose streams say nothing.
+
+    Raises
+    ------
+    InputRefused
+        'decode', 'syntax' or 'bits', as the readers of the families.
+    """
+    if coding in (Coding.JPEG, Coding.JPEG_LS):
+        return read_jpeg(code)
+    if coding is Coding.JPEG_2000:
+        return read_jpeg2000(code)
+    if coding is Coding.JPEG_XL:
+        return read_jpegxl(code)
+    return None
+
+
 def read_jpeg(code: bytes) -> StreamFacts:
-    """Read the markers of a JPEG (T.81) or JPEG-LS (T.87) stream up to its first scan.
+    """Facts of a JPEG (T.81) or JPEG-LS (T.87) stream.
 
     Raises
     ------
     InputRefused
         'decode': markers missing, cut or contradictory; 'syntax': another process.
     """
-    adobe: int | None = None
-    jfif = False
-    frame: tuple[int, bytes] | None = None
-    for marker, body in _jpeg_segments(code):
-        if marker == 0xEE and body[:5] == b"Adobe" and len(body) >= 12:
-            adobe = body[11]
-        elif marker == 0xE0 and body[:5] == b"JFIF\x00":
-            jfif = True
-        elif marker in _START_OF_FRAME:
-            frame = (marker, body)
-        elif marker == 0xDA:
-            if frame is None:
-                break
-            return _jpeg_facts(frame, body, adobe, jfif=jfif)
-    raise InputRefused("decode", "no frame and scan header in the JPEG code stream")
-
-
-def _jpeg_segments(code: bytes) -> Iterator[tuple[int, bytes]]:
-    if code[:2] != b"\xff\xd8":
-        raise InputRefused("decode", "the JPEG code stream does not begin with its start marker")
-    at = 2
-    while at + 4 <= len(code):
-        if code[at] != 0xFF:
-            raise InputRefused("decode", "a marker is missing in the JPEG code stream")
-        if code[at + 1] == 0xFF:  # fill byte, T.81 B.1.1.2
-            at += 1
-            continue
-        marker, length = code[at + 1], struct.unpack_from(">H", code, at + 2)[0]
-        body = code[at + 4 : at + 2 + length]
-        if length < 2 or len(body) != length - 2:
-            raise InputRefused("decode", "a marker segment of the JPEG code stream is cut")
-        yield marker, body
-        at += 2 + length
-
-
-def _jpeg_facts(frame: tuple[int, bytes], scan: bytes, adobe: int | None, *, jfif: bool) -> StreamFacts:
-    marker, body = frame
-    if marker not in _PROCESSES:
+    head = read_jpeg_head(code)
+    if not head.process:
+        raise InputRefused("decode", "no frame header in the JPEG code stream")
+    if head.process not in _PROCESSES:
         raise InputRefused("syntax", "a JPEG process other than baseline, extended, progressive or lossless")
-    if len(body) < 6 or len(body) < 6 + 3 * body[5] or not scan or len(scan) < 4 + 2 * scan[0]:
-        raise InputRefused("decode", "the JPEG frame or scan header is cut")
-    precision, rows, columns, channels = struct.unpack_from(">BHHB", body)
-    identifiers = bytes(body[6 + 3 * i] for i in range(channels))
-    process = _PROCESSES[marker]
-    _check_scan(process, scan)
+    if len(head.frame) < 6 or len(head.frame) < 6 + 3 * head.frame[5]:
+        raise InputRefused("decode", "the JPEG frame header is cut")
+    precision, rows, columns, channels = struct.unpack_from(">BHHB", head.frame)
+    process = _PROCESSES[head.process]
+    _check_scan(process, head.scan)
     return StreamFacts(
         rows=rows,
         columns=columns,
         channels=channels,
         precision=precision,
         signed=False,
-        coded_colour=_jpeg_colour(channels, identifiers, adobe, process, jfif=jfif),
+        coded_colour=_jpeg_colour(head, process, channels),
         process=process,
     )
 
 
-def _check_scan(process: str, scan: bytes) -> None:
+def _check_scan(process: str, scan: tuple[int, int, int]) -> None:
     """Hold the last three bytes of the scan header against T.81 Table B.3, which decoders often overlook."""
-    start, end, approximation = scan[1 + 2 * scan[0] : 4 + 2 * scan[0]]
+    start, end, approximation = scan
     if process in ("baseline", "extended") and (start, end, approximation) != (0, 63, 0):
         raise InputRefused("decode", "the scan header of a sequential JPEG names other than all coefficients")
     if process == "lossless" and (not 1 <= start <= 7 or end or approximation & 0xF0):
@@ -113,76 +95,63 @@ def _check_scan(process: str, scan: bytes) -> None:
         raise InputRefused("decode", "the code stream leaves out low bits (a point transform)")
 
 
-def _jpeg_colour(
-    channels: int, identifiers: bytes, adobe: int | None, process: str, *, jfif: bool
-) -> Literal["RGB", "YBR", ""]:
+def _jpeg_colour(head: JpegHead, process: str, channels: int) -> Literal["RGB", "YBR", ""]:
     """Colour marked in the stream: Adobe's marker (T.872 6.5.3), then JFIF (T.871), then component letters."""
     if channels != 3 or process in ("lossless", "jpeg-ls"):
         return ""
-    if adobe is not None:
-        return "YBR" if adobe == 1 else "RGB"
-    if jfif:
+    if head.adobe is not None:
+        return "YBR" if head.adobe == 1 else "RGB"
+    if head.jfif:
         return "YBR"
-    return "RGB" if identifiers == b"RGB" else ""
-
-
-def strip_jp2(code: bytes) -> bytes:
-    """Bare JPEG 2000 code stream out of a JP2 file, whose own colour boxes have no say in DICOM (PS3.5 A.4.4).
-
-    Raises
-    ------
-    InputRefused
-        'decode': a JP2 file without a code stream.
-    """
-    if code[4:8] != b"jP  ":
-        return code
-    start = code.find(_CODESTREAM_2000)
-    if start < 0:
-        raise InputRefused("decode", "no code stream in the JP2 file")
-    return code[start:]
+    return "RGB" if head.frame[6:15:3] == b"RGB" else ""
 
 
 def read_jpeg2000(code: bytes) -> StreamFacts:
-    """Read the main header of a JPEG 2000 (T.800) or HTJ2K (T.814) code stream.
+    """Facts of a bare JPEG 2000 (T.800) or HTJ2K (T.814) code stream.
 
     Raises
     ------
     InputRefused
         'decode': markers missing, cut or contradictory.
     """
-    if code[:4] != _CODESTREAM_2000:
-        raise InputRefused("decode", "the JPEG 2000 code stream does not begin with its markers")
-    at, size, style, high_throughput = 2, b"", b"", False
-    while at + 4 <= len(code):
-        marker, length = struct.unpack_from(">HH", code, at)
-        if marker == 0xFF90 or length < 2:
-            break
-        body = code[at + 4 : at + 2 + length]
-        size = body if marker == 0xFF51 else size
-        style = body if marker == 0xFF52 else style
-        high_throughput |= marker == 0xFF50
-        at += 2 + length
-    if len(size) < 36 or len(size) < 36 + 3 * struct.unpack_from(">H", size, 34)[0] or len(style) < 10:
-        raise InputRefused("decode", "the main header of the JPEG 2000 code stream is cut")
-    return _jpeg2000_facts(size, style, high_throughput=high_throughput)
-
-
-def _jpeg2000_facts(size: bytes, style: bytes, *, high_throughput: bool) -> StreamFacts:
-    right, bottom, left, top = struct.unpack_from(">IIII", size, 2)
-    channels = struct.unpack_from(">H", size, 34)[0]
-    components = {size[36 + 3 * i : 39 + 3 * i] for i in range(channels)}
+    head = read_jpeg2000_head(code)
+    right, bottom, left, top = struct.unpack_from(">IIII", head.size, 2)
+    components = {head.size[36 + 3 * i : 39 + 3 * i] for i in range(head.channels)}
     if len(components) != 1:
         raise InputRefused("decode", "the channels of the JPEG 2000 code stream differ in bits or size")
     depth, step_across, step_down = components.pop()
     if (step_across, step_down) != (1, 1):
         raise InputRefused("decode", "the channels of the JPEG 2000 code stream are subsampled")
-    transformed = style[4] != 0
+    transformed = head.style[4] != 0
     return StreamFacts(
         rows=bottom - top,
         columns=right - left,
-        channels=channels,
+        channels=head.channels,
         precision=(depth & 0x7F) + 1,
         signed=bool(depth & 0x80),
-        coded_colour="" if channels != 3 else "YBR" if transformed else "RGB",
-        process="htj2k" if high_throughput else "jpeg2000",
+        coded_colour="" if head.channels != 3 else "YBR" if transformed else "RGB",
+        process="htj2k" if head.high_throughput else "jpeg2000",
+    )
+
+
+def read_jpegxl(code: bytes) -> StreamFacts:
+    """Facts of a JPEG XL code stream, bare or in its container.
+
+    Raises
+    ------
+    InputRefused
+        'decode': not a JPEG XL code stream, cut, turned, moving, or with channels besides colour; 'bits': floating
+        point.
+    """
+    head = read_jpegxl_head(code)
+    if head.floating:
+        raise InputRefused("bits", "the JPEG XL code stream holds floating point samples")
+    return StreamFacts(
+        rows=head.rows,
+        columns=head.columns,
+        channels=head.channels,
+        precision=head.precision,
+        signed=False,
+        coded_colour="RGB" if head.channels == 3 else "",
+        process="jpeg-xl",
     )

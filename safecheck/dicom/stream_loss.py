@@ -7,14 +7,18 @@ shows; such a finding stays open, and the file's own declaration decides.
 from __future__ import annotations
 
 import enum
-import struct
-from collections.abc import Iterator
 from dataclasses import dataclass
 
-from safecheck.dicom.jpegxl import JpegXlHeader, read_jpegxl
+from safecheck.dicom.jpeg_heads import begins_jpeg, begins_jpeg2000, read_jpeg2000_head, read_jpeg_head, strip_jp2
+from safecheck.dicom.jpegxl_head import Made, begins_jpegxl, holds_jpeg, read_jpegxl_head
 from safecheck.dicom.syntaxes import Coding
+from safecheck.errors import InputRefused
 
 __all__ = ["Finding", "Verdict", "look_into"]
+
+_JPEG_LS = 0xF7
+_PREDICTIVE = (0xC3, 0xC7, 0xCB, 0xCF)
+"""Lossless frame headers of T.81 Table B.1."""
 
 
 class Verdict(enum.IntEnum):
@@ -62,33 +66,15 @@ def look_into(coding: Coding, start: bytes) -> Finding | None:
     return None
 
 
-def _segments(start: bytes, position: int) -> Iterator[tuple[int, bytes]]:
-    """(marker, body) of each marker segment from a position on, until the data of a scan or tile."""
-    while position + 4 <= len(start):
-        marker, length = struct.unpack_from(">HH", start, position)
-        if marker < 0xFF00 or length < 2 or position + 2 + length > len(start):
-            return
-        yield marker, start[position + 4 : position + 2 + length]
-        position += 2 + length
-
-
 def _jpeg_2000(start: bytes) -> Finding | None:
-    """Filter of COD and COC in the main header (ISO/IEC 15444-1 A.6.1, A.6.2): 0 is 9/7, 1 is 5/3."""
+    """Filters that the main header names (T.800 A.6.1, A.6.2)."""
     # Some writers put the boxes of a file around the code stream, which DICOM does not allow.
-    begin = start.find(b"\xff\x4f\xff\x51")
-    if begin < 0:
+    if not begins_jpeg2000(start):
         return None
-    filters: set[int] = set()
-    components = 1
-    for marker, body in _segments(start, begin + 2):
-        if marker == 0xFF51 and len(body) >= 36:
-            components = struct.unpack_from(">H", body, 34)[0]
-        elif marker == 0xFF52 and len(body) >= 10:
-            filters.add(body[9])
-        elif marker == 0xFF53:
-            filters.add(_component_filter(body, components))
-        elif marker == 0xFF90:
-            break
+    try:
+        filters = read_jpeg2000_head(strip_jp2(start)).filters
+    except InputRefused:  # a header that cannot be read tells nothing of loss; the pixel path refuses it
+        filters = frozenset()
     if 0 in filters:
         return Finding(Verdict.IRREVERSIBLE, "the code stream uses the irreversible 9/7 filter")
     if filters == {1}:
@@ -96,50 +82,42 @@ def _jpeg_2000(start: bytes) -> Finding | None:
     return Finding(Verdict.UNTOLD, "the filter of the code stream could not be told")
 
 
-def _component_filter(body: bytes, components: int) -> int:
-    """Filter that a COC segment gives; 255 where it is too short."""
-    place = (1 if components < 257 else 2) + 5
-    return body[place] if len(body) > place else 255
-
-
 def _jpeg(start: bytes, coding: Coding) -> Finding | None:
-    """Frame and scan header of JPEG (T.81 B.2) and JPEG-LS (T.87 C.2)."""
-    if start[:2] != b"\xff\xd8":
+    """Process and scan header of JPEG and JPEG-LS."""
+    if not begins_jpeg(start):
         return None
-    frame = 0
-    for marker, body in _segments(start, 2):
-        if marker == 0xFFF7 or (0xFFC0 <= marker <= 0xFFCF and marker not in (0xFFC4, 0xFFC8, 0xFFCC)):
-            frame = marker
-        elif marker == 0xFFDA and len(body) >= 4:
-            return _scan(frame, body, coding)
-    return Finding(Verdict.UNTOLD, "the scan header of the code stream could not be read")
-
-
-def _scan(frame: int, body: bytes, coding: Coding) -> Finding:
-    """Verdict from the frame type and the last three bytes of the scan header."""
-    parameter, _, shifts = body[-3:]
-    if frame == 0xFFF7 and coding is Coding.JPEG_LS:
-        if parameter:
-            return Finding(Verdict.IRREVERSIBLE, f"near-lossless bound NEAR of {parameter} in the code stream")
-        return Finding(Verdict.REVERSIBLE, "near-lossless bound NEAR of 0 in the code stream")
-    if frame in (0xFFC3, 0xFFC7, 0xFFCB, 0xFFCF) and coding is Coding.JPEG:
+    try:
+        head = read_jpeg_head(start)
+    except InputRefused:  # as above
+        return Finding(Verdict.UNTOLD, "the scan header of the code stream could not be read")
+    near, _, shifts = head.scan
+    if head.process == _JPEG_LS and coding is Coding.JPEG_LS:
+        verdict = Verdict.IRREVERSIBLE if near else Verdict.REVERSIBLE
+        return Finding(verdict, f"near-lossless bound NEAR of {near} in the code stream")
+    if head.process in _PREDICTIVE and coding is Coding.JPEG:
         if shifts & 15:
             return Finding(Verdict.IRREVERSIBLE, f"the code stream drops the {shifts & 15} lowest bits")
         return Finding(Verdict.REVERSIBLE, "predictive coding without point transform in the code stream")
-    if frame and frame != 0xFFF7:
+    if head.process not in (0, _JPEG_LS):
         return Finding(Verdict.IRREVERSIBLE, "the code stream uses the cosine transform of JPEG")
     return Finding(Verdict.UNTOLD, "the code stream is of another kind than the transfer syntax")
 
 
 _JPEG_XL = {
-    JpegXlHeader.FROM_JPEG: Finding(Verdict.IRREVERSIBLE, "the code stream is a recompressed JPEG"),
-    JpegXlHeader.XYB: Finding(Verdict.IRREVERSIBLE, "the code stream uses the XYB colour transform"),
-    JpegXlHeader.COSINE: Finding(Verdict.IRREVERSIBLE, "the code stream uses the variable cosine transform"),
-    JpegXlHeader.MODULAR: Finding(Verdict.OPEN, "modular coding without XYB; a loss before it cannot be excluded"),
-    JpegXlHeader.UNTOLD: Finding(Verdict.UNTOLD, "whether the code stream is reversible could not be told"),
+    Made.XYB: Finding(Verdict.IRREVERSIBLE, "the code stream uses the XYB colour transform"),
+    Made.COSINE: Finding(Verdict.IRREVERSIBLE, "the code stream uses the variable cosine transform"),
+    Made.MODULAR: Finding(Verdict.OPEN, "modular coding without XYB; a loss before it cannot be excluded"),
+    Made.UNTOLD: Finding(Verdict.UNTOLD, "whether the code stream is reversible could not be told"),
 }
 
 
 def _jpeg_xl(start: bytes) -> Finding | None:
-    header = read_jpegxl(start)
-    return _JPEG_XL[header] if header else None
+    """JPEG inside, colour transform and coding of the first frame."""
+    if not begins_jpegxl(start):
+        return None
+    if holds_jpeg(start):
+        return Finding(Verdict.IRREVERSIBLE, "the code stream is a recompressed JPEG")
+    try:
+        return _JPEG_XL[read_jpegxl_head(start).made]
+    except InputRefused:  # as above
+        return _JPEG_XL[Made.UNTOLD]

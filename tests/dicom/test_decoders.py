@@ -15,9 +15,9 @@ import pytest
 from pydicom.pixels.utils import pixel_array
 
 from safecheck.dicom.decoders import DECODERS
-from safecheck.dicom.jxl_header import bare_codestream, holds_jpeg, read_jpeg_xl
+from safecheck.dicom.jpegxl_head import bare_codestream, holds_jpeg
 from safecheck.dicom.reader import open_instance
-from safecheck.dicom.stream_facts import coded_length, read_jpeg, read_jpeg2000
+from safecheck.dicom.stream_facts import coded_length, read_jpeg, read_jpeg2000, read_jpegxl
 from safecheck.dicom.syntaxes import SYNTAXES
 from safecheck.errors import InputRefused
 from tests.dicom.factory import J, header_for, instance_at, noise, real_file, write_instance
@@ -87,7 +87,7 @@ def test_the_head_of_a_jpeg_xl_stream_is_read(shape: tuple[int, int], bits: int)
                 np.ascontiguousarray(samples), lossless=True, effort=3, bitspersample=bits, usecontainer=boxed
             )
         )
-        facts = read_jpeg_xl(code)
+        facts = read_jpegxl(code)
         assert (facts.rows, facts.columns, facts.channels, facts.precision) == (*shape, 1, bits)
         assert bare_codestream(code)[:2] == b"\xff\x0a"
         assert not holds_jpeg(code)
@@ -95,20 +95,20 @@ def test_the_head_of_a_jpeg_xl_stream_is_read(shape: tuple[int, int], bits: int)
 
 @pytest.mark.parametrize("options", [{"lossless": True}, {"distance": 1.0}], ids=["lossless", "lossy"])
 def test_the_head_of_a_colour_jpeg_xl_stream_is_read(options: dict[str, Any]) -> None:
-    facts = read_jpeg_xl(bytes(imagecodecs.jpegxl_encode(np.zeros((20, 30, 3), dtype="u1"), **options)))
+    facts = read_jpegxl(bytes(imagecodecs.jpegxl_encode(np.zeros((20, 30, 3), dtype="u1"), **options)))
     assert (facts.rows, facts.columns, facts.channels, facts.precision) == (20, 30, 3, 8)
 
 
 def test_a_jpeg_xl_stream_with_an_alpha_channel_is_refused() -> None:
     code = bytes(imagecodecs.jpegxl_encode(np.zeros((20, 30, 4), dtype="u1"), lossless=True))
     with pytest.raises(InputRefused, match=r"^decode"):
-        read_jpeg_xl(code)
+        read_jpegxl(code)
 
 
 def test_a_jpeg_xl_stream_of_floating_point_samples_is_refused() -> None:
     code = bytes(imagecodecs.jpegxl_encode(np.zeros((20, 30), dtype="f4"), lossless=True))
     with pytest.raises(InputRefused, match=r"^bits"):
-        read_jpeg_xl(code)
+        read_jpegxl(code)
 
 
 def test_the_head_of_a_jpeg_2000_stream_is_read() -> None:

@@ -15,7 +15,7 @@ from pydicom.dataset import Dataset
 from pydicom.errors import InvalidDicomError
 from pydicom.uid import UID
 
-from safecheck.dicom import header as header_module
+from safecheck.dicom import opened as opened_module
 from safecheck.dicom.delivered import match
 from safecheck.dicom.intake import Include, Intake
 from tests.dicom.made_files import image, save, take_in
@@ -202,7 +202,7 @@ def test_canaries_in_exception_texts_stay_inside(
         raise error(CANARY)
 
     path = save(image(1), tmp_path / "f")
-    monkeypatch.setattr(header_module, "read_dataset", refuse)
+    monkeypatch.setattr(opened_module, "read_dataset", refuse)
     intake = take_in(path)
     assert intake.counts == {"assessed": 0, "unreadable": 1}
     assert_clean(intake)

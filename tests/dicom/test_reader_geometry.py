@@ -10,15 +10,16 @@ import numpy.typing as npt
 import pytest
 from pydicom.dataset import Dataset
 
+from safecheck.dicom.intake import Include
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.frames import DisplayWindow, Frame, Rescale
-from tests.dicom.factory import BIG_ENDIAN, CT_NAME, EXPLICIT, header_for, noise, write_instance
+from tests.dicom.factory import BIG_ENDIAN, EXPLICIT, header_for, noise, write_instance
+from tests.dicom.made_files import take_in
 
 Array = npt.NDArray[Any]
 GREY = noise((12, 10), 12)
 SIGNED = noise((12, 10), 12, signed=True, dtype="i2")
-CAPTURE = "Secondary Capture Image Storage"
 
 
 def item(**changes: object) -> Dataset:
@@ -38,12 +39,10 @@ def read(
     samples: Array = GREY,
     syntax: str = EXPLICIT,
     *,
-    modality: str = "CT",
-    object_class: str = CT_NAME,
     number: int = 1,
 ) -> Frame:
     pixels = samples.astype(samples.dtype.newbyteorder(">" if syntax == BIG_ENDIAN else "<")).tobytes()
-    instance = write_instance(folder, dataset, pixels, syntax, modality=modality, object_class=object_class)
+    instance = write_instance(folder, dataset, pixels, syntax)
     with open_instance(instance) as reader:
         return reader.frame(number)
 
@@ -107,7 +106,9 @@ def test_spacing_is_that_of_the_patient_or_says_what_it_is(
 def test_the_spacing_of_ultrasound_regions_is_not_used(tmp_path: Path) -> None:
     dataset = grey_header()
     dataset.SequenceOfUltrasoundRegions = [item(PhysicalDeltaX=0.01, PhysicalDeltaY=0.01)]
-    assert read(tmp_path, dataset, modality="US").spacing_mm is None
+    instance = write_instance(tmp_path, dataset, GREY.tobytes(), modality="US")
+    with open_instance(instance) as reader:
+        assert reader.frame(1).spacing_mm is None
 
 
 # --- enhanced
@@ -167,26 +168,32 @@ def test_functional_groups_for_another_number_of_frames_are_refused(tmp_path: Pa
 
 # --- burned-in text
 
+CT_UID, CAPTURE_UID = "1.2.840.10008.5.1.4.1.1.2", "1.2.840.10008.5.1.4.1.1.7"
 TEXTS = [
-    pytest.param("CT", CT_NAME, {}, False, id="CT"),
-    pytest.param("CT", CT_NAME, {"BurnedInAnnotation": "YES"}, True, id="CT that says so"),
-    pytest.param("CT", CAPTURE, {}, True, id="CT captured"),
-    pytest.param("CT", CT_NAME, {"ImageType": ["DERIVED", "SECONDARY", "OTHER"]}, True, id="CT derived"),
-    pytest.param("CT", CT_NAME, {"ConversionType": "WSD"}, True, id="CT of a workstation"),
-    pytest.param(
-        "CT", CT_NAME, {"ImageType": ["DERIVED", "SECONDARY"], "BurnedInAnnotation": "NO"}, False, id="CT, NO"
-    ),
-    pytest.param("US", "Ultrasound Image Storage", {}, True, id="US"),
-    pytest.param("XC", "VL Photographic Image Storage", {}, True, id="photograph"),
-    pytest.param("CR", "Computed Radiography Image Storage", {}, True, id="CR"),
-    pytest.param("DX", "Digital X-Ray Image Storage", {"BurnedInAnnotation": "NO"}, False, id="DX, NO"),
-    pytest.param("", CT_NAME, {}, True, id="modality unknown"),
+    pytest.param("CT", CT_UID, {}, False, id="CT"),
+    pytest.param("CT", CT_UID, {"BurnedInAnnotation": "NO"}, False, id="CT that says NO"),
+    pytest.param("CT", CT_UID, {"BurnedInAnnotation": "YES"}, True, id="CT that says so"),
+    pytest.param("CT", CT_UID, {"BurnedInAnnotation": "PERHAPS"}, True, id="CT of another word"),
+    pytest.param("CT", CAPTURE_UID, {}, True, id="CT captured"),
+    pytest.param("CT", CAPTURE_UID, {"BurnedInAnnotation": "NO"}, True, id="CT captured, NO"),
+    pytest.param("CT", CT_UID, {"ImageType": ["DERIVED", "SECONDARY", "OTHER"]}, True, id="CT derived"),
+    pytest.param("CT", CT_UID, {"ConversionType": "WSD"}, True, id="CT of a workstation"),
+    pytest.param("CT", CT_UID, {"ImageType": ["DERIVED", "SECONDARY"], "BurnedInAnnotation": "NO"}, False, id="CT, NO"),
+    pytest.param("US", "1.2.840.10008.5.1.4.1.1.6.1", {}, True, id="US"),
+    pytest.param("US", "1.2.840.10008.5.1.4.1.1.6.1", {"BurnedInAnnotation": "NO"}, True, id="US, NO"),
+    pytest.param("XC", "1.2.840.10008.5.1.4.1.1.77.1.4", {}, True, id="photograph"),
+    pytest.param("CR", "1.2.840.10008.5.1.4.1.1.1", {}, True, id="CR"),
+    pytest.param("DX", "1.2.840.10008.5.1.4.1.1.1.1", {"BurnedInAnnotation": "NO"}, False, id="DX, NO"),
+    pytest.param(None, CT_UID, {}, True, id="modality unknown"),
 ]
 
 
-@pytest.mark.parametrize(("modality", "object_class", "changes", "expected"), TEXTS)
+@pytest.mark.parametrize(("modality", "object_uid", "changes", "expected"), TEXTS)
 def test_text_in_the_pixels_is_assumed_unless_ruled_out(
-    tmp_path: Path, modality: str, object_class: str, changes: dict[str, object], expected: bool
+    tmp_path: Path, modality: str | None, object_uid: str, changes: dict[str, object], expected: bool
 ) -> None:
-    frame = read(tmp_path, grey_header(**changes), modality=modality, object_class=object_class)
-    assert frame.origin.may_show_text is expected
+    dataset = grey_header(Modality=modality, SOPClassUID=object_uid, **changes)
+    path = write_instance(tmp_path, dataset, GREY.tobytes()).source.path
+    (instance,) = take_in(path, include=Include(secondary_captures=True)).instances
+    with open_instance(instance) as reader:
+        assert reader.frame(1).origin.may_show_text is expected

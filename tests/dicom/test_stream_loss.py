@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 import pytest
 
-from safecheck.dicom.jpegxl import JpegXlHeader, read_jpegxl
+from safecheck.dicom.jpegxl_head import Made, holds_jpeg, read_jpegxl_head
 from safecheck.dicom.stream_loss import Verdict, look_into
 from safecheck.dicom.syntaxes import Coding
 
@@ -83,24 +83,26 @@ def test_point_transform_of_lossless_jpeg_is_a_loss() -> None:
 
 
 @pytest.mark.parametrize(
-    ("options", "header"),
+    ("options", "made"),
     [
-        ({"lossless": True}, JpegXlHeader.MODULAR),
-        ({"lossless": False, "distance": 0.0}, JpegXlHeader.XYB),
-        ({"distance": 1.0}, JpegXlHeader.XYB),
-        ({"distance": 3.0}, JpegXlHeader.XYB),
+        ({"lossless": True}, Made.MODULAR),
+        ({"lossless": False, "distance": 0.0}, Made.XYB),
+        ({"distance": 1.0}, Made.XYB),
+        ({"distance": 3.0}, Made.XYB),
     ],
     ids=["lossless", "distance 0", "distance 1", "distance 3"],
 )
 @pytest.mark.parametrize("samples", [GREY, BYTES, COLOUR, GREY[:64, :64]], ids=["12-bit", "8-bit", "colour", "square"])
-def test_jpeg_xl_header_is_read(samples: npt.NDArray[Any], options: dict[str, Any], header: JpegXlHeader) -> None:
+def test_jpeg_xl_header_is_read(samples: npt.NDArray[Any], options: dict[str, Any], made: Made) -> None:
     # Options as given to libjxl by imagecodecs: 'lossless' is modular without XYB; a distance of 0 is not lossless.
-    assert read_jpegxl(bytes(imagecodecs.jpegxl_encode(samples, **options))) is header
+    code = bytes(imagecodecs.jpegxl_encode(samples, **options))
+    assert read_jpegxl_head(code).made is made
+    assert not holds_jpeg(code)
 
 
 def test_recompressed_jpeg_is_found_in_jpeg_xl() -> None:
     code = bytes(imagecodecs.jpegxl_encode_jpeg(imagecodecs.jpeg8_encode(COLOUR, level=90)))
-    assert read_jpegxl(code) is JpegXlHeader.FROM_JPEG
+    assert holds_jpeg(code)
     assert verdict_of(Coding.JPEG_XL, code) is Verdict.IRREVERSIBLE
 
 
@@ -108,7 +110,8 @@ def test_jpeg_xl_without_xyb_by_cosine_transform_is_lossy() -> None:
     # The recompressed JPEG's own code stream, without the data to rebuild the file.
     code = bytes(imagecodecs.jpegxl_encode_jpeg(imagecodecs.jpeg8_encode(COLOUR, level=90)))
     place = code.index(b"jxlc") if b"jxlc" in code else code.index(b"jxlp") + 4
-    assert read_jpegxl(code[place + 4 :]) is JpegXlHeader.COSINE
+    assert read_jpegxl_head(code[place + 4 :]).made is Made.COSINE
+    assert verdict_of(Coding.JPEG_XL, code[place + 4 :]) is Verdict.IRREVERSIBLE
 
 
 @pytest.mark.parametrize(
