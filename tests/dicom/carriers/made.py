@@ -26,7 +26,7 @@ AXIAL = (np.array([1.0, 0.0, 0.0]), np.array([0.0, 1.0, 0.0]))
 _T = np.radians(20.0)
 TILTED = (np.array([1.0, 0.0, 0.0]), np.array([0.0, np.cos(_T), np.sin(_T)]))
 """A gantry turned by 20 degrees about the axis from right to left."""
-OBLIQUE = (np.array([2.0, 2.0, 1.0]) / 3, np.array([-2.0, 1.0, 2.0]) / 3)
+OBLIQUE = (np.array([3.0, -6.0, 2.0]) / 7, np.array([6.0, 2.0, -3.0]) / 7)
 """Turned about all three axes."""
 PLANES = {"axial": AXIAL, "tilted": TILTED, "oblique": OBLIQUE}
 ORIGIN = np.array([-31.3, 17.9, -250.4])

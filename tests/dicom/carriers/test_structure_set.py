@@ -14,7 +14,7 @@ from pydicom.uid import DeflatedExplicitVRLittleEndian, ImplicitVRLittleEndian
 
 from safecheck.dicom.carriers.carrier import read_carrier
 from safecheck.errors import RegionError
-from safecheck.regions.region import Region, RegionSet, cover_grid
+from safecheck.regions.region import Grid, Region, RegionSet, cover_grid
 from safecheck.wording import lint
 from tests.dicom.carriers.made import (
     AXIAL,
@@ -96,6 +96,15 @@ def test_each_plane_of_irregular_spacing_takes_its_own_slices() -> None:
     assert cover_grid(region, grid_at(AXIAL, 8.6)) is None
 
 
+def seen_from_behind(grid: Grid) -> Grid:
+    """The same pixels with columns counted from the other side, so that the normal is the opposite one."""
+    assert grid.position_mm is not None
+    assert grid.along_columns is not None
+    across = np.array(grid.along_columns)
+    corner = np.array(grid.position_mm) + across * 0.8 * (grid.columns - 1)
+    return dataclasses.replace(grid, position_mm=tuple(corner.tolist()), along_columns=tuple((-across).tolist()))
+
+
 @pytest.mark.parametrize("axes", PLANES.values(), ids=PLANES.keys())
 @pytest.mark.parametrize("turned", [False, True], ids=["same normal", "opposite normal"])
 @pytest.mark.parametrize("step", [1, 2, 3, 4])
@@ -105,17 +114,23 @@ def test_no_slice_of_a_series_is_lost_or_counted_twice(axes: tuple[Vector, Vecto
     region = only(structure_set([[contour(ring(MIDDLE, 5.0), axes, height) for height in heights]]))
     for number in range(int(heights[-1] / 1.25) + 1):
         grid = grid_at(axes, 1.25 * number)
-        if turned:
-            # The same plane seen from the other side.
-            assert grid.position_mm is not None
-            assert grid.along_columns is not None
-            across = np.array(grid.along_columns)
-            corner = np.array(grid.position_mm) + across * 0.8 * (grid.columns - 1)
-            grid = dataclasses.replace(
-                grid, position_mm=tuple(corner.tolist()), along_columns=tuple((-across).tolist())
-            )
+        grid = seen_from_behind(grid) if turned else grid
         hits = [part for part in region.parts if cover_grid(dataclasses.replace(region, parts=(part,)), grid)]
         assert len(hits) == 1, number
+
+
+@pytest.mark.parametrize("axes", PLANES.values(), ids=PLANES.keys())
+def test_a_slice_in_the_middle_takes_the_same_plane_from_either_side(axes: tuple[Vector, Vector]) -> None:
+    region = only(structure_set([[contour(ring(MIDDLE, 5.0 + height), axes, height) for height in (0.0, 2.5, 5.0)]]))
+    # The normal in whose order planes stand has a positive largest component: here it is the frames' own.
+    assert np.cross(*axes)[int(np.abs(np.cross(*axes)).argmax())] > 0
+    for height, radius in [(1.25, 5.0), (3.75, 7.5), (6.25, 10.0)]:
+        grid = grid_at(axes, height)
+        for each in (grid, seen_from_behind(grid)):
+            area = float(covered(region, each).fractions.sum()) * 0.64
+            assert area == pytest.approx(math.pi * radius**2, rel=1e-3)
+    assert cover_grid(region, grid_at(axes, -1.25)) is None
+    assert cover_grid(region, seen_from_behind(grid_at(axes, -1.25))) is None
 
 
 def test_a_slice_between_far_planes_is_not_filled_in() -> None:
