@@ -33,10 +33,10 @@ app = typer.Typer(
         "It never says that an image is fit for diagnosis: that is for local regulation and licensed clinicians."
     ),
     epilog=(
-        "Exit codes: 0 ran, controls held, no proposed candidate outside a declared limit (no finding on fitness for "
-        "any use); 2 call or plan wrong; 3 more left out than the plan allows, or nothing evaluated; 4 controls not held; "
-        "5 incomplete, can be resumed; 6 verification found a difference; 7 too little evidence for the declared "
-        "claim; 8 internal error; 10 a proposed candidate outside a declared limit."
+        "Exit codes: 0 ran, controls held, no proposed candidate outside a declared limit (no finding on fitness "
+        "for any use); 2 call or plan wrong; 3 more left out than the plan allows, or nothing evaluated; 4 controls "
+        "not held; 5 incomplete, can be resumed; 6 verification found a difference; 7 too little evidence for the "
+        "declared claim; 8 internal error; 10 a proposed candidate outside a declared limit."
     ),
 )
 
