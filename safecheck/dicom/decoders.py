@@ -30,8 +30,8 @@ from safecheck.errors import InputRefused
 
 __all__ = ["DECODERS", "Decoder", "decode", "rebuild_jpeg", "second_opinion"]
 
-_PACKBITS_MOST = 64
-"""Bytes that a byte of PackBits can stand for: a run of 128 takes two (PS3.5 G.3.1)."""
+_PACKBITS_RUN = 128
+"""Bytes that two bytes of PackBits can stand for at most (PS3.5 G.3.1)."""
 _Array = npt.NDArray[Any]
 _Decode = Callable[[bytes, PixelHeader, "StreamFacts | None"], _Array]
 
@@ -61,11 +61,12 @@ def _rle(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
     if bounds[0] < 64 or any(a >= b for a, b in itertools.pairwise(bounds)):
         raise InputRefused("decode", "the RLE segments overlap or lie outside the frame")
     pixels = header.rows * header.columns
-    if any((b - a) * _PACKBITS_MOST < pixels for a, b in itertools.pairwise(bounds)):
+    if any((b - a) * _PACKBITS_RUN // 2 < pixels for a, b in itertools.pairwise(bounds)):
         raise InputRefused("truncated", "an RLE segment is too short for the samples of the frame")
     out = np.empty((pixels, header.channels, depth), dtype=np.uint8)
     for segment in range(count):
-        plane = imagecodecs.packbits_decode(code[bounds[segment] : bounds[segment + 1]])
+        # With room for one run of padding and no more: what unpacks to far more than the frame is refused.
+        plane = imagecodecs.packbits_decode(code[bounds[segment] : bounds[segment + 1]], out=pixels + _PACKBITS_RUN)
         if len(plane) < pixels:
             raise InputRefused("truncated", "an RLE segment holds fewer samples than the frame")
         channel, byte = divmod(segment, depth)

@@ -1,8 +1,7 @@
-"""Instances for tests of the pixel path: real files by name, and headers written on the spot."""
+"""Instances for tests of the pixel path: real files by name, and headers made for samples at hand."""
 
 from __future__ import annotations
 
-import io
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -10,12 +9,12 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 from pydicom.data import get_testdata_file
-from pydicom.dataset import Dataset, FileMetaDataset
+from pydicom.dataset import Dataset
 from pydicom.encaps import encapsulate
-from pydicom.uid import UID
 
 from safecheck.dicom.instance import Instance, Source
 from safecheck.frames import LossHistory, Origin
+from tests.dicom.made_files import save
 
 CT_CLASS, CT_NAME = "1.2.840.10008.5.1.4.1.1.2", "CT Image Storage"
 EXPLICIT = "1.2.840.10008.1.2.1"
@@ -23,7 +22,6 @@ IMPLICIT = "1.2.840.10008.1.2"
 BIG_ENDIAN = "1.2.840.10008.1.2.2"
 DEFLATED = "1.2.840.10008.1.2.1.99"
 RLE = "1.2.840.10008.1.2.5"
-STAND_IN = "1.2.840.10008.1.2.4.201"
 J = "1.2.840.10008.1.2.4."
 
 
@@ -115,13 +113,6 @@ def write_instance(
     object_class: str = CT_NAME,
 ) -> Instance:
     """Write samples, or code streams one per frame, and give the instance."""
-    meta = FileMetaDataset()
-    meta.MediaStorageSOPClassUID = dataset.SOPClassUID
-    meta.MediaStorageSOPInstanceUID = dataset.SOPInstanceUID
-    # pydicom writes no JPEG XL yet: written under another UID of the same length, which is then put right.
-    written = syntax if UID(syntax).is_transfer_syntax else STAND_IN
-    meta.TransferSyntaxUID = UID(written)
-    dataset.file_meta = meta
     if isinstance(pixels, bytes):
         dataset.PixelData = pixels + b"\x00" * (len(pixels) % 2)
         dataset["PixelData"].VR = "OW" if dataset.BitsAllocated > 8 or syntax == BIG_ENDIAN else "OB"
@@ -129,12 +120,7 @@ def write_instance(
         dataset.PixelData = encapsulate(list(pixels), has_bot=offset_table)
         dataset["PixelData"].VR = "OB"
         dataset["PixelData"].is_undefined_length = True
-    path = folder / "image"
-    buffer = io.BytesIO()
-    dataset.save_as(
-        buffer, implicit_vr=syntax == IMPLICIT, little_endian=syntax != BIG_ENDIAN, enforce_file_format=True
-    )
-    path.write_bytes(buffer.getvalue().replace(written.encode(), syntax.encode(), 1))
+    path = save(dataset, folder / "image", syntax)
     return instance_at(path, modality=modality, object_class=object_class)
 
 

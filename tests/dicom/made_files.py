@@ -1,4 +1,4 @@
-"""Small DICOM files written for tests of the intake."""
+"""Small DICOM files with identities, for tests of the intake; and how every test of this room writes a file."""
 
 from __future__ import annotations
 
@@ -54,6 +54,7 @@ def save(dataset: Dataset, path: Path, syntax: str = ExplicitVRLittleEndian) -> 
     """Write a file with meta information."""
     path.parent.mkdir(parents=True, exist_ok=True)
     dataset.file_meta = FileMetaDataset()
+    dataset.file_meta.FileMetaInformationGroupLength = 0  # the library puts the right one in its place
     dataset.file_meta.TransferSyntaxUID = UID(syntax)
     dataset.file_meta.MediaStorageSOPClassUID = dataset.get("SOPClassUID", UID("1.2.3"))
     dataset.file_meta.MediaStorageSOPInstanceUID = dataset.get("SOPInstanceUID", UID("1.2.3"))

@@ -12,6 +12,8 @@ import numpy.typing as npt
 import pytest
 from pydicom.dataset import Dataset
 
+from safecheck.dicom import frame_pixels
+from safecheck.dicom.decoders import DECODERS
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.frames import Frame
@@ -78,6 +80,63 @@ def test_a_code_stream_of_another_size_is_refused(tmp_path: Path, change: dict[s
             read(tmp_path, grey_header(**change), [code], syntax)
 
 
+def coded_streams() -> dict[str, bytes]:
+    """Code stream of `GREY` by syntax."""
+    return {
+        J + "51": bytes(imagecodecs.jpeg8_encode(GREY, 95, bitspersample=12)),
+        J + "70": bytes(imagecodecs.jpeg8_encode(GREY, lossless=True, bitspersample=12)),
+        J + "80": bytes(imagecodecs.jpegls_encode(GREY)),
+        J + "90": j2k(GREY, 12),
+        J + "201": bytes(imagecodecs.htj2k_encode(GREY, reversible=True)),
+        J + "110": bytes(imagecodecs.jpegxl_encode(GREY, lossless=True)),
+        J + "111": bytes(imagecodecs.jpegxl_encode_jpeg(imagecodecs.jpeg8_encode((GREY >> 4).astype("u1"), 95))),
+    }
+
+
+@pytest.mark.parametrize("syntax", list(coded_streams()))
+def test_no_decoder_sees_a_code_stream_of_another_size_than_the_header(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, syntax: str
+) -> None:
+    def refuse(*_: object) -> None:
+        raise AssertionError("a decoder was called")
+
+    for name in ("decode", "second_opinion", "rebuild_jpeg"):
+        monkeypatch.setattr(frame_pixels, name, refuse)
+    instance = write_instance(tmp_path, grey_header(Rows=11), [coded_streams()[syntax]], syntax)
+    with open_instance(instance) as reader:
+        with pytest.raises(InputRefused, match=r"^length"):
+            reader.frame(1)
+        if DECODERS[syntax].second is not None:
+            with pytest.raises(InputRefused, match=r"^length"):
+                reader.second_opinion(1)
+
+
+def test_no_memory_is_spent_on_rle_segments_that_cannot_hold_the_frame(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def refuse(*_: object, **__: object) -> None:
+        raise AssertionError("memory was taken")
+
+    monkeypatch.setattr("safecheck.dicom.decoders.np.empty", refuse)
+    # PackBits at its densest: each pair stands for 128 equal bytes (PS3.5 G.3.1); the frame has one byte more.
+    code = struct.pack("<16I", 1, 64, *[0] * 14) + b"\x81\x00" * 50
+    dataset = header_for(np.zeros((1, 6401), dtype="u1"))
+    with pytest.raises(InputRefused, match=r"^truncated: an RLE segment is too short"):
+        read(tmp_path, dataset, [code], RLE)
+
+
+def test_an_rle_segment_that_unpacks_to_more_than_the_frame_is_refused(tmp_path: Path) -> None:
+    code = struct.pack("<16I", 1, 64, *[0] * 14) + b"\x81\x00" * 50
+    with pytest.raises(InputRefused, match=r"^decode"):
+        read(tmp_path, header_for(np.zeros((8, 8), dtype="u1")), [code], RLE)
+
+
+def test_rle_at_its_densest_is_read(tmp_path: Path) -> None:
+    code = struct.pack("<16I", 1, 64, *[0] * 14) + b"\x81\x07" * 50
+    samples = np.full((80, 80), 7, dtype="u1")
+    assert np.array_equal(read(tmp_path, header_for(samples), [code], RLE).raster.samples, samples)
+
+
 def test_a_code_stream_of_another_process_than_its_syntax_is_refused(tmp_path: Path) -> None:
     code = bytes(imagecodecs.jpeg8_encode(GREY, lossless=True, bitspersample=12))
     with pytest.raises(InputRefused, match=r"^syntax"):
@@ -104,6 +163,13 @@ def test_a_code_stream_without_its_end_is_refused(tmp_path: Path, syntax: str) -
 def test_junk_for_a_code_stream_is_refused_and_nothing_else_happens(tmp_path: Path, syntax: str, junk: bytes) -> None:
     with pytest.raises(InputRefused, match=r"^(decode|truncated|length)"):
         read(tmp_path, grey_header(), [junk], syntax)
+
+
+@pytest.mark.parametrize("syntax", [RLE, *coded_streams()])
+def test_a_code_stream_of_defined_length_is_refused(tmp_path: Path, syntax: str) -> None:
+    # Pixel data under an encapsulated syntax is a sequence of fragments (PS3.5 A.4).
+    with pytest.raises(InputRefused, match=r"^length: pixel data is framed in another way"):
+        read(tmp_path, grey_header(), coded_streams().get(syntax, bytes(64)), syntax)
 
 
 def test_an_empty_fragment_is_refused(tmp_path: Path) -> None:

@@ -23,7 +23,18 @@ from safecheck.dicom.intake import Include
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.wording import REASONS, lint
-from tests.dicom.factory import DEFLATED, EXPLICIT, RLE, J, header_for, instance_at, noise, real_file, write_instance
+from tests.dicom.factory import (
+    DEFLATED,
+    EXPLICIT,
+    IMPLICIT,
+    RLE,
+    J,
+    header_for,
+    instance_at,
+    noise,
+    real_file,
+    write_instance,
+)
 from tests.dicom.made_files import take_in
 
 Array = npt.NDArray[Any]
@@ -76,6 +87,28 @@ def test_a_deflated_file_whose_stream_is_damaged_is_refused(tmp_path: Path) -> N
     instance.source.path.write_bytes(content[:start] + b"\xff" + content[start + 1 :])
     with pytest.raises(InputRefused, match=r"^(unreadable|truncated|length|no-pixels)"):
         open_instance(instance)
+
+
+@pytest.mark.parametrize(("written", "named"), [(IMPLICIT, EXPLICIT), (EXPLICIT, IMPLICIT)])
+def test_value_representations_that_the_syntax_disputes_are_refused(tmp_path: Path, written: str, named: str) -> None:
+    instance = write_instance(tmp_path, header_for(GREY, BitsStored=12), GREY.tobytes(), written)
+    meta, rest = instance.source.path.read_bytes().split(written.encode().ljust(20, b"\x00")[: len(written) + 1], 1)
+    # A UID of odd length has a pad byte: both names are written with their own length.
+    name = named.encode() + b"\x00" * (len(named) % 2)
+    instance.source.path.write_bytes(meta[:-2] + len(name).to_bytes(2, "little") + name + rest)
+    with pytest.raises(InputRefused, match=r"^length: the data set is encoded in another way"):
+        open_instance(instance)
+
+
+def test_the_total_length_of_encapsulated_pixels_is_no_end_of_the_header(tmp_path: Path) -> None:
+    # (7FE0,0003) stands before the pixel data (PS3.5 A.4).
+    code = bytes(imagecodecs.jpegls_encode(GREY))
+    dataset = header_for(GREY, BitsStored=12)
+    dataset.add_new(0x7FE00003, "UV", len(code))
+    instance = write_instance(tmp_path, dataset, [code], J + "80")
+    assert take_in(instance.source.path).counts == {"assessed": 1}
+    with open_instance(instance) as reader:
+        assert np.array_equal(reader.frame(1).raster.samples, GREY)
 
 
 def test_an_extended_offset_table_is_followed(tmp_path: Path) -> None:
