@@ -58,7 +58,7 @@ _RECORD: dict[str, str] = {
     "RecordDocument.schema_version": "Version of this format.",
     "RecordDocument.title": "Always `Recompression record`.",
     "RecordDocument.plan": "The plan as read, and its hash.",
-    "RecordDocument.versions": "Package, Python and library -> version.",
+    "RecordDocument.versions": "Versions of this program, Python and the libraries, by name.",
     "RecordDocument.selftest": "Which codecs worked on the machine of the run.",
     "RecordDocument.inputs": "Files by what became of them.",
     "RecordDocument.left_out": "Files left out, by side and reason.",
@@ -72,6 +72,9 @@ _RECORD: dict[str, str] = {
     "RecordDocument.worst_places": "Up to 3 frames per candidate and stratum with the largest patch RMSE.",
     "RecordDocument.worst_studies": "Up to 3 studies per candidate and stratum with the largest RMSE in content.",
     "RecordDocument.regions": "Regions over the frames that they cover.",
+    "RecordDocument.regions_without_frame": (
+        "Labels of regions that lie on no frame assessed, and what was refused of a DICOM object that carried regions."
+    ),
     "RecordDocument.delivered": "Null where no copies were handed in.",
     "RecordDocument.cautions": "Cautions in full: those that always stand, then those that this run gave reason for.",
     "RecordDocument.exit_code": "That of the first condition; 0 where none holds.",

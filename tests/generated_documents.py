@@ -148,14 +148,21 @@ def _one_kind(annotation: Any) -> str:
     if origin is Literal:
         return ", ".join(f"`{value}`" for value in arguments)
     if origin is tuple:
-        return f"list of {_kind(arguments[0])}"
+        return f"list of {_many(arguments[0])}"
     if origin is dict:
-        return f"table of {_kind(arguments[1])}"
+        return f"table of {_many(arguments[1])}"
     if isinstance(annotation, type) and issubclass(annotation, enum.Enum):
         return ", ".join(f"`{member.value}`" for member in annotation)
     if isinstance(annotation, type) and issubclass(annotation, Document):
         return f"[{annotation.__name__}](#{annotation.__name__.lower()})"
     raise TypeError(f"no words for {annotation!r}")
+
+
+def _many(annotation: Any) -> str:
+    """Several of a type in words."""
+    return " or ".join(
+        f"{kind}s" if kind.endswith(("text", "number")) else kind for kind in _kind(annotation).split(" or ")
+    )
 
 
 def _range(field: FieldInfo) -> str:
