@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import zipfile
 from pathlib import Path
 from typing import Any
 
@@ -63,6 +64,20 @@ def save(dataset: Dataset, path: Path, syntax: str = ExplicitVRLittleEndian) -> 
     dataset.preamble = b"\0" * 128
     dataset.save_as(path, implicit_vr=implicit, little_endian=little, force_encoding=True)
     return path
+
+
+def study(folder: Path, count: int = 4) -> Path:
+    """A folder of images under names that say nothing."""
+    for number in range(1, count + 1):
+        save(image(number), folder / f"x{(number * 7) % 5}{number}")
+    return folder
+
+
+def zipped(folder: Path, archive: Path) -> Path:
+    with zipfile.ZipFile(archive, "w", zipfile.ZIP_DEFLATED) as target:
+        for path in sorted(folder.rglob("*")):
+            target.write(path, path.relative_to(folder))
+    return archive
 
 
 def coded(code: bytes, number: int = 1, /, **changes: Any) -> Dataset:

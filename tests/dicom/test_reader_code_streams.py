@@ -168,8 +168,18 @@ def test_junk_for_a_code_stream_is_refused_and_nothing_else_happens(tmp_path: Pa
 @pytest.mark.parametrize("syntax", [RLE, *coded_streams()])
 def test_a_code_stream_of_defined_length_is_refused(tmp_path: Path, syntax: str) -> None:
     # Pixel data under an encapsulated syntax is a sequence of fragments (PS3.5 A.4).
+    # The library does not write that: written as samples, and the syntax put in its place.
+    instance = write_instance(tmp_path, grey_header(), coded_streams().get(syntax, bytes(64)), EXPLICIT)
+    content = instance.source.path.read_bytes()
+    named, name = (b"UI" + bytes((len(each), 0)) + each for each in (padded(EXPLICIT), padded(syntax)))
+    assert named in content
+    instance.source.path.write_bytes(content.replace(named, name, 1))
     with pytest.raises(InputRefused, match=r"^length: pixel data is framed in another way"):
-        read(tmp_path, grey_header(), coded_streams().get(syntax, bytes(64)), syntax)
+        open_instance(instance)
+
+
+def padded(uid: str) -> bytes:
+    return uid.encode() + b"\x00" * (len(uid) % 2)
 
 
 def test_an_empty_fragment_is_refused(tmp_path: Path) -> None:
