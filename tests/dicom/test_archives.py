@@ -134,9 +134,6 @@ def test_a_source_that_is_gone_is_refused(tmp_path: Path) -> None:
         assert "gone" not in str(caught.value)
 
 
-# DICOMDIR
-
-
 def test_an_inflated_source_is_seekable(tmp_path: Path) -> None:
     archive = write_zip(tmp_path / "z", {"a": b"content"})
     stream = open_source(Source(archive, "a"))

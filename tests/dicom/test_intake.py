@@ -232,6 +232,9 @@ def test_paths_missing_from_a_list_are_counted(tmp_path: Path) -> None:
     assert take_in(tmp_path / "list").counts == {"assessed": 1, "unreadable": 1}
 
 
+# DICOMDIR
+
+
 def real_directory(tmp_path: Path) -> Path:
     """The 81-file set of pydicom's DICOMDIR, copied."""
     found = get_testdata_file("DICOMDIR", download=False)
