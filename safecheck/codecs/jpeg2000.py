@@ -11,6 +11,7 @@ import functools
 import importlib
 import importlib.metadata
 import math
+import threading
 from dataclasses import dataclass
 from types import ModuleType
 from typing import ClassVar
@@ -30,6 +31,8 @@ RATIO_HIGHEST = 1e6
 _SMALLEST_SIDE = 1 << MOST_LEVELS
 """The library refuses fewer rows or columns than its wavelet decompositions halve."""
 _RGB = 1
+_ENCODER = threading.Lock()
+"""The binding crashes where two threads encode at once. It never leaves the interpreter's lock: none waits longer."""
 
 LIBRARY_ERRORS = (RuntimeError, ValueError, TypeError, OverflowError, MemoryError)
 """What the library was seen, or says, to raise."""
@@ -98,12 +101,13 @@ class Jpeg2000:
         admit(self, raster)
         library, form = _library(), raster.format
         try:
-            code = library.encode_array(
-                raster.samples,
-                bits_stored=form.bits_stored,
-                photometric_interpretation=_RGB if form.channels == 3 else 0,
-                compression_ratios=[self.ratio],
-            )
+            with _ENCODER:
+                code = library.encode_array(
+                    raster.samples,
+                    bits_stored=form.bits_stored,
+                    photometric_interpretation=_RGB if form.channels == 3 else 0,
+                    compression_ratios=[self.ratio],
+                )
         except LIBRARY_ERRORS as error:
             raise CannotEncode(f"{self.name}: OpenJPEG wrote no code: {error}") from error
         try:
