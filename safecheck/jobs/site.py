@@ -74,6 +74,9 @@ class Site:
 
     @contextlib.contextmanager
     def _open(self) -> Iterator[sqlite3.Connection]:
+        with contextlib.suppress(OSError):
+            # For its owner's eyes only, like the key; what SQLite writes beside it takes the same mode.
+            self.journal.touch(mode=0o600)
         with contextlib.closing(sqlite3.connect(self.journal, timeout=10)) as journal, journal:
             journal.executescript(_SCHEMA)
             yield journal
