@@ -339,7 +339,10 @@ class Frame:
         """Group of like images: that of the origin, with the unit where it is not the usual one: units never mix."""
         grey = "HU" if self.origin.modality == "CT" else "stored value"
         usual = "luma level" if self.raster.format.channels == 3 else grey
-        return self.origin.stratum if self.unit == usual else f"{self.origin.stratum}, in units of {self.unit!r}"
+        if self.unit == usual:
+            return self.origin.stratum
+        unit = "rescaled units" if self.unit.startswith("rescaled") else self.unit
+        return f"{self.origin.stratum}, in {unit}"
 
     @property
     def peak_of_bits(self) -> float:
