@@ -74,6 +74,7 @@ def _described(original: Original) -> dict[str, Any]:
         "signed": form.signed,
         "slope": transform.slope if isinstance(transform, Rescale) else None,
         "content_rule": original.content.rule,
+        "content_reason": original.content.reason,
         "content_pixels": original.content.pixels,
         "padding_pixels": 0 if padding is None else int(padding.sum()),
         "source_syntax": origin.source_syntax,
@@ -178,7 +179,7 @@ def _region_row(
     """One region; CNR only where its background covers part of the same frame."""
     region, spacing = placed.region, original.frame.spacing_mm
     own, background = figures[region.name], figures.get(region.background)
-    contrast = dataclasses.asdict(measure_contrast(own, background)) if background else {}
+    contrast = _contrast(own, background) if background else {}
     baseline = original.baseline
     return RegionRow(
         **_named(original, treated),
@@ -195,3 +196,12 @@ def _region_row(
         ssim=None if ssim_map is None else average_map(placed.baseline, ssim_map),
         ssim_window=original.displays[0].label if ssim_map is not None else "",
     )
+
+
+def _contrast(own: RegionFigures, background: RegionFigures) -> dict[str, float | None]:
+    """Columns of a region against its background."""
+    found = dataclasses.asdict(measure_contrast(own, background))
+    for when in ("before", "after"):
+        mean, other = getattr(own, f"mean_{when}"), getattr(background, f"mean_{when}")
+        found[f"contrast_{when}"] = None if mean is None or other is None else mean - other
+    return found

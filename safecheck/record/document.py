@@ -74,13 +74,16 @@ class CodecCheckEntry(Document):
 
 
 class CountEntry(Document):
-    """Files left out for one reason."""
+    """Files left out for one reason, and frames refused inside files of which others were assessed."""
 
     side: Literal["original", "delivered"]
     status: Literal["excluded", "refused"]
     reason: str
     sentence: str
     files: int
+    """Whole files."""
+    frames: int = 0
+    """Frames of files otherwise assessed."""
 
 
 class InputCounts(Document):
@@ -92,6 +95,7 @@ class InputCounts(Document):
     refused: int
     frames_assessed: int
     frames_refused: int
+    """Of files refused whole and of files otherwise assessed."""
     patients: int
     studies: int
     series: int
@@ -143,7 +147,7 @@ class FigureEntry(Document):
     measure: str
     """Name in the table of measures."""
     window: str = ""
-    """Label of the window, for window measures."""
+    """Window with its setting, for window measures: frames of another setting stand in another entry."""
     unit: str
     worse: Literal["higher", "lower"]
     """Which way the change is larger; of signed measures the size counts."""
@@ -207,17 +211,25 @@ class OutcomeEntry(Document):
     values_outside: int
     values_missing: int
     studies: int
+    """In scope, whether or not they gave a value."""
     studies_within: int
+    studies_not_evaluated: int = 0
+    """In scope, without any value."""
+    frames_not_run: int = 0
+    """In scope, not taken by the codec."""
     patients: int
     patients_within: int
+    patients_not_evaluated: int = 0
     upper_bound_percent: float | None = None
     """Exact one-sided 95 % bound on the share of patients with an exceedance; None without a random sample."""
     bound_text: str
     """The bound in words, or 'no bound: not a random sample'."""
     worst_value: float | None = None
     worst: Place | None = None
+    worst_region: str = ""
+    """Label of the region of the worst value, for region measures."""
     over_compressed_also_within: bool | None = None
-    """True: the limit does not tell the over-compressed control apart."""
+    """Of the candidate's own codec, on the frames that carry the control; True: the limit does not tell it apart."""
 
 
 class ControlEntry(Document):
@@ -300,10 +312,18 @@ class RegionEntry(Document):
     sd_before: float | None = None
     sd_after: float | None = None
     background: str = ""
+    contrast_before: float | None = None
+    contrast_after: float | None = None
+    contrast_kept_percent: float | None = None
+    contrast_kept_percent_p05: float | None = None
+    contrast_kept_percent_least: float | None = None
     cnr_before: float | None = None
     cnr_after: float | None = None
+    cnr_after_least: float | None = None
     noise_removed_percent: float | None = None
+    noise_removed_percent_largest: float | None = None
     worst: Place | None = None
+    """Where the largest error was found."""
 
 
 class ExpectationEntry(Document):
@@ -336,6 +356,13 @@ class DeliveredEntry(Document):
     """The copies that the archive delivered."""
 
     pairs: int
+    """Matched by header."""
+    pairs_measured: int = 0
+    """Of them, with at least one frame measured."""
+    pairs_unchanged: int = 0
+    """Of them, with every sample equal: the headers are not held against what the standard asks of a lossy copy."""
+    pairs_out_of_scope: int = 0
+    """Of them, whose original the plan's scope leaves out."""
     originals_without_copy: int
     copies_without_original: int
     matched_by: dict[str, int]
@@ -389,6 +416,8 @@ class RecordDocument(Document):
     delivered: DeliveredEntry | None = None
     content_rules: dict[str, int]
     """Frames by the content rule that was applied."""
+    content_reasons: dict[str, int] = {}
+    """Frames by why the modality's own rule gave way."""
     notes: dict[str, int]
     """What preflight noticed and set right, with the number of frames."""
     cautions: tuple[str, ...]
