@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import sys
 import time
@@ -20,6 +21,9 @@ if TYPE_CHECKING:
     from safecheck.policy.plan import Scope
 
 __all__ = ["app", "main"]
+
+_TYPER_INTERRUPTED = 130
+"""What typer makes of Ctrl-C."""
 
 app = typer.Typer(
     name="safecheck",
@@ -87,6 +91,8 @@ def census(
     """
     from safecheck.jobs import census as job
 
+    if draft_plan is not None and draft_plan.exists():
+        raise UsageError("the file for the draft plan exists already; name another")
     screen = _Screen(quiet=quiet)
     found = job.take_census(
         tuple(paths),
@@ -98,9 +104,7 @@ def census(
     for line in job.lines_of(found):
         typer.echo(line)
     if draft_plan is not None:
-        if draft_plan.exists():
-            raise UsageError("the file for the draft plan exists already; name another")
-        draft_plan.write_text(job.draft_plan(found), encoding="utf-8")
+        job.write_draft_plan(found, draft_plan)
         typer.echo("A plan to start from was written; fill in what only you can say.")
 
 
@@ -263,12 +267,12 @@ def demo(
 ) -> None:
     """Assess a synthetic study, to see a record."""
     from safecheck.jobs.assess import AssessRequest
-    from safecheck.jobs.demo import STUDY, write_demo
+    from safecheck.jobs.demo import DOSSIER, STUDY, write_demo
 
     screen = _Screen(quiet=quiet)
     screen.update("Making a synthetic study")
     plan = write_demo(out)
-    request = AssessRequest(paths=(out / STUDY,), out=out / "dossier", plan_file=plan, key_file=key, with_images=True)
+    request = AssessRequest(paths=(out / STUDY,), out=out / DOSSIER, plan_file=plan, key_file=key, with_images=True)
     _assess(request, screen, demonstration=True)
 
 
@@ -376,6 +380,9 @@ def _guarded(call: Callable[[], object]) -> int:
         return _say(text, ExitCondition.INCOMPLETE)
     except typer.Exit as leave:
         return int(leave.exit_code)
+    except SystemExit:
+        # So typer leaves where the reader of a pipe is gone: not all was said, and nobody is there to be told.
+        return int(ExitCondition.INCOMPLETE)
     except typer.TyperException as error:
         return _say(error.format_message(), ExitCondition.USAGE)
     except UsageError as error:
@@ -390,10 +397,13 @@ def _guarded(call: Callable[[], object]) -> int:
     except Exception as error:
         # A foreign exception's text may hold identifiers or paths; its class cannot.
         return _say(f"internal error ({type(error).__name__})", ExitCondition.INTERNAL)
+    if result == _TYPER_INTERRUPTED:
+        return _say("stopped; the same command goes on", ExitCondition.INCOMPLETE)
     return result if isinstance(result, int) else 0
 
 
 def _say(text: str, code: ExitCondition) -> int:
     """Print one sentence on the error stream and give the exit code."""
-    typer.echo(f"safecheck: {text}", err=True)
+    with contextlib.suppress(BrokenPipeError):
+        typer.echo(f"safecheck: {text}", err=True)
     return int(code)

@@ -97,9 +97,6 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
     loaded = _loaded(request)
     site = open_site(request.key_file)
     site.see_plan(loaded.sha256)
-    missing = [path for path in (*request.paths, *request.delivered) if not path.exists()]
-    if missing:
-        raise UsageError(f"{len(missing)} of the paths given do not exist; expected files or folders")
     if request.out is not None and _lies_in(request.out, (*request.paths, *request.delivered)):
         raise UsageError("the dossier would lie among the images; name a folder elsewhere with --out")
     inputs = gather_inputs(

@@ -2,19 +2,21 @@
 
 from __future__ import annotations
 
+import os
 from collections import Counter
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
 from safecheck.dicom.instance import Instance
+from safecheck.errors import UsageError
 from safecheck.jobs.inputs import Inputs, gather_inputs
 from safecheck.jobs.site import open_site
 from safecheck.policy.plan import Scope
 from safecheck.runner.tasks import pixels_of
 from safecheck.wording import SHORT_CAUTION, sentence_of
 
-__all__ = ["Census", "StratumCount", "draft_plan", "lines_of", "take_census"]
+__all__ = ["Census", "StratumCount", "draft_plan", "lines_of", "take_census", "write_draft_plan"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -113,6 +115,21 @@ def lines_of(census: Census) -> Iterator[str]:
 
 def _megabytes(size: float) -> str:
     return f"{size / 1e6:,.1f} MB"
+
+
+def write_draft_plan(census: Census, path: Path) -> None:
+    """Write a plan to start from into a new file.
+
+    Raises
+    ------
+    UsageError
+        If the file exists or cannot be written.
+    """
+    try:
+        with path.open("x", encoding="utf-8") as file:
+            file.write(draft_plan(census))
+    except OSError as error:
+        raise UsageError(f"the file for the draft plan cannot be written: {os.strerror(error.errno or 0)}") from None
 
 
 def draft_plan(census: Census) -> str:

@@ -2,21 +2,23 @@
 
 from __future__ import annotations
 
+import os
 from pathlib import Path
 
 from safecheck.errors import UsageError
 from safecheck.regions.file import RegionEntry, RegionFile, file_text
 from safecheck.regions.region import OnFrames, Part
 from safecheck.regions.shapes import Ellipse
+from safecheck.runner.manifest import WORK
 from synthetic_studies import Disc, Truth, demo_study
 
-__all__ = ["PLAN", "REGIONS", "STUDY", "write_demo"]
+__all__ = ["DOSSIER", "PLAN", "REGIONS", "STUDY", "write_demo"]
 
-STUDY, PLAN, REGIONS = "study", "plan.toml", "regions.json"
+STUDY, PLAN, REGIONS, DOSSIER = "study", "plan.toml", "regions.json", "dossier"
 
 
 def write_demo(folder: Path) -> Path:
-    """Write a study, its regions and a plan into a new folder.
+    """Write a study, its regions and a plan into a new folder; one whose run was stopped is taken as it is.
 
     Returns
     -------
@@ -28,9 +30,15 @@ def write_demo(folder: Path) -> Path:
     UsageError
         If the folder holds anything already.
     """
-    if folder.exists() and any(folder.iterdir()):
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        occupied = any(folder.iterdir())
+    except OSError as error:
+        raise UsageError(f"the folder of --out cannot be used: {os.strerror(error.errno or 0)}") from None
+    if (folder / DOSSIER / WORK).is_dir():
+        return folder / PLAN
+    if occupied:
         raise UsageError("the folder for the demonstration is not empty; name a new one with --out")
-    folder.mkdir(parents=True, exist_ok=True)
     truth = demo_study(folder / STUDY)
     (folder / REGIONS).write_text(file_text(_regions(truth)), encoding="utf-8")
     (folder / PLAN).write_text(_PLAN, encoding="utf-8")

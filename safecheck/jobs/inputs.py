@@ -13,6 +13,7 @@ from safecheck.dicom.instance import Instance
 from safecheck.dicom.intake import Intake, LeftOut, gather
 from safecheck.dicom.pseudonyms import Pseudonyms
 from safecheck.dicom.rules import Include
+from safecheck.errors import UsageError
 from safecheck.policy.plan import Scope
 from safecheck.record.rows import InputRow
 
@@ -71,8 +72,11 @@ def gather_inputs(
     Raises
     ------
     UsageError
-        If a list file cannot be read, or two identifiers share a pseudonym.
+        If a path does not exist, a list file cannot be read, or two identifiers share a pseudonym.
     """
+    missing = [path for path in (*paths, *delivered) if not path.exists()]
+    if missing:
+        raise UsageError(f"{len(missing)} of the paths given do not exist; expected files or folders")
     include = Include(scope.localizers, scope.secondary_captures, scope.lossy_sources)
     found = gather(paths, pseudonyms=pseudonyms, include=include, progress=progress)
     assessed = tuple(each for each in found.instances if _in_scope(each, scope))

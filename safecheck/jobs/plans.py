@@ -63,8 +63,12 @@ def plan_of_command_line(
     Raises
     ------
     UsageError
-        If a codec is unknown or a ratio is out of range.
+        If there is no codec or no ratio, one stands there twice, a codec is unknown or a ratio is out of range.
     """
+    if not ratios or not codecs:
+        raise UsageError("at least one ratio and one codec are expected")
+    if len(set(ratios)) < len(ratios) or len(set(codecs)) < len(codecs):
+        raise UsageError("each ratio and each codec is expected once, and one stands there twice")
     for ratio in ratios:
         if not 1 < ratio <= 1000:
             raise UsageError(f"a ratio is expected above 1 and at most 1000, found {ratio:g}")

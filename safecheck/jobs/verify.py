@@ -22,7 +22,9 @@ from safecheck.record.document import RecordDocument
 from safecheck.record.rows import TABLES
 from safecheck.report.seal import check_seal
 
-__all__ = ["Verified", "read_record", "verify"]
+__all__ = ["NO_DOSSIER", "Verified", "read_record", "verify"]
+
+NO_DOSSIER = "no such dossier; expected a folder that a run has written"
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,12 +82,12 @@ def verify(
     Raises
     ------
     DossierError
-        If the folder holds no dossier.
+        If the record is missing or of another format.
     UsageError
-        If the inputs or the key cannot be read.
+        If there is no such folder, the inputs or the key cannot be read, or they are not those of the run.
     """
     if not dossier.is_dir():
-        raise DossierError("no such dossier; expected a folder that a run has written")
+        raise UsageError(NO_DOSSIER)
     lines = ["The seal was checked: every file against its hash"]
     differences = [difference.sentence for difference in check_seal(dossier)]
     if not differences:
@@ -120,7 +122,7 @@ def _recompute(
     """Compute a seeded sample of frames again; what differs, and what was done."""
     site = open_site(key_file)
     if record.key_id != site.pseudonyms.key_id:
-        raise DossierError("the dossier was written under another site key; name that key by --key")
+        raise UsageError("the dossier was written under another site key; name that key by --key")
     if record.delivered is not None and not delivered:
         raise UsageError("the run had delivered copies; name them by --delivered")
     if (record.regions or record.regions_without_frame) and regions_file is None:
