@@ -16,6 +16,7 @@ __all__ = [
     "ANALYSIS_CODEC",
     "CAUTIONS",
     "CAUTIONS_WHEN",
+    "DELIVERED_COPIES",
     "FORBIDDEN",
     "NO_BOUND",
     "NO_LIMITS",
@@ -36,6 +37,8 @@ RUN_INVALID = "RUN INVALID: controls not held"
 REDRAWN = "REDRAWN from the record, without images"
 NO_LIMITS = "no limits declared"
 NO_BOUND = "no bound: not a random sample"
+DELIVERED_COPIES = "delivered copies"
+"""Name under which the copies that an archive returned stand among the candidates."""
 ANALYSIS_CODEC = "analysis codec, not an archive encoder"
 
 SHORT_CAUTION = (
@@ -117,6 +120,7 @@ REASONS: MappingProxyType[str, Reason] = MappingProxyType(
         "video": Reason("excluded", "a video stream"),
         "duplicate": Reason("excluded", "the same instance as an input already counted"),
         "dicomdir": Reason("excluded", "a directory record; the files it lists are counted themselves"),
+        "no-original": Reason("excluded", "a delivered copy that fits no original, by its header"),
         "not-selected": Reason("excluded", "outside the scope that the plan declares"),
         # doubtful
         "unreadable": Reason("refused", "cannot be read as DICOM"),
@@ -136,6 +140,7 @@ REASONS: MappingProxyType[str, Reason] = MappingProxyType(
         "archive-path": Reason("refused", "an archive member that points outside its archive"),
         "archive-bomb": Reason("refused", "an archive member that inflates beyond measure"),
         "link-loop": Reason("refused", "a symbolic link that leads back into a folder already entered"),
+        "original-refused": Reason("refused", "a delivered copy whose original was refused"),
         "delivered-differs": Reason("refused", "a delivered copy of another size, unit or kind than its original"),
         "conflict": Reason("refused", "two inputs claim the same instance with different content"),
         "worker-lost": Reason("refused", "the process that assessed it died twice"),

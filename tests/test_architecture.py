@@ -61,7 +61,7 @@ LIBRARIES: dict[str, frozenset[str]] = {
     "rich": frozenset({"cli"}),
     "click": frozenset({"cli"}),
     "pyarrow": frozenset({"record", "runner"}),
-    "rfc8785": frozenset({"record"}),
+    "rfc8785": frozenset({"policy", "record"}),
     "pydantic": frozenset({"documents", "policy", "record", "regions"}),
     "numba": frozenset({"codecs", "measures", "regions"}),
     "skimage": frozenset({"measures", "regions"}),

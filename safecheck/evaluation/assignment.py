@@ -40,8 +40,3 @@ class Assignment:
     candidates: tuple[Candidate, ...]
     windows: tuple[WindowPlan, ...] = ()
     regions: RegionSet | None = None
-
-    @property
-    def largest_ratio(self) -> float:
-        """Of all candidates; the over-compressed control goes well beyond it."""
-        return max(candidate.ratio for candidate in self.candidates)

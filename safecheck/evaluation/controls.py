@@ -50,9 +50,10 @@ def full_controls(
         own = reversible_form(candidate.codec)
         if own is not None and own.refuses(original.frame.raster.format, original.frame.raster.shape) is None:
             yield partial(_reversed, original, own)
-        first = next(row for row in candidates if row.candidate == candidate.name)
+        own_rows = tuple(row for row in candidates if row.codec == candidate.codec)
+        first = next(row for row in own_rows if row.candidate == candidate.name)
         yield partial(_repeat, original, candidate, first)
-        yield partial(_over_compress, original, candidate, assignment.largest_ratio, candidates)
+        yield partial(_over_compress, original, candidate, own_rows)
     planted = _plant(original)
     if planted is not None:
         yield lambda: planted
@@ -71,12 +72,12 @@ def _repeat(original: Original, candidate: Candidate, first: MeasureRow) -> tupl
 
 
 def _over_compress(
-    original: Original, candidate: Candidate, largest_ratio: float, candidates: tuple[MeasureRow, ...]
+    original: Original, candidate: Candidate, own_rows: tuple[MeasureRow, ...]
 ) -> tuple[Treated, MeasureRow]:
-    """A candidate's codec far beyond every ratio asked for."""
-    over = over_compress(original, candidate, largest_ratio)
+    """A codec far beyond every ratio that was asked of it."""
+    over = over_compress(original, candidate, min(row.code_bytes for row in own_rows))
     row = measure_row(original, over)
-    return over, _marked(row, *_over_compressed(original, row, candidates))
+    return over, _marked(row, *_over_compressed(original, row, own_rows))
 
 
 def _marked(row: MeasureRow, held: bool, found: str) -> MeasureRow:
@@ -106,11 +107,17 @@ def _repeated(first: MeasureRow, again: Treated) -> tuple[bool, str]:
     return equal, "the same code" if equal else "another code than the first time"
 
 
-def _over_compressed(original: Original, over: MeasureRow, candidates: tuple[MeasureRow, ...]) -> tuple[bool, str]:
-    """More damage than any candidate did, or the measures do not see damage."""
+def _over_compressed(original: Original, over: MeasureRow, own_rows: tuple[MeasureRow, ...]) -> tuple[bool, str]:
+    """More damage than any candidate of the codec did, or the measures do not see damage."""
     if not original.baseline.peak_range or over.rmse_content is None:
         return True, "constant frame, exempt"
-    errors = [row.rmse_content for row in candidates if row.rmse_content is not None]
+    if over.unchanged:
+        return True, "exact even so, exempt"
+    # Where the codec cannot go lower there is nothing beyond the candidate to be seen.
+    larger = [row for row in own_rows if row.code_bytes > over.code_bytes]
+    if not larger:
+        return True, "the codec makes it no smaller, exempt"
+    errors = [row.rmse_content for row in larger if row.rmse_content is not None]
     found = f"RMSE {over.rmse_content:.4g}, candidates up to {max(errors, default=0.0):.4g} {over.unit}"
     return all(over.rmse_content > error for error in errors), found
 

@@ -198,7 +198,7 @@ def _region_row(
     )
 
 
-def _contrast(own: RegionFigures, background: RegionFigures) -> dict[str, float | None]:
+def _contrast(own: RegionFigures, background: RegionFigures) -> dict[str, Any]:
     """Columns of a region against its background."""
     found = dataclasses.asdict(measure_contrast(own, background))
     for when in ("before", "after"):

@@ -12,10 +12,10 @@ from safecheck.codecs.base import Codec, Encoded, Reached
 from safecheck.codecs.registry import rated, settings_text
 from safecheck.evaluation.assignment import Candidate
 from safecheck.evaluation.original import Original
-from safecheck.frames import Frame, PixelFormat, Raster, Samples, SizeBasis, Values
+from safecheck.frames import Frame, PixelFormat, Raster, Samples, Values
+from safecheck.wording import DELIVERED_COPIES
 
 __all__ = [
-    "DELIVERED",
     "OVER_COMPRESSION",
     "Role",
     "Treated",
@@ -28,10 +28,8 @@ __all__ = [
 
 Role = Literal["candidate", "delivered", "reversible", "repeat", "over-compressed", "planted"]
 
-DELIVERED = "delivered copies"
-"""Name under which the copies that an archive returned stand among the candidates."""
 OVER_COMPRESSION = 8.0
-"""How many times the largest ratio asked for the over-compressed control goes."""
+"""How many times smaller than a codec's smallest candidate the over-compressed control is."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -74,6 +72,23 @@ def recompress(original: Original, candidate: Candidate, role: Role = "candidate
         If the codec does not take such a frame.
     """
     target = original.size_bytes(candidate.basis) / candidate.ratio
+    treated = _to_size(original, candidate, role, target)
+    return replace(treated, ratio_asked=candidate.ratio, basis=str(candidate.basis))
+
+
+def over_compress(original: Original, candidate: Candidate, smallest_bytes: int) -> Treated:
+    """Write a frame far below the smallest code that the candidates of one codec gave.
+
+    Raises
+    ------
+    CannotEncode
+        If the codec does not take such a frame.
+    """
+    return _to_size(original, candidate, "over-compressed", max(1.0, smallest_bytes / OVER_COMPRESSION))
+
+
+def _to_size(original: Original, candidate: Candidate, role: Role, target: float) -> Treated:
+    """Write a frame with a candidate's codec and settings at a size in bytes, and read it back."""
     codec = rated(candidate.codec, **dict(candidate.settings))
     raster = _flattened(original) if candidate.flatten_outside else original.frame.raster
     encoded = codec.encode_to_size(raster, target)
@@ -81,10 +96,10 @@ def recompress(original: Original, candidate: Candidate, role: Role = "candidate
         encoded = replace(encoded, reached=Reached.REVERSIBLE_SMALLER)
     name = candidate.name if role == "candidate" else f"{role}, {candidate.codec}"
     treated = _treated(original, codec, encoded, role, name)
-    flattened_max = None
-    if candidate.flatten_outside:
-        flattened_max = float(np.abs(original.frame.values(raster.samples) - original.values).max())
-    return replace(treated, ratio_asked=candidate.ratio, basis=str(candidate.basis), flattened_max=flattened_max)
+    if not candidate.flatten_outside:
+        return treated
+    moved = np.abs(original.frame.values(raster.samples) - original.values)
+    return replace(treated, flattened_max=float(moved.max()))
 
 
 def _flattened(original: Original) -> Raster:
@@ -99,12 +114,6 @@ def _flattened(original: Original) -> Raster:
     return Raster(samples, raster.format, raster.padding)
 
 
-def over_compress(original: Original, candidate: Candidate, largest_ratio: float) -> Treated:
-    """Write a frame far below the size of every candidate."""
-    far = replace(candidate, ratio=largest_ratio * OVER_COMPRESSION, basis=SizeBasis.BITS_STORED)
-    return recompress(original, far, "over-compressed")
-
-
 def reverse(original: Original, codec: Codec, code: bytes | None = None) -> Treated:
     """Write a frame reversibly and read it back; `code` where it is written already."""
     written = codec.encode(original.frame.raster) if code is None else code
@@ -117,7 +126,7 @@ def deliver(delivered: Frame) -> Treated:
     """Take the copy that an archive returned, with its own modality transform."""
     return Treated(
         role="delivered",
-        candidate=DELIVERED,
+        candidate=DELIVERED_COPIES,
         samples=delivered.raster.samples,
         values=delivered.values(delivered.raster.samples),
         code_bytes=delivered.origin.source_bytes,

@@ -13,6 +13,7 @@ from dataclasses import dataclass, field
 from functools import partial
 from pathlib import Path
 
+from safecheck.codecs import registry
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import UsageError
 from safecheck.evaluation import Assignment, Candidate, evaluate, load_kernels
@@ -125,6 +126,7 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
         inputs.pairs,
         manifest,
         site.key,
+        assignment=assignment,
         share_percent=controls.share_percent,
         seed=controls.seed,
     )
@@ -242,6 +244,8 @@ def _record(prepared: Prepared, merged: Merged, folder: Path, checks: tuple[Code
         selftest=checks,
         tables=tables,
         notes=merged.notes,
+        archive_codecs=frozenset(name for name in registry.names() if registry.entry(name).archive_can_write),
+        regions_sha256=prepared.assignment.regions.sha256 if prepared.assignment.regions else "",
         patient_unknown_studies=prepared.inputs.patient_unknown_studies,
         regions_without_frame=_without_frame(prepared.assignment.regions, folder),
     )

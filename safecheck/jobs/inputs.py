@@ -50,8 +50,11 @@ class Inputs:
 
     @property
     def pairs(self) -> dict[str, Instance]:
-        """Input pseudonym of an original -> its delivered copy."""
-        return {pair.original.input: pair.delivered for pair in self.matching.pairs} if self.matching else {}
+        """Input pseudonym of an original in scope -> its delivered copy."""
+        if self.matching is None:
+            return {}
+        taken = {each.input for each in self.assessed}
+        return {each.original.input: each.delivered for each in self.matching.pairs if each.original.input in taken}
 
     @property
     def patient_unknown_studies(self) -> int:
@@ -85,7 +88,7 @@ def gather_inputs(
     if delivered:
         every = Include(scope.localizers, scope.secondary_captures, lossy_sources=True)
         copies = gather(delivered, pseudonyms=pseudonyms, include=every, progress=progress)
-        matching = match(assessed, copies.instances)
+        matching = match((*assessed, *outside), copies.instances)
     return Inputs(assessed, outside, found.left_out, copies, matching)
 
 
@@ -110,7 +113,7 @@ def input_rows(
     refused
         (side, input pseudonym) -> what was refused of it.
     """
-    rows = [*_original_rows(inputs, assessed_frames, refused), *_delivered_rows(inputs, refused)]
+    rows = [*_original_rows(inputs, assessed_frames, refused), *_delivered_rows(inputs, assessed_frames, refused)]
     return sorted(rows, key=lambda row: (row.side != "original", row.study, row.series, row.instance, row.input))
 
 
@@ -136,29 +139,32 @@ def _original_rows(
             pair=pair,
         )
     for each in inputs.out_of_scope:
-        yield _row(
-            "original", each.input, _known(each) | {"bytes": each.size_bytes}, status="excluded", reason="not-selected"
-        )
+        how, pair = matched.get(each.input, ("", ""))
+        known = _known(each) | {"bytes": each.size_bytes}
+        yield _row("original", each.input, known, status="excluded", reason="not-selected", matched=how, pair=pair)
     for left in inputs.left_out:
         yield _left_out_row("original", left)
 
 
-def _delivered_rows(inputs: Inputs, refused: Mapping[tuple[Side, str], Refused]) -> Iterator[InputRow]:
+def _delivered_rows(
+    inputs: Inputs, assessed_frames: Mapping[str, int], refused: Mapping[tuple[Side, str], Refused]
+) -> Iterator[InputRow]:
     """Rows of the delivered copies."""
     if inputs.delivered is None:
         return
-    matched = {pair.delivered.input: pair for pair in _pairs(inputs)}
+    matched, taken = {pair.delivered.input: pair for pair in _pairs(inputs)}, inputs.pairs
     for each in inputs.delivered.instances:
-        lost = refused.get(("delivered", each.input), _NOTHING)
-        pair = matched.get(each.input)
+        pair, lost = matched.get(each.input), refused.get(("delivered", each.input), _NOTHING)
+        done = max(0, assessed_frames.get(pair.original.input, 0) - lost.frames) if pair else 0
+        status, reason = _delivered_status(pair, lost, done, in_scope=bool(pair and pair.original.input in taken))
         yield _row(
             "delivered",
             each.input,
             _known(each) | {"bytes": each.size_bytes},
-            status="refused" if lost.frames else "assessed",
-            reason=lost.reason,
+            status=status,
+            reason=reason,
             detail=lost.detail,
-            frames_assessed=each.frames - lost.frames if pair else 0,
+            frames_assessed=done,
             frames_refused=lost.frames,
             new_uid=each.uid != pair.original.uid if pair else None,
             matched=pair.how if pair else UNMATCHED,
@@ -166,6 +172,17 @@ def _delivered_rows(inputs: Inputs, refused: Mapping[tuple[Side, str], Refused])
         )
     for left in inputs.delivered.left_out:
         yield _left_out_row("delivered", left)
+
+
+def _delivered_status(pair: Pair | None, lost: Refused, done: int, *, in_scope: bool) -> tuple[str, str]:
+    """What became of a copy, and why: one without an original, or out of the plan's scope, was not measured."""
+    if pair is None:
+        return "excluded", "no-original"
+    if not in_scope:
+        return "excluded", "not-selected"
+    if done:
+        return "assessed", lost.reason
+    return "refused", lost.reason or "original-refused"
 
 
 def _pairs(inputs: Inputs) -> tuple[Pair, ...]:

@@ -10,9 +10,10 @@ from safecheck.dicom.reader import open_instance
 from safecheck.evaluation.assignment import Assignment
 from safecheck.evaluation.crops import take_crop
 from safecheck.evaluation.original import Original, prepare
-from safecheck.evaluation.treatment import DELIVERED, Treated, deliver, recompress
+from safecheck.evaluation.treatment import Treated, deliver, recompress
 from safecheck.record.crops import CropMeta, write_crop
 from safecheck.record.document import WorstPlaceEntry
+from safecheck.wording import DELIVERED_COPIES
 
 __all__ = ["PLACES", "write_places"]
 
@@ -87,7 +88,7 @@ def _write(
 
 def _treated(original: Original, entry: WorstPlaceEntry, delivered: Instance | None, assignment: Assignment) -> Treated:
     """The frame under the entry's candidate, or its delivered copy."""
-    if entry.candidate == DELIVERED and delivered is not None:
+    if entry.candidate == DELIVERED_COPIES and delivered is not None:
         with open_instance(delivered) as reader:
             return deliver(reader.frame(entry.place.frame))
     candidate = next(each for each in assignment.candidates if each.name == entry.candidate)

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 import datetime
 import hashlib
-import json
 from typing import Annotated, Literal
 
+import rfc8785
 from pydantic import Field, model_validator
 
 from safecheck.documents import Document
@@ -210,6 +210,8 @@ class Plan(Document):
 
 
 def plan_hash(plan: Plan) -> str:
-    """SHA-256 of the plan as read, over JSON with sorted keys: comments and order of keys do not matter."""
-    text = json.dumps(plan.model_dump(mode="json"), sort_keys=True, separators=(",", ":"), ensure_ascii=False)
-    return hashlib.sha256(text.encode()).hexdigest()
+    """SHA-256 of the plan as read, over its canonical JSON (RFC 8785): comments and order of keys do not matter.
+
+    It is the hash of `plan.content` of the record in canonical form, so anyone can compute it again.
+    """
+    return hashlib.sha256(rfc8785.dumps(plan.model_dump(mode="json"))).hexdigest()

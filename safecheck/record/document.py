@@ -59,6 +59,8 @@ class PlanEntry(Document):
     sha256: str
     content: dict[str, Any]
     """The plan's keys and values."""
+    regions_sha256: str = ""
+    """Of the region file, segmentation or structure set, or ''."""
 
 
 class CodecCheckEntry(Document):

@@ -20,7 +20,7 @@ _ASKED: MappingProxyType[ControlRole, str] = MappingProxyType(
     {
         "reversible": "a reversible code gives back every sample: largest error exactly 0",
         "repeat": "the same frame gives the same code again, byte for byte",
-        "over-compressed": "RMSE in content above that of every candidate of the frame; constant frames exempt",
+        "over-compressed": "RMSE in content above that of every candidate of the codec; constant frames exempt",
         "planted": "a known displacement in one patch comes back with its size, row and column",
     }
 )

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterator
 from typing import Literal, cast
 
@@ -11,12 +12,9 @@ from safecheck.policy.plan import Plan
 from safecheck.record.document import CandidateEntry, CountEntry, InputCounts, StratumEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups
-from safecheck.wording import ANALYSIS_CODEC, sentence_of
+from safecheck.wording import ANALYSIS_CODEC, DELIVERED_COPIES, sentence_of
 
-__all__ = ["DELIVERED", "candidate_entries", "input_counts", "left_out", "stratum_entries"]
-
-DELIVERED = "delivered copies"
-"""Name under which the copies that an archive returned stand among the candidates."""
+__all__ = ["candidate_entries", "input_counts", "left_out", "stratum_entries"]
 
 
 def input_counts(inputs: TableReader, *, patient_unknown_studies: int) -> InputCounts:
@@ -51,20 +49,23 @@ def input_counts(inputs: TableReader, *, patient_unknown_studies: int) -> InputC
 
 
 def left_out(inputs: TableReader) -> Iterator[CountEntry]:
-    """Yield the files left out, by side, status and reason."""
-    rows = inputs.at(range(inputs.rows), ("side", "status", "reason"))
-    counts: dict[tuple[str, str, str], int] = {}
+    """Yield the files left out, and the frames refused inside others, by side, status and reason."""
+    rows = inputs.at(range(inputs.rows), ("side", "status", "reason", "frames_refused"))
+    files: Counter[tuple[str, str, str]] = Counter()
+    frames: Counter[tuple[str, str, str]] = Counter()
     for row in rows:
         if row["status"] != "assessed":
-            key = (row["side"], row["status"], row["reason"])
-            counts[key] = counts.get(key, 0) + 1
-    for (side, status, reason), files in sorted(counts.items()):
+            files[row["side"], row["status"], row["reason"]] += 1
+        elif row["frames_refused"]:
+            frames[row["side"], "refused", row["reason"]] += row["frames_refused"]
+    for side, status, reason in sorted(files.keys() | frames.keys()):
         yield CountEntry(
             side=cast("Literal['original', 'delivered']", side),
             status=cast("Literal['excluded', 'refused']", status),
             reason=reason,
             sentence=sentence_of(reason),
-            files=files,
+            files=files[side, status, reason],
+            frames=frames[side, status, reason],
         )
 
 
@@ -89,37 +90,57 @@ def stratum_entries(groups: Groups) -> Iterator[StratumEntry]:
         )
 
 
-def candidate_entries(plan: Plan, groups: Groups) -> Iterator[CandidateEntry]:
-    """Yield the candidates, codecs that an archive can write first, then the delivered copies."""
-    entries = [
-        _candidate_entry(groups, candidate.name, candidate.status, candidate.ratio, str(candidate.basis))
-        for candidate in plan.candidates
-    ]
-    yield from sorted(entries, key=lambda entry: not entry.archive_can_write)
+def candidate_entries(plan: Plan, groups: Groups, archive_codecs: frozenset[str]) -> Iterator[CandidateEntry]:
+    """Yield the candidates, codecs that an archive can write first, then the delivered copies.
+
+    Parameters
+    ----------
+    plan
+        Names the candidates, whether or not any frame was run with them.
+    groups
+        Table of measures.
+    archive_codecs
+        Names of the codecs that a DICOM archive can write.
+    """
+    for candidate in sorted(plan.candidates, key=lambda candidate: candidate.codec not in archive_codecs):
+        can_write = candidate.codec in archive_codecs
+        yield CandidateEntry(
+            candidate=candidate.name,
+            codec=candidate.codec,
+            role="candidate",
+            status=candidate.status,
+            ratio_asked=candidate.ratio,
+            basis=str(candidate.basis),
+            archive_can_write=can_write,
+            note=_notes(groups, candidate.name, "" if can_write else ANALYSIS_CODEC),
+            frames=len(groups.of_candidate(candidate.name)),
+            reached=_reached(groups, candidate.name),
+        )
     if len(groups.of_role("delivered")):
-        yield _candidate_entry(groups, DELIVERED, "proposed", None, "")
+        yield CandidateEntry(
+            candidate=DELIVERED_COPIES,
+            codec="delivered",
+            role="delivered",
+            status="proposed",
+            archive_can_write=True,
+            note=_notes(groups, DELIVERED_COPIES, ""),
+            frames=len(groups.of_candidate(DELIVERED_COPIES)),
+            reached={},
+        )
 
 
-def _candidate_entry(
-    groups: Groups, name: str, status: Literal["proposed", "context"], ratio: float | None, basis: str
-) -> CandidateEntry:
-    """Count one candidate's frames by how its ratio was reached."""
+def _notes(groups: Groups, name: str, note: str) -> str:
+    """A candidate's note, with what must be said of its sources."""
     rows = groups.of_candidate(name)
-    reached_of, reached = groups.reader.codes("reached")
-    first = groups.reader.at([int(rows[0])], ("codec", "archive_can_write")) if len(rows) else []
-    second = groups.reader.codes("generation")
-    notes = [] if not first or first[0]["archive_can_write"] else [ANALYSIS_CODEC]
-    if "second" in second[1] and (second[0][rows] == second[1].index("second")).any():
+    generation_of, generations = groups.reader.codes("generation")
+    notes = [note] if note else []
+    if "second" in generations and (generation_of[rows] == generations.index("second")).any():
         notes.append("second generation: some sources were already lossy")
-    return CandidateEntry(
-        candidate=name,
-        codec=first[0]["codec"] if first else name.split(" ")[0],
-        role="delivered" if name == DELIVERED else "candidate",
-        status=status,
-        ratio_asked=ratio,
-        basis=basis,
-        archive_can_write=bool(first and first[0]["archive_can_write"]),
-        note="; ".join(notes),
-        frames=len(rows),
-        reached={reached[code]: int((reached_of[rows] == code).sum()) for code in np.unique(reached_of[rows])},
-    )
+    return "; ".join(notes)
+
+
+def _reached(groups: Groups, name: str) -> dict[str, int]:
+    """Frames by what `reached` says."""
+    rows = groups.of_candidate(name)
+    reached_of, words = groups.reader.codes("reached")
+    return {words[code]: int((reached_of[rows] == code).sum()) for code in np.unique(reached_of[rows])}

@@ -17,7 +17,7 @@ PAIRS_SHOWN = 30
 
 _COLUMNS = (
     "side",
-    "status",
+    "reason",
     "matched",
     "input",
     "instance",
@@ -37,19 +37,35 @@ def delivered_entry(inputs: TableReader, measures: Groups) -> DeliveredEntry | N
     What the standard asks of an irreversibly compressed copy: PS3.3 C.7.6.1.1.2 and C.7.6.1.1.5.
     """
     rows = inputs.at(range(inputs.rows), _COLUMNS)
-    copies = [row for row in rows if row["side"] == "delivered" and row["status"] == "assessed"]
     if not any(row["side"] == "delivered" for row in rows):
         return None
-    pairs = [row for row in copies if row["matched"] not in ("", _UNMATCHED)]
-    originals = [row for row in rows if row["side"] == "original" and row["matched"] == _UNMATCHED]
+    pairs = [row for row in rows if row["side"] == "delivered" and row["pair"]]
+    headers = _by_original(rows, pairs)
+    changed = _changed(measures)
+    lossy = [row for instance, row in headers.items() if changed.get(instance)]
     return DeliveredEntry(
         pairs=len(pairs),
-        originals_without_copy=len(originals),
-        copies_without_original=sum(row["matched"] == _UNMATCHED for row in rows if row["side"] == "delivered"),
+        pairs_measured=len(headers.keys() & changed.keys()),
+        pairs_unchanged=sum(changed.get(instance) is False for instance in headers),
+        pairs_out_of_scope=sum(row["reason"] == "not-selected" for row in pairs),
+        originals_without_copy=sum(row["side"] == "original" and row["matched"] == _UNMATCHED for row in rows),
+        copies_without_original=sum(row["side"] == "delivered" and row["matched"] == _UNMATCHED for row in rows),
         matched_by=dict(sorted(Counter(row["matched"] for row in pairs).items())),
-        expectations=tuple(_expectations(pairs)) if pairs else (),
-        shown=tuple(_shown(measures, _by_original(rows, pairs))),
+        expectations=tuple(_expectations(lossy)) if lossy else (),
+        shown=tuple(_shown(measures, headers)),
     )
+
+
+def _changed(measures: Groups) -> dict[str, bool]:
+    """Instance pseudonym of an original -> whether any sample of its measured copy differs."""
+    rows = measures.of_role("delivered")
+    instance_of, instances = measures.reader.codes("instance")
+    unchanged = measures.reader.numbers("unchanged")
+    changed: dict[str, bool] = {}
+    for row in rows:
+        name = instances[instance_of[row]]
+        changed[name] = changed.get(name, False) or bool(unchanged[row] != 1)
+    return changed
 
 
 def _expectations(pairs: list[dict[str, Any]]) -> list[ExpectationEntry]:

@@ -12,15 +12,19 @@ from safecheck.record.document import FigureEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups, Indices, place_at
 
-__all__ = ["figures", "worst_index"]
+__all__ = ["MOST_SETTINGS", "ROW_AND_COLUMN", "figures", "worst_index"]
 
-_ROW_AND_COLUMN = {
+MOST_SETTINGS = 6
+"""Settings of one window label in a group that are told apart; MR files often have another for each slice."""
+
+ROW_AND_COLUMN = {
     "max_content": ("max_content_row", "max_content_column"),
     "worst_patch_rmse": ("worst_patch_row", "worst_patch_column"),
     "worst_window_rmse": ("worst_window_row", "worst_window_column"),
     "worst_outside_rmse": ("worst_outside_row", "worst_outside_column"),
     "edge_band_max": ("edge_band_row", "edge_band_column"),
     "ssim_lowest": ("ssim_lowest_row", "ssim_lowest_column"),
+    "region_max": ("max_row", "max_column"),
 }
 """Measures that come with a place within the frame."""
 
@@ -46,14 +50,31 @@ def _of_measure(groups: Groups, measure: Measure, candidates: tuple[str, ...]) -
 
 
 def _of_window_measure(groups: Groups, measure: Measure, candidates: tuple[str, ...]) -> Iterator[FigureEntry]:
-    """One measure of the table of windows, each window apart."""
+    """One measure of the table of windows, each window and setting apart."""
+    if not groups.reader.rows:
+        return
     values = groups.reader.numbers(measure.column)
-    window_of, labels = groups.reader.codes("window")
     for candidate in candidates:
         for stratum, rows in groups.by_stratum(groups.of_candidate(candidate)):
-            for code in np.unique(window_of[rows]):
-                same = rows[window_of[rows] == code]
-                yield from _entry(groups.reader, measure, candidate, stratum, labels[code], "", same, values)
+            for name, same in _by_setting(groups, rows):
+                yield from _entry(groups.reader, measure, candidate, stratum, name, "", same, values)
+
+
+def _by_setting(groups: Groups, rows: Indices) -> Iterator[tuple[str, Indices]]:
+    """Split rows by window and setting; a label with more settings than `MOST_SETTINGS` stays one, and says so."""
+    label_of, labels = groups.reader.codes("window")
+    centre_of, width_of = groups.reader.numbers("centre")[rows], groups.reader.numbers("width")[rows]
+    for code in np.unique(label_of[rows]):
+        same = label_of[rows] == code
+        settings = np.unique(np.stack([centre_of[same], width_of[same]]), axis=1).T
+        if np.isnan(settings).any():
+            yield f"{labels[code]} (a table)", rows[same]
+        elif len(settings) > MOST_SETTINGS:
+            yield f"{labels[code]} (another centre and width in each of {len(settings)} settings)", rows[same]
+        else:
+            for centre, width in settings:
+                name = f"{labels[code]} (centre {centre:g}, width {width:g})"
+                yield name, rows[same & (centre_of == centre) & (width_of == width)]
 
 
 def _entry(
@@ -73,7 +94,7 @@ def _entry(
         return
     found = values[known]
     spread = [float(part) for part in np.percentile(found, (50, 5, 95))] if len(known) else [None, None, None]
-    row, column = _ROW_AND_COLUMN.get(measure.name, ("", ""))
+    row, column = ROW_AND_COLUMN.get(measure.name, ("", ""))
     yield FigureEntry(
         candidate=candidate,
         stratum=stratum,

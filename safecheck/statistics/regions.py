@@ -19,6 +19,8 @@ _MIDDLES = (
     "mean_after",
     "sd_before",
     "sd_after",
+    "contrast_before",
+    "contrast_after",
     "cnr_before",
     "cnr_after",
     "noise_removed_percent",
@@ -55,6 +57,9 @@ def _entry(
     known = rows[~np.isnan(numbers["max"][rows])]
     worst = int(known[np.argmax(numbers["max"][known])]) if len(known) else None
     middles = {name: _median(numbers[name][rows]) for name in _MIDDLES}
+    before, after = numbers["contrast_before"][rows], numbers["contrast_after"][rows]
+    with np.errstate(divide="ignore", invalid="ignore"):
+        kept = np.where(before != 0, 100 * after / before, np.nan)
     return RegionEntry(
         candidate=candidate,
         region=region,
@@ -70,6 +75,11 @@ def _entry(
         bias_largest_absolute=_largest(np.abs(numbers["bias"][rows])),
         max_largest=_largest(numbers["max"][rows]),
         background=texts["background"],
+        contrast_kept_percent=_median(kept),
+        contrast_kept_percent_p05=_percentile(kept, 5),
+        contrast_kept_percent_least=_percentile(kept, 0),
+        cnr_after_least=_percentile(numbers["cnr_after"][rows], 0),
+        noise_removed_percent_largest=_largest(numbers["noise_removed_percent"][rows]),
         worst=None if worst is None else place_at(groups.reader, worst, row="max_row", column="max_column"),
         **middles,
     )
@@ -83,6 +93,12 @@ def _median(values: npt.NDArray[np.float64]) -> float | None:
     """Median of what is known; None of nothing."""
     known = _known(values)
     return float(np.median(known)) if len(known) else None
+
+
+def _percentile(values: npt.NDArray[np.float64], percent: float) -> float | None:
+    """Percentile of what is known, by linear interpolation; None of nothing."""
+    known = _known(values)
+    return float(np.percentile(known, percent)) if len(known) else None
 
 
 def _largest(values: npt.NDArray[np.float64]) -> float | None:

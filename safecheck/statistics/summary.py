@@ -16,6 +16,7 @@ from safecheck.record.document import (
     CodecCheckEntry,
     Condition,
     ControlEntry,
+    DeliveredEntry,
     InputCounts,
     OutcomeEntry,
     PlanEntry,
@@ -52,6 +53,9 @@ class Surroundings:
     notes: Mapping[str, int]
     """What preflight set right, with the number of frames."""
     patient_unknown_studies: int = 0
+    archive_codecs: frozenset[str] = frozenset()
+    """Codecs that a DICOM archive can write."""
+    regions_sha256: str = ""
     regions_without_frame: tuple[str, ...] = ()
 
 
@@ -71,16 +75,22 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
     measures = groups["measures"]
     counts = input_counts(tables["inputs"], patient_unknown_studies=around.patient_unknown_studies)
     strata = tuple(stratum_entries(measures))
-    candidates = tuple(candidate_entries(plan, measures))
+    candidates = tuple(candidate_entries(plan, measures, around.archive_codecs))
     names = tuple(candidate.candidate for candidate in candidates)
     held = tuple(outcomes(plan, groups, candidates))
     checks = tuple(controls(measures))
-    controls_held = _controls_held(checks, counts)
-    conditions = in_order(_conditions(plan, counts, held, controls_held, candidates))
+    controls_held = _controls_held(checks, counts, candidates)
+    copies = delivered_entry(tables["inputs"], measures)
+    conditions = in_order(_conditions(plan, counts, held, controls_held, candidates, copies))
     return RecordDocument(
         schema_version=SCHEMA_VERSION,
         title=RECORD_TITLE,
-        plan=PlanEntry(source=around.plan_source, sha256=plan_hash(plan), content=plan.model_dump(mode="json")),
+        plan=PlanEntry(
+            source=around.plan_source,
+            sha256=plan_hash(plan),
+            content=plan.model_dump(mode="json"),
+            regions_sha256=around.regions_sha256,
+        ),
         key_id=around.key_id,
         versions=dict(around.versions),
         selftest=around.selftest,
@@ -98,23 +108,30 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
         worst_studies=tuple(worst_studies(measures, candidates)),
         regions=tuple(region_entries(groups["regions"], candidates)),
         regions_without_frame=around.regions_without_frame,
-        delivered=delivered_entry(tables["inputs"], measures),
+        delivered=copies,
         content_rules=_counted(measures, "content_rule"),
+        content_reasons=_counted(measures, "content_reason"),
         notes=dict(sorted(around.notes.items())),
         cautions=cautions_that_apply(plan, measures, strata, held, controls_held=controls_held),
         conditions=tuple(Condition(code=int(code), text=CONDITION_TEXTS[code]) for code in conditions),
         exit_code=int(winning(conditions)),
-        exit_text=CONDITION_TEXTS[winning(conditions)],
+        exit_text=_exit_text(winning(conditions), held),
         tables=around.tables,
     )
 
 
-def _controls_held(checks: tuple[ControlEntry, ...], counts: InputCounts) -> bool:
-    """Every control held; a run that assessed frames without a reversible control held none."""
+def _controls_held(
+    checks: tuple[ControlEntry, ...], counts: InputCounts, candidates: tuple[CandidateEntry, ...]
+) -> bool:
+    """Every control held, and none that is owed is missing: reversible for the pipe, two kinds for every codec run."""
     if not counts.frames_assessed:
         return True
-    kinds = {check.control for check in checks}
-    return "reversible" in kinds and all(check.not_held == 0 for check in checks)
+    if any(check.not_held for check in checks):
+        return False
+    ran = {(check.control, check.codec) for check in checks}
+    codecs = {candidate.codec for candidate in candidates if candidate.role == "candidate" and candidate.frames}
+    wanted = {(kind, codec) for codec in codecs for kind in ("repeat", "over-compressed")}
+    return any(control == "reversible" for control, _ in ran) and wanted <= ran
 
 
 def _conditions(
@@ -123,22 +140,40 @@ def _conditions(
     held: tuple[OutcomeEntry, ...],
     controls_held: bool,
     candidates: tuple[CandidateEntry, ...],
+    copies: DeliveredEntry | None,
 ) -> Iterator[ExitCondition]:
     """Yield the exit conditions that a finished run can have."""
+    no_copies = copies is not None and not copies.pairs_measured
     if not controls_held:
         yield ExitCondition.CONTROLS
     images = counts.assessed + counts.refused
     too_many_refused = 100 * counts.refused > plan.allowed.refused_percent * max(images, 1)
+    frames = counts.frames_assessed + counts.frames_refused
+    too_many_frames = 100 * counts.frames_refused > plan.allowed.refused_percent * max(frames, 1)
     too_many_excluded = 100 * counts.excluded > plan.allowed.excluded_percent * max(counts.files, 1)
     proposed = [entry for entry in held if entry.status == "proposed"]
     nothing = not counts.frames_assessed or not any(candidate.frames for candidate in candidates)
-    unheard = bool(proposed) and all(entry.outcome == "not evaluated" for entry in proposed)
-    if too_many_refused or too_many_excluded or nothing or unheard:
+    if too_many_refused or too_many_frames or too_many_excluded or nothing or _unheard(proposed) or no_copies:
         yield ExitCondition.LEFT_OUT
     if any(entry.outcome == "outside declared limits" for entry in proposed):
         yield ExitCondition.OUTSIDE
     if plan.claim and _too_little(plan, proposed):
         yield ExitCondition.LITTLE_EVIDENCE
+
+
+def _unheard(proposed: list[OutcomeEntry]) -> bool:
+    """Whether limits were declared and any proposed candidate gave no value to any of them."""
+    values: dict[str, int] = {}
+    for entry in proposed:
+        values[entry.candidate] = values.get(entry.candidate, 0) + entry.values
+    return any(number == 0 for number in values.values())
+
+
+def _exit_text(condition: ExitCondition, held: tuple[OutcomeEntry, ...]) -> str:
+    """The condition's words; without limits no word on limits."""
+    if condition is ExitCondition.DONE and not held:
+        return f"ran, controls held, {NO_LIMITS}"
+    return CONDITION_TEXTS[condition]
 
 
 def _too_little(plan: Plan, proposed: list[OutcomeEntry]) -> bool:
@@ -163,4 +198,4 @@ def _counted(groups: Groups, column: str) -> dict[str, int]:
     """Frames by the name in a column, over the reversible control, which runs once on every frame."""
     rows = groups.of_candidate("reversible")
     codes, names = groups.reader.codes(column)
-    return {names[code]: int((codes[rows] == code).sum()) for code in np.unique(codes[rows])}
+    return {names[code]: int((codes[rows] == code).sum()) for code in np.unique(codes[rows]) if names[code]}

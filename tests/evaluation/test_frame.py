@@ -306,3 +306,27 @@ def test_a_candidate_of_the_plan_keeps_its_name_and_settings() -> None:
     assert candidate.name == "tiled 8:1, size 16, transform fourier, outside flattened"
     assert candidate.settings == (("size", 16), ("transform", "fourier"))
     assert candidate.flatten_outside
+
+
+NOISE = np.random.default_rng(1).integers(0, 4096, (32, 32)).astype(np.uint16)
+TWO_LEVELS = np.where(np.indices((256, 256)).sum(0) < 250, 10, 900).astype(np.uint16)
+
+
+@pytest.mark.parametrize(
+    ("samples", "ratio", "basis"),
+    [
+        pytest.param(NOISE, 10.0, "bits-stored", id="noise"),
+        pytest.param(TWO_LEVELS, 10.0, "bits-stored", id="two levels"),
+        pytest.param(body(rows=256, columns=256) // 64 * 64, 5.0, "lossless", id="of lossless"),
+        pytest.param(body(rows=96, columns=96), 1000.0, "bits-stored", id="thousand"),
+    ],
+)
+def test_controls_hold_on_frames_that_cannot_be_made_smaller(samples: Any, ratio: float, basis: str) -> None:
+    candidates = tuple(Candidate(f"{name} x", name, ratio, SizeBasis(basis)) for name in ("jpeg2000", "tiled"))
+    result = evaluate(frame(samples), Assignment(candidates), full_controls=True)
+    assert [row.control_found for row in result.measures if row.control_held is False] == []
+
+
+def test_rows_do_not_depend_on_the_number_of_threads() -> None:
+    one = evaluate(frame(), TWO, full_controls=True)
+    assert evaluate(frame(), TWO, full_controls=True, threads=3) == one

@@ -67,6 +67,17 @@ def inputs(studies: list[str]) -> list[Any]:
     ]
 
 
+def owed(rows: list[Any]) -> list[Any]:
+    """The controls that a codec owes once it was run, unless they are among the rows."""
+    made = []
+    for codec in sorted({each.codec for each in rows if each.role == "candidate"}):
+        for role in ("repeat", "over-compressed"):
+            if not any((each.role, each.codec) == (role, codec) for each in rows):
+                name = f"{role}, {codec}"
+                made.append(measured(name, role=role, codec=codec, control_held=True, study=rows[0].study))
+    return made
+
+
 Summed = Callable[..., RecordDocument]
 
 
@@ -80,6 +91,7 @@ def summed(tmp_path: Path) -> Summed:
         regions: list[Any] | None = None,
         files: list[Any] | None = None,
     ) -> RecordDocument:
+        measures = measures + owed(measures)
         studies = sorted({each.study for each in measures})
         tables = {
             "measures": reader(tmp_path, "measures", measures),
@@ -135,9 +147,14 @@ def test_psnr_without_a_value_says_that_nothing_changed(summed: Summed) -> None:
 def test_controls_are_no_candidates(summed: Summed) -> None:
     rows = [
         *frames([1.0]),
-        measured("repeat, jpeg2000", role="repeat", control_held=True, study="S-0"),
+        measured("repeat, jpeg2000", role="repeat", codec="jpeg2000", control_held=True, study="S-0"),
         measured(
-            "over-compressed, jpeg2000", role="over-compressed", control_held=True, study="S-0", rmse_content=99.0
+            "over-compressed, jpeg2000",
+            role="over-compressed",
+            codec="jpeg2000",
+            control_held=True,
+            study="S-0",
+            rmse_content=99.0,
         ),
     ]
     record = summed(rows)
@@ -214,7 +231,7 @@ def test_controls_not_held_make_the_run_invalid_and_win_over_limits(summed: Summ
     assert not record.controls_held
     assert record.exit_code == 4
     assert [each.code for each in record.conditions] == [4, 10]
-    (control,) = record.controls
+    (control,) = [each for each in record.controls if each.control == "reversible"]
     assert (control.not_held, control.found) == (1, "error 1 HU")
     assert CAUTIONS_WHEN["controls"] in record.cautions
 
@@ -245,7 +262,12 @@ def test_the_bound_stands_only_with_a_random_sample(summed: Summed) -> None:
 
 def test_a_limit_that_over_compression_also_meets_is_marked(summed: Summed) -> None:
     over = measured(
-        "over-compressed, jpeg2000", role="over-compressed", control_held=True, study="S-0", rmse_content=4.0
+        "over-compressed, jpeg2000",
+        role="over-compressed",
+        codec="jpeg2000",
+        control_held=True,
+        study="S-0",
+        rmse_content=4.0,
     )
     loose = summed([*frames([1.0]), over], plan(limits=[limit()])).outcomes[0]
     assert loose.over_compressed_also_within is True
@@ -336,3 +358,155 @@ def test_permuting_studies_changes_no_count(summed: Summed) -> None:
     forth, back = summed(frames(values), made).outcomes[0], summed(frames(values[::-1]), made).outcomes[0]
     same = ("outcome", "studies", "studies_within", "patients_within", "upper_bound_percent", "worst_value")
     assert [getattr(forth, name) for name in same] == [getattr(back, name) for name in same]
+
+
+def test_a_run_whose_codec_lacks_its_controls_is_invalid(summed: Summed) -> None:
+    lacking = [*frames([1.0]), measured("tiled 10:1", study="S-0", codec="tiled")]
+    made = plan(candidates=[{"codec": "jpeg2000", "ratio": 10}, {"codec": "tiled", "ratio": 10}])
+    assert summed(lacking, made).controls_held
+    only_one = [*lacking, measured("repeat, tiled", role="repeat", codec="tiled", control_held=False, study="S-0")]
+    assert not summed(only_one, made).controls_held
+
+
+def test_within_stands_only_where_every_study_in_scope_gave_a_value(summed: Summed) -> None:
+    rows = [*frames([1.0, 2.0]), measured(ONE, study="S-8", rmse_content=None), reversible(study="S-8")]
+    random = {"drawn": "random"}
+    (entry,) = summed(rows, plan(limits=[limit()], sample=random)).outcomes
+    assert (entry.outcome, entry.reason) == (
+        "not evaluated",
+        "1 of 3 studies gave no value; the others are within",
+    )
+    assert (entry.studies, entry.studies_within, entry.studies_not_evaluated) == (3, 2, 1)
+    assert entry.upper_bound_percent is None
+    assert entry.bound_text == "no bound: 1 of 3 patients not evaluated"
+
+
+def test_a_frame_that_the_codec_did_not_take_is_missed(summed: Summed) -> None:
+    rows = [*frames([1.0, 2.0]), reversible(study="S-8")]
+    (entry,) = summed(rows, plan(limits=[limit()])).outcomes
+    assert entry.outcome == "not evaluated"
+    assert (entry.studies_not_evaluated, entry.frames_not_run) == (1, 1)
+
+
+def test_an_exceedance_is_outside_whatever_else_is_missing(summed: Summed) -> None:
+    rows = [*frames([9.0]), reversible(study="S-8")]
+    assert summed(rows, plan(limits=[limit()])).outcomes[0].outcome == "outside declared limits"
+
+
+def test_a_ratio_in_decibels_of_an_unchanged_frame_is_infinite_and_within(summed: Summed) -> None:
+    floor = limit(measure="psnr_peak_bits_db", unit="dB", at_most=None, at_least=60.0)
+    rows = frames([0.0], psnr_peak_bits_db=None, rmse_frame=0.0)
+    assert summed(rows, plan(limits=[floor])).outcomes[0].outcome == "within declared limits"
+
+
+def test_over_compression_of_another_codec_tells_nothing_of_a_limit(summed: Summed) -> None:
+    other = measured(
+        "over-compressed, tiled",
+        role="over-compressed",
+        codec="tiled",
+        control_held=True,
+        study="S-0",
+        rmse_content=1.0,
+    )
+    own = measured(
+        "over-compressed, jpeg2000", role="over-compressed", codec="jpeg2000", control_held=True, rmse_content=50.0
+    )
+    (entry,) = summed([*frames([1.0]), other, own], plan(limits=[limit()])).outcomes
+    assert entry.over_compressed_also_within is False
+
+
+def test_frames_refused_inside_a_file_are_counted_with_their_reason(summed: Summed) -> None:
+    files = [
+        row(
+            "inputs",
+            input="F",
+            side="original",
+            status="assessed",
+            reason="decode",
+            study="S-0",
+            frames_assessed=1,
+            frames_refused=19,
+        )
+    ]
+    record = summed(frames([1.0]), files=files)
+    assert record.inputs.frames_refused == 19
+    assert [(each.reason, each.files, each.frames) for each in record.left_out] == [("decode", 0, 19)]
+    assert record.exit_code == 3
+
+
+def test_windows_of_other_settings_are_never_pooled(summed: Summed) -> None:
+    shared = {"role": "candidate", "candidate": ONE, "study": "S-0", "stratum": "CT, HEAD", "window": "file window 1"}
+    rows = [
+        row("windows", **shared, centre=40.0, width=80.0, ssim=0.5),
+        row("windows", **shared, centre=40.0, width=400.0, ssim=0.9),
+    ]
+    found = {each.window: each.median for each in summed(frames([1.0]), windows=rows).figures if each.window}
+    assert found == {
+        "file window 1 (centre 40, width 80)": 0.5,
+        "file window 1 (centre 40, width 400)": 0.9,
+    }
+
+
+def test_contrast_kept_stands_with_its_tail(summed: Summed) -> None:
+    shared = {
+        "role": "candidate",
+        "candidate": ONE,
+        "study": "S-0",
+        "stratum": "CT, HEAD",
+        "unit": "HU",
+        "region": "a",
+        "label": "disc",
+        "region_role": "target",
+        "max": 1.0,
+    }
+    kept = [100.0, 90.0, 95.0, 40.0]
+    rows = [row("regions", **shared, contrast_before=-20.0, contrast_after=-20.0 * part / 100) for part in kept]
+    (entry,) = summed(frames([1.0]), regions=rows).regions
+    assert entry.contrast_kept_percent == pytest.approx(92.5)
+    assert entry.contrast_kept_percent_p05 == pytest.approx(np.percentile(kept, 5))
+    assert entry.contrast_kept_percent_least == pytest.approx(40.0)
+
+
+def delivered_files(**changes: Any) -> list[Any]:
+    known = {
+        "input": "D",
+        "side": "delivered",
+        "status": "assessed",
+        "instance": "I of copy",
+        "matched": "same instance UID",
+        "pair": "F of S-0",
+        "lossy_declared": "01",
+        "new_uid": False,
+        "derived": True,
+    }
+    return [*inputs(["S-0"]), row("inputs", **(known | changes))]
+
+
+@pytest.mark.parametrize(
+    ("unchanged", "not_as_asked", "pairs_unchanged"), [(False, 3, 0), (True, None, 1)], ids=["lossy", "unchanged"]
+)
+def test_headers_are_held_against_the_standard_only_where_pixels_changed(
+    summed: Summed, unchanged: bool, not_as_asked: int | None, pairs_unchanged: int
+) -> None:
+    copy = measured(
+        "delivered copies",
+        role="delivered",
+        study="S-0",
+        max_frame=0.0 if unchanged else 3.0,
+        rmse_frame=0.0,
+        unchanged=unchanged,
+    )
+    found = summed([*frames([1.0]), copy], files=delivered_files()).delivered
+    assert found is not None
+    assert (found.pairs, found.pairs_measured, found.pairs_unchanged) == (1, 1, pairs_unchanged)
+    # Ratio and method absent, and the UID not new: three of the five that PS3.3 C.7.6.1.1.5 speaks of.
+    failing = sum(each.not_as_asked for each in found.expectations) if found.expectations else None
+    assert failing == not_as_asked
+
+
+def test_copies_that_gave_no_measured_pair_end_the_run_with_a_word(summed: Summed) -> None:
+    files = delivered_files(status="excluded", reason="no-original", matched="unmatched", pair="")
+    record = summed(frames([1.0]), files=files)
+    assert record.exit_code == 3
+    assert record.delivered is not None
+    assert (record.delivered.pairs, record.delivered.copies_without_original) == (0, 1)
