@@ -287,12 +287,21 @@ def _assess(request: AssessRequest, screen: _Screen, *, demonstration: bool = Fa
     counts = record.inputs
     typer.echo(
         f"{counts.frames_assessed} frames of {counts.studies} studies assessed in {time.monotonic() - since:.0f} s; "
-        f"{counts.excluded} files excluded, {counts.refused} refused"
+        f"{counts.excluded} files excluded, {counts.refused} refused, {counts.frames_refused} frames refused"
     )
+    if record.delivered is not None:
+        copies = record.delivered
+        typer.echo(
+            f"Delivered copies: {copies.pairs_measured} pairs measured, {copies.copies_without_original} copies "
+            f"without an original, {copies.originals_without_copy} originals without a copy"
+        )
     typer.echo(f"Limits: {record.outcomes_text}")
     typer.echo(f"Controls: {'held' if record.controls_held else 'NOT HELD, run invalid'}")
+    if demonstration:
+        typer.echo(f"A run of this plan on these images ends with {record.exit_code}: {record.exit_text}")
+        return
     typer.echo(f"Exit {record.exit_code}: {record.exit_text}")
-    if record.exit_code and not demonstration:
+    if record.exit_code:
         raise typer.Exit(record.exit_code)
 
 

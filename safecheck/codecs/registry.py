@@ -106,7 +106,7 @@ def entry(name: str) -> Entry:
     try:
         return ENTRIES[name]
     except KeyError:
-        raise UsageError(f"codec {name!r} is unknown, expected one of {list(ENTRIES)}") from None
+        raise UsageError(f"codec {name!r} is unknown, expected one of {', '.join(ENTRIES)}") from None
 
 
 def available(name: str) -> bool:
@@ -159,7 +159,7 @@ def rated(name: str, **settings: str | float | bool) -> RatedCodec:
         As in `codec`.
     """
     if not entry(name).rated:
-        raise UsageError(f"codec {name} cannot be asked for a size, expected one of {list(rated_names())}")
+        raise UsageError(f"codec {name} cannot be asked for a size, expected one of {', '.join(rated_names())}")
     return cast("RatedCodec", codec(name, **settings))
 
 

@@ -35,9 +35,12 @@ class StratumCount:
     bytes_bits_stored: float
     """Pixels at their bits stored."""
 
+    lossy: int
+    """Instances already lossy."""
+
     @property
     def ratio_now(self) -> float:
-        """How many times smaller the pixel data lies there than its bits stored."""
+        """Ratio today on the bits-stored basis; below 1 where samples lie there with their unused bits."""
         return self.bytes_bits_stored / self.bytes_now if self.bytes_now else 0.0
 
 
@@ -84,6 +87,7 @@ def _count(stratum: str, instances: list[Instance]) -> StratumCount:
         bits_stored=tuple(sorted({each.bits_stored for each in instances})),
         syntaxes=tuple(sorted({each.origin.source_syntax for each in instances})),
         bytes_now=sum(each.pixel_bytes for each in instances),
+        lossy=sum(each.origin.history.lossy for each in instances),
         bytes_bits_stored=sum(each.frames * pixels_of(each) * each.bits_stored / 8 for each in instances),
     )
 
@@ -99,11 +103,12 @@ def lines_of(census: Census) -> Iterator[str]:
         yield ""
         yield f"{stratum.stratum}"
         yield (
-            f"  {stratum.patients} patients, {stratum.studies} studies, {stratum.instances} instances, "
-            f"{stratum.frames} frames, {bits} bits stored"
+            f"  {_counted(stratum.patients, 'patient')}, {_counted(stratum.studies, 'study', 'studies')}, "
+            f"{_counted(stratum.instances, 'instance')}, {_counted(stratum.frames, 'frame')}, {bits} bits stored"
         )
         yield f"  {'; '.join(stratum.syntaxes)}"
-        yield f"  {_megabytes(stratum.bytes_now)} now, {stratum.ratio_now:.2f} times smaller than bits stored"
+        kind = "already lossy" if stratum.lossy == stratum.instances else "lossless" if not stratum.lossy else "mixed"
+        yield f"  {_megabytes(stratum.bytes_now)} now: {kind}, {stratum.ratio_now:.2f}:1 of bits stored"
     yield ""
     yield f"Already lossy: {census.lossy}"
     counts = Counter((each.status, each.reason) for each in inputs.left_out)
@@ -111,6 +116,11 @@ def lines_of(census: Census) -> Iterator[str]:
         yield f"{status}: {number} - {sentence_of(reason)}"
     yield ""
     yield SHORT_CAUTION
+
+
+def _counted(number: int, one: str, many: str = "") -> str:
+    """'1 study', '2 studies'."""
+    return f"{number} {one if number == 1 else many or one + 's'}"
 
 
 def _megabytes(size: float) -> str:

@@ -48,7 +48,7 @@ def _aside(path: Path) -> Iterator[Path]:
     """A path to write to, renamed to the wanted one at the end: a file is whole or absent."""
     aside = path.with_name(f"{path.name}.aside")
     yield aside
-    with aside.open("rb") as file:
+    with aside.open("rb+") as file:
         os.fsync(file.fileno())
     aside.replace(path)
 

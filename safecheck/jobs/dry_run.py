@@ -29,7 +29,7 @@ def dry_run(prepared: Prepared) -> Iterator[str]:
     studies = len(prepared.studies)
     patients = len({each.patient for each in inputs.assessed})
     yield f"Files: {len(inputs.assessed)} to assess, {len(inputs.left_out) + len(inputs.out_of_scope)} left out"
-    yield f"Frames: {frames} of {studies} studies of {patients} patients"
+    yield f"Frames: {frames}, studies: {studies}, patients: {patients}"
     yield from _reasons(prepared)
     if inputs.matching is not None:
         yield (
@@ -41,6 +41,7 @@ def dry_run(prepared: Prepared) -> Iterator[str]:
         yield f"  {name}: {'available' if registry.available(name) else 'not available here'}"
     yield from _cost(prepared)
     yield from _evidence(prepared, patients)
+    yield from _idle_limits(prepared)
     yield f"Plan hash (SHA-256): {prepared.loaded.sha256}"
     yield SHORT_CAUTION
 
@@ -69,7 +70,8 @@ def _cost(prepared: Prepared) -> Iterator[str]:
     if seconds is None:
         yield "Time: not known, the frame tried was refused"
     else:
-        yield f"Time: about {seconds * total / workers:.0f} s on {workers} workers, after compiled code is prepared"
+        expected = max(1.0, seconds * total / workers)
+        yield f"Time: about {expected:.0f} s on {workers} workers, after compiled code is prepared"
     yield f"Disk: about {max(disk / 1e6, 0.1):.1f} MB"
 
 
@@ -86,6 +88,23 @@ def _seconds_per_weight(prepared: Prepared, task: Task) -> float | None:
     except InputRefused:
         return None
     return (time.monotonic() - since) / weight_of(Task("", (each,)), prepared.assignment)
+
+
+def _idle_limits(prepared: Prepared) -> Iterator[str]:
+    """Limits that no image here can be held against."""
+    origins = [each.origin for each in prepared.inputs.assessed]
+    regions = prepared.assignment.regions.regions if prepared.assignment.regions else ()
+    has: dict[str, set[str]] = {
+        "modality": {origin.modality for origin in origins},
+        "body_part": {origin.body_part for origin in origins},
+        "region": {region.label for region in regions},
+        "region_role": {str(region.role) for region in regions},
+    }
+    for limit in prepared.loaded.plan.limits:
+        for key, found in has.items():
+            wanted = getattr(limit, key)
+            if wanted and wanted not in found:
+                yield f"Limit {limit.name!r}: nothing here has the {key.replace('_', ' ')} {wanted!r}"
 
 
 def _evidence(prepared: Prepared, patients: int) -> Iterator[str]:

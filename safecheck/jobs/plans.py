@@ -46,6 +46,8 @@ def load_plan(path: Path) -> LoadedPlan:
     """
     try:
         text = path.read_text(encoding="utf-8")
+    except FileNotFoundError:
+        raise UsageError("there is no such plan file") from None
     except (OSError, UnicodeDecodeError) as error:
         raise UsageError("the plan file cannot be read as text") from error
     plan = from_toml(Plan, text)
@@ -73,7 +75,9 @@ def plan_of_command_line(
         if not 1 < ratio <= 1000:
             raise UsageError(f"a ratio is expected above 1 and at most 1000, found {ratio:g}")
     for name in codecs:
-        registry.rated(name)
+        if name not in registry.rated_names():
+            known = ", ".join(registry.rated_names())
+            raise UsageError(f"no codec {name!r} can be asked for a ratio; expected one of {known}")
     plan = Plan(
         version=1,
         change=Change(

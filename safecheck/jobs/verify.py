@@ -20,7 +20,7 @@ from safecheck.policy.plan import Plan
 from safecheck.record.canonical import sha256_of_file
 from safecheck.record.document import RecordDocument
 from safecheck.record.rows import TABLES
-from safecheck.report.seal import check_seal
+from safecheck.report.seal import SEAL, check_seal
 
 __all__ = ["NO_DOSSIER", "Verified", "read_record", "verify"]
 
@@ -87,6 +87,8 @@ def verify(
         If there is no such folder, the inputs or the key cannot be read, or they are not those of the run.
     """
     if not dossier.is_dir():
+        raise UsageError(NO_DOSSIER)
+    if not (dossier / SEAL).exists() and not (dossier / RECORD).exists():
         raise UsageError(NO_DOSSIER)
     lines = ["The seal was checked: every file against its hash"]
     differences = [difference.sentence for difference in check_seal(dossier)]

@@ -125,7 +125,11 @@ def check_limits(plan: Plan) -> None:
 
 
 def _check_side(path: str, limit: LimitPlan, measure: Measure) -> None:
-    """A bound on the harmless side would be met by any damage."""
+    """A bound on the harmless side would be met by any damage, and one below zero by nothing."""
+    if limit.at_most is not None and limit.at_most < 0:
+        raise DocumentError(
+            f"{path}.at_most", f"{limit.measure} is held by its size: a bound of at least 0 is expected"
+        )
     if measure.worse == "lower" and limit.at_most is not None:
         raise DocumentError(f"{path}.at_most", f"{limit.measure} is worse when lower: at_least is expected")
     if measure.worse != "lower" and limit.at_least is not None:

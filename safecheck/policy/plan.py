@@ -13,6 +13,7 @@ from safecheck.documents import Document
 from safecheck.frames import SizeBasis
 
 __all__ = [
+    "TO_FILL_IN",
     "Allowed",
     "CandidatePlan",
     "Change",
@@ -26,6 +27,9 @@ __all__ = [
     "WindowPlan",
     "plan_hash",
 ]
+
+TO_FILL_IN = "to be filled in"
+"""How a draft marks what only a person can say; a plan that still says so is refused."""
 
 Text = Annotated[str, Field(min_length=1, max_length=200)]
 
@@ -45,6 +49,14 @@ class Change(Document):
     """Which copy would be recompressed, e.g. 'archive copy'."""
     compressed_when: Text
     """When, e.g. '90 days after the report'."""
+
+    @model_validator(mode="after")
+    def _is_filled_in(self) -> Change:
+        """A draft is no declaration."""
+        for name in ("title", "declared_by", "compressed_copy", "compressed_when"):
+            if str(getattr(self, name)).startswith(TO_FILL_IN):
+                raise ValueError(f"{name} is still {TO_FILL_IN}")
+        return self
 
 
 class SamplePlan(Document):

@@ -116,12 +116,13 @@ def plan(*limits: LimitPlan) -> Plan:
         ),
         ({"measure": "ssim", "unit": "HU", "at_least": 0.9}, r"^limits\[0\]\.unit: ssim is in '1', found 'HU'"),
         ({"measure": "ssim", "unit": "1", "at_most": 0.9}, r"^limits\[0\]\.at_most: ssim is worse when lower"),
+        ({"at_most": -3}, r"^limits\[0\]\.at_most: rmse_content is held by its size"),
         ({"at_least": 1}, r"^limits\[0\]\.at_least: rmse_content is worse when higher"),
         ({"measure": "rmse_over_noise", "unit": "times", "at_most": 1}, r"^limits\[0\]\.measure: no limit can rest on"),
         ({"at_most": 1, "region": "liver"}, r"^limits\[0\]\.region: rmse_content is no measure of a region"),
         ({"at_most": 1, "window": "brain"}, r"^limits\[0\]\.window: rmse_content is no measure at a window"),
     ],
-    ids=["measure", "unit", "side of ssim", "side of rmse", "alone", "region", "window"],
+    ids=["measure", "unit", "side of ssim", "below zero", "side of rmse", "alone", "region", "window"],
 )
 def test_a_limit_that_makes_no_sense_is_named_by_its_path(keys: dict[str, Any], message: str) -> None:
     with pytest.raises(DocumentError, match=message):

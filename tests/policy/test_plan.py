@@ -72,6 +72,12 @@ def test_a_plan_is_read_with_its_defaults() -> None:
         pytest.param("at_most = 8", "", r"^limits\[0\]: one of at_most and at_least", id="no bound"),
         pytest.param("width = 80", "width = 0.5", r"^windows\[0\]: a LINEAR window is at least 1", id="narrow window"),
         pytest.param('drawn = "chosen"', 'drawn = "lucky"', r"^sample\.drawn: .*'random'", id="unknown draw"),
+        pytest.param(
+            'declared_by = "medical physicist"\ndeclared_on = 2026-11-30\ncompressed',
+            'declared_by = "to be filled in: a role"\ndeclared_on = 2026-11-30\ncompressed',
+            r"^change: declared_by is still to be filled in",
+            id="unfilled draft",
+        ),
         pytest.param("[sample]", "[samples]", r"^samples: this key is unknown", id="unknown table"),
         pytest.param("version = 1", "version = 2", r"^version: ", id="another version"),
         pytest.param("version = 1", "version = ", "not a TOML document", id="no TOML"),
