@@ -15,7 +15,7 @@ from safecheck.dicom.opened import UNDEFINED_LENGTH, OpenedFile, parse_file
 from safecheck.dicom.syntaxes import Coding, Loss, Syntax, syntax_of
 from safecheck.errors import InputExcluded, InputRefused
 
-__all__ = ["Header", "PixelElement", "read_header", "text"]
+__all__ = ["Header", "PixelElement", "read_header"]
 
 _PREAMBLE_BYTES = 128
 _FIRST_LOOK_BYTES = 1 << 16

@@ -19,7 +19,8 @@ UNSPECIFIED_UNIT = "rescaled, unit unspecified"
 LUMA_UNIT = "luma level"
 
 _RESCALE_TYPES = frozenset({"OD", "HU", "MGML", "Z_EFF", "ED", "EDW", "HU_MOD", "PCT"})
-"""Defined Terms of (0028,1054) but 'US', which means unspecified (PS3.3 C.11.1.1.2)."""
+"""Defined Terms of (0028,1054) but the next, which means unspecified (PS3.3 C.11.1.1.2)."""
+_UNSPECIFIED_TERM = "US"
 _SPECTRAL = (
     "MAT_",
     "EFF_ATOMIC",
@@ -43,6 +44,8 @@ class Modality:
 
     transform: ModalityTransform
     unit: str
+    notes: tuple[str, ...] = ()
+    """What was left aside."""
 
 
 def image_terms(dataset: Dataset, groups: FunctionalGroups, index: int) -> tuple[str, ...]:
@@ -98,6 +101,7 @@ def read_modality(
         return Modality(
             ModalityTable(table.first, table.entries),
             declared if declared in _RESCALE_TYPES - {"HU"} else UNSPECIFIED_UNIT,
+            _left_aside(declared, "Modality LUT Type"),
         )
     if slope is None and intercept is None:
         return Modality(Rescale(), STORED_UNIT)
@@ -106,7 +110,16 @@ def read_modality(
     if slope == 0:
         raise InputRefused("rescale", "a slope of zero")
     seen = image_terms(dataset, groups, index)
-    return Modality(Rescale(slope, intercept), _unit(term(source, "RescaleType"), acquisition, seen, capture=capture))
+    declared = term(source, "RescaleType")
+    unit = _unit(declared, acquisition, seen, capture=capture)
+    return Modality(Rescale(slope, intercept), unit, _left_aside(declared, "Rescale Type"))
+
+
+def _left_aside(declared: str, element: str) -> tuple[str, ...]:
+    """Say that a type is not used, which is never quoted: it may be free text."""
+    if declared in _RESCALE_TYPES or declared in ("", _UNSPECIFIED_TERM):
+        return ()
+    return (f"the declared {element} is none of the standard's terms and was left aside",)
 
 
 def _decimal(source: Dataset, keyword: str) -> float | None:

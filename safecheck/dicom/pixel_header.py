@@ -11,7 +11,10 @@ from safecheck.dicom.elements import term, whole, whole_number
 from safecheck.errors import InputRefused
 from safecheck.frames import PixelFormat
 
-__all__ = ["PixelHeader", "read_pixel_header"]
+__all__ = ["MOST_PIXELS", "PixelHeader", "read_pixel_header"]
+
+MOST_PIXELS = 1 << 28
+"""Rows times Columns beyond this are refused before anything is decoded: 16384 x 16384, many times any detector's."""
 
 _GREY = ("MONOCHROME1", "MONOCHROME2")
 _COLOUR = ("RGB", "YBR_FULL", "YBR_FULL_422", "YBR_RCT", "YBR_ICT", "XYB")
@@ -72,7 +75,7 @@ def read_pixel_header(dataset: Dataset) -> PixelHeader:
     Raises
     ------
     InputRefused
-        'header', 'bits', 'sign', 'photometric' or 'palette'.
+        'header', 'bits', 'sign', 'photometric', 'palette' or 'too-large'.
     """
     photometric, channels = _photometric(dataset)
     allocated, stored, high_bit = _bits(dataset)
@@ -80,6 +83,8 @@ def read_pixel_header(dataset: Dataset) -> PixelHeader:
     frames = whole_number(dataset, "NumberOfFrames", missing=1)
     if min(rows, columns, frames) < 1:
         raise InputRefused("header", "Rows, Columns or Number of Frames is below 1")
+    if rows * columns > MOST_PIXELS:
+        raise InputRefused("too-large", f"a frame of {rows} x {columns} pixels, at most {MOST_PIXELS} expected")
     if photometric == "YBR_FULL_422" and columns % 2:
         raise InputRefused("photometric", "YBR_FULL_422 with an odd number of columns")
     return PixelHeader(

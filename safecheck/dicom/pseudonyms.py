@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
 import hmac
 import os
@@ -125,16 +126,28 @@ def load_or_make_key(path: Path | None) -> bytes:
 def _make_key(place: Path) -> None:
     """Write a new key; a process that came first wins."""
     place.parent.mkdir(mode=0o700, parents=True, exist_ok=True)
+    content = secrets.token_hex(KEY_BYTES) + "\n"
     aside = place.with_name(f"{place.name}.{secrets.token_hex(8)}")
-    with os.fdopen(os.open(aside, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600), "w") as stream:
-        stream.write(secrets.token_hex(KEY_BYTES) + "\n")
+    _write_new(aside, content)
     try:
-        # Linking is refused where a file already is, so two first runs at once still share one key.
+        # Linking is refused where a file already is, so two first runs at once still share one key, and a whole one.
         os.link(aside, place)
     except FileExistsError:
         return
+    except OSError:
+        # FAT and many network shares have no links.
+        with contextlib.suppress(FileExistsError):
+            _write_new(place, content)
     finally:
         aside.unlink()
+
+
+def _write_new(place: Path, content: str) -> None:
+    """Write a file that is not there yet, for its owner alone where the system knows owners."""
+    with os.fdopen(os.open(place, os.O_WRONLY | os.O_CREAT | os.O_EXCL, 0o600), "w") as stream:
+        stream.write(content)
+        stream.flush()
+        os.fsync(stream.fileno())
 
 
 def _read_key(place: Path) -> bytes:

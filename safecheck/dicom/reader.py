@@ -121,7 +121,8 @@ class InstanceReader:
             opened.dataset, self._groups, index, header, modality.transform, little_endian=opened.little_endian
         )
         place = read_place(opened.dataset, self._groups, index, self._instance.frame_of_reference)
-        notes = (*opened.notes, *self._bytes.notes, *pixels.notes, *padding.notes, *display_notes, *place.notes)
+        notes = (*opened.notes, *self._bytes.notes, *pixels.notes, *padding.notes, *modality.notes, *display_notes)
+        notes = (*notes, *place.notes)
         return Frame(
             key=self._key(number),
             origin=self._origin(pixels, place, notes),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import hmac
 import os
 from pathlib import Path
@@ -112,3 +113,32 @@ def test_a_first_run_that_comes_second_takes_the_key_of_the_other(
     real = Path.exists
     monkeypatch.setattr(Path, "exists", lambda path: next(seen, None) if path == place else real(path))
     assert load_or_make_key(place) == key
+
+
+@pytest.mark.parametrize("fault", [errno.EPERM, errno.EOPNOTSUPP, errno.ENOSYS], ids=["FAT", "SMB", "no such call"])
+def test_where_links_are_not_known_a_key_is_made_all_the_same(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, fault: int
+) -> None:
+    def refuse(*_: object) -> None:
+        raise OSError(fault, os.strerror(fault))
+
+    monkeypatch.setattr(os, "link", refuse)
+    key = load_or_make_key(tmp_path / "key")
+    assert len(key) == KEY_BYTES
+    assert load_or_make_key(tmp_path / "key") == key
+    assert [each.name for each in tmp_path.iterdir()] == ["key"]
+    assert (tmp_path / "key").stat().st_mode & 0o777 == 0o600
+
+
+def test_where_links_are_not_known_the_key_that_came_first_stays(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    others = "ab" * KEY_BYTES
+
+    def come_second(_: Path, place: Path) -> None:
+        place.write_text(others)
+        place.chmod(0o600)
+        raise OSError(errno.EPERM, os.strerror(errno.EPERM))
+
+    monkeypatch.setattr(os, "link", come_second)
+    assert load_or_make_key(tmp_path / "key") == bytes.fromhex(others)

@@ -34,6 +34,8 @@ def grey_header(**changes: object) -> Dataset:
 REFUSED = [
     pytest.param({"Rows": None}, "header", id="no rows"),
     pytest.param({"Columns": 0}, "header", id="no columns"),
+    pytest.param({"Rows": 16384, "Columns": 16385}, "too-large", id="a row more than 2 to the 28 pixels"),
+    pytest.param({"Rows": 16384, "Columns": 16384}, "truncated", id="2 to the 28 pixels, of which few are there"),
     pytest.param({"SamplesPerPixel": None}, "header", id="no samples per pixel"),
     pytest.param({"SamplesPerPixel": 3, "PlanarConfiguration": 0}, "photometric", id="grey of three samples"),
     pytest.param({"PhotometricInterpretation": None}, "header", id="no photometric interpretation"),

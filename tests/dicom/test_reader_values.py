@@ -17,6 +17,7 @@ from pydicom.pixels.processing import apply_modality_lut, apply_voi_lut
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.frames import DisplayTable, DisplayWindow, Frame, ModalityTable, Rescale
+from safecheck.wording import lint
 from tests.dicom.factory import BIG_ENDIAN, CT_NAME, EXPLICIT, IMPLICIT, header_for, noise, write_instance
 
 Array = npt.NDArray[Any]
@@ -93,6 +94,24 @@ def test_units_are_known_terms_only(tmp_path: Path, modality: str, changes: dict
     frame = read(tmp_path, dataset, modality=modality)
     assert frame.unit == unit
     assert frame.modality_transform == Rescale(2.5, -1024)
+
+
+# PS3.3 C.11.1.1.2, Defined Terms of Rescale Type.
+STANDARD_TERMS = ("OD", "HU", "US", "MGML", "Z_EFF", "ED", "EDW", "HU_MOD", "PCT")
+
+
+@pytest.mark.parametrize("declared", [None, *STANDARD_TERMS])
+def test_a_standard_rescale_type_needs_no_note(tmp_path: Path, declared: str | None) -> None:
+    frame = read(tmp_path, grey_header(RescaleSlope=2, RescaleIntercept=0, RescaleType=declared))
+    assert not [note for note in frame.origin.notes if "Rescale Type" in note]
+
+
+def test_a_rescale_type_of_no_standard_term_is_left_aside_with_a_note_that_does_not_quote_it(tmp_path: Path) -> None:
+    frame = read(tmp_path, grey_header(RescaleSlope=2, RescaleIntercept=0, RescaleType="SMITH JOHN"))
+    note = "the declared Rescale Type is none of the standard's terms and was left aside"
+    assert frame.origin.notes.count(note) == 1
+    assert "SMITH" not in str(frame.origin.notes)
+    assert not list(lint(note))
 
 
 def test_a_secondary_capture_of_ct_is_in_hounsfield_units_only_where_it_says_so(tmp_path: Path) -> None:

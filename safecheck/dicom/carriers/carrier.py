@@ -6,25 +6,18 @@ import hashlib
 import io
 
 from pydicom.dataset import Dataset
-from pydicom.filereader import read_dataset, read_partial, read_preamble
-from pydicom.tag import BaseTag
 
 from safecheck.dicom.carriers import segmentation, structure_set
 from safecheck.dicom.carriers.carried import Carried
-from safecheck.dicom.header import text
+from safecheck.dicom.elements import text
+from safecheck.dicom.opened import parse_file
 from safecheck.dicom.pseudonyms import Pseudonyms
-from safecheck.dicom.quiet import quiet_library
-from safecheck.dicom.source import inflate
 from safecheck.dicom.terms import object_class
 from safecheck.errors import InputRefused, RegionError
 from safecheck.regions.region import RegionSet
 from safecheck.wording import sentence_of
 
 __all__ = ["read_carrier"]
-
-_CLASS, _SYNTAX = 0x00080016, 0x00020010
-_DEFLATED = "1.2.840.10008.1.2.1.99"
-_PIXELS = 0x7FE00000
 
 
 def read_carrier(content: bytes, pseudonyms: Pseudonyms) -> RegionSet:
@@ -59,48 +52,25 @@ def read_carrier(content: bytes, pseudonyms: Pseudonyms) -> RegionSet:
 
 
 def _read(content: bytes, pseudonyms: Pseudonyms) -> Carried:
-    found = _class_of(content)
+    dataset = _dataset(content)
+    found = "" if dataset is None else text(dataset, "SOPClassUID")
+    if dataset is None or not found:
+        raise RegionError("the file is neither a region file in JSON nor a DICOM object")
     if found == structure_set.OBJECT_CLASS:
-        return structure_set.read_structure_set(_parse(content, _PIXELS), pseudonyms)
+        return structure_set.read_structure_set(dataset, pseudonyms)
     if found == segmentation.OBJECT_CLASS:
         return segmentation.read_segmentation(content, pseudonyms)
-    if not found:
-        raise RegionError("the file is neither a region file in JSON nor a DICOM object")
     raise RegionError(
         f"regions are not read from a DICOM object of class {object_class(found)}; expected RT Structure Set Storage "
         "or Segmentation Storage"
     )
 
 
-def _class_of(content: bytes) -> str:
-    """SOP Class UID; '' where there is none to be found, as in anything that is not DICOM."""
+def _dataset(content: bytes) -> Dataset | None:
+    """Elements before any pixels; None where nothing can be parsed, as in most that is not DICOM."""
     try:
-        return text(_parse(content, _CLASS + 1), _CLASS)
-    except InputRefused:
-        return ""
-
-
-def _parse(content: bytes, end: int) -> Dataset:
-    """Elements before a tag; a deflated data set is inflated within bounds."""
-
-    def at_end(tag: BaseTag, representation: str | None, length: int) -> bool:  # noqa: ARG001
-        return int(tag) >= end
-
-    def past_meta(tag: BaseTag, representation: str | None, length: int) -> bool:  # noqa: ARG001
-        return int(tag) >> 16 != 2
-
-    stream = io.BytesIO(content)
-    try:
-        with quiet_library():
-            read_preamble(stream, force=True)
-            meta = read_dataset(stream, is_implicit_VR=False, is_little_endian=True, stop_when=past_meta)
-            if text(meta, _SYNTAX) == _DEFLATED:
-                whole = io.BytesIO(inflate(stream.read()))
-                return read_dataset(whole, is_implicit_VR=False, is_little_endian=True, stop_when=at_end)
-            stream.seek(0)
-            return read_partial(stream, stop_when=at_end, force=True)
-    except InputRefused:
+        return parse_file(io.BytesIO(content)).dataset
+    except InputRefused as refusal:
+        if refusal.reason == "unreadable":
+            return None
         raise
-    except Exception as error:
-        # The library raises many kinds here, some quoting values: none of them may be heard.
-        raise InputRefused("unreadable", f"{type(error).__name__} while the header was parsed") from None

@@ -12,7 +12,7 @@ from safecheck.dicom.elements import term, whole_number
 from safecheck.dicom.frame_bytes import locate_frames
 from safecheck.dicom.frame_pixels import check_syntax, read_frame_pixels
 from safecheck.dicom.opened import OpenedFile
-from safecheck.dicom.pixel_header import read_pixel_header
+from safecheck.dicom.pixel_header import MOST_PIXELS, read_pixel_header
 from safecheck.dicom.syntaxes import Coding
 from safecheck.errors import InputRefused, RegionError
 
@@ -69,6 +69,8 @@ def _bits(opened: OpenedFile) -> SegmentFrames:
     count = whole_number(dataset, "NumberOfFrames", missing=1)
     if min(rows, columns, count) < 1:
         raise InputRefused("header", "Rows, Columns or Number of Frames is below 1")
+    if rows * columns > MOST_PIXELS:
+        raise InputRefused("too-large", f"a frame of {rows} x {columns} pixels, at most {MOST_PIXELS} expected")
     if whole_number(dataset, "BitsAllocated") != 1:
         raise InputRefused("bits", "a binary segmentation with more than one bit allocated")
     if opened.syntax.coding is not Coding.NATIVE:

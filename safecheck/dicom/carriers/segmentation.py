@@ -12,10 +12,9 @@ from pydicom.dataset import Dataset
 from safecheck.dicom.carriers.carried import Carried
 from safecheck.dicom.carriers.labels import label_of, region_name
 from safecheck.dicom.carriers.segment_frames import SegmentFrames, open_segment_frames
-from safecheck.dicom.elements import items, whole_number
+from safecheck.dicom.elements import items, text, whole_number
 from safecheck.dicom.functional_groups import FunctionalGroups
 from safecheck.dicom.geometry import read_place
-from safecheck.dicom.header import text
 from safecheck.dicom.opened import open_file
 from safecheck.dicom.pseudonyms import Pseudonyms
 from safecheck.errors import InputRefused, RegionError

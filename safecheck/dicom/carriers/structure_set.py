@@ -13,8 +13,7 @@ from pydicom.dataset import Dataset
 from safecheck.dicom.carriers.carried import Carried
 from safecheck.dicom.carriers.labels import label_of, region_name
 from safecheck.dicom.carriers.planes import Contour, ContourPlane, Stack, stack
-from safecheck.dicom.elements import items, real_numbers, term, whole_number
-from safecheck.dicom.header import text
+from safecheck.dicom.elements import items, real_numbers, term, text, whole_number
 from safecheck.dicom.pseudonyms import Pseudonyms
 from safecheck.errors import InputRefused, RegionError
 from safecheck.regions.region import InPatient, Part, Region, Role, Vector

@@ -205,6 +205,10 @@ def _frames(dataset: Dataset) -> None:
     dataset.NumberOfFrames = 1
 
 
+def _huge(dataset: Dataset) -> None:
+    dataset.Rows, dataset.Columns = 16384, 16385
+
+
 @pytest.mark.parametrize(
     ("fault", "sentence"),
     [
@@ -215,8 +219,9 @@ def _frames(dataset: Dataset) -> None:
         (_short, "the regions cannot be read: pixel data is shorter than the header declares"),
         (_long, "the regions cannot be read: pixel data is of another length"),
         (_frames, "the regions cannot be read: "),
+        (_huge, "the regions cannot be read: .*a frame of 16384 x 16385 pixels"),
     ],
-    ids=["label map", "unknown type", "segment", "number", "short", "long", "frames"],
+    ids=["label map", "unknown type", "segment", "number", "short", "long", "frames", "huge"],
 )
 def test_a_doubtful_segmentation_is_refused_by_name(fault: Callable[[Dataset], None], sentence: str) -> None:
     dataset = segmentation(masks(2), [at(0.0), at(5.0)])
