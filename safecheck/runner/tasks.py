@@ -8,12 +8,13 @@ from __future__ import annotations
 
 import hmac
 import itertools
-import math
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 
 from safecheck.dicom.instance import Instance
+from safecheck.evaluation import Assignment
 from safecheck.record.canonical import canonical_bytes
+from safecheck.runner.full_controls import choose_full_controls, codecs_of
 from safecheck.runner.manifest import Manifest
 
 __all__ = ["TASK_FRAMES", "FrameTask", "Task", "pixels_of", "plan_tasks"]
@@ -60,6 +61,7 @@ def plan_tasks(
     manifest: Manifest,
     key: bytes,
     *,
+    assignment: Assignment,
     share_percent: float,
     seed: int,
 ) -> tuple[Task, ...]:
@@ -75,8 +77,11 @@ def plan_tasks(
         What the run is about; its assignment, plan and versions are part of every name.
     key
         Site key.
+    assignment
+        What is done to every frame.
     share_percent
-        Share of frames that carry the full controls, 0 to 100; at least one frame of each stratum does.
+        Share of frames that carry the full controls, 0 to 100; at least one frame of each stratum and codec does, where
+        the codec takes any.
     seed
         Another seed chooses other frames.
 
@@ -93,7 +98,7 @@ def plan_tasks(
     ordered = sorted(instances, key=_place)
     if len({instance.input for instance in ordered}) < len(ordered):
         raise ValueError("two instances to assess share an input pseudonym")
-    chosen = _full_controls(ordered, key, share_percent, seed)
+    chosen = choose_full_controls(ordered, codecs_of(assignment), key, share_percent, seed)
     frames = [
         FrameTask(instance, number, (instance.input, number) in chosen, pairs.get(instance.input))
         for instance in ordered
@@ -106,24 +111,6 @@ def _place(instance: Instance) -> tuple[str, str, str, int, str, str]:
     """Where an instance stands in the tables."""
     number = -1 if instance.instance_number is None else instance.instance_number
     return instance.patient, instance.study, instance.series, number, instance.instance, instance.input
-
-
-def _full_controls(
-    instances: Iterable[Instance], key: bytes, share_percent: float, seed: int
-) -> frozenset[tuple[str, int]]:
-    """(input, frame) of the frames with least keyed hash in each stratum: the share, rounded up, and at least one."""
-    strata: dict[str, list[tuple[bytes, str, int]]] = {}
-    for instance in instances:
-        ranked = strata.setdefault(instance.origin.stratum, [])
-        for number in range(1, instance.frames + 1):
-            message = f"full controls\0{seed}\0{instance.input}\0{number}"
-            ranked.append((hmac.digest(key, message.encode(), "sha256"), instance.input, number))
-    chosen: set[tuple[str, int]] = set()
-    for ranked in strata.values():
-        # 5 % of 20 frames is one frame, whatever the last binary digit of the product says.
-        wanted = max(1, math.ceil(len(ranked) * share_percent / 100 - 1e-9))
-        chosen.update((input_, number) for _, input_, number in sorted(ranked)[:wanted])
-    return frozenset(chosen)
 
 
 def _cut(frames: list[FrameTask]) -> Iterator[tuple[FrameTask, ...]]:

@@ -90,7 +90,7 @@ def manifest_of(instances: list[Instance], **changes: object) -> Manifest:
 
 def tasks_of(instances: list[Instance]) -> tuple[Task, ...]:
     """Tasks of a run over these instances."""
-    return plan_tasks(instances, {}, manifest_of(instances), KEY, share_percent=5.0, seed=1)
+    return plan_tasks(instances, {}, manifest_of(instances), KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1)
 
 
 @dataclass(frozen=True, slots=True)
@@ -220,7 +220,7 @@ def run_study(
     """One whole run, begun or resumed."""
     manifest = manifest_of(instances)
     work = begin(dossier, manifest)
-    tasks = plan_tasks(instances, {}, manifest, KEY, share_percent=5.0, seed=1)
+    tasks = plan_tasks(instances, {}, manifest, KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1)
     treatment = Treatment(ASSIGNMENT, evaluation or FakeEvaluation(), open_instance)
     heard = [] if reports is None else reports
     run(tasks, treatment, work, executor=LocalPool(workers), warm_up=lambda: None, report=heard.append)

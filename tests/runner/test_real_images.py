@@ -50,7 +50,7 @@ def do(dossier: Path, instances: tuple[Instance, ...], workers: int, press_at: i
 
     manifest = describe(instances, {}, ASSIGNMENT, plan_hash="p", key=KEY, key_id="K", versions={})
     work = begin(dossier, manifest)
-    tasks = plan_tasks(instances, {}, manifest, KEY, share_percent=5.0, seed=1)
+    tasks = plan_tasks(instances, {}, manifest, KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1)
     treatment = Treatment(ASSIGNMENT, evaluate, open_instance)
     run(tasks, treatment, work, executor=LocalPool(workers), warm_up=load_kernels, report=press)
     return merge(tasks, work, dossier)

@@ -10,7 +10,9 @@ from tests.runner.studies import ASSIGNMENT, KEY, instance, manifest_of, study, 
 
 def plan(share_percent: float, seed: int = 1, key: bytes = KEY) -> tuple[Task, ...]:
     instances = study()
-    return plan_tasks(instances, {}, manifest_of(instances), key, share_percent=share_percent, seed=seed)
+    return plan_tasks(
+        instances, {}, manifest_of(instances), key, assignment=ASSIGNMENT, share_percent=share_percent, seed=seed
+    )
 
 
 def full(tasks: tuple[Task, ...]) -> set[tuple[str, int]]:
@@ -61,7 +63,9 @@ def test_large_frames_stand_alone_and_small_runs_are_cut_fine() -> None:
 )
 def test_another_run_gives_its_tasks_other_names(change: dict[str, object]) -> None:
     instances = study()
-    others = plan_tasks(instances, {}, manifest_of(instances, **change), KEY, share_percent=5.0, seed=1)
+    others = plan_tasks(
+        instances, {}, manifest_of(instances, **change), KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1
+    )
     assert not {task.name for task in others} & {task.name for task in tasks_of(instances)}
 
 
@@ -70,14 +74,22 @@ def test_names_depend_on_the_key_the_assignment_and_the_delivered_copies() -> No
     names = {task.name for task in tasks_of(instances)}
     pairs = {"F-a": instance("returned")}
     names |= {
-        task.name for task in plan_tasks(instances, pairs, manifest_of(instances), KEY, share_percent=5.0, seed=1)
+        task.name
+        for task in plan_tasks(
+            instances, pairs, manifest_of(instances), KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1
+        )
     }
     names |= {
-        task.name for task in plan_tasks(instances, {}, manifest_of(instances), bytes(32), share_percent=5.0, seed=1)
+        task.name
+        for task in plan_tasks(
+            instances, {}, manifest_of(instances), bytes(32), assignment=ASSIGNMENT, share_percent=5.0, seed=1
+        )
     }
     fewer = dataclasses.replace(ASSIGNMENT, candidates=ASSIGNMENT.candidates[:1])
     manifest = describe(instances, {}, fewer, plan_hash="p" * 64, key=KEY, key_id="K-1", versions={"safecheck": "0.1"})
-    names |= {task.name for task in plan_tasks(instances, {}, manifest, KEY, share_percent=5.0, seed=1)}
+    names |= {
+        task.name for task in plan_tasks(instances, {}, manifest, KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1)
+    }
     assert len(names) == 4
 
 

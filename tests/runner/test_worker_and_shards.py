@@ -18,7 +18,7 @@ CINE = [instance("cine", frames=4, series="R-cine", modality="US")]
 
 def one_task() -> Task:
     """All frames of the cine in one task."""
-    tasks = plan_tasks(CINE, {}, manifest_of(CINE), KEY, share_percent=0.0, seed=1)
+    tasks = plan_tasks(CINE, {}, manifest_of(CINE), KEY, assignment=ASSIGNMENT, share_percent=0.0, seed=1)
     return dataclasses.replace(tasks[0], frames=tuple(each for task in tasks for each in task.frames))
 
 
