@@ -30,4 +30,6 @@ def made(hospital: Hospital) -> Made:
         "--key",
         hospital.key,
     ]
-    return Made(out, run(*arguments, "--with-images", "--workers", "2", folder=hospital.folder))
+    ended = run(*arguments, "--with-images", "--workers", "2", folder=hospital.folder)
+    assert ended.code == 0, ended.text
+    return Made(out, ended)
