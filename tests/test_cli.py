@@ -118,7 +118,7 @@ WRONG = [
     (["assess", "in", "--out", "d", "--workers", "two"], "--workers"),
     (["assess", "in", "--out", "binary"], "the dossier's folder cannot be used"),
     (["assess", "in", "--out", "full"], "the folder is not empty"),
-    (["assess", "in", "--out", "d", "--plan", "nowhere"], "the plan file cannot be read"),
+    (["assess", "in", "--out", "d", "--plan", "nowhere"], "plan file"),
     (["assess", "in", "--out", "d", "--plan", "in"], "the plan file cannot be read"),
     (["assess", "in", "--out", "d", "--plan", "binary"], "the plan file cannot be read"),
     (["assess", "in", "--out", "d", "--plan", "words.toml"], "TOML"),

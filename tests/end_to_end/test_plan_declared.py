@@ -67,7 +67,7 @@ def test_a_dry_run_prints_the_hash_that_the_record_then_holds_and_registers_the_
     assert assess_here(later).plan.sha256 == found.group(1)
     # First seen in the dry run, before anyone had results.
     assert declared(tmp_path / "b") == "before the first results"
-    for words in ("Files: 3 to assess", "Frames: 3 of 1 studies of 1 patients", "Time: about", "Disk: about"):
+    for words in ("Files: 3 to assess", "Frames: 3", "Time: about", "Disk: about"):
         assert words in ended.out
 
 
