@@ -30,7 +30,8 @@ from safecheck.record.document import CodecCheckEntry, RecordDocument
 from safecheck.record.run import RunFacts
 from safecheck.regions.region import RegionSet
 from safecheck.runner.executor import Executor
-from safecheck.runner.manifest import Manifest, begin, describe, finish
+from safecheck.runner.faults import resumable
+from safecheck.runner.manifest import Manifest, begin, describe
 from safecheck.runner.merge import Merged, merge
 from safecheck.runner.pool import LocalPool, cores
 from safecheck.runner.progress import Progress
@@ -171,16 +172,30 @@ def assess(
     UsageError
         If the call, the plan or the dossier's folder is wrong.
     Interrupted
-        If stopped; the same call goes on.
+        If stopped, or if the system refuses to write; the same call goes on.
     """
     if request.out is None:
         raise UsageError("no dossier is named; expected --out and a folder")
     prepared = prepare_run(request, tell)
-    work = begin(request.out, prepared.manifest)
+    executor = executor or LocalPool(request.workers or cores())
+    with begin(request.out, prepared.manifest) as held, resumable():
+        record = _perform(prepared, held.path, request.out, executor, tell, report)
+        held.finish()
+    return record
+
+
+def _perform(
+    prepared: Prepared,
+    work: Path,
+    dossier: Path,
+    executor: Executor,
+    tell: Tell,
+    report: Callable[[Progress], None],
+) -> RecordDocument:
+    """Assess all frames and write the dossier, from where the work folder stands."""
     started, sessions = _open_session(work)
     declared = prepared.site.declared(prepared.loaded.sha256, prepared.studies)
     clock = {"start": time.monotonic()}
-    executor = executor or LocalPool(request.workers or cores())
     # The selftest runs beside the workers, whose start it would otherwise hold up.
     with ThreadPoolExecutor(1) as beside:
         checking = beside.submit(run_selftest)
@@ -212,9 +227,8 @@ def assess(
         system=f"{platform.system()} {platform.machine()}, Python {platform.python_version()}",
         plan_declared=declared if prepared.loaded.source == "file" else "not known",
     )
-    finish_dossier(final, record, facts, attachment=request.attachment)
-    _publish(final, request.out)
-    finish(work)
+    finish_dossier(final, record, facts, attachment=prepared.request.attachment)
+    _publish(final, dossier)
     return record
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 import time
 from collections.abc import Generator, Sequence
 from dataclasses import dataclass
@@ -9,7 +10,7 @@ from pathlib import Path
 from typing import Protocol, TypeAlias
 
 from safecheck.runner.tasks import Task
-from safecheck.runner.worker import Treatment, perform
+from safecheck.runner.worker import Opened, Treatment, perform
 
 __all__ = ["Event", "Executor", "InProcess", "TaskDone", "WorkerDied"]
 
@@ -51,8 +52,10 @@ class Executor(Protocol):
 
         Raises
         ------
+        Interrupted, OSError
+            If the system refuses to write shards.
         DossierError
-            If shards cannot be written.
+            If results cannot be put into a shard.
         WorkerLost
             If no worker lives long enough to begin a frame.
         """
@@ -67,7 +70,8 @@ class InProcess:
 
     def perform(self, tasks: Sequence[Task], treatment: Treatment, work: Path) -> Generator[Event]:
         """Perform one task after the other."""
-        for task in tasks:
-            since_s = time.monotonic()
-            done = perform(task, treatment, work, (), lambda _: None)
-            yield TaskDone(task, done.refused, time.monotonic() - since_s)
+        with contextlib.closing(Opened.for_treatment(treatment)) as opened:
+            for task in tasks:
+                since_s = time.monotonic()
+                done = perform(task, treatment, work, (), lambda _: None, opened)
+                yield TaskDone(task, done.refused, time.monotonic() - since_s)

@@ -9,7 +9,9 @@ import hmac
 import os
 import shutil
 from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
 from pathlib import Path
+from types import TracebackType
 from typing import Any
 
 import numpy as np
@@ -19,12 +21,15 @@ from safecheck.documents import Document, from_json
 from safecheck.errors import DocumentError, DossierError, ResumeMismatch, UsageError
 from safecheck.evaluation import Assignment
 from safecheck.record.canonical import canonical_bytes, document_bytes
+from safecheck.runner.faults import word_of
+from safecheck.runner.lock import release, take
 
-__all__ = ["WORK", "Manifest", "begin", "describe", "finish"]
+__all__ = ["WORK", "Manifest", "WorkFolder", "begin", "describe"]
 
 WORK = "work"
 """Folder inside a dossier that holds the manifest and the shards while a run goes on."""
 _MANIFEST = "manifest.json"
+_LOCK = "lock"
 
 
 class Manifest(Document):
@@ -83,7 +88,44 @@ def describe(
     )
 
 
-def begin(dossier: Path, manifest: Manifest) -> Path:
+@dataclass(slots=True)
+class WorkFolder:
+    """The work folder of a dossier, held against any other run until it is left."""
+
+    path: Path
+    _lock: int | None
+    """None once it was given back."""
+
+    def __enter__(self) -> WorkFolder:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.release()
+
+    def release(self) -> None:
+        """Let other runs in; what is in the folder stays, to be resumed."""
+        if self._lock is not None:
+            release(self._lock)
+            self._lock = None
+
+    def finish(self) -> None:
+        """Remove the folder of a run whose dossier is complete; the manifest goes last, so a stop here resumes."""
+        for path in self.path.iterdir():
+            if path.name in (_MANIFEST, _LOCK):
+                continue
+            if path.is_dir():
+                shutil.rmtree(path)
+            else:
+                path.unlink()
+        # Windows removes no file that is open.
+        self.release()
+        (self.path / _LOCK).unlink()
+        shutil.rmtree(self.path)
+
+
+def begin(dossier: Path, manifest: Manifest) -> WorkFolder:
     """Begin a run in a folder, or go on with the same run that was stopped there.
 
     Parameters
@@ -95,41 +137,46 @@ def begin(dossier: Path, manifest: Manifest) -> Path:
 
     Returns
     -------
-    pathlib.Path
-        The work folder inside the dossier.
+    WorkFolder
+        Inside the dossier; a context manager that keeps other runs out until it is left.
 
     Raises
     ------
     ResumeMismatch
         If the run in the folder was begun with another input, plan, key or version.
     UsageError
-        If the folder holds a finished dossier or anything else, or cannot be made.
+        If another run is at work in the folder, if it holds a finished dossier or anything else, or cannot be made.
     """
     work = dossier / WORK
     try:
-        found = {path.name for path in dossier.iterdir()} if dossier.exists() else set()
-        if found and not (work / _MANIFEST).exists() and found != {WORK}:
-            raise UsageError(_occupied(found))
+        _check_free(dossier)
         work.mkdir(parents=True, exist_ok=True)
-        if (work / _MANIFEST).exists():
-            _compare(_read(work / _MANIFEST), manifest)
-        else:
-            _write(work / _MANIFEST, document_bytes(manifest))
+        held = WorkFolder(work, take(work / _LOCK))
+        try:
+            # Once more: another run may have finished in between.
+            _check_free(dossier)
+            _enter(work, manifest)
+        except BaseException:
+            held.release()
+            raise
     except OSError as error:
-        raise UsageError(f"the dossier's folder cannot be used: {os.strerror(error.errno or 0)}") from None
-    return work
+        raise UsageError(f"the dossier's folder cannot be used: {word_of(error)}") from None
+    return held
 
 
-def finish(work: Path) -> None:
-    """Remove the work folder of a run whose dossier is complete; the manifest goes last, so a stop here resumes."""
-    for path in work.iterdir():
-        if path.name == _MANIFEST:
-            continue
-        if path.is_dir():
-            shutil.rmtree(path)
-        else:
-            path.unlink()
-    shutil.rmtree(work)
+def _check_free(dossier: Path) -> None:
+    """Raise if a folder holds anything but a run to be resumed."""
+    found = {path.name for path in dossier.iterdir()} if dossier.exists() else set()
+    if found and not (dossier / WORK / _MANIFEST).exists() and found != {WORK}:
+        raise UsageError(_occupied(found))
+
+
+def _enter(work: Path, manifest: Manifest) -> None:
+    """Compare with the run that was begun here, or write down what this one is about."""
+    if (work / _MANIFEST).exists():
+        _compare(_read(work / _MANIFEST), manifest)
+    else:
+        _write(work / _MANIFEST, document_bytes(manifest))
 
 
 def _occupied(found: set[str]) -> str:

@@ -13,6 +13,7 @@ import pyarrow as pa
 
 from safecheck.errors import DossierError
 from safecheck.record.tables import write_table
+from safecheck.runner.faults import resumable
 from safecheck.runner.shards import SHARD_TABLES, LeftOut, Paper, paper_of, read_shard
 from safecheck.runner.tasks import Task
 
@@ -36,6 +37,7 @@ class Merged:
     """What preflight noticed and set right -> in how many frames."""
 
 
+@resumable()
 def merge(tasks: Sequence[Task], work: Path, dossier: Path) -> Merged:
     """Write the three tables of the frames into the dossier; memory does not grow with the number of rows.
 
@@ -52,6 +54,8 @@ def merge(tasks: Sequence[Task], work: Path, dossier: Path) -> Merged:
     ------
     DossierError
         If a shard is missing or damaged; resuming does it again.
+    Interrupted
+        If the system refuses to write, as on a full disk.
     """
     tally = _Tally()
     for task in tasks:

@@ -24,6 +24,7 @@ from typing import Any
 
 from safecheck.errors import DossierError, WorkerLost
 from safecheck.runner.executor import Event, TaskDone, WorkerDied
+from safecheck.runner.faults import interrupted_by
 from safecheck.runner.process import Order
 from safecheck.runner.tasks import Task
 from safecheck.runner.worker import Treatment
@@ -137,8 +138,10 @@ class _Crew:
                 self.stillborn = 0
             elif "unfit" in message:
                 raise WorkerLost(f"a worker process could not take its orders: {message['unfit']}")
+            elif "fault" in message:
+                raise interrupted_by(message["fault"])
             elif "error" in message:
-                raise DossierError(f"a part of the dossier could not be written: {message['error']}")
+                raise DossierError(f"a part of the results could not be put into its tables: {message['error']}")
             elif worker.task is not None:
                 yield TaskDone(worker.task, message["refused"], time.monotonic() - worker.since_s)
                 worker.task = None

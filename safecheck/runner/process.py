@@ -16,8 +16,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, BinaryIO
 
+from safecheck.runner.faults import word_of
 from safecheck.runner.tasks import Task
-from safecheck.runner.worker import Treatment, perform
+from safecheck.runner.worker import Opened, Treatment, perform
 
 __all__ = ["Order", "main"]
 
@@ -39,8 +40,9 @@ def main() -> None:
     inbox: queue.SimpleQueue[Any] = queue.SimpleQueue()
     threading.Thread(target=_listen, args=(orders, inbox, answers), daemon=True).start()
     treatment, work = inbox.get()
+    opened = Opened.for_treatment(treatment)
     while True:
-        _answer(answers, _carry_out(inbox.get(), treatment, work, answers))
+        _answer(answers, _carry_out(inbox.get(), treatment, work, answers, opened))
 
 
 def _silence() -> None:
@@ -67,12 +69,14 @@ def _listen(orders: BinaryIO, inbox: queue.SimpleQueue[Any], answers: BinaryIO) 
         os._exit(0)
 
 
-def _carry_out(order: Order, treatment: Treatment, work: Path, answers: BinaryIO) -> dict[str, Any]:
+def _carry_out(order: Order, treatment: Treatment, work: Path, answers: BinaryIO, opened: Opened) -> dict[str, Any]:
     """Perform one order; what cannot be written is told by its system code, which holds no path."""
     try:
-        done = perform(order.task, treatment, work, order.lost, lambda position: _answer(answers, {"begun": position}))
+        done = perform(
+            order.task, treatment, work, order.lost, lambda position: _answer(answers, {"begun": position}), opened
+        )
     except OSError as error:
-        return {"error": os.strerror(error.errno or 0)}
+        return {"fault": word_of(error)}
     except Exception as error:
         return {"error": type(error).__name__}
     return {"refused": done.refused}

@@ -7,8 +7,10 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+from safecheck.dicom.instance import Source
 from safecheck.errors import Interrupted
 from safecheck.runner.executor import Executor, TaskDone, WorkerDied
+from safecheck.runner.faults import resumable
 from safecheck.runner.progress import Pace, Progress, kind_of, weight_of
 from safecheck.runner.shards import LeftOut, clear_aside, paper_of
 from safecheck.runner.tasks import Task
@@ -56,6 +58,7 @@ class _Tally:
         self.report(Progress(self.done, len(self.tasks), self.frames, self.pace.remaining_s, note))
 
 
+@resumable()
 def run(
     tasks: Sequence[Task],
     treatment: Treatment,
@@ -86,9 +89,9 @@ def run(
     Raises
     ------
     Interrupted
-        On Ctrl-C; what was finished stays.
+        On Ctrl-C, or if the system refuses to write, as on a full disk; what was finished stays.
     DossierError
-        If the work folder cannot be written.
+        If a worker cannot put its results into a shard.
     WorkerLost
         If no worker lives long enough to begin a frame.
     """
@@ -112,7 +115,8 @@ def _find_left(work: Path, tally: _Tally) -> list[Task]:
     """Tasks without a shard, in the order of their names; those with one are counted.
 
     Names are keyed hashes, so kinds of images are well mixed in this order, and the first tasks speak for the rest when
-    the remaining time is estimated.
+    the remaining time is estimated. Tasks of one archive member follow each other, since a worker inflates it whole and
+    keeps it from one task to the next.
     """
     left = []
     for task in tally.tasks:
@@ -121,7 +125,16 @@ def _find_left(work: Path, tally: _Tally) -> list[Task]:
             left.append(task)
         else:
             tally.add(task, _refused(paper.left_out))
-    return sorted(left, key=lambda task: task.name)
+    left.sort(key=lambda task: task.name)
+    first: dict[Source, str] = {}
+    for task in left:
+        first.setdefault(_source(task), task.name)
+    return sorted(left, key=lambda task: first[_source(task)] if _source(task).member else task.name)
+
+
+def _source(task: Task) -> Source:
+    """Where the first frame of a task lies."""
+    return task.frames[0].instance.source
 
 
 def _refused(left_out: Sequence[LeftOut]) -> int:

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import contextlib
 from collections import Counter
 from collections.abc import Callable, Collection
 from contextlib import AbstractContextManager, ExitStack
@@ -21,7 +20,7 @@ from safecheck.record.tables import from_rows
 from safecheck.runner.shards import SHARD_TABLES, LeftOut, write_shard
 from safecheck.runner.tasks import FrameTask, Task
 
-__all__ = ["Done", "Evaluate", "FrameReader", "OpenInstance", "Treatment", "perform"]
+__all__ = ["Done", "Evaluate", "FrameReader", "OpenInstance", "Opened", "Treatment", "perform"]
 
 
 class FrameReader(Protocol):
@@ -77,7 +76,10 @@ class Done:
 
 @dataclass(slots=True)
 class _Side:
-    """The instance last opened on one side, original or delivered: frames that follow each other share it."""
+    """The instance last opened on one side, original or delivered: frames that follow each other share it.
+
+    It stays open from one task to the next: a member of an archive is inflated whole when it is opened.
+    """
 
     open_instance: OpenInstance
     input: str = ""
@@ -99,18 +101,42 @@ class _Side:
 
 
 @dataclass(slots=True)
+class Opened:
+    """What a worker keeps open from one task to the next: one instance of each side at most."""
+
+    originals: _Side
+    delivered: _Side
+
+    @classmethod
+    def for_treatment(cls, treatment: Treatment) -> Opened:
+        """Nothing yet, to be opened as a treatment says."""
+        return cls(_Side(treatment.open_instance), _Side(treatment.open_instance))
+
+    def close(self) -> None:
+        """Close both."""
+        self.originals.close()
+        self.delivered.close()
+
+
+@dataclass(slots=True)
 class _Bench:
     """What a worker holds while it is at one task."""
 
     treatment: Treatment
-    originals: _Side
-    delivered: _Side
+    opened: Opened
     tables: dict[str, list[pa.Table]] = field(default_factory=lambda: {name: [] for name in SHARD_TABLES})
     left_out: list[LeftOut] = field(default_factory=list)
     notes: Counter[str] = field(default_factory=Counter)
 
 
-def perform(task: Task, treatment: Treatment, work: Path, lost: Collection[int], begun: Callable[[int], None]) -> Done:
+def perform(
+    task: Task,
+    treatment: Treatment,
+    work: Path,
+    lost: Collection[int],
+    begun: Callable[[int], None],
+    opened: Opened,
+) -> Done:
     """Assess the frames of one task and write its shard.
 
     Parameters
@@ -126,20 +152,21 @@ def perform(task: Task, treatment: Treatment, work: Path, lost: Collection[int],
     begun
         Called with the position of each frame before it is touched, and with the number of frames before the shard is
         written, so that whoever outlives this process knows what it died of.
+    opened
+        What earlier tasks of the same treatment left open; the caller closes it after the last.
 
     Raises
     ------
     OSError
         If the shard cannot be written. What goes wrong with a frame is in the shard, never raised.
     """
-    bench = _Bench(treatment, _Side(treatment.open_instance), _Side(treatment.open_instance))
-    with contextlib.closing(bench.originals), contextlib.closing(bench.delivered):
-        for position, each in enumerate(task.frames):
-            if position in lost:
-                bench.left_out.append(_left_out(each, "worker-lost", ""))
-                continue
-            begun(position)
-            _assess(each, bench)
+    bench = _Bench(treatment, opened)
+    for position, each in enumerate(task.frames):
+        if position in lost:
+            bench.left_out.append(_left_out(each, "worker-lost", ""))
+            continue
+        begun(position)
+        _assess(each, bench)
     begun(len(task.frames))
     write_shard(work, task, bench.tables, bench.left_out, bench.notes)
     return Done(task.name, sum(each.side == "original" for each in bench.left_out))
@@ -148,7 +175,7 @@ def perform(task: Task, treatment: Treatment, work: Path, lost: Collection[int],
 def _assess(each: FrameTask, bench: _Bench) -> None:
     """Assess one frame; whatever goes wrong with it becomes an entry, and the run goes on."""
     try:
-        frame = bench.originals.read(each.instance, each.number)
+        frame = bench.opened.originals.read(each.instance, each.number)
         delivered = _read_delivered(each, bench)
         result = bench.treatment.evaluate(
             frame, bench.treatment.assignment, full_controls=each.full_controls, delivered=delivered
@@ -159,6 +186,8 @@ def _assess(each: FrameTask, bench: _Bench) -> None:
     except Exception as error:
         # The text of a foreign exception may hold identifiers or paths; its class cannot.
         bench.left_out.append(_left_out(each, "internal", type(error).__name__))
+        # Nor is it known in what state a reader was left, which no frame after this one may depend on.
+        bench.opened.close()
     else:
         for name, table in tables.items():
             bench.tables[name].append(table)
@@ -174,11 +203,12 @@ def _read_delivered(each: FrameTask, bench: _Bench) -> Frame | None:
     if each.delivered is None:
         return None
     try:
-        return bench.delivered.read(each.delivered, each.number)
+        return bench.opened.delivered.read(each.delivered, each.number)
     except (InputRefused, InputExcluded) as refusal:
         reason, detail = refusal.reason, refusal.detail
     except Exception as error:
         reason, detail = "internal", type(error).__name__
+        bench.opened.delivered.close()
     bench.left_out.append(_without_copy(each.delivered, each.number, reason, detail))
     return None
 

@@ -219,12 +219,18 @@ def run_study(
 ) -> Merged:
     """One whole run, begun or resumed."""
     manifest = manifest_of(instances)
-    work = begin(dossier, manifest)
     tasks = plan_tasks(instances, {}, manifest, KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1)
     treatment = Treatment(ASSIGNMENT, evaluation or FakeEvaluation(), open_instance)
     heard = [] if reports is None else reports
-    run(tasks, treatment, work, executor=LocalPool(workers), warm_up=lambda: None, report=heard.append)
-    return merge(tasks, work, dossier)
+    with begin(dossier, manifest) as held:
+        run(tasks, treatment, held.path, executor=LocalPool(workers), warm_up=lambda: None, report=heard.append)
+        return merge(tasks, held.path, dossier)
+
+
+def work_of(dossier: Path, instances: list[Instance]) -> Path:
+    """Work folder of a run that was begun, and left again."""
+    with begin(dossier, manifest_of(instances)) as held:
+        return held.path
 
 
 def tables_of(dossier: Path) -> dict[str, bytes]:

@@ -4,16 +4,20 @@ from pathlib import Path
 import pytest
 
 from safecheck.errors import DossierError, ResumeMismatch, UsageError
-from safecheck.runner.manifest import begin, finish
-from tests.runner.studies import instance, manifest_of, study
+from safecheck.runner.manifest import begin
+from tests.runner.studies import instance, manifest_of, study, work_of
 
 
 def test_a_new_an_absent_and_a_begun_folder_can_be_used(tmp_path: Path) -> None:
     manifest = manifest_of(study())
     absent = tmp_path / "deep" / "dossier"
-    assert begin(absent, manifest) == begin(absent, manifest)
+    with begin(absent, manifest) as first:
+        path = first.path
+    with begin(absent, manifest) as again:
+        assert again.path == path
     (tmp_path / "empty").mkdir()
-    assert begin(tmp_path / "empty", manifest).is_dir()
+    with begin(tmp_path / "empty", manifest) as held:
+        assert held.path.is_dir()
 
 
 @pytest.mark.parametrize(
@@ -29,14 +33,14 @@ def test_a_new_an_absent_and_a_begun_folder_can_be_used(tmp_path: Path) -> None:
     ],
 )
 def test_resuming_another_run_says_what_differs(tmp_path: Path, change: dict[str, object], word: str) -> None:
-    begin(tmp_path, manifest_of(study()))
+    work_of(tmp_path, study())
     with pytest.raises(ResumeMismatch, match=re.escape(word)):
         begin(tmp_path, manifest_of(study(), **change))
 
 
 def test_resuming_with_other_inputs_is_refused_but_their_order_does_not_matter(tmp_path: Path) -> None:
-    begin(tmp_path, manifest_of(study()))
-    begin(tmp_path, manifest_of(study()[::-1]))
+    work_of(tmp_path, study())
+    work_of(tmp_path, study()[::-1])
     with pytest.raises(ResumeMismatch, match="other values of: inputs;"):
         begin(tmp_path, manifest_of([*study(), instance("one-more")]))
 
@@ -60,22 +64,22 @@ def test_a_path_that_is_a_file_is_refused_without_naming_it(tmp_path: Path) -> N
 
 
 def test_a_manifest_that_cannot_be_read_stops_the_run(tmp_path: Path) -> None:
-    work = begin(tmp_path, manifest_of(study()))
+    work = work_of(tmp_path, study())
     (work / "manifest.json").write_text("{")
     with pytest.raises(DossierError, match="manifest"):
         begin(tmp_path, manifest_of(study()))
 
 
 def test_a_finished_run_leaves_no_work_folder(tmp_path: Path) -> None:
-    work = begin(tmp_path, manifest_of(study()))
-    (work / "shards" / "one").mkdir(parents=True)
-    (work / "stray").touch()
-    finish(work)
+    with begin(tmp_path, manifest_of(study())) as held:
+        (held.path / "shards" / "one").mkdir(parents=True)
+        (held.path / "stray").touch()
+        held.finish()
     assert not list(tmp_path.iterdir())
 
 
 def test_the_manifest_holds_no_uid_and_no_path(tmp_path: Path) -> None:
-    work = begin(tmp_path, manifest_of([instance("a", folder="Doe_Jane")]))
+    work = work_of(tmp_path, [instance("a", folder="Doe_Jane")])
     text = (work / "manifest.json").read_text()
     assert "1.2.3" not in text
     assert "Doe" not in text

@@ -9,10 +9,9 @@ from pathlib import Path
 
 import pytest
 
-from safecheck.errors import DossierError, Interrupted, WorkerLost
+from safecheck.errors import Interrupted, WorkerLost
 from safecheck.record.tables import read_table
 from safecheck.runner.executor import InProcess
-from safecheck.runner.manifest import begin
 from safecheck.runner.merge import merge
 from safecheck.runner.pool import LocalPool, cores
 from safecheck.runner.progress import Progress
@@ -24,12 +23,12 @@ from tests.runner.studies import (
     Killed,
     environment,
     instance,
-    manifest_of,
     open_instance,
     run_study,
     study,
     tables_of,
     tasks_of,
+    work_of,
 )
 
 SMALL = [instance("cine", frames=12, series="R-cine"), instance("one", series="R-one")]
@@ -45,7 +44,7 @@ def test_one_and_two_workers_and_this_process_alone_give_the_same_bytes(tmp_path
     few = study(slices=4, cine_frames=8)
     run_study(tmp_path / "one", few, workers=1)
     run_study(tmp_path / "two", few[::-1], workers=2)
-    work = begin(tmp_path / "here", manifest_of(few))
+    work = work_of(tmp_path / "here", few)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(), open_instance)
     run(tasks_of(few), treatment, work, executor=InProcess(), warm_up=lambda: None, report=lambda _: None)
     merge(tasks_of(few), work, tmp_path / "here")
@@ -84,7 +83,7 @@ def test_two_frames_of_one_task_that_kill_are_both_refused(tmp_path: Path) -> No
     long = [instance("long", frames=1600, series="R-long", size=(1, 1))]
     first = tasks_of(long)[0]
     assert len(first.frames) > 3
-    work = begin(tmp_path / "d", manifest_of(long))
+    work = work_of(tmp_path / "d", long)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(dies_on=(("I-long", 1), ("I-long", 3))), open_instance)
     summary = run([first], treatment, work, executor=LocalPool(2), warm_up=lambda: None, report=lambda _: None)
     assert summary == RunSummary(tasks=1, resumed=0, frames=len(first.frames), refused=2, workers_died=4)
@@ -94,7 +93,7 @@ def test_a_dead_worker_is_reported_within_ten_seconds_and_long_before_the_run_en
     # Issue: within 10 s. The other worker is busy for a minute, so nothing else can wake the parent.
     begun, reported = tmp_path / "begun", threading.Event()
     one = [instance("one"), instance("two", series="R-2")]
-    work = begin(tmp_path / "d", manifest_of(one))
+    work = work_of(tmp_path / "d", one)
     evaluation = FakeEvaluation(takes_s=60, pid_file=str(begun))
     events = LocalPool(2).perform(tasks_of(one), Treatment(ASSIGNMENT, evaluation, open_instance), work)
 
@@ -114,7 +113,7 @@ def test_a_dead_worker_is_reported_within_ten_seconds_and_long_before_the_run_en
 def test_closing_the_run_ends_its_workers_at_once(tmp_path: Path) -> None:
     pids = tmp_path / "pids"
     one = [instance("one"), instance("two", series="R-2")]
-    work = begin(tmp_path / "d", manifest_of(one))
+    work = work_of(tmp_path / "d", one)
     evaluation = FakeEvaluation(takes_s=60, pid_file=str(pids), dies_on=(("I-two", 1),))
     events = LocalPool(1).perform(tasks_of(one), Treatment(ASSIGNMENT, evaluation, open_instance), work)
     waiting = threading.Thread(target=lambda: next(events, None))
@@ -126,23 +125,23 @@ def test_closing_the_run_ends_its_workers_at_once(tmp_path: Path) -> None:
 
 
 def test_workers_that_cannot_even_begin_stop_the_run(tmp_path: Path) -> None:
-    work = begin(tmp_path / "d", manifest_of(SMALL))
+    work = work_of(tmp_path / "d", SMALL)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(), Killed.on_arrival)
     with pytest.raises(WorkerLost, match="in a row ended before they began"):
         run(tasks_of(SMALL), treatment, work, executor=LocalPool(2), warm_up=lambda: None, report=lambda _: None)
 
 
 def test_a_treatment_that_workers_cannot_read_is_named_by_its_error(tmp_path: Path) -> None:
-    work = begin(tmp_path / "d", manifest_of(SMALL))
+    work = work_of(tmp_path / "d", SMALL)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(), Killed.unreadable)
     with pytest.raises(WorkerLost, match="could not take its orders: LookupError"):
         run(tasks_of(SMALL), treatment, work, executor=LocalPool(2), warm_up=lambda: None, report=lambda _: None)
 
 
 def test_a_dossier_that_can_no_longer_be_written_stops_the_run_without_naming_its_path(tmp_path: Path) -> None:
-    work = begin(tmp_path / "Doe", manifest_of(SMALL))
+    work = work_of(tmp_path / "Doe", SMALL)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(breaks=str(work / "aside")), open_instance)
-    with pytest.raises(DossierError, match=r"could not be written: Not a directory$"):
+    with pytest.raises(Interrupted, match=r"refused to write or read: Not a directory; what is finished stays"):
         run(tasks_of(SMALL), treatment, work, executor=LocalPool(1), warm_up=lambda: None, report=lambda _: None)
 
 
@@ -164,7 +163,7 @@ def test_libraries_in_workers_take_one_thread(tmp_path: Path) -> None:
 
 
 def test_warming_up_happens_once_before_the_first_task_and_not_where_nothing_is_to_do(tmp_path: Path) -> None:
-    work = begin(tmp_path / "d", manifest_of(SMALL))
+    work = work_of(tmp_path / "d", SMALL)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(), open_instance)
     calls: list[int] = []
     for _ in range(2):
@@ -180,7 +179,7 @@ def test_warming_up_happens_once_before_the_first_task_and_not_where_nothing_is_
 
 
 def test_ctrl_c_stops_promptly_keeps_what_is_finished_and_says_so(tmp_path: Path) -> None:
-    work = begin(tmp_path / "d", manifest_of(SMALL))
+    work = work_of(tmp_path / "d", SMALL)
     treatment = Treatment(ASSIGNMENT, FakeEvaluation(takes_s=0.05), open_instance)
 
     def press(progress: Progress) -> None:

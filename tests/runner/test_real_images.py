@@ -49,11 +49,11 @@ def do(dossier: Path, instances: tuple[Instance, ...], workers: int, press_at: i
             os.kill(os.getpid(), signal.SIGINT)
 
     manifest = describe(instances, {}, ASSIGNMENT, plan_hash="p", key=KEY, key_id="K", versions={})
-    work = begin(dossier, manifest)
     tasks = plan_tasks(instances, {}, manifest, KEY, assignment=ASSIGNMENT, share_percent=5.0, seed=1)
     treatment = Treatment(ASSIGNMENT, evaluate, open_instance)
-    run(tasks, treatment, work, executor=LocalPool(workers), warm_up=load_kernels, report=press)
-    return merge(tasks, work, dossier)
+    with begin(dossier, manifest) as held:
+        run(tasks, treatment, held.path, executor=LocalPool(workers), warm_up=load_kernels, report=press)
+        return merge(tasks, held.path, dossier)
 
 
 @pytest.mark.slow

@@ -1,3 +1,4 @@
+import contextlib
 import dataclasses
 import json
 import shutil
@@ -6,12 +7,11 @@ from pathlib import Path
 import pytest
 
 from safecheck.errors import DossierError
-from safecheck.runner.manifest import begin
 from safecheck.runner.merge import merge
 from safecheck.runner.shards import LeftOut, clear_aside, paper_of, read_shard
 from safecheck.runner.tasks import Task, plan_tasks
-from safecheck.runner.worker import Treatment, perform
-from tests.runner.studies import ASSIGNMENT, KEY, FakeEvaluation, instance, manifest_of, open_instance
+from safecheck.runner.worker import Opened, Treatment, perform
+from tests.runner.studies import ASSIGNMENT, KEY, FakeEvaluation, instance, manifest_of, open_instance, work_of
 
 CINE = [instance("cine", frames=4, series="R-cine", modality="US")]
 
@@ -25,13 +25,15 @@ def one_task() -> Task:
 def do(task: Task, work: Path, evaluation: FakeEvaluation | None = None, lost: tuple[int, ...] = ()) -> list[int]:
     """Perform a task; the positions begun."""
     begun: list[int] = []
-    perform(task, Treatment(ASSIGNMENT, evaluation or FakeEvaluation(), open_instance), work, lost, begun.append)
+    treatment = Treatment(ASSIGNMENT, evaluation or FakeEvaluation(), open_instance)
+    with contextlib.closing(Opened.for_treatment(treatment)) as opened:
+        perform(task, treatment, work, lost, begun.append, opened)
     return begun
 
 
 @pytest.fixture
 def work(tmp_path: Path) -> Path:
-    return begin(tmp_path / "dossier", manifest_of(CINE))
+    return work_of(tmp_path / "dossier", CINE)
 
 
 def frames_in(work: Path, task: Task) -> list[int]:
