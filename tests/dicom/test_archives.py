@@ -139,3 +139,27 @@ def test_an_inflated_source_is_seekable(tmp_path: Path) -> None:
     stream = open_source(Source(archive, "a"))
     assert isinstance(stream, io.BytesIO)
     assert stream.read() == b"content"
+
+
+def test_an_archive_that_changed_is_opened_again(tmp_path: Path) -> None:
+    archive = write_zip(tmp_path / "z", {"a": b"content"})
+    assert open_source(Source(archive, "a")).read() == b"content"
+    write_zip(tmp_path / "z", {"a": b"another content", "b": b""})
+    assert open_source(Source(archive, "a")).read() == b"another content"
+
+
+def test_the_directory_of_an_archive_is_read_once_for_all_its_members(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    archive = write_zip(tmp_path / "z", {f"{n}": b"content" for n in range(20)})
+    opened: list[Path] = []
+
+    class Counted(zipfile.ZipFile):
+        def __init__(self, path: Path) -> None:
+            opened.append(path)
+            super().__init__(path)
+
+    monkeypatch.setattr(zipfile, "ZipFile", Counted)
+    for n in range(20):
+        assert open_source(Source(archive, f"{n}")).read() == b"content"
+    assert len(opened) == 1

@@ -1,17 +1,32 @@
 import contextlib
 import dataclasses
+import itertools
 import json
 import shutil
+from collections.abc import Generator, Iterator, Sequence
 from pathlib import Path
 
 import pytest
 
+from safecheck.dicom.instance import Instance, Source
 from safecheck.errors import DossierError
+from safecheck.runner.executor import Event
 from safecheck.runner.merge import merge
+from safecheck.runner.run import run
 from safecheck.runner.shards import LeftOut, clear_aside, paper_of, read_shard
 from safecheck.runner.tasks import Task, plan_tasks
 from safecheck.runner.worker import Opened, Treatment, perform
-from tests.runner.studies import ASSIGNMENT, KEY, FakeEvaluation, instance, manifest_of, open_instance, work_of
+from tests.runner.studies import (
+    ASSIGNMENT,
+    KEY,
+    FakeEvaluation,
+    Reader,
+    instance,
+    manifest_of,
+    open_instance,
+    tasks_of,
+    work_of,
+)
 
 CINE = [instance("cine", frames=4, series="R-cine", modality="US")]
 
@@ -194,3 +209,90 @@ def test_merging_sums_what_stands_beside_the_rows(work: Path, tmp_path: Path) ->
         "regions.parquet",
         "windows.parquet",
     ]
+
+
+class Opener:
+    """Opens instances of no file, and keeps count."""
+
+    def __init__(self) -> None:
+        self.opened: list[str] = []
+        self.open_now = 0
+        self.most = 0
+
+    @contextlib.contextmanager
+    def __call__(self, which: Instance, /) -> Iterator[Reader]:
+        self.opened.append(which.input)
+        self.open_now += 1
+        self.most = max(self.most, self.open_now)
+        with open_instance(which) as reader:
+            yield reader
+        self.open_now -= 1
+
+
+def test_tasks_of_one_instance_open_it_once_and_never_hold_two(work: Path) -> None:
+    counter = Opener()
+    instances = [instance("cine", frames=60, series="R-a"), instance("other", frames=60, series="R-b")]
+    tasks = tasks_of(instances)
+    assert len(tasks) > 8
+    treatment = Treatment(ASSIGNMENT, FakeEvaluation(), counter)
+    with contextlib.closing(Opened.for_treatment(treatment)) as opened:
+        for task in tasks:
+            perform(task, treatment, work, (), lambda _: None, opened)
+    assert counter.opened == ["F-cine", "F-other"]
+    assert (counter.most, counter.open_now) == (1, 0)
+
+
+def test_an_unforeseen_error_leaves_no_reader_to_the_next_task(work: Path) -> None:
+    counter = Opener()
+    treatment = Treatment(ASSIGNMENT, FakeEvaluation(raises_on=(("I-cine", 2),)), counter)
+    with contextlib.closing(Opened.for_treatment(treatment)) as opened:
+        perform(one_task(), treatment, work, (), lambda _: None, opened)
+    assert counter.opened == ["F-cine", "F-cine"]
+    assert counter.open_now == 0
+
+
+def test_a_delivered_copy_stays_open_beside_its_original(work: Path) -> None:
+    counter = Opener()
+    task = one_task()
+    copy = instance("returned", frames=4)
+    task = dataclasses.replace(task, frames=tuple(dataclasses.replace(each, delivered=copy) for each in task.frames))
+    treatment = Treatment(ASSIGNMENT, FakeEvaluation(), counter)
+    with contextlib.closing(Opened.for_treatment(treatment)) as opened:
+        perform(task, treatment, work, (), lambda _: None, opened)
+        perform(task, treatment, work, (), lambda _: None, opened)
+    assert counter.opened == ["F-cine", "F-returned"]
+    assert (counter.most, counter.open_now) == (2, 0)
+
+
+def test_tasks_of_one_archive_member_follow_each_other_and_all_others_are_mixed(work: Path) -> None:
+    members = [
+        dataclasses.replace(each, source=Source(Path("z"), each.input))
+        for each in (instance("m1", frames=40, series="R-1"), instance("m2", frames=40, series="R-2"))
+    ]
+    tasks = tasks_of([*members, instance("f1", frames=40, series="R-3"), instance("f2", frames=40, series="R-4")])
+    seen = performed_in_order(tasks, work)
+    turns = [name for name, _ in itertools.groupby(seen)]
+    assert turns.count("F-m1") == turns.count("F-m2") == 1
+    assert turns.count("F-f1") > 2
+    assert len(seen) == len(tasks)
+
+
+def performed_in_order(tasks: Sequence[Task], work: Path) -> list[str]:
+    """Input of each task, in the order in which a run hands them out."""
+    seen: list[str] = []
+
+    class Watch:
+        workers = 1
+
+        def perform(
+            self,
+            tasks: Sequence[Task],
+            treatment: Treatment,  # noqa: ARG002
+            work: Path,  # noqa: ARG002
+        ) -> Generator[Event]:
+            seen.extend(task.frames[0].instance.input for task in tasks)
+            yield from ()
+
+    treatment = Treatment(ASSIGNMENT, FakeEvaluation(), open_instance)
+    run(tasks, treatment, work, executor=Watch(), warm_up=lambda: None, report=lambda _: None)
+    return seen
