@@ -9,6 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 __all__ = [
+    "NEAR",
     "Bar",
     "Bars",
     "Block",
@@ -33,6 +34,9 @@ __all__ = [
     "Table",
     "Title",
 ]
+
+NEAR = 2.5
+"""Limits up to this many times the largest value are drawn on a chart."""
 
 Grey: TypeAlias = npt.NDArray[np.uint8]
 """(rows, columns) or (rows, columns, 3), 0 black to 255 white."""
@@ -148,7 +152,27 @@ class Chart:
     y_title: str
     series: tuple[Series, ...]
     bounds: tuple[Bound, ...] = ()
-    from_zero: bool = True
+
+    @property
+    def highest(self) -> float:
+        """Largest value on the chart."""
+        points = [point for item in self.series for point in item.points]
+        return max(max(point.y, point.high or 0, point.worst or 0) for point in points)
+
+    @property
+    def near_bounds(self) -> tuple[Bound, ...]:
+        """Limits near enough to the values that drawing them leaves the curves readable."""
+        return tuple(bound for bound in self.bounds if 0 < bound.value <= NEAR * self.highest)
+
+    @property
+    def far_bounds(self) -> tuple[Bound, ...]:
+        """Limits that the chart leaves out, to be named below it."""
+        return tuple(bound for bound in self.bounds if bound not in self.near_bounds)
+
+    @property
+    def single(self) -> bool:
+        """Whether no curve joins points."""
+        return all(len(item.points) == 1 for item in self.series)
 
 
 @dataclass(frozen=True, slots=True)
@@ -244,9 +268,10 @@ class Section:
 
     title: str
     blocks: tuple[Block, ...]
-    new_page: bool = False
     room_mm: float = 62.0
     """Height that must be left on the page for the section to begin on it."""
+    together: bool = False
+    """Whether its blocks share a page where one can hold them."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -7,6 +7,7 @@ from safecheck.report.sections.back import definitions, keeping, plan, signature
 from safecheck.report.sections.checks import controls, left_out
 from safecheck.report.sections.delivered import delivered
 from safecheck.report.sections.front import front
+from safecheck.report.sections.further import further
 from safecheck.report.sections.ledger import ledger
 from safecheck.report.sections.limits import limits
 from safecheck.report.sections.places import places
@@ -65,4 +66,5 @@ def _sections(view: View) -> tuple[Section, ...]:
         plan(view),
         keeping(view),
         signatures(view),
+        *further(view),
     )

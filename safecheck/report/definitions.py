@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from types import MappingProxyType
 
 from safecheck.report.formulas import FORMULAS
 
-__all__ = ["TERMS", "Definition", "definition_of", "label_of"]
+__all__ = ["CONTENT_RULES", "REGION_FIGURES", "TERMS", "Definition", "definition_of", "label_of"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,8 +36,8 @@ TERMS: tuple[tuple[str, str], ...] = (
     ("Patch", "complete window of 8×8 pixels on a fixed grid from (0, 0), with at least half content"),
     (
         "Window",
-        "a display window that turns values into display levels from 0 to 255, here unrounded. A window of the file is "
-        "the one that each file carries; its centre and width stand with each row of windows.parquet",
+        "a display window that turns values into display levels from 0 to 255, here unrounded. A file window is one "
+        "that the file carries; its centre and width stand beside its name and with each row of windows.parquet",
     ),
     (
         "Group of like images",
@@ -54,6 +55,40 @@ TERMS: tuple[tuple[str, str], ...] = (
     ("Percentiles", "over frames, with linear interpolation between the two nearest"),
 )
 """Words of the record, in the order in which they are explained."""
+
+
+CONTENT_RULES: MappingProxyType[str, str] = MappingProxyType(
+    {
+        "ct-air-1": (
+            "all but padding and surrounding air: 4-connected areas below −500 HU that touch the frame's border or "
+            "padding and whose mean lies below −900 HU"
+        ),
+        "mr-background-1": (
+            "all but padding and background: 4-connected areas that touch the border or padding and, after a mean of "
+            "3×3, lie at or below 2.5 σ; σ is the first quartile of the border ÷ 0.7585, as of Rayleigh noise"
+        ),
+        "padding-only-1": "all but padding: where the modality has no rule of its own, or its rule gives way",
+    }
+)
+"""Content rule -> what it takes for content."""
+
+REGION_FIGURES: tuple[tuple[str, str, str], ...] = (
+    (
+        "Region: RMSE, mean error",
+        "√(Σ w e² ÷ Σ w) and Σ w e ÷ Σ w; w the share of each pixel that the region covers",
+        "common definition",
+    ),
+    ("Region: mean, SD", "m = Σ w x ÷ Σ w and √(Σ w (x − m)² ÷ Σ w): of an area, not of a sample", "common definition"),
+    ("Region: contrast", "m of the region − m of its background", "common definition"),
+    ("Region: contrast kept", "100 × contrast after ÷ contrast before, per frame", "definition stated here"),
+    ("Region: CNR", "|contrast| ÷ SD of the background; null without a background", "common definition"),
+    (
+        "Region: noise removed",
+        "100 × (1 − SD of the background after ÷ before); below 0 where noise was added",
+        "definition stated here",
+    ),
+)
+"""Figures of the region tables: name, formula and domain, source."""
 
 
 def definition_of(measure: str) -> Definition | None:

@@ -77,8 +77,7 @@ def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
     drawing = Drawing(width, height)
     keys = _key(chart.series, width)
     top = height - 14 - 11 * len(keys) - 4
-    highest = max(max(point.y, point.high or 0, point.worst or 0) for item in chart.series for point in item.points)
-    ticks = nice_ticks(max([highest, *(bound.value for bound in _near(chart, highest))]))
+    ticks = nice_ticks(max([chart.highest, *(bound.value for bound in chart.near_bounds)]))
     labels = _tick_labels(ticks)
     left = max(text_width(label, REGULAR, _SMALL) for label in labels) + 8
     ratios = [point.x for item in chart.series for point in item.points]
@@ -88,17 +87,11 @@ def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
     _draw_keys(drawing, chart.series, keys, height - 22)
     drawing.add(String(0, top - 3, printable(chart.y_title), fontName=REGULAR, fontSize=_SMALL, fillColor=MID))
     _axes(drawing, chart, x, y, list(zip(ticks, labels, strict=True)), width)
-    for bound in _near(chart, highest):
-        _bound(drawing, x, y.at(bound.value), bound.text)
+    _bounds(drawing, x, y, chart.near_bounds)
     for index, item in enumerate(chart.series):
         shift = 4.2 * (index - (len(chart.series) - 1) / 2)
         _curve(drawing, item.points, x, y, index, shift)
     return drawing
-
-
-def _near(chart: Chart, highest: float) -> list[Bound]:
-    """Limits near enough to the values that drawing them leaves the curves readable."""
-    return [bound for bound in chart.bounds if 0 < bound.value <= 2.5 * highest]
 
 
 def _tick_labels(ticks: Sequence[float]) -> list[str]:
@@ -130,10 +123,16 @@ def _label(text: str, x: float, y: float, anchor: str, colour: object = INK) -> 
     return String(x, y, text, fontName=REGULAR, fontSize=_SMALL, textAnchor=anchor, fillColor=colour)
 
 
-def _bound(drawing: Drawing, x: _Scale, at: float, text: str) -> None:
-    """A declared limit, named on its line."""
-    drawing.add(Line(x.start, at, x.end, at, strokeColor=INK, strokeWidth=0.7, strokeDashArray=[1, 2]))
-    drawing.add(String(x.start + 3, at + 2.5, text, fontName=LIGHT, fontSize=_SMALL, fillColor=INK))
+def _bounds(drawing: Drawing, x: _Scale, y: _Scale, bounds: Sequence[Bound]) -> None:
+    """Declared limits, each named above its line, or below it where the next one is too near."""
+    last = -math.inf
+    for bound in sorted(bounds, key=lambda item: item.value):
+        at = y.at(bound.value)
+        drawing.add(Line(x.start, at, x.end, at, strokeColor=INK, strokeWidth=0.7, strokeDashArray=[1, 2]))
+        text = fit_text(bound.text, LIGHT, _SMALL, x.end - x.start - 6)
+        base = max(at + 2.5, last + _SMALL + 1)
+        drawing.add(String(x.start + 3, base, text, fontName=LIGHT, fontSize=_SMALL, fillColor=INK))
+        last = base
 
 
 def _curve(drawing: Drawing, points: Sequence[Point], x: _Scale, y: _Scale, index: int, shift: float) -> None:

@@ -76,7 +76,9 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
         "edge_band_max": ("Largest error, band at the content's edge", "max |e| over that band", _STATED),
         "noise_sd": (
             "Noise SD, original",
-            "local estimator, from the original only, not across edges; not evaluated below one stored unit",
+            "√(mean of s²) over patches of 8×8 wholly content and not constant, s² = Σ r² ÷ 61, r the residuals about "
+            "the least-squares plane of the original; patches with s above 1.5 × the mode of s hold edges and are left "
+            "out. Not evaluated with fewer than 16 patches or below one stored step",
             _STATED,
         ),
         "noise_sd_kept_percent": ("Noise SD kept", "100 × noise SD after ÷ noise SD of the original", _STATED),

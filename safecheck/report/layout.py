@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from typing import Any, TypeAlias
 
@@ -25,9 +26,10 @@ from safecheck.report.blocks import (
 )
 from safecheck.report.figures import bars_drawing, chart_drawing
 from safecheck.report.folio import PageNumber
+from safecheck.report.furniture import MARKS_HEIGHT
 from safecheck.report.sketches import cards_flowables
-from safecheck.report.tables import table_flowable
-from safecheck.report.theme import ACCENT, INK, RULE, TEXT_WIDTH, markup, style
+from safecheck.report.tables import least_room, table_flowable
+from safecheck.report.theme import ACCENT, BOTTOM, INK, PAGE_HEIGHT, RULE, TEXT_WIDTH, TOP, markup, style
 
 __all__ = ["ContentsEntry", "flow"]
 
@@ -43,11 +45,18 @@ _PLAIN = [
 ]
 
 
-def flow(head: Sequence[Flowable], blocks: Sequence[Block], contents: Sequence[ContentsEntry]) -> list[Flowable]:
+def flow(
+    head: Sequence[Flowable], blocks: Sequence[Block], contents: Sequence[ContentsEntry], *, together: bool = False
+) -> list[Flowable]:
     """Lay out blocks after a head.
 
-    Headings and sentences wait for what they introduce, so that none of them stands alone at the foot of a page.
+    Headings, sentences and bars wait for what they introduce, so that none of them stands alone at the foot of a page.
+    With `together` all share a page where one can hold them.
     """
+    if together:
+        flat = [*head, *(made for block in blocks for made in _flowables_of(block, contents))]
+        if _height(flat) <= _PAGE:
+            return [KeepTogether(flat)]
     story: list[Flowable] = []
     waiting, kept = list(head), len(head)
     for block in blocks:
@@ -55,15 +64,28 @@ def flow(head: Sequence[Flowable], blocks: Sequence[Block], contents: Sequence[C
         if isinstance(block, Heading) and len(waiting) > kept:
             story += waiting
             waiting, kept = [], 0
-        if isinstance(block, Heading | Prose):
+        if isinstance(block, Heading | Prose | Bars):
             waiting += made
             continue
         if isinstance(made, _Whole):
             story.append(KeepTogether([*waiting, *made]))
         else:
-            story += [CondPageBreak(_ROOM + _ROOM_PER_LINE * len(waiting)), *waiting, *made]
+            story += [CondPageBreak(_height(waiting) + _room(made)), *waiting, *made]
         waiting, kept = [], 0
     return story + waiting
+
+
+def _height(flowables: Sequence[Flowable]) -> float:
+    """Height of flowables below each other."""
+    heights = [item.wrap(TEXT_WIDTH, PAGE_HEIGHT)[1] for item in flowables]
+    apart = [max(item.getSpaceBefore(), item.getSpaceAfter()) for item in flowables]
+    return float(sum(heights) + sum(apart))
+
+
+def _room(flowables: Sequence[Flowable]) -> float:
+    """Height that must be left for what can part over pages."""
+    first = flowables[0] if flowables else None
+    return least_room(first) if isinstance(first, PlatypusTable) and first.repeatRows else _ROOM
 
 
 class _Whole(list[Flowable]):
@@ -88,7 +110,7 @@ def _flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowa
         case Charts():
             return _charts(block)
         case Bars():
-            return _Whole([_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH), Spacer(1, 6)])
+            return [_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH), Spacer(1, 6)]
         case Places():
             return cards_flowables(block.cards)
         case Signatures():
@@ -115,18 +137,19 @@ def _title(block: Title) -> list[Flowable]:
     labels = [_paragraph(label, "small-label") for label, _ in block.facts]
     values = [_paragraph(value, "value") for _, value in block.facts]
     facts = _plain_table([labels, values], [TEXT_WIDTH / count] * count)
-    sealed = [_paragraph("SHA-256 of the record", "small-label"), _paragraph(block.record_sha256, "hash")]
+    hashed = [[_paragraph("SHA-256 of the record", "small-label"), _paragraph(block.record_sha256, "hash")]]
+    sealed = _plain_table(hashed, [TEXT_WIDTH / count, TEXT_WIDTH * (1 - 1 / count)])
     head: list[Flowable] = [_paragraph(block.title, "title")]
     if block.subject:
         head.append(_paragraph(block.subject, "subject"))
     return [
         *head,
-        Spacer(1, 8),
-        HRFlowable(width="100%", thickness=1.2, color=ACCENT, spaceBefore=0, spaceAfter=7),
+        Spacer(1, 4),
+        HRFlowable(width="100%", thickness=1.2, color=ACCENT, spaceBefore=0, spaceAfter=5),
         facts,
         Spacer(1, 5),
-        *sealed,
-        HRFlowable(width="100%", thickness=0.4, color=RULE, spaceBefore=7, spaceAfter=9),
+        sealed,
+        HRFlowable(width="100%", thickness=0.4, color=RULE, spaceBefore=5, spaceAfter=6),
     ]
 
 
@@ -153,26 +176,26 @@ def _facts(block: Facts) -> Flowable:
     return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
 
 
-_ROOM, _ROOM_PER_LINE = 96.0, 24.0
-"""Points that must be left for what can part over pages, and for each line that introduces it."""
-_TOGETHER = 24
+_ROOM = 96.0
+"""Points that must be left for what can part over pages."""
+_PAGE = PAGE_HEIGHT - TOP - BOTTOM - MARKS_HEIGHT
+"""Points of text on a page."""
+_TOGETHER = 14
 """Rows up to which a table never breaks over pages."""
 
 
 def _table(block: Table) -> list[Flowable]:
-    """Caption and table: short ones stay whole, of long ones at least the head and a few rows."""
-    parts: list[Flowable] = [_paragraph(block.caption, "caption")] if block.caption else []
-    parts.append(table_flowable(block))
-    if len(block.rows) <= _TOGETHER:
-        return _Whole(parts)
-    return parts
+    """A table: short ones stay whole, of long ones at least the head and a few rows."""
+    made = table_flowable(block)
+    return _Whole([made]) if len(block.rows) <= _TOGETHER else [made]
 
 
 def _charts(block: Charts) -> list[Flowable]:
     """Charts side by side above their caption."""
     gap = 18.0
     width = (TEXT_WIDTH - gap) / 2
-    drawings = [chart_drawing(chart, width, 186) for chart in block.charts]
+    height = 112 if all(chart.single for chart in block.charts) else 156
+    drawings = [chart_drawing(chart, width, height) for chart in block.charts]
     cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
     side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])
     parts: list[Flowable] = [Spacer(1, 4), side_by_side, Spacer(1, 3)]
@@ -193,7 +216,7 @@ def _signature(head: str, role: str, width: float) -> PlatypusTable:
     """One block: room for an opinion, name, date and signature."""
     rows = [[_paragraph(head, "card-head"), ""], [_paragraph(role, "small-label"), ""]]
     heights: list[float | None] = [None, None]
-    for label, height in (("", 24), ("", 20), ("", 20), ("Name", 22), ("Date", 22), ("Signature", 28)):
+    for label, height in (("", 20), ("", 18), ("", 18), ("Name", 20), ("Date", 20), ("Signature", 26)):
         rows.append([_paragraph(label, "small-label"), ""])
         heights.append(height)
     table = PlatypusTable(rows, colWidths=[44, width - 44], rowHeights=heights, hAlign="LEFT")
@@ -212,15 +235,21 @@ def _signature(head: str, role: str, width: float) -> PlatypusTable:
 
 
 def _contents(entries: Sequence[ContentsEntry]) -> list[Flowable]:
-    """Sections with their pages."""
-    rows: list[list[Any]] = []
-    for key, title in entries:
-        link = Paragraph(f'<a href="#{key}">{markup(title)}</a>', style("contents"))
-        rows.append([link, PageNumber(key, 40)])
+    """Sections with their pages, in two columns."""
+    cells: list[list[Any]] = [
+        [Paragraph(f'<a href="#{key}">{markup(title)}</a>', style("contents")), PageNumber(key, 24)]
+        for key, title in entries
+    ]
+    half = math.ceil(len(cells) / 2)
+    right = [*cells[half:], *[["", ""]] * (2 * half - len(cells))]
+    rows = [[*one, "", *other] for one, other in zip(cells[:half], right, strict=True)]
+    gap = 18.0
+    wide = (TEXT_WIDTH - gap) / 2 - 24
     rules = [
-        ("LINEBELOW", (0, 0), (-1, -1), 0.25, RULE),
+        ("LINEBELOW", (0, 0), (1, -1), 0.25, RULE),
+        ("LINEBELOW", (3, 0), (4, -1), 0.25, RULE),
         ("TOPPADDING", (0, 0), (-1, -1), 1.6),
         ("BOTTOMPADDING", (0, 0), (-1, -1), 2.2),
     ]
-    table = _plain_table(rows, [TEXT_WIDTH - 40, 40], [*rules, ("RIGHTPADDING", (0, 0), (-1, -1), 0)])
-    return [_paragraph("In this record", "heading"), table]
+    table = _plain_table(rows, [wide, 24, gap, wide, 24], [*rules, ("RIGHTPADDING", (0, 0), (-1, -1), 0)])
+    return _Whole([_paragraph("In this record", "heading"), table])

@@ -3,9 +3,24 @@
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Iterable, Sequence
 
-__all__ = ["NONE", "aligned", "bytes_text", "count", "figure", "joined", "percent", "plural", "rounded_time", "signed"]
+__all__ = [
+    "NONE",
+    "aligned",
+    "aligned_beside",
+    "bytes_text",
+    "count",
+    "figure",
+    "header_ratio",
+    "joined",
+    "percent",
+    "plural",
+    "rounded_time",
+    "signed",
+    "unit_after",
+]
 
 NONE = "–"
 """Stands where there is no value."""
@@ -32,6 +47,38 @@ def aligned(values: Sequence[float | None], decimals: int | None = None) -> tupl
     known = [value for value in values if value is not None]
     places = decimals_for(known) if decimals is None else decimals
     return tuple(_written(value, places) for value in values)
+
+
+def aligned_beside(values: Sequence[float | None], bound: float, most: int = 12) -> tuple[str, ...]:
+    """Write a column of figures with decimals enough that each shows on which side of a bound it lies."""
+    known = [value for value in values if value is not None]
+    places = decimals_for(known)
+    while places < most and not all(_same_side(value, bound, places) for value in known):
+        places += 1
+    return aligned(values, places)
+
+
+def _same_side(value: float, bound: float, places: int) -> bool:
+    """Whether rounding leaves a value, and its size, above, at or below the bound as it is."""
+    written = round(value, places)
+    return all(
+        _order(found, bound) == _order(full, bound) for found, full in ((written, value), (abs(written), abs(value)))
+    )
+
+
+def _order(value: float, bound: float) -> int:
+    """-1 below, 0 equal, 1 above."""
+    return (value > bound) - (value < bound)
+
+
+def header_ratio(text: str) -> str:
+    """Shorten the decimal numbers of a header's text to 6 significant digits."""
+    return re.sub(r"\d+\.\d+", lambda found: f"{float(found.group()):.6g}", text)
+
+
+def unit_after(unit: str) -> str:
+    """Return a unit as it stands after a figure; a figure without unit carries none."""
+    return "" if unit == "1" else f" {unit}"
 
 
 def _written(value: float | None, places: int) -> str:

@@ -10,7 +10,6 @@ from reportlab.platypus import (
     BaseDocTemplate,
     CondPageBreak,
     Frame,
-    PageBreak,
     PageTemplate,
     Paragraph,
 )
@@ -80,7 +79,7 @@ def _story(report: Report) -> list[Flowable]:
     contents = [(f"section-{index}", section.title) for index, section in enumerate(report.sections)]
     story = flow([Anchor("front", report.title, folio)], report.front, contents)
     for (key, title), section in zip(contents, report.sections, strict=True):
-        story += [PageBreak()] if section.new_page else [CondPageBreak(section.room_mm * mm)]
+        story += [CondPageBreak(section.room_mm * mm)]
         head = [Anchor(key, title, folio), Paragraph(markup(title), style("section"))]
-        story += flow(head, section.blocks, contents)
+        story += flow(head, section.blocks, contents, together=section.together)
     return [*story, Closing(folio)]

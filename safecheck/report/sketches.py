@@ -18,11 +18,13 @@ from safecheck.report.theme import (
     FAINT,
     HAIR,
     INK,
+    MEDIUM,
     MID,
     REGULAR,
     RULE,
     TEXT_WIDTH,
     WHITE,
+    fit_text,
     load_fonts,
     markup,
     style,
@@ -35,8 +37,10 @@ _BOX = 72.0
 _SMALL_BOX = 46.0
 """The same beside pictures."""
 _MARGIN = 15.0
-_PICTURE = 93.0
-_BAR_HEIGHT = 15.0
+_PICTURE, _GAP, _BELOW = 82.0, 5.0, 36.0
+"""Side of a picture, room between pictures, and room below them for names, window and scale; in points."""
+_STRIP_WIDTH, _STRIP_HEIGHT = 3 * _PICTURE + 2 * _GAP, _PICTURE + _BELOW
+_SHORT_UNIT = 8
 
 
 def sketch_drawing(card: PlaceCard, box: float = _BOX) -> Drawing:
@@ -68,16 +72,10 @@ def _text(x: float, y: float, text: str, anchor: str) -> String:
 
 
 def cards_flowables(cards: tuple[PlaceCard, ...]) -> list[Flowable]:
-    """Lay out cards two by two; a card with pictures takes the whole width."""
-    flowables: list[Flowable] = []
-    waiting: list[PlaceCard] = []
-    for card in cards:
-        if card.pictures is not None:
-            flowables += [*_pairs(waiting), _wide(card, card.pictures)]
-            waiting = []
-        else:
-            waiting.append(card)
-    return flowables + _pairs(waiting)
+    """Lay out cards two by two; where any has pictures, all take the whole width and one height."""
+    if any(card.pictures is not None for card in cards):
+        return [_wide(card) for card in cards]
+    return _pairs(list(cards))
 
 
 def _pairs(cards: list[PlaceCard]) -> list[Flowable]:
@@ -108,89 +106,121 @@ _CARD_STYLE = [
 
 def _words(card: PlaceCard) -> list[Paragraph]:
     """What, how much and where, in words."""
-    lines = [
-        Paragraph(markup(card.head), style("card-head")),
-        Paragraph(f'<font size="12.5">{markup(card.value)}</font> {markup(card.unit)}', style("card-value")),
-        Paragraph(markup(card.measure), style("card")),
-    ]
+    return [Paragraph(markup(card.head), style("card-head")), *_figures(card)]
+
+
+def _figures(card: PlaceCard) -> list[Paragraph]:
+    """The value, a long unit on a line of its own, and the place."""
+    short = len(card.unit) <= _SHORT_UNIT
+    beside = f" {markup(card.unit)}" if short else ""
+    lines = [Paragraph(f'<font size="12.5">{markup(card.value)}</font>{beside}', style("card-value"))]
+    lines += [] if short else [Paragraph(markup(card.unit), style("card"))]
+    lines.append(Paragraph(markup(card.measure), style("card")))
     for label, value in card.lines:
         text = f'<font color="#5e6368">{markup(label)}</font> {markup(value)}'
         lines.append(Paragraph(text, style("card")))
-    if card.without_pictures:
-        lines.append(Paragraph(markup(card.without_pictures), style("card")))
     return lines
 
 
-def _wide(card: PlaceCard, pictures: Pictures) -> Flowable:
-    """Words, sketch and three pictures side by side."""
+def _wide(card: PlaceCard) -> Flowable:
+    """A head over words, sketch and three pictures side by side."""
     sketch = _SMALL_BOX + _MARGIN + 14
-    first = TEXT_WIDTH - sketch - 3 * (_PICTURE + 6)
-    shown = [
-        _Picture(pictures.original, pictures.mark, "original", pictures.window),
-        _Picture(pictures.recompressed, pictures.mark, "recompressed", pictures.window),
-        _Picture(pictures.difference, pictures.mark, "after minus before", f"in {pictures.unit}", pictures.scale),
-    ]
-    cells = [[_words(card), sketch_drawing(card, _SMALL_BOX), *shown]]
-    table = Table(cells, colWidths=[first, sketch, *[_PICTURE + 6] * 3], hAlign="LEFT")
-    table.setStyle(_CARD_STYLE)
+    first = TEXT_WIDTH - sketch - _STRIP_WIDTH
+    shown = _Strip(card.pictures) if card.pictures is not None else _empty(card.without_pictures)
+    head = Paragraph(fit_text(card.head, MEDIUM, 8.4, TEXT_WIDTH - 4).replace("&", "&amp;"), style("card-head"))
+    cells = [[head, "", ""], [_figures(card), sketch_drawing(card, _SMALL_BOX), shown]]
+    table = Table(cells, colWidths=[first, sketch, _STRIP_WIDTH], rowHeights=[17, _STRIP_HEIGHT + 4], hAlign="LEFT")
+    table.setStyle(
+        [
+            ("VALIGN", (0, 0), (-1, -1), "TOP"),
+            ("LEFTPADDING", (0, 0), (-1, -1), 0),
+            ("RIGHTPADDING", (0, 0), (-1, -1), 4),
+            ("RIGHTPADDING", (2, 1), (2, 1), 0),
+            ("TOPPADDING", (0, 0), (-1, 0), 4),
+            ("TOPPADDING", (0, 1), (-1, 1), 0),
+            ("BOTTOMPADDING", (0, 0), (-1, -1), 0),
+            ("LINEABOVE", (0, 0), (-1, 0), 0.35, RULE),
+            ("SPAN", (0, 0), (-1, 0)),
+            ("NOSPLIT", (0, 0), (-1, -1)),
+        ]
+    )
     return table
 
 
-class _Picture(Flowable):  # type: ignore[misc] # reportlab is untyped
-    """A crop, its patch outlined, with what it shows and its window or scale below."""
+def _empty(text: str) -> Drawing:
+    """An empty frame in place of pictures, with the reason."""
+    drawing = Drawing(_STRIP_WIDTH, _STRIP_HEIGHT)
+    drawing.add(Rect(0.4, _BELOW, _STRIP_WIDTH - 0.8, _PICTURE, fillColor=None, strokeColor=HAIR, strokeWidth=0.6))
+    drawing.add(_text(_STRIP_WIDTH / 2, _BELOW + _PICTURE / 2, text, "middle"))
+    return drawing
 
-    def __init__(
-        self, pixels: Grey, mark: tuple[int, int, int, int], name: str, about: str, scale: float | None = None
-    ) -> None:
+
+class _Strip(Flowable):  # type: ignore[misc] # reportlab is untyped
+    """Original, recompressed and difference, the patch outlined, with window and scale below."""
+
+    def __init__(self, pictures: Pictures) -> None:
         super().__init__()
-        self._pixels, self._mark, self._scale = pixels, mark, scale
-        rows, columns = pixels.shape[:2]
-        self._zoom = _PICTURE / max(rows, columns)
-        self.width = columns * self._zoom
-        self._caption = Paragraph(f"{markup(name)}<br/>{markup(about)}", style("picture"))
-        self._below = self._caption.wrap(_PICTURE, 100)[1] + 2 + (_BAR_HEIGHT if scale is not None else 0)
-        self.height = rows * self._zoom + self._below
+        self._pictures = pictures
+        self.width, self.height = _STRIP_WIDTH, _STRIP_HEIGHT
 
     def wrap(self, *_available: float) -> tuple[float, float]:
         """Size in points."""
         return self.width, self.height
 
     def draw(self) -> None:
-        """Draw the crop, the outline of the patch, the scale and the caption."""
+        """Draw the pictures with their names, the window below the first two and the scale below the third."""
+        shown = self._pictures
+        named = (
+            (shown.original, "original"),
+            (shown.recompressed, "recompressed"),
+            (shown.difference, "after minus before"),
+        )
+        for index, (pixels, name) in enumerate(named):
+            left = index * (_PICTURE + _GAP)
+            self._picture(pixels, left)
+            self.canv.setFillColor(INK)
+            self.canv.setFont(REGULAR, 6.6)
+            self.canv.drawString(left, _BELOW - 8, name)
+        window = Paragraph(f"window: {markup(shown.window)}", style("picture"))
+        _, height = window.wrap(2 * _PICTURE + _GAP, 40)
+        window.drawOn(self.canv, 0, _BELOW - 9.5 - height)
+        self._bar(2 * (_PICTURE + _GAP), _BELOW - 18)
+
+    def _picture(self, pixels: Grey, left: float) -> None:
+        """A crop, enlarged by whole copies of each pixel, so that no reader smooths it."""
         canvas = self.canv
-        rows, columns = self._pixels.shape[:2]
-        # Whole copies of each pixel, so that no reader smooths the crop.
+        rows, columns = pixels.shape[:2]
+        zoom = _PICTURE / max(rows, columns)
         copies = max(1, 320 // max(rows, columns))
-        enlarged = np.repeat(np.repeat(self._pixels, copies, axis=0), copies, axis=1)
+        enlarged = np.repeat(np.repeat(pixels, copies, axis=0), copies, axis=1)
         reader = ImageReader(io.BytesIO(png_bytes(enlarged)))
-        canvas.drawImage(reader, 0, self._below, self.width, rows * self._zoom)
+        top = _BELOW + _PICTURE
+        canvas.drawImage(reader, left, top - rows * zoom, columns * zoom, rows * zoom)
         canvas.setStrokeColor(INK)
         canvas.setLineWidth(0.4)
-        canvas.rect(0, self._below, self.width, rows * self._zoom)
-        self._outline(self.height)
-        self._caption.drawOn(canvas, 0, 0)
-        if self._scale is not None:
-            self._bar(self._scale, self._below - _BAR_HEIGHT)
+        canvas.rect(left, top - rows * zoom, columns * zoom, rows * zoom)
+        self._outline(left, top, zoom)
 
-    def _outline(self, top: float) -> None:
+    def _outline(self, left: float, top: float, zoom: float) -> None:
         """The patch, in white on black, so that it shows on any grey."""
-        row, column, rows, columns = self._mark
-        zoom = self._zoom
+        row, column, rows, columns = self._pictures.mark
         for colour, width in ((INK, 1.6), (WHITE, 0.7)):
             self.canv.setStrokeColor(colour)
             self.canv.setLineWidth(width)
-            self.canv.rect(column * zoom, top - (row + rows) * zoom, columns * zoom, rows * zoom)
+            self.canv.rect(left + column * zoom, top - (row + rows) * zoom, columns * zoom, rows * zoom)
 
-    def _bar(self, scale: float, base: float) -> None:
-        """Greys from minus to plus the scale, with their figures."""
-        canvas, steps = self.canv, 32
+    def _bar(self, left: float, base: float) -> None:
+        """Greys from minus to plus the scale, with their figures and the unit."""
+        canvas, steps, shown = self.canv, 32, self._pictures
         for step in range(steps):
             canvas.setFillGray(step / (steps - 1))
-            canvas.rect(self.width * step / steps, base + 7, self.width / steps + 0.3, 5, stroke=0, fill=1)
+            canvas.rect(left + _PICTURE * step / steps, base, _PICTURE / steps + 0.3, 7, stroke=0, fill=1)
         canvas.setStrokeColor(HAIR)
-        canvas.rect(0, base + 7, self.width, 5)
+        canvas.rect(left, base, _PICTURE, 7)
         canvas.setFillColor(INK)
-        canvas.setFont(REGULAR, 6.4)
-        canvas.drawString(0, base + 1, f"\u2212{figure(scale)}")
-        canvas.drawCentredString(self.width / 2, base + 1, "0")
-        canvas.drawRightString(self.width, base + 1, f"+{figure(scale)}")
+        canvas.setFont(MEDIUM, 7.4)
+        canvas.drawString(left, base - 8, f"\u2212{figure(shown.scale)}")
+        canvas.drawCentredString(left + _PICTURE / 2, base - 8, "0")
+        canvas.drawRightString(left + _PICTURE, base - 8, f"+{figure(shown.scale)}")
+        canvas.setFont(REGULAR, 6.6)
+        canvas.drawString(left, base - 16, fit_text(f"in {shown.unit}", REGULAR, 6.6, _PICTURE))

@@ -7,8 +7,16 @@ from collections.abc import Sequence
 
 from safecheck.record.document import OutcomeEntry, RecordDocument
 from safecheck.record.run import RunFacts
-from safecheck.report.numbers import count, figure, joined, plural
-from safecheck.report.sections.front import outcome_words, ratio_groups
+from safecheck.report.numbers import count, figure, joined, plural, unit_after
+from safecheck.report.sections.front import (
+    candidate_lines,
+    controls_line,
+    delivered_line,
+    exit_line,
+    outcome_words,
+    refused_frames,
+    studies_words,
+)
 from safecheck.report.sections.view import View, view_of
 from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, RUN_INVALID
 
@@ -31,7 +39,7 @@ def summary_text(record: RecordDocument, record_sha256: str, run: RunFacts) -> s
         When and how it was made.
     """
     view = view_of(record, record_sha256, run, None)
-    paragraphs = [_head(view), *_asked_and_run(view), *_outcomes(view), _exit(record), *_cautions(record)]
+    paragraphs = [_head(view), *_asked_and_run(view), *_outcomes(view), _exit(view), *_cautions(record)]
     return "\n".join(paragraphs) + "\n"
 
 
@@ -54,28 +62,27 @@ def _head(view: View) -> str:
 def _asked_and_run(view: View) -> list[str]:
     """Candidates, input and when the plan was declared."""
     inputs, run = view.record.inputs, view.run
-    proposed = joined(ratio_groups([item for item in view.candidates if item.status == "proposed"]))
-    context = joined(ratio_groups([item for item in view.candidates if item.status == "context"]))
-    asked = f"Proposed: {proposed or 'nothing'}." + (f" For context: {context}." if context else "")
+    asked = " ".join(candidate_lines(view))
     ran = (
         f"{plural(inputs.files, 'file')}: {count(inputs.assessed)} assessed, {count(inputs.excluded)} excluded, "
-        f"{count(inputs.refused)} refused; {plural(inputs.frames_assessed, 'frame')}, "
+        f"{count(inputs.refused)} refused; {plural(inputs.frames_assessed, 'frame')} assessed{refused_frames(view)}, "
         f"{plural(inputs.studies, 'study', 'studies')}, {plural(inputs.patients, 'patient')}. "
         f"Run finished {run.finished:%Y-%m-%d %H:%M %Z}. Plan {view.record.plan.sha256[:16]} declared: "
         f"{run.plan_declared}."
     )
-    second = " SECOND GENERATION: sources were already lossy." if view.second_generation else ""
-    return [_wrapped(asked), _wrapped(ran + second), ""]
+    second = "SECOND GENERATION: sources were already lossy." if view.second_generation else ""
+    parts = [ran, delivered_line(view.record.delivered), second]
+    return [_wrapped(asked), _wrapped(" ".join(part for part in parts if part)), ""]
 
 
 def _outcomes(view: View) -> list[str]:
     """Proposed candidates by limit and outcome, those outside first."""
     record, lines = view.record, view.outcomes("proposed")
     if not lines:
-        return [f"Outcomes: {record.outcomes_text or NO_LIMITS}.", ""]
+        return [f"Outcomes: {(record.outcomes_text or NO_LIMITS).rstrip('.')}.", ""]
     groups: dict[tuple[object, ...], list[OutcomeEntry]] = {}
     for item in lines:
-        key = (item.limit, outcome_words(item), item.studies_within, item.studies, item.bound_text)
+        key = (item.limit, outcome_words(item), studies_words(item), item.bound_text)
         groups.setdefault(key, []).append(item)
     shown = [_wrapped(_outcome(same), "- ", "  ") for same in list(groups.values())[:OUTCOMES]]
     if len(groups) > OUTCOMES:
@@ -86,19 +93,16 @@ def _outcomes(view: View) -> list[str]:
 def _outcome(same: Sequence[OutcomeEntry]) -> str:
     """One limit with the candidates that share an outcome."""
     first = same[0]
-    unit = "" if first.unit == "1" else f" {first.unit}"
     mark = outcome_words(first).removeprefix(first.outcome)
     return (
-        f"{first.limit} ({first.side} {figure(first.bound)}{unit}): {first.outcome} with "
-        f"{joined([item.candidate for item in same])}, in {count(first.studies_within)} of {count(first.studies)} "
-        f"studies{mark}; {first.bound_text}"
+        f"{first.limit} ({first.side} {figure(first.bound, 12)}{unit_after(first.unit)}): {first.outcome} with "
+        f"{joined([item.candidate for item in same])}, {studies_words(first)}{mark}; {first.bound_text}"
     )
 
 
-def _exit(record: RecordDocument) -> str:
+def _exit(view: View) -> str:
     """Exit code and text."""
-    held = "Controls held." if record.controls_held else "Controls were not held."
-    return _wrapped(f"{held} Exit {record.exit_code}: {record.exit_text}") + "\n"
+    return _wrapped(f"{controls_line(view)} {exit_line(view)}") + "\n"
 
 
 def _cautions(record: RecordDocument) -> list[str]:

@@ -15,6 +15,7 @@ from safecheck.report.theme import (
     INK,
     MEDIUM,
     MID,
+    PAGE_HEIGHT,
     REGULAR,
     RULE,
     TEXT_WIDTH,
@@ -25,7 +26,7 @@ from safecheck.report.theme import (
     text_width,
 )
 
-__all__ = ["column_widths", "table_flowable"]
+__all__ = ["column_widths", "least_room", "table_flowable"]
 
 _SIZE, _HEAD_SIZE = 7.6, 7.3
 _PAD = 3.2
@@ -36,12 +37,19 @@ _SHORT = 62.0
 _STRONG = 2
 """Cells at the beginning of a strong row that stand in a heavier face."""
 _BLANK = 96.0
+_FEWEST = 3
 
 
 def table_flowable(table: Table) -> PlatypusTable:
-    """Lay out a table over the whole width of the text; its note stays with the last row."""
+    """Lay out a table over the whole width of the text: its caption repeats, its note stays with the last row."""
     over = any(column.over for column in table.columns)
-    heads = _head_rows(table.columns, over=over)
+    above = (
+        [[Paragraph(markup(table.caption), style("caption"))] + [""] * (len(table.columns) - 1)]
+        if table.caption
+        else []
+    )
+    top = len(above)
+    heads = [*above, *_head_rows(table.columns, over=over)]
     numbers = [column.number for column in table.columns]
     body = [_body_row(row, numbers) for row in table.rows]
     if table.note:
@@ -50,13 +58,28 @@ def table_flowable(table: Table) -> PlatypusTable:
         heads + body, colWidths=column_widths(table), repeatRows=len(heads), hAlign="LEFT", spaceAfter=6
     )
     commands = [
-        *_over_style(table.columns, over=over),
-        *_base_style(len(heads), len(table.rows), numbers),
+        *_over_style(table.columns, top, over=over),
+        *_base_style(top, len(heads), len(table.rows), numbers),
+        *_together(len(heads), len(heads) + len(body)),
+        *([("SPAN", (0, 0), (-1, 0)), ("BOTTOMPADDING", (0, 0), (-1, 0), 0)] if above else []),
         *_row_style(table.rows, len(heads)),
         *_note_style(len(heads) + len(table.rows), note=bool(table.note)),
     ]
     flowable.setStyle(TableStyle(commands))
     return flowable
+
+
+def _together(first: int, end: int) -> list[tuple[Any, ...]]:
+    """No page holds fewer than three rows of a table that parts."""
+    if end - first <= _FEWEST:
+        return [("NOSPLIT", (0, first), (0, end - 1))]
+    return [("NOSPLIT", (0, first), (0, first + _FEWEST - 1)), ("NOSPLIT", (0, end - _FEWEST), (0, end - 1))]
+
+
+def least_room(flowable: PlatypusTable, width: float = TEXT_WIDTH) -> float:
+    """Height in points that the heads and the first rows of a table need."""
+    flowable.wrap(width, PAGE_HEIGHT)
+    return float(sum(flowable._rowHeights[: flowable.repeatRows + _FEWEST]))
 
 
 def _note_style(row: int, *, note: bool) -> list[tuple[Any, ...]]:
@@ -172,7 +195,7 @@ def _least(table: Table, index: int, natural: float) -> float:
     return min(natural, max(longest, _head_width(column), _SHORT) + 2 * _PAD + 1)
 
 
-def _base_style(heads: int, rows: int, numbers: Sequence[bool]) -> list[tuple[Any, ...]]:
+def _base_style(top: int, heads: int, rows: int, numbers: Sequence[bool]) -> list[tuple[Any, ...]]:
     """Rules, fonts and paddings of every table."""
     commands: list[tuple[Any, ...]] = [
         ("FONT", (0, heads), (-1, -1), REGULAR, _SIZE, 10),
@@ -183,7 +206,7 @@ def _base_style(heads: int, rows: int, numbers: Sequence[bool]) -> list[tuple[An
         ("RIGHTPADDING", (0, 0), (-1, -1), _PAD),
         ("TOPPADDING", (0, 0), (-1, -1), 2.4),
         ("BOTTOMPADDING", (0, 0), (-1, -1), 2.8),
-        ("LINEABOVE", (0, 0), (-1, 0), 0.9, INK),
+        ("LINEABOVE", (0, top), (-1, top), 0.9, INK),
         ("LINEBELOW", (0, heads - 1), (-1, heads - 1), 0.5, INK),
         ("LINEBELOW", (0, heads), (-1, heads + rows - 1), 0.25, HAIR),
         ("LINEBELOW", (0, heads + rows - 1), (-1, heads + rows - 1), 0.5, RULE),
@@ -192,7 +215,7 @@ def _base_style(heads: int, rows: int, numbers: Sequence[bool]) -> list[tuple[An
     return commands
 
 
-def _over_style(columns: Sequence[Column], *, over: bool) -> list[tuple[Any, ...]]:
+def _over_style(columns: Sequence[Column], top: int, *, over: bool) -> list[tuple[Any, ...]]:
     """Join cells below a shared head, and join the two head rows elsewhere."""
     if not over:
         return []
@@ -201,13 +224,15 @@ def _over_style(columns: Sequence[Column], *, over: bool) -> list[tuple[Any, ...
     while start < len(columns):
         end = start
         if not columns[start].over:
-            commands.append(("SPAN", (start, 0), (start, 1)))
+            commands.append(("SPAN", (start, top), (start, top + 1)))
         else:
             while end + 1 < len(columns) and columns[end + 1].over == columns[start].over:
                 end += 1
-            commands += [("SPAN", (start, 0), (end, 0)), ("LINEBELOW", (start, 0), (end, 0), 0.35, MID)]
+            commands += [("SPAN", (start, top), (end, top)), ("LINEBELOW", (start, top), (end, top), 0.35, MID)]
             # White over the ends of the rule: neighbours that share a head stand apart.
-            commands += [("LINEAFTER", (edge, 0), (edge, 1), 6, WHITE) for edge in (start - 1, end) if edge >= 0]
+            commands += [
+                ("LINEAFTER", (edge, top), (edge, top + 1), 6, WHITE) for edge in (start - 1, end) if edge >= 0
+            ]
         start = end + 1
     return commands
 

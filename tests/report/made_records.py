@@ -44,9 +44,9 @@ CT = "CT, HEAD, thickness 2 to 3 mm, kernel H31s"
 CR = "CR, CHEST"
 UNITS = {"CT": "HU", "CR": "stored value", "MR": "rescaled, unit unspecified"}
 WINDOWS = {
-    "CT": ("brain (centre 40, width 80 HU)", "bone (centre 500, width 2000 HU)"),
-    "CR": ("as in the file (centre 2048, width 4096 stored value)",),
-    "MR": ("as in the file (centre 300, width 700 rescaled, unit unspecified)",),
+    "CT": ("brain (centre 40, width 80)", "bone (centre 500, width 2000)"),
+    "CR": ("file window 1 (centre 2048, width 4096)",),
+    "MR": ("file window 1 (centre 300, width 700)",),
 }
 
 _MEASURES: tuple[tuple[str, str, Any, float], ...] = (
@@ -335,10 +335,17 @@ def regions() -> list[RegionEntry]:
                 mean_after=36.18,
                 sd_before=4.61,
                 sd_after=4.61 - error * 0.1,
-                background="white matter",
+                background="r2",
+                contrast_before=6.1,
+                contrast_after=6.1 - error * 0.1,
+                contrast_kept_percent=100 - error,
+                contrast_kept_percent_p05=100 - 2 * error,
+                contrast_kept_percent_least=100 - 3 * error,
                 cnr_before=1.31,
                 cnr_after=1.31 + error * 0.02,
+                cnr_after_least=1.29,
                 noise_removed_percent=3.1 * error,
+                noise_removed_percent_largest=4.2 * error,
                 worst=a_place(6),
             )
         )
@@ -363,6 +370,9 @@ def delivered() -> DeliveredEntry:
     """Five pairs; header values as found."""
     return DeliveredEntry(
         pairs=61,
+        pairs_measured=56,
+        pairs_unchanged=2,
+        pairs_out_of_scope=4,
         originals_without_copy=2,
         copies_without_original=1,
         matched_by={"Source Image Sequence": 40, "series and instance number": 21},
@@ -519,7 +529,8 @@ def make_record(
         "regions": tuple(regions()),
         "regions_without_frame": ("cerebellum",),
         "delivered": delivered(),
-        "content_rules": {"CT body, version 1": 288, "frame minus padding, version 1": 24},
+        "content_rules": {"ct-air-1": 288, "padding-only-1": 24},
+        "content_reasons": {"ct-air-1 leaves under 5 % of the frame": 2},
         "notes": {"overlay bits cleared from the unused high bits": 3},
         "cautions": (*CAUTIONS, CAUTIONS_WHEN["many_limits"], *(() if held else (CAUTIONS_WHEN["controls"],))),
         "conditions": (Condition(code=10, text="a proposed candidate outside a declared limit"),) if outside else (),

@@ -4,6 +4,7 @@ from typing import Any
 
 import pytest
 
+from safecheck.errors import DossierError
 from safecheck.measures.catalogue import MEASURES
 from safecheck.record.document import RecordDocument
 from safecheck.report.blocks import (
@@ -21,9 +22,11 @@ from safecheck.report.blocks import (
 )
 from safecheck.report.content import report_of
 from safecheck.report.formulas import FORMULAS
-from safecheck.report.sections.view import View, view_of
+from safecheck.report.sections.view import View, view_of, window_words
 from safecheck.wording import CAUTIONS, CAUTIONS_WHEN, SHORT_CAUTION, lint
 from tests.report.made_records import CR, CT, make_record, make_run, outcomes, stratum_of
+
+FURTHER = "Further measures, all groups"
 
 
 def view(record: RecordDocument | None = None, **run: Any) -> View:
@@ -179,8 +182,9 @@ def test_every_column_of_figures_names_its_unit() -> None:
 
 def test_a_mean_of_contrast_never_stands_without_the_noise_removed() -> None:
     table = tables(section(report(), "Regions"))[1]
-    assert [column.over for column in table.columns].count("CNR") == 2
-    assert table.columns[-1].head == "Noise removed"
+    overs = [column.over for column in table.columns]
+    assert overs.count("CNR") == 3
+    assert overs[overs.index("CNR") + 3 :] == ["Noise removed", "Noise removed"]
 
 
 def test_curves_carry_spread_and_largest_of_each_candidate() -> None:
@@ -228,22 +232,73 @@ def test_the_plan_stands_as_read_and_the_key_by_its_short_hash() -> None:
     assert "7f3a90c1" in words(section(made, "What to keep, and review"))
 
 
-def test_a_window_of_the_plan_stands_with_its_centre_and_width() -> None:
+@pytest.mark.parametrize(
+    ("window", "shown"),
+    [
+        ("brain (centre 40, width 80)", "brain (centre 40, width 80 HU)"),
+        ("file window 1 (a table)", "file window 1 (a table)"),
+        ("file window 1", "file window 1"),
+    ],
+)
+def test_the_setting_of_a_window_stands_with_its_unit(window: str, shown: str) -> None:
+    assert window_words(window, "HU") == shown
+
+
+def test_two_figures_of_one_name_are_an_error_and_hide_nothing() -> None:
     record = make_record()
-    windows = [{"label": "brain", "centre": 40.0, "width": 80.0, "unit": "HU", "function": "LINEAR", "modality": ""}]
-    plan = record.plan.model_copy(update={"content": record.plan.content | {"windows": windows}})
-    seen = view(record.model_copy(update={"plan": plan}))
-    assert seen.window_words("brain") == "brain (centre 40, width 80 HU)"
-    assert seen.window_words("file window 1") == "file window 1"
+    twice = record.model_copy(update={"figures": (*record.figures, record.figures[0])})
+    with pytest.raises(DossierError, match="two entries for one candidate"):
+        view(twice)
 
 
-def test_further_measures_stand_in_groups_of_one_unit() -> None:
-    blocks = section(report(), f"Figures: {CT}")
-    further = [table for table in tables(blocks) if table.columns[0].head == "Measure"]
-    assert len(further) == 2
-    for table in further:
-        assert [row.cells[0] for row in table.rows if row.group] == ["in HU", "in %", "in dB", "in times", "in pixels"]
+def further_tables(made: Report, stratum: str = CT) -> list[Table]:
+    """Tables of further measures of one group, at the end of the record."""
+    blocks = section(made, FURTHER)
+    start = blocks.index(Heading(f"Further measures: {stratum}"))
+    ends = [index for index, block in enumerate(blocks) if isinstance(block, Heading) and index > start]
+    return tables(blocks[start : ends[0] if ends else None])
+
+
+def test_further_measures_stand_at_the_end_in_groups_of_one_unit() -> None:
+    made = report()
+    assert made.sections[-1].title == FURTHER
+    found = further_tables(made)
+    assert len(found) == 2
+    for table in found:
+        heads = [row.cells[0] for row in table.rows if row.group]
+        assert heads == ["in HU", "noise: SD kept in %, RMSE in times the noise SD", "in dB", "in pixels"]
         assert {len(row.cells) for row in table.rows if not row.group} == {len(table.columns)}
+
+
+def test_noise_kept_and_rmse_over_noise_stand_in_adjacent_rows() -> None:
+    for table in further_tables(report()):
+        names = [row.cells[0] for row in table.rows]
+        assert names.index("RMSE over noise SD") == names.index("Noise SD kept") + 1
+
+
+def test_no_head_names_a_unit_1_or_cuts_a_word() -> None:
+    made = report()
+    heads = [
+        f"{column.over}|{column.head}|{column.unit}"
+        for part in made.sections
+        for table in tables(part.blocks)
+        for column in table.columns
+    ]
+    groups = [
+        row.cells[0] for part in made.sections for table in tables(part.blocks) for row in table.rows if row.group
+    ]
+    assert [head for head in heads if head.endswith("|1") or "pct." in head] == []
+    assert [head for head in groups if head in ("plain numbers", "in times", "in 1")] == []
+
+
+def test_a_group_of_one_frame_has_one_value_of_each() -> None:
+    made = report(make_record(strata=(stratum_of(CT, "CT", 1),), limits=[]))
+    heads = [column.head for table in tables(section(made, f"Figures: {CT}")) for column in table.columns]
+    heads += [column.head for table in further_tables(made) for column in table.columns]
+    ledger = tables(section(made, "Ratio ledger"))[-1]
+    heads += [column.head for column in ledger.columns]
+    assert [head for head in heads if head in ("median", "95th percentile", "largest", "least", "worst")] == []
+    assert {len(row.cells) for row in ledger.rows} == {len(ledger.columns)}
 
 
 def test_the_worst_of_a_signed_measure_is_the_one_farther_from_zero() -> None:
@@ -253,8 +308,7 @@ def test_the_worst_of_a_signed_measure_is_the_one_farther_from_zero() -> None:
         for item in record.figures
     ]
     made = report(record.model_copy(update={"figures": tuple(moved)}))
-    further = [table for table in tables(section(made, f"Figures: {CT}")) if table.columns[0].head == "Measure"]
-    row = next(row for row in further[0].rows if row.cells[0] == "Mean error, content")
+    row = next(row for row in further_tables(made)[0].rows if row.cells[0] == "Mean error, content")
     assert all(float(cell.replace("\u2212", "-")) == -0.5 for cell in row.cells[2::2])
 
 
@@ -306,9 +360,6 @@ def test_frames_without_a_value_are_named_with_the_reason() -> None:
         item.model_copy(update=reason) if item.measure == "psnr_peak_bits_content_db" else item
         for item in record.figures
     ]
-    notes = [
-        table.note
-        for table in tables(section(report(record.model_copy(update={"figures": tuple(some)})), f"Figures: {CT}"))
-    ]
+    notes = [table.note for table in further_tables(report(record.model_copy(update={"figures": tuple(some)})))]
     says = "Some frames have no value of: PSNR, content, peak of stored bits (infinite: nothing changed)."
     assert sum(says in note for note in notes) == 2

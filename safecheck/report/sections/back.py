@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+import math
+from collections.abc import Iterator, Sequence
 from typing import Any
 
+from safecheck.record.document import CodecCheckEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Signatures, Table
-from safecheck.report.definitions import TERMS, definition_of
-from safecheck.report.numbers import count, rounded_time
+from safecheck.report.definitions import CONTENT_RULES, REGION_FIGURES, TERMS, definition_of
+from safecheck.report.numbers import NONE, count, rounded_time
 from safecheck.report.sections.view import View, dash, rest_sentence
 
 __all__ = ["definitions", "keeping", "plan", "signatures", "versions"]
@@ -31,9 +33,14 @@ def definitions(view: View) -> Section:
         known = definition_of(name)
         if known:
             rows.append(Row((f"{known.label} ({name})", known.formula, known.source)))
+    if record.regions:
+        rows += [Row(line) for line in REGION_FIGURES]
+    columns = (Column("Measure"), Column("Formula and domain"), Column("Source"))
     if rows:
-        columns = (Column("Measure"), Column("Formula and domain"), Column("Source"))
         blocks += [Heading("Measures"), Table(columns, tuple(rows))]
+    rules = tuple(Row((rule, CONTENT_RULES[rule])) for rule in record.content_rules if rule in CONTENT_RULES)
+    if rules:
+        blocks += [Heading("Content rules"), Table((Column("Rule"), Column("What is content")), rules)]
     return Section("Definitions", tuple(blocks))
 
 
@@ -47,7 +54,7 @@ def versions(view: View) -> Section:
                 item.codec,
                 f"{item.library} {item.version}".strip(),
                 "yes" if item.available else "no",
-                {None: "not a reversible codec", True: "yes", False: "NO"}[item.reversible_exact],
+                _exact(view, item),
                 dash(item.detail),
             )
         )
@@ -68,12 +75,30 @@ def versions(view: View) -> Section:
     ]
     if run.system:
         facts.insert(0, Row(("System", run.system)))
-    blocks: list[Block] = [Table((Column("Program or library"), Column("Version")), programs)]
+    heads = (Column("Program or library"), Column("Version"))
+    blocks: list[Block] = [Table(heads * 2, _two_by_two(programs))]
     if checks:
         blocks += [Heading("Selftest of the codecs"), Table(columns, checks)]
     blocks += [Heading("The run"), Table((Column("What"), Column("Value")), tuple(facts))]
     blocks += _tables(view)
     return Section("Versions and selftest", tuple(blocks))
+
+
+def _exact(view: View, check: CodecCheckEntry) -> str:
+    """Whether the reversible form gave back every sample: in the selftest, else in this run's control, else a dash."""
+    if check.reversible_exact is not None:
+        return "yes" if check.reversible_exact else "NO"
+    found = [item for item in view.record.controls if (item.control, item.codec) == ("reversible", check.codec)]
+    if not found:
+        return NONE
+    return "NO, in this run's control" if any(item.not_held for item in found) else "yes, in this run's control"
+
+
+def _two_by_two(rows: Sequence[Row]) -> tuple[Row, ...]:
+    """Rows set in two halves side by side."""
+    half = math.ceil(len(rows) / 2)
+    right = [*rows[half:], *[Row(("", ""))] * (2 * half - len(rows))]
+    return tuple(Row((*one.cells, *other.cells)) for one, other in zip(rows[:half], right, strict=True))
 
 
 def _tables(view: View) -> list[Block]:
@@ -91,8 +116,7 @@ def plan(view: View) -> Section:
     lines = [Row((path, value)) for path, value in _flat("", entry.content)]
     blocks: tuple[Block, ...] = (
         Prose(
-            f"Read from the {entry.source}. Keys left out stand with their default. "
-            f"SHA-256 of the plan: {entry.sha256}",
+            f"Read from the {entry.source}. Keys that are empty are not shown. SHA-256 of the plan: {entry.sha256}",
             "note",
         ),
         Table(
@@ -106,27 +130,34 @@ def plan(view: View) -> Section:
 
 def _flat(path: str, value: Any) -> Iterator[tuple[str, str]]:  # noqa: ANN401 - the plan's own values
     """Yield (dotted path, text): a line per value, but one line only for each table of a list."""
-    if isinstance(value, dict) and value:
+    if _is_empty(value):
+        return
+    if isinstance(value, dict):
         for key, inner in value.items():
             yield from _flat(f"{path}.{key}" if path else str(key), inner)
-    elif isinstance(value, list | tuple) and value and isinstance(value[0], dict):
+    elif isinstance(value, list | tuple) and isinstance(value[0], dict):
         for index, table in enumerate(value):
             yield f"{path}[{index}]", "; ".join(f"{key} {text}" for key, text in _flat("", table))
-    elif isinstance(value, list | tuple) and value:
+    elif isinstance(value, list | tuple):
         yield path, ", ".join(_plain(inner) for inner in value)
     else:
         yield path, _plain(value)
 
 
+def _is_empty(value: Any) -> bool:  # noqa: ANN401 - the plan's own values
+    """Whether a key says nothing: none, an empty text or list, or a table of such keys."""
+    if isinstance(value, dict):
+        return all(_is_empty(inner) for inner in value.values())
+    return value is None or value in ("", [], ())
+
+
 def _plain(value: Any) -> str:  # noqa: ANN401 - the plan's own values
     """A value as the plan writes it."""
-    if value is None:
-        return "none"
     if isinstance(value, bool):
         return str(value).lower()
     if isinstance(value, float):
         return f"{value:g}"
-    return str(value) if value not in ("", [], (), {}) else "empty"
+    return str(value)
 
 
 def keeping(view: View) -> Section:
@@ -149,7 +180,7 @@ def keeping(view: View) -> Section:
         Column("Until", blank=True),
     )
     rows = tuple(Row((what, which, "", "")) for what, which in keep)
-    return Section("What to keep, and review", (Table(columns, rows),), new_page=True)
+    return Section("What to keep, and review", (Table(columns, rows),))
 
 
 def signatures(view: View) -> Section:
@@ -158,4 +189,4 @@ def signatures(view: View) -> Section:
         "Each signatory states an opinion of their own. A signature here neither alters the figures nor is asked for "
         f"by this record, whose hash is {view.record_sha256[:16]}…"
     )
-    return Section("Opinions", (Prose(text, "note"), Signatures("Opinion of the signatory", ROLES)), room_mm=160)
+    return Section("Opinions", (Prose(text, "note"), Signatures("Opinion of the signatory", ROLES)), room_mm=134)

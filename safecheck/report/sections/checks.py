@@ -2,21 +2,27 @@
 
 from __future__ import annotations
 
+import re
+from collections import Counter
+from collections.abc import Mapping, Sequence
 from typing import Literal
 
-from safecheck.record.document import ControlEntry, CountEntry, InputCounts
+from safecheck.record.document import ControlEntry, CountEntry, InputCounts, RecordDocument
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Table
-from safecheck.report.numbers import count, plural
+from safecheck.report.numbers import count, joined, plural
+from safecheck.report.sections.front import controls_line
 from safecheck.report.sections.view import View, dash, place_words
 from safecheck.wording import RUN_INVALID
 
-__all__ = ["controls", "left_out"]
+__all__ = ["controls", "left_out", "not_run"]
 
 
 def controls(view: View) -> Section:
     """The section Controls."""
     record = view.record
-    says = "Controls held." if record.controls_held else f"{RUN_INVALID}. No figure of this run may be relied on."
+    says = (
+        f"{RUN_INVALID}. No figure of this run may be relied on." if not record.controls_held else controls_line(view)
+    )
     columns = (
         Column("Control"),
         Column("Codec"),
@@ -27,8 +33,7 @@ def controls(view: View) -> Section:
     )
     rows = tuple(
         Row(
-            (item.control, dash(item.codec), item.text, *(count(n) for n in (item.frames, item.held, item.not_held))),
-            strong=bool(item.not_held),
+            (*_names(item), item.text, *map(count, (item.frames, item.held, item.not_held))), strong=bool(item.not_held)
         )
         for item in record.controls
     )
@@ -37,6 +42,11 @@ def controls(view: View) -> Section:
         blocks.append(Table(columns, rows))
     blocks += [Prose(_not_held(item)) for item in record.controls if item.not_held]
     return Section("Controls", tuple(blocks))
+
+
+def _names(item: ControlEntry) -> tuple[str, str]:
+    """Control and its codec; a displacement is planted without any."""
+    return item.control, dash(item.codec if item.control != "planted" else "")
 
 
 def _not_held(item: ControlEntry) -> str:
@@ -62,11 +72,7 @@ def left_out(view: View) -> Section:
             Prose(_sum_line("Delivered copies", counts), "strong"),
             *_disagreement(record.left_out, "delivered", excluded, refused),
         ]
-    blocks += _reasons(record.left_out)
-    if inputs.frames_refused:
-        blocks.append(
-            Prose(f"Within files assessed, {plural(inputs.frames_refused, 'frame was', 'frames were')} refused.")
-        )
+    blocks += [Prose(_frame_line(record), "strong"), *_reasons(record.left_out)]
     if inputs.patient_unknown_studies:
         unknown = plural(inputs.patient_unknown_studies, "study names", "studies name")
         blocks.append(Prose(f"{unknown} no patient; each counts as a patient of its own."))
@@ -87,6 +93,19 @@ def _sum_line(name: str, counts: tuple[int, int, int, int]) -> str:
         f"{count(refused)} refused"
     )
     return f"{line}." if files == assessed + excluded + refused else f"{line}: THE SUMS DO NOT AGREE."
+
+
+def _frame_line(record: RecordDocument) -> str:
+    """Frames assessed and refused, those inside files otherwise assessed apart."""
+    refused = record.inputs.frames_refused
+    inside = sum(item.frames for item in record.left_out if item.side == "original")
+    line = f"Frames of originals: {count(record.inputs.frames_assessed)} assessed, {count(refused)} refused"
+    if not refused and not inside:
+        return f"{line}."
+    line = (
+        f"{line} = {count(inside)} inside files otherwise assessed + {count(refused - inside)} of files refused whole"
+    )
+    return f"{line}." if refused >= inside else f"{line}: THE SUMS DO NOT AGREE."
 
 
 def _disagreement(
@@ -110,22 +129,83 @@ def _reasons(entries: tuple[CountEntry, ...]) -> list[Block]:
     """Files by reason."""
     if not entries:
         return [Prose("No file was left out.")]
-    columns = (Column("Side"), Column("Status"), Column("Code"), Column("Reason"), Column("Files", number=True))
-    rows = tuple(Row((item.side, item.status, item.reason, item.sentence, count(item.files))) for item in entries)
-    note = "Excluded: by rule no subject of an assessment. Refused: its pixels would be read on a doubtful path."
-    return [Table(columns, rows, note=note)]
+    columns = (
+        Column("Side"),
+        Column("Status"),
+        Column("Code"),
+        Column("Reason"),
+        Column("Files", number=True),
+        Column("Frames of other files", number=True),
+    )
+    rows = [
+        Row((item.side, item.status, item.reason, item.sentence, count(item.files), count(item.frames)))
+        for item in entries
+    ]
+    files, frames = sum(item.files for item in entries), sum(item.frames for item in entries)
+    rows.append(Row(("Sum", "", "", "", count(files), count(frames)), strong=True))
+    note = (
+        "Excluded: by rule no subject of an assessment. Refused: its pixels would be read on a doubtful path. Files "
+        "were left out whole; frames of other files were refused while the rest of the file was assessed."
+    )
+    return [Table(columns, tuple(rows), note=note)]
 
 
 def _noticed(view: View) -> list[Block]:
-    """Content rules applied, and what preflight set right."""
-    rules = sorted(view.record.content_rules.items())
-    notes = sorted(view.record.notes.items())
-    blocks: list[Block] = []
-    for head, first, entries in (
-        ("Content rules applied", "Rule", rules),
-        ("Noticed and set right before measuring", "What was noticed", notes),
-    ):
-        if entries:
-            rows = tuple(Row((text, count(frames))) for text, frames in entries)
-            blocks += [Heading(head), Table((Column(first), Column("Frames", number=True)), rows)]
-    return blocks
+    """What preflight set right, what was not run, and the content rules applied."""
+    record = view.record
+    frames = Column("Frames", number=True)
+    idle = not_run(record.notes, [item.candidate for item in record.candidates])
+    noticed = {text: number for text, number in record.notes.items() if not _parts_of(text)}
+    parts: tuple[tuple[str, tuple[Column, ...], list[Row]], ...] = (
+        (
+            "Noticed and set right before measuring",
+            (Column("What was noticed"), frames),
+            [Row((text, count(number))) for text, number in sorted(noticed.items())],
+        ),
+        (
+            "Not run",
+            (Column("Why"), Column("Candidates"), frames),
+            [Row((reason, joined(names), count(number))) for reason, names, number in idle],
+        ),
+        (
+            "Content rules applied",
+            (Column("Rule, explained under Definitions"), frames),
+            [Row((rule, count(number))) for rule, number in sorted(record.content_rules.items())],
+        ),
+        (
+            "Why a modality's own content rule gave way to padding-only-1",
+            (Column("Reason"), frames),
+            [Row((text, count(number))) for text, number in sorted(record.content_reasons.items())],
+        ),
+    )
+    return [block for head, columns, rows in parts if rows for block in (Heading(head), Table(columns, tuple(rows)))]
+
+
+_NOT_RUN = re.compile(r"(?P<name>.+?) not run: (?P<reason>.+)")
+
+
+def _parts_of(note: str) -> tuple[str, str] | None:
+    """Candidate and reason of a note that says a candidate was not run; None of any other note."""
+    found = _NOT_RUN.fullmatch(note)
+    return (found["name"], found["reason"]) if found else None
+
+
+def not_run(notes: Mapping[str, int], order: Sequence[str]) -> list[tuple[str, list[str], int]]:
+    """Pool what was not run: reason without the sizes of frames, candidates, and frames of each of them.
+
+    Candidates that share a reason and a number of frames share a line.
+    """
+    pooled: Counter[tuple[str, str]] = Counter()
+    for text, frames in notes.items():
+        found = _parts_of(text)
+        if found:
+            reason = re.sub(r"\b\d+ ?[x×] ?\d+ pixels\b", "size of the frame", found[1])
+            pooled[reason, found[0]] += frames
+    lines: dict[tuple[str, int], list[str]] = {}
+    for (reason, name), frames in pooled.items():
+        lines.setdefault((reason, frames), []).append(name)
+    rank = {name: index for index, name in enumerate(order)}
+    return [
+        (reason, sorted(names, key=lambda name: (rank.get(name, len(rank)), name)), frames)
+        for (reason, frames), names in sorted(lines.items())
+    ]

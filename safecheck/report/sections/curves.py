@@ -10,7 +10,7 @@ from safecheck.report.definitions import label_of
 from safecheck.report.numbers import figure
 from safecheck.report.sections.view import View
 
-__all__ = ["FAR", "beyond", "curves"]
+__all__ = ["FAR", "beyond", "curves", "left_off"]
 
 FAR = 3.0
 """Delivered copies above this many times the largest ratio of the candidates are named below the charts instead."""
@@ -31,6 +31,12 @@ def curves(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntr
             title, bounds = label_of(measure), _bounds(view, stratum, measure)
             charts.append(Chart(title, "Achieved ratio, to 1", stratum.unit, drawn, bounds))
     return charts
+
+
+def left_off(charts: Sequence[Chart]) -> str:
+    """Name the declared limits that lie too far above the values to be drawn."""
+    far = [f"{bound.text} of {chart.title}" for chart in charts for bound in chart.far_bounds]
+    return f" Above the charts: {'; '.join(far)}." if far else ""
 
 
 def _is_far(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry], item: CandidateEntry) -> bool:
@@ -74,13 +80,22 @@ def _point(view: View, stratum: str, candidate: str, measure: str) -> Point | No
 
 
 def _bounds(view: View, stratum: StratumEntry, measure: str) -> tuple[Bound, ...]:
-    """Declared upper limits on the measure that reach this group's values."""
+    """Declared upper limits on the measure that speak of this group's frames."""
     found = {
-        item.limit: Bound(item.bound, f"declared limit {item.bound:g}")
+        item.limit: Bound(item.bound, f"declared limit {item.bound:g}: {item.limit}")
         for item in view.record.outcomes
-        if item.measure == measure
-        and item.side == "at most"
-        and item.unit == stratum.unit
-        and item.outcome != "not evaluated"
+        if item.measure == measure and item.side == "at most" and item.unit == stratum.unit
     }
-    return tuple(found.values()) if len(found) == 1 else ()
+    speaking = _limits_of(view, stratum)
+    return tuple(bound for name, bound in found.items() if name in speaking)
+
+
+def _limits_of(view: View, stratum: StratumEntry) -> set[str]:
+    """Names of the plan's limits whose scope, in modality and body part, takes in this group."""
+    limits = view.record.plan.content.get("limits")
+    parts = stratum.stratum.split(", ")
+    return {
+        str(item.get("name"))
+        for item in (limits if isinstance(limits, list | tuple) else ())
+        if item.get("modality") in (None, "", stratum.modality) and (item.get("body_part") or parts[0]) in parts
+    }

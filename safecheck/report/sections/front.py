@@ -6,14 +6,25 @@ from collections import Counter
 from collections.abc import Sequence
 from typing import Any
 
-from safecheck.record.document import CandidateEntry, OutcomeEntry
+from safecheck.record.document import CandidateEntry, DeliveredEntry, OutcomeEntry
 from safecheck.report.blocks import Block, Column, Contents, Facts, Heading, Numbered, Prose, Row, Table, Title
 from safecheck.report.definitions import label_of
-from safecheck.report.numbers import bytes_text, count, figure, joined, plural, rounded_time
+from safecheck.report.numbers import bytes_text, count, figure, joined, plural, rounded_time, unit_after
 from safecheck.report.sections.view import View
 from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, SHORT_CAUTION
 
-__all__ = ["front", "limit_words", "outcome_words", "ratio_groups"]
+__all__ = [
+    "candidate_lines",
+    "controls_line",
+    "delivered_line",
+    "exit_line",
+    "front",
+    "limit_words",
+    "outcome_words",
+    "ratio_groups",
+    "refused_frames",
+    "studies_words",
+]
 
 ROWS_ON_FIRST_PAGE = 22
 """Rows of the table of outcomes; those outside come first, so that none of them is cut for one within."""
@@ -52,13 +63,22 @@ def _asked(view: View) -> tuple[str, ...]:
             f"{change.get('compressed_when')}."
         )
     lines.append(_sample_line(content.get("sample")))
-    proposed = [item for item in view.candidates if item.status == "proposed"]
-    context = [item for item in view.candidates if item.status == "context"]
-    lines.append(f"Proposed: {joined(ratio_groups(proposed)) or 'nothing'}.")
-    if context:
-        lines.append(f"For context: {joined(ratio_groups(context))}.")
-    lines.append(_plan_line(view))
+    lines += [*candidate_lines(view), _plan_line(view)]
     return tuple(line for line in lines if line)
+
+
+def candidate_lines(view: View) -> tuple[str, ...]:
+    """What was proposed, what stands for context, and what of the plan was run on no frame."""
+    run = [item for item in view.candidates if item.frames]
+    proposed = joined(ratio_groups([item for item in run if item.status == "proposed"]))
+    context = joined(ratio_groups([item for item in run if item.status == "context"]))
+    idle = joined(ratio_groups([item for item in view.candidates if not item.frames]))
+    lines = (
+        f"Proposed: {proposed}." if proposed else "",
+        f"For context: {context}." if context else "",
+        f"In the plan, but run on no frame: {idle}." if idle else "",
+    )
+    return tuple(line for line in lines if line) or ("Proposed: nothing.",)
 
 
 def _sample_line(sample: Any) -> str:  # noqa: ANN401 - a table of the plan as read
@@ -107,11 +127,12 @@ def _run(view: View) -> tuple[str, ...]:
     images = (
         f"{plural(inputs.frames_assessed, 'frame')} of {plural(inputs.series, 'series', 'series')}, "
         f"{plural(inputs.studies, 'study', 'studies')} and {plural(inputs.patients, 'patient')}, in "
-        f"{plural(len(record.strata), 'group')} of like images ({bytes_text(total)} as they lie in the archive)."
+        f"{plural(len(record.strata), 'group')} of like images ({bytes_text(total)} as they lie in the archive)"
+        f"{refused_frames(view)}."
     )
-    delivered = record.delivered
-    copies = f"{plural(delivered.pairs, 'delivered copy', 'delivered copies')} matched." if delivered else ""
-    held = "Controls held." if record.controls_held else "CONTROLS WERE NOT HELD: the run is invalid."
+    if not view.ran:
+        images = f"No frame was assessed{refused_frames(view)}."
+    copies, held = delivered_line(record.delivered), controls_line(view)
     time = f"{plural(run.workers, 'worker')}, {rounded_time(run.wall_time.total_seconds())}."
     if run.sessions > 1:
         time = f"{time} Stopped and resumed {plural(run.sessions - 1, 'time')}."
@@ -119,16 +140,54 @@ def _run(view: View) -> tuple[str, ...]:
     return tuple(line for line in lines if line)
 
 
+def refused_frames(view: View) -> str:
+    """'; 3 frames refused', or nothing."""
+    number = view.record.inputs.frames_refused
+    return f"; {plural(number, 'frame')} refused" if number else ""
+
+
+def controls_line(view: View) -> str:
+    """Whether the controls held; without frames none was run."""
+    if not view.record.controls_held:
+        return "CONTROLS WERE NOT HELD: the run is invalid."
+    return "Controls held." if view.ran else "No control was run."
+
+
+def delivered_line(found: DeliveredEntry | None) -> str:
+    """How many delivered copies were matched and measured; nothing where none were handed in."""
+    if found is None:
+        return ""
+    if not found.pairs_measured:
+        return f"Delivered copies were handed in, but NONE WAS MEASURED ({count(found.pairs)} matched to an original)."
+    return (
+        f"{plural(found.pairs, 'delivered copy', 'delivered copies')} matched to an original, "
+        f"{count(found.pairs_measured)} measured."
+    )
+
+
+def exit_line(view: View) -> str:
+    """The exit code in words; without limits that comes first, and no word on limits after it."""
+    record = view.record
+    if not view.without_limits:
+        return f"Exit {record.exit_code}: {record.exit_text}"
+    text = record.exit_text.removesuffix(f", {NO_LIMITS}").removesuffix(_OF_LIMITS)
+    return f"{_sentence_case(NO_LIMITS)}. Exit {record.exit_code}: {text}"
+
+
+_OF_LIMITS = ", no proposed candidate outside a declared limit"
+
+
 def _outcomes(view: View) -> tuple[Block, ...]:
     """The exit text, then one line per limit and proposed candidate."""
     record = view.record
     blocks: list[Block] = [Heading("Outcomes"), Prose(SHORT_CAUTION, "caution")]
-    blocks.append(Prose(f"Exit {record.exit_code}: {record.exit_text}", "outcome"))
+    blocks.append(Prose(exit_line(view), "outcome"))
     more = [item for item in record.conditions if item.code != record.exit_code]
     if more:
         also = "; ".join(f"{item.code}, {item.text}" for item in more)
         blocks.append(Prose(f"These hold as well: {also}.", "note"))
-    blocks.append(Prose(_sentence_case(record.outcomes_text or NO_LIMITS) + ".", "strong"))
+    if not view.without_limits:
+        blocks.append(Prose(_sentence_case(record.outcomes_text) + ".", "strong"))
     lines = view.outcomes("proposed")
     if lines:
         blocks.append(_outcome_table(lines))
@@ -145,7 +204,7 @@ def _outcome_table(lines: Sequence[OutcomeEntry]) -> Table:
     columns = (
         Column("Limit and candidate"),
         Column("Outcome"),
-        Column("Studies within"),
+        Column("Studies"),
         Column("Bound on patients not assessed"),
     )
     shown = _shown(lines)
@@ -166,15 +225,26 @@ def _shown(lines: Sequence[OutcomeEntry]) -> Sequence[OutcomeEntry]:
 
 def limit_words(item: OutcomeEntry) -> str:
     """A limit in one line."""
-    bound = f"{figure(item.bound)} {item.unit}".removesuffix(" 1")
+    bound = f"{figure(item.bound, 12)}{unit_after(item.unit)}"
     return f"{item.limit}: {label_of(item.measure)} {item.side} {bound}, {item.scope}"
+
+
+def studies_words(item: OutcomeEntry) -> str:
+    """'within in 28 of 30 studies, 2 not evaluated, 5 frames not taken by the codec'."""
+    if not item.studies:
+        return "no study in scope"
+    parts = [f"within in {count(item.studies_within)} of {plural(item.studies, 'study', 'studies')}"]
+    if item.studies_not_evaluated:
+        parts.append(f"{count(item.studies_not_evaluated)} not evaluated")
+    if item.frames_not_run:
+        parts.append(f"{plural(item.frames_not_run, 'frame')} not taken by the codec")
+    return ", ".join(parts)
 
 
 def _outcome_row(item: OutcomeEntry) -> Row:
     """One candidate under a limit."""
-    studies = f"{count(item.studies_within)} of {count(item.studies)}"
     outside = item.outcome == "outside declared limits"
-    return Row((item.candidate, outcome_words(item), studies, item.bound_text), strong=outside)
+    return Row((item.candidate, outcome_words(item), studies_words(item), item.bound_text), strong=outside)
 
 
 def _rest(cut: Sequence[OutcomeEntry]) -> str:
@@ -188,7 +258,7 @@ def _rest(cut: Sequence[OutcomeEntry]) -> str:
 
 def outcome_words(item: OutcomeEntry) -> str:
     """The outcome, with the mark of a limit that tells nothing."""
-    if item.over_compressed_also_within:
+    if item.over_compressed_also_within is True:
         return f"{item.outcome}; does not tell the over-compressed control apart"
     return item.outcome
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 from safecheck.record.document import CandidateEntry, LedgerEntry, StratumEntry
 from safecheck.report.blocks import Bar, Bars, Block, Column, Heading, Prose, Row, Section, Table
@@ -76,8 +77,17 @@ def _of_stratum(view: View, stratum: StratumEntry) -> list[Block]:
         aligned([item.times_smaller_than_now for item in entries], 2),
         strict=True,
     )
-    blocks.append(Table(_COLUMNS, tuple(Row(row) for row in cells), note=_reversible(entries)))
-    return blocks
+    table = Table(_COLUMNS, tuple(Row(row) for row in cells), note=_reversible(entries))
+    return [*blocks, _of_one(table) if stratum.frames == 1 else table]
+
+
+def _of_one(table: Table) -> Table:
+    """The table of a single frame, whose total, least and largest ratio are one."""
+    kept = [index for index, column in enumerate(table.columns) if column.head not in ("Frames", "least", "largest")]
+    columns = [table.columns[index] for index in kept]
+    columns = [replace(column, head=column.over, over="") if column.head == "total" else column for column in columns]
+    rows = tuple(Row(tuple(row.cells[index] for index in kept)) for row in table.rows)
+    return replace(table, columns=tuple(columns), rows=rows)
 
 
 def _starred(candidates: Sequence[CandidateEntry]) -> list[str]:
@@ -116,9 +126,11 @@ def _reached(view: View) -> list[Block]:
         Row((item.candidate, reached, count(frames), count(item.frames)))
         for item in view.candidates
         for reached, frames in sorted(item.reached.items())
-        if reached != "asked" and item.ratio_asked is not None
+        if reached != "asked" and item.ratio_asked is not None and frames
     ]
     if not rows:
+        if not view.ran or not any(item.frames and item.ratio_asked for item in view.candidates):
+            return []
         return [Prose("Every frame reached the ratio that was asked for.", "note")]
     columns = (
         Column("Candidate"),

@@ -2,21 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from pathlib import Path
 
 import numpy as np
 
 from safecheck.record.crops import read_crop
-from safecheck.record.document import WorstPlaceEntry
+from safecheck.record.document import WorstPlaceEntry, WorstStudyEntry
 from safecheck.report.blocks import Block, Column, Heading, Pictures, PlaceCard, Places, Prose, Row, Section, Table
 from safecheck.report.definitions import label_of
-from safecheck.report.numbers import NONE, count, figure
+from safecheck.report.numbers import NONE, aligned, count, figure
 from safecheck.report.sections.view import View, place_short, rest_sentence
 
 __all__ = ["places"]
 
-CARDS = 30
+CARDS = 20
 STUDIES = 20
 _TEXT = "No picture: the frame may carry text."
 
@@ -33,6 +33,8 @@ def places(view: View) -> Section:
         "the small square the patch; the figures at its edges are the first row and column of the patch, from 0, rows "
         "downwards and columns to the right."
     )
+    if any(card.pictures for card in cards):
+        intro += " The scale of the difference is another on each card: its ends stand below the picture."
     blocks: list[Block] = [Prose(intro, "note"), Places(cards)]
     if rest:
         blocks.append(Prose(rest, "note"))
@@ -45,32 +47,42 @@ def _studies(view: View) -> list[Block]:
     if not entries:
         return []
     shown = entries[:STUDIES]
+    over = label_of(shown[0].measure)
     columns = (
         Column("Candidate"),
-        Column("Group of like images"),
         Column("Study"),
         Column("Frames", number=True),
-        Column("median", number=True, over=label_of(shown[0].measure)),
-        Column("worst frame", number=True, over=label_of(shown[0].measure)),
-        Column("Unit"),
+        Column("median", number=True, over=over),
+        Column("worst frame", number=True, over=over),
         Column("Worst frame"),
         Column("Median of its series", number=True),
     )
-    cells = zip(
-        [item.candidate for item in shown],
-        [item.stratum for item in shown],
-        [item.worst.study for item in shown],
-        [count(item.frames) for item in shown],
-        [figure(item.median) for item in shown],
-        [figure(item.largest) for item in shown],
-        [item.unit for item in shown],
-        [f"series {_index(item.worst.series_number)}, {place_short(item.worst)}" for item in shown],
-        [figure(item.worst_series_median) for item in shown],
-        strict=True,
-    )
+    rows: list[Row] = []
+    for name, unit in dict.fromkeys((item.stratum, item.unit) for item in shown):
+        same = [item for item in shown if (item.stratum, item.unit) == (name, unit)]
+        rows += [Row((f"{name}, in {unit}",), group=True), *_rows_of_studies(same)]
     note = rest_sentence(len(shown), len(entries), "all stand in record.json")
-    table = Table(columns, tuple(Row(row) for row in cells), note=note)
+    table = Table(columns, tuple(rows), note=note)
     return [Heading("Worst studies, by their worst frame"), table, Heading("Worst patches")]
+
+
+def _rows_of_studies(same: Sequence[WorstStudyEntry]) -> list[Row]:
+    """Studies of one group."""
+    flat = aligned([value for item in same for value in (item.median, item.largest, item.worst_series_median)])
+    return [
+        Row(
+            (
+                item.candidate,
+                item.worst.study,
+                count(item.frames),
+                flat[3 * index],
+                flat[3 * index + 1],
+                f"series {_index(item.worst.series_number)}, {place_short(item.worst)}",
+                flat[3 * index + 2],
+            )
+        )
+        for index, item in enumerate(same)
+    ]
 
 
 def _order(view: View) -> Callable[[WorstPlaceEntry], tuple[int, bool, int, str]]:
@@ -95,7 +107,6 @@ def _card(entry: WorstPlaceEntry, crops: Path | None) -> PlaceCard:
     series = NONE if place.series_number is None else count(place.series_number)
     image = NONE if place.instance_number is None else count(place.instance_number)
     lines = [
-        ("Group", entry.stratum),
         ("Patient", place.patient),
         ("Study", place.study),
         ("Series, image, frame", f"{series}, {image}, {count(place.frame)}"),
@@ -108,7 +119,7 @@ def _card(entry: WorstPlaceEntry, crops: Path | None) -> PlaceCard:
     hidden = entry.may_show_text
     pictures = _pictures(crops, entry) if crops is not None and entry.crop and not hidden else None
     return PlaceCard(
-        head=f"{entry.candidate}, place\u00a0{entry.rank}",
+        head=f"{entry.stratum}: {entry.candidate}, place\u00a0{entry.rank}",
         value=figure(entry.value),
         unit=entry.unit,
         measure=label_of(entry.measure),

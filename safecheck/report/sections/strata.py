@@ -2,36 +2,31 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 
-from safecheck.measures.catalogue import MEASURES
-from safecheck.record.document import CandidateEntry, FigureEntry, StratumEntry
+from safecheck.record.document import CandidateEntry, StratumEntry
 from safecheck.report.blocks import (
     Block,
     Charts,
     Column,
-    Heading,
     Prose,
     Row,
     Section,
     Table,
 )
 from safecheck.report.definitions import label_of
-from safecheck.report.numbers import NONE, aligned, count
-from safecheck.report.sections.curves import beyond, curves
+from safecheck.report.numbers import NONE, aligned, count, joined
+from safecheck.report.sections.curves import beyond, curves, left_off
 from safecheck.report.sections.view import View, names_with_status, rest_sentence, stratum_line
+from safecheck.report.sections.windows import WINDOW_MEASURES, heads, part_of, windows
 from safecheck.wording import SHORT_CAUTION
 
-__all__ = ["strata"]
+__all__ = ["MAIN_MEASURES", "STRATA_IN_DETAIL", "strata"]
 
 STRATA_IN_DETAIL = 24
-PER_TABLE = 5
-"""Candidates per table of further measures: two columns each."""
-
-_SHORT_UNIT = 8
 _MAIN = ("rmse_content", "max_content", "worst_patch_rmse")
-_WINDOW = ("ssim", "changed_5_levels_percent")
+MAIN_MEASURES = (*_MAIN, *WINDOW_MEASURES)
+"""Measures that stand with their group; all others stand at the end of the record."""
 
 
 def strata(view: View) -> tuple[Section, ...]:
@@ -87,28 +82,44 @@ def _detail(view: View, stratum: StratumEntry) -> Section:
     blocks: list[Block] = [Prose(stratum_line(stratum)), Prose(SHORT_CAUTION, "caution")]
     if not candidates:
         return Section(title, (*blocks, Prose("No candidate has figures in this group.")))
-    charts = tuple(curves(view, stratum, candidates))
+    blocks += _charts(view, stratum, candidates)
+    blocks += [_errors(view, stratum, candidates), *windows(view, stratum, candidates)]
+    return Section(title, tuple(blocks), together=True)
+
+
+def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Block]:
+    """Curves, or a sentence where nothing changed."""
+    found = curves(view, stratum, candidates)
+    still = [chart.title for chart in found if not chart.highest]
+    charts = tuple(chart for chart in found if chart.highest)
+    blocks: list[Block] = []
     if charts:
-        caption = (
-            "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio "
-            "that its candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. "
-            "Curves stand slightly apart, so that bars do not hide each other."
+        spread = (
+            "mark, the value of the one frame"
+            if stratum.frames == 1
+            else "over frames: mark, median; bar, 5th to 95th percentile; short line, largest"
         )
-        blocks.append(Charts(charts, f"{caption}{beyond(view, stratum, candidates)}"))
-    blocks += [_errors(view, stratum, candidates), *_windows(view, stratum, candidates)]
-    blocks += _further(view, stratum, candidates)
-    return Section(title, tuple(blocks), room_mm=125)
+        caption = (
+            f"Charts, {spread}. Each at the median ratio that its candidate reached, on the bits-stored basis; the axis"
+            " of ratios is logarithmic. Curves stand slightly apart, so that they do not hide each other."
+        )
+        blocks.append(Charts(charts, f"{caption}{left_off(charts)}{beyond(view, stratum, candidates)}"))
+    if still:
+        blocks.append(Prose(f"No chart of {joined(still)}: it is 0 with every candidate.", "note"))
+    return blocks
 
 
 def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
     """RMSE, maximum and worst patch beside the ratio that was reached."""
+    if stratum.frames == 1:
+        return _errors_of_one(view, stratum, candidates)
     columns = (
         Column("Candidate"),
         Column("Frames", number=True),
-        *_heads("Achieved ratio, bits stored", "to 1", "median", "least"),
-        *_heads("RMSE, content", stratum.unit, "median", "95th\u00a0pct.", "largest"),
-        *_heads("Largest error, content", stratum.unit, "median", "largest"),
-        *_heads("RMSE, worst patch 8×8", stratum.unit, "median", "largest"),
+        *heads("Achieved ratio, bits stored", "to 1", "median", "least"),
+        *heads("RMSE, content", stratum.unit, "median", "95th percentile", "largest"),
+        *heads("Largest error, content", stratum.unit, "median", "largest"),
+        *heads("RMSE, worst patch 8×8", stratum.unit, "median", "largest"),
     )
     ledgers = [view.ledger.get((item.candidate, stratum.stratum)) for item in candidates]
     rmse, largest, patch = (
@@ -119,24 +130,28 @@ def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
         [count(item.frames) if item else NONE for item in ledgers],
         aligned([item.ratio_bits_stored_median if item else None for item in ledgers], 2),
         aligned([item.ratio_bits_stored_least if item else None for item in ledgers], 2),
-        *_same_decimals(_of(rmse, "median"), _of(rmse, "p95"), _of(rmse, "largest")),
-        *_same_decimals(_of(largest, "median"), _of(largest, "largest")),
-        *_same_decimals(_of(patch, "median"), _of(patch, "largest")),
+        *_same_decimals(part_of(rmse, "median"), part_of(rmse, "p95"), part_of(rmse, "largest")),
+        *_same_decimals(part_of(largest, "median"), part_of(largest, "largest")),
+        *_same_decimals(part_of(patch, "median"), part_of(patch, "largest")),
         strict=True,
     )
     return Table(columns, tuple(Row(row) for row in cells), caption="Errors: after minus before, over frames")
 
 
-def _heads(over: str, unit: str, *heads: str) -> list[Column]:
-    """Columns below a shared head, which takes a unit that is too long for each of them."""
-    if len(unit) > _SHORT_UNIT:
-        return [Column(head, "", number=True, over=f"{over}; {unit}") for head in heads]
-    return [Column(head, unit, number=True, over=over) for head in heads]
-
-
-def _of(entries: Sequence[FigureEntry | None], part: str) -> list[float | None]:
-    """One statistic of each entry."""
-    return [None if item is None else getattr(item, part) for item in entries]
+def _errors_of_one(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
+    """The same of a single frame, which has one value of each."""
+    ledgers = [view.ledger.get((item.candidate, stratum.stratum)) for item in candidates]
+    columns = [Column("Candidate"), Column("Achieved ratio, bits stored", "to 1", number=True)]
+    cells = [
+        names_with_status(candidates),
+        aligned([item.ratio_bits_stored_median if item else None for item in ledgers], 2),
+    ]
+    for measure in _MAIN:
+        entries = [view.figure(item.candidate, stratum.stratum, measure) for item in candidates]
+        columns.append(Column(label_of(measure), stratum.unit, number=True))
+        cells.append(aligned(part_of(entries, "median")))
+    rows = tuple(Row(row) for row in zip(*cells, strict=True))
+    return Table(tuple(columns), rows, caption="Errors of the one frame: after minus before")
 
 
 def _same_decimals(*columns: list[float | None]) -> list[tuple[str, ...]]:
@@ -144,86 +159,3 @@ def _same_decimals(*columns: list[float | None]) -> list[tuple[str, ...]]:
     flat = aligned([value for column in columns for value in column])
     size = len(columns[0])
     return [flat[start : start + size] for start in range(0, len(flat), size)]
-
-
-def _windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Block]:
-    """SSIM and share of pixels changed, for each window."""
-    columns = (
-        Column("Window and candidate"),
-        Column("Frames", number=True),
-        *_heads("SSIM, content", "1", "median", "5th\u00a0pct.", "least"),
-        *_heads("Content changed by 5 levels of 255 or more", "%", "median", "95th\u00a0pct.", "largest"),
-    )
-    rows: list[Row] = []
-    for window in view.windows(stratum.stratum):
-        seen = [item for item in candidates if view.figure(item.candidate, stratum.stratum, "ssim", window)]
-        ssim, changed = (
-            [view.figure(item.candidate, stratum.stratum, measure, window) for item in seen] for measure in _WINDOW
-        )
-        cells = zip(
-            names_with_status(seen),
-            [count(item.frames) if item else NONE for item in ssim],
-            *(aligned(_of(ssim, part), 4) for part in ("median", "p05", "least")),
-            *(aligned(_of(changed, part), 2) for part in ("median", "p95", "largest")),
-            strict=True,
-        )
-        rows += [Row((view.window_words(window),), group=True), *(Row(row) for row in cells)]
-    if not rows:
-        return [Prose("No window figures: no display window applies to this group.", "note")]
-    return [Table(columns, tuple(rows), caption="On the display windows, over frames")]
-
-
-def _further(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> list[Block]:
-    """All other measures, candidates side by side."""
-    mine = [item for item in view.record.figures if item.stratum == stratum.stratum]
-    keys = dict.fromkeys((item.measure, item.window, item.unit) for item in mine)
-    others = [key for key in keys if key[0] not in (*_MAIN, *_WINDOW)]
-    if not others:
-        return []
-    blocks: list[Block] = [Heading("Further measures")]
-    size = math.ceil(len(candidates) / math.ceil(len(candidates) / PER_TABLE))
-    parts = [candidates[start : start + size] for start in range(0, len(candidates), size)]
-    return [*blocks, *(_further_table(view, stratum.stratum, part, others) for part in parts)]
-
-
-def _further_table(
-    view: View, stratum: str, candidates: Sequence[CandidateEntry], measures: Sequence[tuple[str, str, str]]
-) -> Table:
-    """Median and worst of each measure for up to `PER_TABLE` candidates, in groups of one unit."""
-    columns = [Column("Measure")]
-    for name in names_with_status(candidates):
-        columns += [Column(part, "", number=True, over=name) for part in ("median", "worst")]
-    rows: list[Row] = []
-    for unit in dict.fromkeys(unit for _, _, unit in measures):
-        rows.append(Row((f"in {unit}" if unit != "1" else "plain numbers",), group=True))
-        for measure, window, _ in (key for key in measures if key[2] == unit):
-            entries = [view.figure(item.candidate, stratum, measure, window) for item in candidates]
-            values = [part for item in entries for part in (item.median if item else None, _worst(item))]
-            label = f"{label_of(measure)}; {view.window_words(window)}" if window else label_of(measure)
-            rows.append(Row((label, *aligned(values))))
-    note = (
-        "Worst: the largest value where more is worse, the least where less is worse; of signed measures the one "
-        "farther from zero."
-    )
-    return Table(tuple(columns), tuple(rows), note=f"{note}{_without_value(view, stratum, candidates)}")
-
-
-def _without_value(view: View, stratum: str, candidates: Sequence[CandidateEntry]) -> str:
-    """Say of which measures some frames have no value, and why."""
-    names = {item.candidate for item in candidates}
-    found: dict[str, dict[str, None]] = {}
-    for item in view.record.figures:
-        if item.without_value and item.stratum == stratum and item.candidate in names:
-            found.setdefault(item.reason, {})[label_of(item.measure)] = None
-    parts = [f"{'; '.join(labels)} ({reason})" for reason, labels in found.items()]
-    return f" Some frames have no value of: {'; '.join(parts)}." if parts else ""
-
-
-def _worst(item: FigureEntry | None) -> float | None:
-    """The end of the spread that is worse; of signed measures the farther from zero."""
-    if item is None or item.largest is None or item.least is None:
-        return None
-    known = MEASURES.get(item.measure)
-    if known is not None and known.signed:
-        return max(item.least, item.largest, key=abs)
-    return item.largest if item.worse == "higher" else item.least

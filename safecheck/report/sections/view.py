@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 
+from safecheck.errors import DossierError
 from safecheck.record.document import (
     CandidateEntry,
     FigureEntry,
@@ -17,8 +18,8 @@ from safecheck.record.document import (
     StratumEntry,
 )
 from safecheck.record.run import RunFacts
-from safecheck.report.numbers import NONE, count, plural
-from safecheck.wording import CAUTIONS_WHEN, RECORD_TITLE
+from safecheck.report.numbers import NONE, count, figure, plural
+from safecheck.wording import CAUTIONS_WHEN, NO_LIMITS, RECORD_TITLE
 
 __all__ = [
     "View",
@@ -30,6 +31,7 @@ __all__ = [
     "rest_sentence",
     "stratum_line",
     "view_of",
+    "window_words",
 ]
 
 
@@ -76,9 +78,15 @@ class View:
         """Figures of one measure, or None."""
         return self.figures.get((candidate, stratum, measure, window))
 
-    def window_words(self, label: str) -> str:
-        """Name a window with its centre and width where the plan declares them; those of files differ by file."""
-        return label + _window_setting(label, self.record.plan.content.get("windows"))
+    @property
+    def without_limits(self) -> bool:
+        """Whether the plan declares no limit."""
+        return not self.record.outcomes and self.record.outcomes_text in ("", NO_LIMITS)
+
+    @property
+    def ran(self) -> bool:
+        """Whether any frame was assessed."""
+        return self.record.inputs.frames_assessed > 0
 
     def outcomes(self, status: str = "") -> list[OutcomeEntry]:
         """Outcomes of all candidates or those of one status: outside first, then not evaluated, then within."""
@@ -95,20 +103,25 @@ class View:
 _ORDER = ("outside declared limits", "not evaluated", "within declared limits")
 
 
-def _window_setting(label: str, windows: Any) -> str:  # noqa: ANN401 - a table of the plan as read
-    """Centre and width of a window that the plan declares, or nothing."""
-    for window in windows if isinstance(windows, list | tuple) else ():
-        if isinstance(window, dict) and window.get("label") == label:
-            return f" (centre {window['centre']:g}, width {window['width']:g} {window['unit']})"
-    return ""
+def window_words(window: str, unit: str) -> str:
+    """Name a window with its setting, and the setting with its unit."""
+    return re.sub(r"(width [-+.e\d]+)\)$", lambda found: f"{found.group(1)} {unit})", window)
 
 
 def view_of(record: RecordDocument, record_sha256: str, run: RunFacts, crops: Path | None) -> View:
-    """Index a record."""
+    """Index a record.
+
+    Raises
+    ------
+    DossierError
+        If two of its figures or ledgers go by one name, so that one would hide the other.
+    """
     rank = {"candidate": 0, "delivered": 1}
     ordered = sorted(record.candidates, key=lambda item: (is_analysis(item), rank[item.role]))
     figures = {(item.candidate, item.stratum, item.measure, item.window): item for item in record.figures}
     ledger = {(item.candidate, item.stratum): item for item in record.ledger}
+    if len(figures) != len(record.figures) or len(ledger) != len(record.ledger):
+        raise DossierError("the record holds two entries for one candidate, group of like images, measure and window")
     return View(record, run, record_sha256, crops, tuple(ordered), figures, ledger)
 
 
@@ -121,11 +134,13 @@ def place_words(place: Place) -> str:
 
 
 def place_short(place: Place) -> str:
-    """Name a place within its series: image, frame, row and column."""
+    """Name a place within its series: image, frame, row and column, and position along the patient."""
     image = f"image {place.instance_number}" if place.instance_number is not None else place.instance
     parts = [image, f"frame {count(place.frame)}"]
     if place.row is not None and place.column is not None:
         parts.append(f"row {count(place.row)}, column {count(place.column)}")
+    if place.slice_position_mm is not None:
+        parts.append(f"slice at {figure(place.slice_position_mm, 4)} mm")
     return ", ".join(parts)
 
 
