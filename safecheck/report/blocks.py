@@ -181,6 +181,8 @@ class Charts:
 
     charts: tuple[Chart, ...]
     caption: str = ""
+    low: bool = False
+    """Whether they take less height: where points have no spread."""
 
 
 @dataclass(frozen=True, slots=True)

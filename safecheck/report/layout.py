@@ -85,7 +85,9 @@ def _height(flowables: Sequence[Flowable]) -> float:
 def _room(flowables: Sequence[Flowable]) -> float:
     """Height that must be left for what can part over pages."""
     first = flowables[0] if flowables else None
-    return least_room(first) if isinstance(first, PlatypusTable) and first.repeatRows else _ROOM
+    if isinstance(first, PlatypusTable) and first.repeatRows:
+        return least_room(first)
+    return _height(flowables[:1])
 
 
 class _Whole(list[Flowable]):
@@ -176,8 +178,6 @@ def _facts(block: Facts) -> Flowable:
     return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
 
 
-_ROOM = 96.0
-"""Points that must be left for what can part over pages."""
 _PAGE = PAGE_HEIGHT - TOP - BOTTOM - MARKS_HEIGHT
 """Points of text on a page."""
 _TOGETHER = 14
@@ -194,7 +194,7 @@ def _charts(block: Charts) -> list[Flowable]:
     """Charts side by side above their caption."""
     gap = 18.0
     width = (TEXT_WIDTH - gap) / 2
-    height = 112 if all(chart.single for chart in block.charts) else 156
+    height = 112 if block.low or all(chart.single for chart in block.charts) else 156
     drawings = [chart_drawing(chart, width, height) for chart in block.charts]
     cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
     side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])

@@ -17,7 +17,8 @@ def test_the_summary_holds_hash_outcomes_exit_and_cautions() -> None:
     assert "Change reference: CHG-2026-0417" in flat
     assert (
         "- error inside the head (at most 5 HU): outside declared limits with jpeg2000 10:1, jpeg2000 15:1, "
-        "jpeg2000 20:1, tiled 10:1, tiled 15:1 and tiled 20:1, within in 23 of 30 studies; no bound: not a random sample"
+        "jpeg2000 20:1, tiled 10:1, tiled 15:1 and tiled 20:1, within in 23 of 30 studies; no bound: not "
+        "a random sample"
     ) in flat
     assert "Exit 10: a proposed candidate outside a declared limit" in flat
     assert "declared: before the first results" in flat

@@ -18,12 +18,29 @@ from safecheck.report.definitions import label_of
 from safecheck.report.numbers import NONE, aligned, count, joined
 from safecheck.report.sections.curves import beyond, curves, left_off
 from safecheck.report.sections.view import View, names_with_status, rest_sentence, stratum_line
-from safecheck.report.sections.windows import WINDOW_MEASURES, heads, part_of, windows
+from safecheck.report.sections.windows import (
+    MOST_BESIDE,
+    NOTE,
+    WINDOW_MEASURES,
+    heads,
+    part_of,
+    window_columns,
+    windows,
+)
 from safecheck.wording import SHORT_CAUTION
 
 __all__ = ["MAIN_MEASURES", "STRATA_IN_DETAIL", "strata"]
 
 STRATA_IN_DETAIL = 24
+FEW = 5
+"""Candidates up to which two groups of one frame share a page, their charts lower."""
+
+_CAPTION = (
+    "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio that its "
+    "candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. Curves stand slightly apart, so "
+    "that they do not hide each other."
+)
+_CAPTION_OF_ONE = "Values of the one frame at the ratio reached, on the bits-stored basis; logarithmic axis of ratios."
 _MAIN = ("rmse_content", "max_content", "worst_patch_rmse")
 MAIN_MEASURES = (*_MAIN, *WINDOW_MEASURES)
 """Measures that stand with their group; all others stand at the end of the record."""
@@ -83,7 +100,10 @@ def _detail(view: View, stratum: StratumEntry) -> Section:
     if not candidates:
         return Section(title, (*blocks, Prose("No candidate has figures in this group.")))
     blocks += _charts(view, stratum, candidates)
-    blocks += [_errors(view, stratum, candidates), *windows(view, stratum, candidates)]
+    if stratum.frames == 1 and len(view.windows(stratum.stratum)) <= MOST_BESIDE:
+        blocks.append(_of_one(view, stratum, candidates))
+    else:
+        blocks += [_errors(view, stratum, candidates), *windows(view, stratum, candidates)]
     return Section(title, tuple(blocks), together=True)
 
 
@@ -94,16 +114,9 @@ def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
     charts = tuple(chart for chart in found if chart.highest)
     blocks: list[Block] = []
     if charts:
-        spread = (
-            "mark, the value of the one frame"
-            if stratum.frames == 1
-            else "over frames: mark, median; bar, 5th to 95th percentile; short line, largest"
-        )
-        caption = (
-            f"Charts, {spread}. Each at the median ratio that its candidate reached, on the bits-stored basis; the axis"
-            " of ratios is logarithmic. Curves stand slightly apart, so that they do not hide each other."
-        )
-        blocks.append(Charts(charts, f"{caption}{left_off(charts)}{beyond(view, stratum, candidates)}"))
+        caption = _CAPTION_OF_ONE if stratum.frames == 1 else _CAPTION
+        text = f"{caption}{left_off(charts)}{beyond(view, stratum, candidates)}"
+        blocks.append(Charts(charts, text, low=stratum.frames == 1 and len(candidates) <= FEW))
     if still:
         blocks.append(Prose(f"No chart of {joined(still)}: it is 0 with every candidate.", "note"))
     return blocks
@@ -111,8 +124,6 @@ def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
 
 def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
     """RMSE, maximum and worst patch beside the ratio that was reached."""
-    if stratum.frames == 1:
-        return _errors_of_one(view, stratum, candidates)
     columns = (
         Column("Candidate"),
         Column("Frames", number=True),
@@ -138,8 +149,8 @@ def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
     return Table(columns, tuple(Row(row) for row in cells), caption="Errors: after minus before, over frames")
 
 
-def _errors_of_one(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
-    """The same of a single frame, which has one value of each."""
+def _of_one(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
+    """Errors and window figures of a single frame, which has one value of each."""
     ledgers = [view.ledger.get((item.candidate, stratum.stratum)) for item in candidates]
     columns = [Column("Candidate"), Column("Achieved ratio, bits stored", "to 1", number=True)]
     cells = [
@@ -150,8 +161,10 @@ def _errors_of_one(view: View, stratum: StratumEntry, candidates: Sequence[Candi
         entries = [view.figure(item.candidate, stratum.stratum, measure) for item in candidates]
         columns.append(Column(label_of(measure), stratum.unit, number=True))
         cells.append(aligned(part_of(entries, "median")))
-    rows = tuple(Row(row) for row in zip(*cells, strict=True))
-    return Table(tuple(columns), rows, caption="Errors of the one frame: after minus before")
+    more, figures = window_columns(view, stratum, candidates)
+    rows = tuple(Row(row) for row in zip(*cells, *figures, strict=True))
+    caption = "The one frame: errors, after minus before, and what its display windows show"
+    return Table((*columns, *more), rows, caption=caption, note=NOTE if more else "")
 
 
 def _same_decimals(*columns: list[float | None]) -> list[tuple[str, ...]]:

@@ -9,7 +9,7 @@ from safecheck.report.blocks import Block, Column, Prose, Row, Table
 from safecheck.report.numbers import NONE, aligned, count
 from safecheck.report.sections.view import View, names_with_status, window_words
 
-__all__ = ["SHORT_UNIT", "WINDOW_MEASURES", "heads", "part_of", "windows"]
+__all__ = ["MOST_BESIDE", "NOTE", "SHORT_UNIT", "WINDOW_MEASURES", "heads", "part_of", "window_columns", "windows"]
 
 WINDOW_MEASURES = ("ssim", "changed_5_levels_percent")
 SHORT_UNIT = 8
@@ -20,6 +20,7 @@ MOST_BESIDE = 3
 _NO_UNIT = "no unit"
 _CHANGED = "Content changed by 5 levels of 255 or more"
 _CAPTION = "On the display windows"
+NOTE = "SSIM over content; changed: content whose display level moved by 5 of 255 or more. A dash: no frame has it."
 
 
 def heads(over: str, unit: str, *heads: str) -> list[Column]:
@@ -40,7 +41,7 @@ def windows(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
     if not names:
         return [Prose("No window figures: no display window applies to this group.", "note")]
     if 1 < len(names) <= MOST_BESIDE:
-        return [_beside(view, stratum, candidates, names)]
+        return [_beside(view, stratum, candidates)]
     return [_below(view, stratum, candidates, names)]
 
 
@@ -54,11 +55,20 @@ def _pair(
     ]
 
 
-def _beside(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry], names: Sequence[str]) -> Table:
+def _beside(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
     """A row per candidate, a few columns per window."""
-    columns = [Column("Candidate")]
-    cells: list[Sequence[str]] = [names_with_status(candidates)]
-    for window in names:
+    more, figures = window_columns(view, stratum, candidates)
+    rows = tuple(Row(row) for row in zip(names_with_status(candidates), *figures, strict=True))
+    return Table((Column("Candidate"), *more), rows, caption=f"{_CAPTION}, over frames", note=NOTE)
+
+
+def window_columns(
+    view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]
+) -> tuple[list[Column], list[Sequence[str]]]:
+    """Heads and cells of a few columns per window, for rows of candidates."""
+    columns: list[Column] = []
+    cells: list[Sequence[str]] = []
+    for window in view.windows(stratum.stratum):
         ssim, changed = _pair(view, stratum, candidates, window)
         over = window_words(window, stratum.unit)
         one = all(item is None or item.frames == 1 for item in ssim)
@@ -70,9 +80,7 @@ def _beside(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
         for words, part in ends:
             columns.append(Column(f"changed{words}", "%", number=True, over=over))
             cells.append(aligned(part_of(changed, part), 2))
-    rows = tuple(Row(row) for row in zip(*cells, strict=True))
-    note = f"SSIM over content; changed: {_CHANGED[0].lower()}{_CHANGED[1:]}. A dash: no frame has that window."
-    return Table(tuple(columns), rows, caption=f"{_CAPTION}, over frames", note=note)
+    return columns, cells
 
 
 def _below(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry], names: Sequence[str]) -> Table:
