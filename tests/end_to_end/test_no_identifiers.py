@@ -11,6 +11,7 @@ import pytest
 
 from synthetic_studies import CanaryTruth, canary_study, deliver
 from tests.end_to_end.command import Ended, run
+from tests.end_to_end.hospital import CANDIDATES, CHANGE, CHOSEN
 from tests.end_to_end.leaks import contents_of, encodings_of, find
 
 CANARY = "QXZJCANARY77"
@@ -48,7 +49,10 @@ def trip(tmp_path_factory: pytest.TempPathFactory) -> Trip:
     home.mkdir()
     temporary.mkdir()
     key = folder / "site.key"
-    assess = ("assess", *paths, "--delivered", copies, "--key", key, "--codecs", "jpeg2000", "--ratios", "5")
+    plan = folder / "plan.toml"
+    # Controls on every frame, so that none depends on the frame that a new key draws.
+    plan.write_text(CHANGE + CHOSEN + CANDIDATES + "[controls]\nshare_percent = 100\n", encoding="utf-8")
+    assess = ("assess", *paths, "--delivered", copies, "--key", key, "--plan", plan)
     calls: dict[str, tuple[str | Path, ...]] = {
         "census": ("census", *paths, "--key", key, "--draft-plan", folder / "draft.toml"),
         "dry run": (*assess, "--dry-run"),
@@ -67,7 +71,7 @@ def trip(tmp_path_factory: pytest.TempPathFactory) -> Trip:
 
 def test_the_commands_did_their_work(trip: Trip) -> None:
     codes = {name: ended.code for name, ended in trip.said.items()}
-    # Two broken files are refused, of which the plan of the command line allows none.
+    # Two broken files are refused, of which the plan allows none.
     assert codes == {
         "census": 0,
         "dry run": 0,
