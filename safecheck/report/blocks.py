@@ -182,7 +182,7 @@ class Charts:
     charts: tuple[Chart, ...]
     caption: str = ""
     low: bool = False
-    """Whether they take less height: where points have no spread."""
+    """Whether they take less height."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -194,7 +194,7 @@ def _charts(block: Charts) -> list[Flowable]:
     """Charts side by side above their caption."""
     gap = 18.0
     width = (TEXT_WIDTH - gap) / 2
-    height = 112 if block.low or all(chart.single for chart in block.charts) else 156
+    height = 120 if block.low or all(chart.single for chart in block.charts) else 156
     drawings = [chart_drawing(chart, width, height) for chart in block.charts]
     cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
     side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])

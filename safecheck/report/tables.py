@@ -71,9 +71,10 @@ def table_flowable(table: Table) -> PlatypusTable:
 
 def _together(first: int, end: int) -> list[tuple[Any, ...]]:
     """No page holds fewer than three rows of a table that parts."""
-    if end - first <= _FEWEST:
-        return [("NOSPLIT", (0, first), (0, end - 1))]
-    return [("NOSPLIT", (0, first), (0, first + _FEWEST - 1)), ("NOSPLIT", (0, end - _FEWEST), (0, end - 1))]
+    # In the last column: in one column a later range would undo an earlier one that it touches.
+    if end - first < 2 * _FEWEST:
+        return [("NOSPLIT", (-1, first), (-1, end - 1))]
+    return [("NOSPLIT", (-1, first), (-1, first + _FEWEST - 1)), ("NOSPLIT", (-1, end - _FEWEST), (-1, end - 1))]
 
 
 def least_room(flowable: PlatypusTable, width: float = TEXT_WIDTH) -> float:
@@ -86,7 +87,7 @@ def _note_style(row: int, *, note: bool) -> list[tuple[Any, ...]]:
     """The note spans the table, without a rule."""
     if not note:
         return []
-    return [("SPAN", (0, row), (-1, row)), ("NOSPLIT", (0, row - 1), (0, row)), ("TOPPADDING", (0, row), (-1, row), 4)]
+    return [("SPAN", (0, row), (-1, row)), ("TOPPADDING", (0, row), (-1, row), 4)]
 
 
 def _head_rows(columns: Sequence[Column], *, over: bool) -> list[list[Any]]:

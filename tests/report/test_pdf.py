@@ -105,6 +105,30 @@ def test_the_cautions_stand_in_full_on_the_first_pages(drawn: dict[str, bytes], 
         assert caution in first_pages
 
 
+def test_the_cautions_fit_the_first_page_where_they_can_and_the_contents_share_the_second(
+    drawn: dict[str, bytes],
+) -> None:
+    first, second = page_texts(drawn["one frame"])[:2]
+    assert all(caution in first for caution in one_frame().cautions)
+    assert "In this record" in first + second
+    assert "Groups of like images Group of like images" in second
+
+
+def test_further_measures_stand_after_all_that_a_board_reads(drawn: dict[str, bytes]) -> None:
+    texts = page_texts(drawn["rich"])
+    first = next(number for number, text in enumerate(texts) if "Further measures: CT" in text)
+    for words in ("Opinion of the signatory", "What to keep to recompute", "Errors in regions", "Ledger: CR"):
+        assert max(number for number, text in enumerate(texts) if words in text) <= first
+
+
+def test_the_main_figures_of_a_group_share_a_page(drawn: dict[str, bytes]) -> None:
+    texts = page_texts(drawn["rich"])
+    for title in (f"Figures: {CT}", "Figures: CR, CHEST"):
+        page = next(text for text in texts[3:] if title in text)
+        assert "Errors: after minus before" in page
+        assert "On the display windows" in page
+
+
 @pytest.mark.parametrize("case", CASES)
 def test_no_text_leaves_the_margins_or_runs_into_other_text(drawn: dict[str, bytes], case: str) -> None:
     if case == "run invalid":
@@ -271,6 +295,7 @@ def test_pictures_stand_only_where_the_dossier_has_them_and_never_where_text_may
     assert "brain (centre 40 HU, width 80 HU)" in texts
     assert "after minus before" in texts
     assert "No picture: the frame may carry text." in texts
+    assert "The scale of the difference is another on each card" in texts
     assert images_on(draw(both)) == 0
     assert images_on(draw(both, folder=tmp_path, redrawn=True)) == 0
     assert draw(both, folder=tmp_path) == pdf

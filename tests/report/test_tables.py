@@ -5,7 +5,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from safecheck.report.blocks import Column, Row, Table
-from safecheck.report.tables import column_widths
+from safecheck.report.tables import column_widths, least_room, table_flowable
 from safecheck.report.theme import MEDIUM, REGULAR, TEXT_WIDTH, fit_text, markup, printable, text_width
 
 
@@ -33,6 +33,30 @@ def test_a_long_column_gives_way_before_short_ones_wrap() -> None:
     widths = column_widths(table)
     assert widths[1] >= text_width(outcome, MEDIUM, 7.6) + 6
     assert widths[2] == max(widths)
+
+
+def long_table(rows: int) -> Table:
+    columns = (Column("Candidate"), Column("RMSE", "HU", number=True))
+    body = tuple(Row((f"group {n}",), group=True) if n % 7 == 0 else Row((f"row {n}", f"{n}")) for n in range(rows))
+    return Table(columns, body, caption="Errors", note="A note.")
+
+
+@pytest.mark.parametrize("height", range(90, 640, 23))
+def test_a_table_that_parts_leaves_three_rows_on_each_page_under_its_caption_and_head(height: int) -> None:
+    table = table_flowable(long_table(40))
+    table.wrap(TEXT_WIDTH, height)
+    parts = table.split(TEXT_WIDTH, height)
+    for part in parts:
+        assert len(part._cellvalues) - part.repeatRows >= 3
+        assert part._cellvalues[0][0][0].getPlainText() == "Errors"
+    assert sum(len(part._cellvalues) - part.repeatRows for part in parts) in (0, 41)
+
+
+def test_the_least_room_of_a_table_is_enough_for_its_first_rows() -> None:
+    table = table_flowable(long_table(40))
+    room = least_room(table)
+    assert table.split(TEXT_WIDTH, room + 0.1)
+    assert not table.split(TEXT_WIDTH, room - 1)
 
 
 def test_a_cut_text_fits_and_ends_in_an_ellipsis() -> None:

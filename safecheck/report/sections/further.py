@@ -17,7 +17,7 @@ from safecheck.wording import SHORT_CAUTION
 __all__ = ["further"]
 
 TITLE = "Further measures, all groups"
-PER_TABLE = 5
+PER_TABLE = 6
 """Candidates per table: two columns each."""
 PER_TABLE_OF_ONE = 8
 """Candidates per table of a group of one frame: a column each."""

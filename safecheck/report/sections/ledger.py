@@ -115,6 +115,8 @@ def _reversible(entries: Sequence[LedgerEntry]) -> str:
     if not codecs:
         return "No reversible code was written for these frames."
     parts = joined([f"{codec} for {plural(frames, 'frame')}" for codec, frames in sorted(codecs.items())])
+    if all(item.frames == 1 for item in entries):
+        return f"Smallest reversible code: {parts}."
     return (
         f"Smallest reversible code: {parts}. Ratios are of totals over frames; least and largest are of single frames."
     )

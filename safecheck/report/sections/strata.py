@@ -32,8 +32,8 @@ from safecheck.wording import SHORT_CAUTION
 __all__ = ["MAIN_MEASURES", "STRATA_IN_DETAIL", "strata"]
 
 STRATA_IN_DETAIL = 24
-FEW = 5
-"""Candidates up to which two groups of one frame share a page, their charts lower."""
+FEW, MANY = 4, 8
+"""Up to `FEW` candidates two groups of one frame share a page, above `MANY` a group fills one: charts are lower."""
 
 _CAPTION = (
     "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio that its "
@@ -116,10 +116,15 @@ def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
     if charts:
         caption = _CAPTION_OF_ONE if stratum.frames == 1 else _CAPTION
         text = f"{caption}{left_off(charts)}{beyond(view, stratum, candidates)}"
-        blocks.append(Charts(charts, text, low=stratum.frames == 1 and len(candidates) <= FEW))
+        blocks.append(Charts(charts, text, low=_low(stratum, len(candidates))))
     if still:
         blocks.append(Prose(f"No chart of {joined(still)}: it is 0 with every candidate.", "note"))
     return blocks
+
+
+def _low(stratum: StratumEntry, candidates: int) -> bool:
+    """Whether charts give up height, so that pages hold what belongs together."""
+    return candidates > MANY or (stratum.frames == 1 and candidates <= FEW)
 
 
 def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
