@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import datetime
 import json
 import platform
@@ -35,7 +36,7 @@ from safecheck.runner.manifest import Manifest, begin, describe
 from safecheck.runner.merge import Merged, merge
 from safecheck.runner.pool import LocalPool, cores
 from safecheck.runner.progress import Progress
-from safecheck.runner.run import run
+from safecheck.runner.run import refused_frames, run
 from safecheck.runner.tasks import Task, plan_tasks
 from safecheck.runner.worker import Treatment
 from safecheck.statistics.summary import Surroundings, summarise
@@ -121,17 +122,23 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
         key_id=site.pseudonyms.key_id,
         versions=versions(),
     )
-    controls = loaded.plan.controls
-    tasks = plan_tasks(
-        inputs.assessed,
-        inputs.pairs,
-        manifest,
-        site.key,
-        assignment=assignment,
+    prepared = Prepared(request, loaded, site, inputs, assignment, manifest, ())
+    return dataclasses.replace(prepared, tasks=_tasks(prepared, frozenset()))
+
+
+def _tasks(prepared: Prepared, refused: frozenset[tuple[str, int]]) -> tuple[Task, ...]:
+    """The work cut into tasks, with the full controls on frames that are not known to be refused."""
+    controls = prepared.loaded.plan.controls
+    return plan_tasks(
+        prepared.inputs.assessed,
+        prepared.inputs.pairs,
+        prepared.manifest,
+        prepared.site.key,
+        assignment=prepared.assignment,
         share_percent=controls.share_percent,
         seed=controls.seed,
+        without=refused,
     )
-    return Prepared(request, loaded, site, inputs, assignment, manifest, tasks)
 
 
 def _lies_in(out: Path, paths: tuple[Path, ...]) -> bool:
@@ -199,19 +206,12 @@ def _perform(
     # The selftest runs beside the workers, whose start it would otherwise hold up.
     with ThreadPoolExecutor(1) as beside:
         checking = beside.submit(run_selftest)
-        run(
-            prepared.tasks,
-            Treatment(prepared.assignment, partial(evaluate, threads=_threads(prepared, executor)), open_instance),
-            work,
-            executor=executor,
-            warm_up=lambda: _warm_up(prepared.site, tell),
-            report=report,
-        )
+        tasks = _run_all(prepared, work, executor, tell, report)
         checks = checking.result()
     clock["assessed"] = time.monotonic()
     tell("Writing the record")
     final = _fresh(work / _FINAL)
-    merged = merge(prepared.tasks, work, final)
+    merged = merge(tasks, work, final)
     record = _record(prepared, merged, final, checks)
     prepared.site.see_results(prepared.studies)
     facts = RunFacts(
@@ -230,6 +230,27 @@ def _perform(
     finish_dossier(final, record, facts, attachment=prepared.request.attachment)
     _publish(final, dossier)
     return record
+
+
+def _run_all(
+    prepared: Prepared, work: Path, executor: Executor, tell: Tell, report: Callable[[Progress], None]
+) -> tuple[Task, ...]:
+    """Run all tasks; where a frame that was to carry the full controls is refused, another one carries them."""
+    treatment = Treatment(prepared.assignment, partial(evaluate, threads=_threads(prepared, executor)), open_instance)
+    tasks: tuple[Task, ...] = ()
+    again = prepared.tasks
+    while again != tasks:
+        tasks = again
+        run(
+            tasks,
+            treatment,
+            work,
+            executor=executor,
+            warm_up=lambda: _warm_up(prepared.site, tell),
+            report=report,
+        )
+        again = _tasks(prepared, refused_frames(tasks, work))
+    return tasks
 
 
 def _threads(prepared: Prepared, executor: Executor) -> int:

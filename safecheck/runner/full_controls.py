@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import hmac
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Collection, Iterable, Sequence
 from dataclasses import dataclass
 
 from safecheck.codecs.base import Codec
@@ -46,7 +46,12 @@ def codecs_of(assignment: Assignment) -> tuple[Codec, ...]:
 
 
 def choose_full_controls(
-    instances: Iterable[Instance], codecs: Sequence[Codec], key: bytes, share_percent: float, seed: int
+    instances: Iterable[Instance],
+    codecs: Sequence[Codec],
+    key: bytes,
+    share_percent: float,
+    seed: int,
+    without: Collection[tuple[str, int]] = (),
 ) -> frozenset[tuple[str, int]]:
     """Choose frames for the full controls, stratum by stratum.
 
@@ -63,6 +68,8 @@ def choose_full_controls(
         takes, where it takes any. A larger share keeps the frames of a smaller one.
     seed
         Another seed chooses other frames.
+    without
+        (input pseudonym, frame number) of frames known to be refused, which can carry nothing.
 
     Returns
     -------
@@ -78,20 +85,23 @@ def choose_full_controls(
             message = f"full controls\0{seed}\0{instance.input}\0{number}"
             drawn = hmac.digest(key, message.encode(), "sha256")
             ranked.append(_Ranked(small, len(codecs) - len(taking), drawn, instance.input, number, taking))
-    chosen = (each for ranked in strata.values() for each in _drawn(ranked, len(codecs), share_percent))
+    chosen = (each for ranked in strata.values() for each in _drawn(ranked, len(codecs), share_percent, without))
     return frozenset((each.input, each.number) for each in chosen)
 
 
-def _drawn(ranked: list[_Ranked], codecs: int, share_percent: float) -> list[_Ranked]:
+def _drawn(
+    ranked: list[_Ranked], codecs: int, share_percent: float, without: Collection[tuple[str, int]]
+) -> list[_Ranked]:
     """Frames of one stratum: first those that the codecs are owed, then the least keyed hashes up to the share."""
     # 5 % of 20 frames is one frame, whatever the last binary digit of the product says.
     wanted = max(1, math.ceil(len(ranked) * share_percent / 100 - 1e-9))
+    usable = [each for each in ranked if (each.input, each.number) not in without]
     owed = {}
     for codec in range(codecs):
-        first = min((each for each in ranked if codec in each.taking), default=None)
+        first = min((each for each in usable if codec in each.taking), default=None)
         if first is not None:
             owed[first.input, first.number] = first
-    rest = [each for each in ranked if (each.input, each.number) not in owed]
+    rest = [each for each in usable if (each.input, each.number) not in owed]
     rest.sort(key=lambda each: (each.small, each.drawn))
     return [*owed.values(), *rest[: max(0, wanted - len(owed))]]
 

@@ -16,7 +16,7 @@ from safecheck.runner.shards import LeftOut, clear_aside, paper_of
 from safecheck.runner.tasks import Task
 from safecheck.runner.worker import Treatment
 
-__all__ = ["RunSummary", "run"]
+__all__ = ["RunSummary", "refused_frames", "run"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +109,18 @@ def run(
     except KeyboardInterrupt:
         raise Interrupted(f"stopped with {tally.done} of {len(tasks)} parts done; the same command resumes") from None
     return RunSummary(len(tasks), resumed, tally.frames, tally.refused, tally.died)
+
+
+def refused_frames(tasks: Sequence[Task], work: Path) -> frozenset[tuple[str, int]]:
+    """(input pseudonym, frame number) of the originals' frames that gave no rows, of the tasks that are done."""
+    papers = (paper_of(work, task) for task in tasks)
+    return frozenset(
+        (each.input, each.frame)
+        for paper in papers
+        if paper is not None
+        for each in paper.left_out
+        if each.side == "original"
+    )
 
 
 def _find_left(work: Path, tally: _Tally) -> list[Task]:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import hmac
 import itertools
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Collection, Iterable, Iterator, Mapping
 from dataclasses import dataclass
 
 from safecheck.dicom.instance import Instance
@@ -64,6 +64,7 @@ def plan_tasks(
     assignment: Assignment,
     share_percent: float,
     seed: int,
+    without: Collection[tuple[str, int]] = (),
 ) -> tuple[Task, ...]:
     """Cut a run into tasks.
 
@@ -84,6 +85,8 @@ def plan_tasks(
         the codec takes any.
     seed
         Another seed chooses other frames.
+    without
+        (input pseudonym, frame number) of frames known to be refused: others carry the full controls in their stead.
 
     Returns
     -------
@@ -98,7 +101,7 @@ def plan_tasks(
     ordered = sorted(instances, key=_place)
     if len({instance.input for instance in ordered}) < len(ordered):
         raise ValueError("two instances to assess share an input pseudonym")
-    chosen = choose_full_controls(ordered, codecs_of(assignment), key, share_percent, seed)
+    chosen = choose_full_controls(ordered, codecs_of(assignment), key, share_percent, seed, without)
     frames = [
         FrameTask(instance, number, (instance.input, number) in chosen, pairs.get(instance.input))
         for instance in ordered

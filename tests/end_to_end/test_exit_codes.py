@@ -167,7 +167,6 @@ def key_that_draws(request: AssessRequest, instance_number: int, folder: Path) -
     raise AssertionError("no key draws that instance")
 
 
-@pytest.mark.xfail(reason="full controls that fall on a frame refused later are not carried by another frame")
 def test_a_refused_frame_that_was_to_carry_the_controls_does_not_make_the_run_invalid(
     hospital: Hospital, tmp_path: Path
 ) -> None:
