@@ -26,7 +26,6 @@ from safecheck.report.blocks import (
 )
 from safecheck.report.figures import bars_drawing, chart_drawing
 from safecheck.report.folio import PageNumber
-from safecheck.report.furniture import MARKS_HEIGHT
 from safecheck.report.sketches import cards_flowables
 from safecheck.report.tables import least_room, table_flowable
 from safecheck.report.theme import ACCENT, BOTTOM, INK, PAGE_HEIGHT, RULE, TEXT_WIDTH, TOP, markup, style
@@ -178,7 +177,7 @@ def _facts(block: Facts) -> Flowable:
     return _plain_table(rows, [58, TEXT_WIDTH - 58], [("BOTTOMPADDING", (0, 0), (-1, -1), 4)])
 
 
-_PAGE = PAGE_HEIGHT - TOP - BOTTOM - MARKS_HEIGHT
+_PAGE = PAGE_HEIGHT - TOP - BOTTOM
 """Points of text on a page."""
 _TOGETHER = 14
 """Rows up to which a table never breaks over pages."""
