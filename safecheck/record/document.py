@@ -222,6 +222,7 @@ class OutcomeEntry(Document):
     patients: int
     patients_within: int
     patients_not_evaluated: int = 0
+    """In scope, without any value."""
     upper_bound_percent: float | None = None
     """Exact one-sided 95 % bound on the share of patients with an exceedance; None without a random sample."""
     bound_text: str
@@ -315,15 +316,22 @@ class RegionEntry(Document):
     sd_after: float | None = None
     background: str = ""
     contrast_before: float | None = None
+    """Median of the mean of the region less that of its background, before."""
     contrast_after: float | None = None
+    """The same after."""
     contrast_kept_percent: float | None = None
+    """Median over frames of the contrast after by the contrast before."""
     contrast_kept_percent_p05: float | None = None
+    """5th percentile of it over frames."""
     contrast_kept_percent_least: float | None = None
+    """Least of it over frames."""
     cnr_before: float | None = None
     cnr_after: float | None = None
     cnr_after_least: float | None = None
+    """Least over frames."""
     noise_removed_percent: float | None = None
     noise_removed_percent_largest: float | None = None
+    """Largest over frames."""
     worst: Place | None = None
     """Where the largest error was found."""
 
