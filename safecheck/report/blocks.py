@@ -181,8 +181,8 @@ class Charts:
 
     charts: tuple[Chart, ...]
     caption: str = ""
-    low: bool = False
-    """Whether they take less height."""
+    size: Literal["usual", "lower", "low"] = "usual"
+    """Their height."""
 
 
 @dataclass(frozen=True, slots=True)

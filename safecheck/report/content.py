@@ -12,7 +12,7 @@ from safecheck.report.sections.ledger import ledger
 from safecheck.report.sections.limits import limits
 from safecheck.report.sections.places import places
 from safecheck.report.sections.regions import regions
-from safecheck.report.sections.strata import strata
+from safecheck.report.sections.strata import overview, strata
 from safecheck.report.sections.view import View
 from safecheck.wording import RECORD_TITLE, REDRAWN, RUN_INVALID
 
@@ -53,6 +53,7 @@ def report_of(view: View, *, redrawn: bool = False) -> Report:
 def _sections(view: View) -> tuple[Section, ...]:
     """All sections after the first pages."""
     return (
+        overview(view),
         limits(view),
         *strata(view),
         places(view),

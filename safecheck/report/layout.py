@@ -189,11 +189,15 @@ def _table(block: Table) -> list[Flowable]:
     return _Whole([made]) if len(block.rows) <= _TOGETHER else [made]
 
 
+_CHART = {"usual": 156.0, "lower": 136.0, "low": 120.0}
+"""Heights of charts in points."""
+
+
 def _charts(block: Charts) -> list[Flowable]:
     """Charts side by side above their caption."""
     gap = 18.0
     width = (TEXT_WIDTH - gap) / 2
-    height = 120 if block.low or all(chart.single for chart in block.charts) else 156
+    height = _CHART["low" if all(chart.single for chart in block.charts) else block.size]
     drawings = [chart_drawing(chart, width, height) for chart in block.charts]
     cells = [drawings[0], "", drawings[1]] if len(drawings) == 2 else [drawings[0], "", ""]
     side_by_side = _plain_table([cells], [width, gap, width], [("RIGHTPADDING", (0, 0), (-1, -1), 0)])

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import Literal
 
 from safecheck.record.document import CandidateEntry, StratumEntry
 from safecheck.report.blocks import (
@@ -29,7 +30,7 @@ from safecheck.report.sections.windows import (
 )
 from safecheck.wording import SHORT_CAUTION
 
-__all__ = ["MAIN_MEASURES", "STRATA_IN_DETAIL", "strata"]
+__all__ = ["MAIN_MEASURES", "STRATA_IN_DETAIL", "overview", "strata"]
 
 STRATA_IN_DETAIL = 24
 FEW, MANY = 4, 8
@@ -47,13 +48,12 @@ MAIN_MEASURES = (*_MAIN, *WINDOW_MEASURES)
 
 
 def strata(view: View) -> tuple[Section, ...]:
-    """One section that lists the groups, and one per group."""
-    shown = view.record.strata[:STRATA_IN_DETAIL]
-    return (_overview(view), *(_detail(view, stratum) for stratum in shown))
+    """One section per group."""
+    return tuple(_detail(view, stratum) for stratum in view.record.strata[:STRATA_IN_DETAIL])
 
 
-def _overview(view: View) -> Section:
-    """The table of groups."""
+def overview(view: View) -> Section:
+    """The section that lists the groups."""
     columns = (
         Column("Group of like images"),
         Column("Unit of errors"),
@@ -116,15 +116,17 @@ def _charts(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEnt
     if charts:
         caption = _CAPTION_OF_ONE if stratum.frames == 1 else _CAPTION
         text = f"{caption}{left_off(charts)}{beyond(view, stratum, candidates)}"
-        blocks.append(Charts(charts, text, low=_low(stratum, len(candidates))))
+        blocks.append(Charts(charts, text, size=_size(stratum, len(candidates))))
     if still:
         blocks.append(Prose(f"No chart of {joined(still)}: it is 0 with every candidate.", "note"))
     return blocks
 
 
-def _low(stratum: StratumEntry, candidates: int) -> bool:
-    """Whether charts give up height, so that pages hold what belongs together."""
-    return candidates > MANY or (stratum.frames == 1 and candidates <= FEW)
+def _size(stratum: StratumEntry, candidates: int) -> Literal["usual", "lower", "low"]:
+    """Height of the charts, given up where pages then hold what belongs together."""
+    if stratum.frames == 1 and candidates <= FEW:
+        return "low"
+    return "lower" if candidates > MANY else "usual"
 
 
 def _errors(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntry]) -> Table:
