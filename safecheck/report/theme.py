@@ -143,7 +143,7 @@ def style(name: str) -> ParagraphStyle:
             borderPadding=(5, 7, 6, 7),
             leftIndent=7,
             rightIndent=7,
-            spaceBefore=7,
+            spaceBefore=11,
             spaceAfter=9,
         ),
         "numbered": lambda: _style(
