@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 from dataclasses import dataclass
 from typing import Any
 
@@ -56,8 +57,10 @@ class Analysis:
         return -(-self.raster.shape[1] // self.size)
 
 
+# A frame meets the same codec at several ratios, one after the other: the last analysis serves them all.
+@functools.lru_cache(maxsize=1)
 def analyse(raster: Raster, name: str, weighting: str, size: int) -> Analysis:
-    """Transform a raster, once for all steps."""
+    """Transform a raster, once for all steps; a raster is told from another by identity, and never changes."""
     padding = raster.padding
     centres = planes.centre(raster.samples, padding)
     table = transform.basis(name, size)
@@ -106,6 +109,7 @@ def _write_padding(raster: Raster) -> Padding:
     return Padding(2, (0, 0, 0), buffer[: coder[0]].tobytes(), coder)
 
 
+@functools.lru_cache(maxsize=1)
 def counts(analysis: Analysis) -> npt.NDArray[np.int64]:
     """Expected magnitudes counted for `rate.search`, over all planes, scaled to all tiles."""
     total = np.zeros(rate.BINS, dtype=np.int64)
@@ -118,6 +122,7 @@ def counts(analysis: Analysis) -> npt.NDArray[np.int64]:
             analysis.coefficients[plane], analysis.used, analysis.across, places, relative * scale
         )
         total += part * all_values // max(int(part.sum()), 1)
+    total.flags.writeable = False
     return total
 
 
