@@ -15,6 +15,7 @@ import sys
 import tempfile
 import time
 from collections.abc import Callable
+from functools import partial
 from pathlib import Path
 
 from synthetic_studies import big_multiframe, ct_body, radiograph
@@ -68,9 +69,9 @@ def safecheck(*words: str | Path, out: Path | None = None) -> float:
         words = (*words, "--out", out)
     command = [sys.executable, "-m", "safecheck", *map(str, words), "--quiet"]
     process = subprocess.Popen(command, stdout=subprocess.DEVNULL, stderr=subprocess.PIPE)
-    _, usage_pid, usage = process.pid, *os.wait4(process.pid, 0)[1:]
-    if usage_pid not in (0,):
-        raise SystemExit(f"{command} ended with {os.waitstatus_to_exitcode(usage_pid)}")
+    _, status, usage = os.wait4(process.pid, 0)
+    if status:
+        raise SystemExit(f"{command} ended with {os.waitstatus_to_exitcode(status)}")
     return usage.ru_maxrss / 1024
 
 
@@ -131,11 +132,16 @@ def good_times(folder: Path) -> None:
         ("CR 2500x2000, 5 ratios, tiled", ("assess", film, "--codecs", "tiled", "--key", key), folder / "cr-dossier"),
         ("CR 2500x2000, 5 ratios, jpeg2000", ("assess", film, "--codecs", "jpeg2000", "--key", key), folder / "cr-j2k"),
     ):
-        memory = []
-        took = timed(lambda words=words, out=out, memory=memory: memory.append(safecheck(*words, out=out)))
+        memory: list[float] = []
+        took = timed(partial(_remember, memory, words, out))
         say(f"| {name} | {took:.2f} | {max(memory):.0f} |")
     took = timed(lambda: safecheck_verify(folder / "ct-dossier"))
     say(f"| verify without images, 300 frames | {took:.2f} | |")
+
+
+def _remember(memory: list[float], words: tuple[str | Path, ...], out: Path) -> None:
+    """Run the command and note its largest process."""
+    memory.append(safecheck(*words, out=out))
 
 
 def safecheck_verify(dossier: Path) -> None:
