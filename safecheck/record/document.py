@@ -8,6 +8,8 @@ from __future__ import annotations
 
 from typing import Any, Literal
 
+from pydantic import Field
+
 from safecheck.documents import Document
 
 __all__ = [
@@ -426,7 +428,7 @@ class RecordDocument(Document):
     delivered: DeliveredEntry | None = None
     content_rules: dict[str, int]
     """Frames by the content rule that was applied."""
-    content_reasons: dict[str, int] = {}
+    content_reasons: dict[str, int] = Field(default_factory=dict)
     """Frames by why the modality's own rule gave way."""
     notes: dict[str, int]
     """What preflight noticed and set right, with the number of frames."""
