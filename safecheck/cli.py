@@ -15,6 +15,7 @@ import typer
 from safecheck import __version__
 from safecheck.errors import DossierError, Interrupted, SafecheckError, UsageError
 from safecheck.policy.conditions import ExitCondition
+from safecheck.screen import Screen
 
 if TYPE_CHECKING:
     from safecheck.jobs.assess import AssessRequest
@@ -93,7 +94,7 @@ def census(
 
     if draft_plan is not None and draft_plan.exists():
         raise UsageError("the file for the draft plan exists already; name another")
-    screen = _Screen(quiet=quiet)
+    screen = Screen(quiet=quiet)
     found = job.take_census(
         tuple(paths),
         scope=_scope(localizers, secondary_captures, allow_lossy_source),
@@ -168,9 +169,9 @@ def assess(
         attachment=not no_attachment,
     )
     if dry_run:
-        _dry_run(request, _Screen(quiet=quiet))
+        _dry_run(request, Screen(quiet=quiet))
     else:
-        _assess(request, _Screen(quiet=quiet))
+        _assess(request, Screen(quiet=quiet))
 
 
 @app.command()
@@ -269,14 +270,14 @@ def demo(
     from safecheck.jobs.assess import AssessRequest
     from safecheck.jobs.demo import DOSSIER, STUDY, write_demo
 
-    screen = _Screen(quiet=quiet)
+    screen = Screen(quiet=quiet)
     screen.update("Making a synthetic study")
     plan = write_demo(out)
     request = AssessRequest(paths=(out / STUDY,), out=out / DOSSIER, plan_file=plan, key_file=key, with_images=True)
     _assess(request, screen, demonstration=True)
 
 
-def _assess(request: AssessRequest, screen: _Screen, *, demonstration: bool = False) -> None:
+def _assess(request: AssessRequest, screen: Screen, *, demonstration: bool = False) -> None:
     """Run the main job and say what came of it."""
     from safecheck.jobs.assess import assess as job
 
@@ -305,7 +306,7 @@ def _assess(request: AssessRequest, screen: _Screen, *, demonstration: bool = Fa
         raise typer.Exit(record.exit_code)
 
 
-def _dry_run(request: AssessRequest, screen: _Screen) -> None:
+def _dry_run(request: AssessRequest, screen: Screen) -> None:
     """Say what a run would do."""
     from safecheck.jobs.assess import prepare_run
     from safecheck.jobs.dry_run import dry_run
@@ -329,50 +330,6 @@ def _numbers(text: str) -> tuple[float, ...]:
         return tuple(float(part) for part in text.split(",") if part.strip())
     except ValueError:
         raise UsageError(f"--ratios is expected as numbers with commas between, e.g. 5,8,10; found {text!r}") from None
-
-
-class _Screen:
-    """One line of progress that is written over, on the error stream; nothing when quiet or no terminal."""
-
-    def __init__(self, *, quiet: bool) -> None:
-        self._quiet = quiet
-        self._rewrites = sys.stderr.isatty()
-        self._last = ""
-        self._since = 0.0
-
-    def update(self, text: str) -> None:
-        """Show a sentence."""
-        same_kind = text.split(":")[0] == self._last.split(":")[0]
-        if self._quiet or (same_kind and time.monotonic() - self._since < 0.2):
-            return
-        if self._rewrites:
-            typer.echo(f"\r\x1b[K{text}", nl=False, err=True)
-        elif not same_kind:
-            typer.echo(text, err=True)
-        self._last, self._since = text, time.monotonic()
-
-    def progress(self, found: object) -> None:
-        """Show how far a run is."""
-        done, total = getattr(found, "done", 0), getattr(found, "total", 0)
-        remaining, note = getattr(found, "remaining_s", None), getattr(found, "note", "")
-        left = "" if remaining is None else f", about {_duration(remaining)} left"
-        if note:
-            self.clear()
-            self.update(note)
-        self.update(f"Assessing: {done} of {total} parts, {getattr(found, 'frames', 0)} frames{left}")
-
-    def clear(self) -> None:
-        """Leave an empty line behind."""
-        if self._rewrites and self._last and not self._quiet:
-            typer.echo("\r\x1b[K", nl=False, err=True)
-        self._last = ""
-
-
-def _duration(seconds: float) -> str:
-    """Seconds in words."""
-    if seconds < 90:
-        return f"{seconds:.0f} s"
-    return f"{seconds / 60:.0f} min" if seconds < 5400 else f"{seconds / 3600:.1f} h"
 
 
 def main() -> None:

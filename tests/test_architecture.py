@@ -45,7 +45,8 @@ ARROWS: dict[str, frozenset[str]] = {
             "runner",
         }
     ),
-    "cli": frozenset({"jobs", "policy", "record"}),
+    "screen": frozenset(),
+    "cli": frozenset({"jobs", "policy", "record", "screen"}),
     "__main__": frozenset({"cli"}),
     "__init__": frozenset(),
 }
@@ -57,7 +58,7 @@ LIBRARIES: dict[str, frozenset[str]] = {
     "openjpeg": frozenset({"codecs", "dicom"}),
     "reportlab": frozenset({"report"}),
     "pypdf": frozenset({"report"}),
-    "typer": frozenset({"cli"}),
+    "typer": frozenset({"cli", "screen"}),
     "rich": frozenset({"cli"}),
     "click": frozenset({"cli"}),
     "pyarrow": frozenset({"record", "runner"}),
