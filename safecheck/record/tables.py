@@ -22,6 +22,7 @@ __all__ = [
     "CSV_LIMIT",
     "ROW_GROUP",
     "TableReader",
+    "csv_bytes",
     "from_rows",
     "read_table",
     "schema_of",
@@ -93,9 +94,14 @@ def _regroup(batches: Iterable[pa.Table], schema: pa.Schema) -> Iterator[pa.Tabl
 
 def write_csv(path: Path, table: pa.Table) -> None:
     """Write a table as CSV (RFC 4180, UTF-8, a header line, empty for null)."""
+    path.write_bytes(csv_bytes(table))
+
+
+def csv_bytes(table: pa.Table) -> bytes:
+    """Give a table as `write_csv` writes it."""
     buffer = io.BytesIO()
     pa.csv.write_csv(table, buffer)
-    path.write_bytes(buffer.getvalue())
+    return buffer.getvalue()
 
 
 def read_table(path: Path, table: str) -> pa.Table:

@@ -11,6 +11,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pyarrow as pa
+import pyarrow.csv
 import pyarrow.parquet as parquet
 import pytest
 import rfc8785
@@ -195,10 +196,12 @@ def alter(dossier: Path, table: str, column: str) -> None:
 
 
 def redo_record(dossier: Path) -> None:
-    """Let the record name the tables as they are now."""
+    """Let the record name the tables, and the CSV hold them, as they are now."""
     record = json.loads((dossier / "record.json").read_bytes())
     for entry in record["tables"]:
-        entry["sha256"] = sha256(dossier / entry["file"])
+        path = dossier / entry["file"]
+        entry["sha256"] = sha256(path)
+        pa.csv.write_csv(parquet.read_table(path), path.with_suffix(".csv"))
     (dossier / "record.json").write_bytes(rfc8785.dumps(record))
 
 
@@ -215,9 +218,40 @@ def test_verify_with_images_finds_an_altered_figure_under_a_seal_redone(
     redo_record(copy)
     write_seal(copy)
     found = verify_images(copy, hospital)
-    assert len(found.differences) == 2, found.differences
     assert "altered" in found.differences[0]
-    assert f"{column} is " in found.differences[1]
+    assert len([each for each in found.differences if f": {column} is " in each]) == 1, found.differences
+
+
+def test_verify_with_images_finds_an_altered_figure_of_the_record_under_a_seal_redone(
+    made: Made, hospital: Hospital, tmp_path: Path
+) -> None:
+    copy = copy_of(made, tmp_path)
+    record = json.loads((copy / "record.json").read_bytes())
+    figure = next(each for each in record["figures"] if each["measure"] == "rmse_content")
+    figure["median"] *= 0.5
+    (copy / "record.json").write_bytes(rfc8785.dumps(record))
+    write_seal(copy)
+    assert verify_images(copy, hospital).differences[1:] == ("record.json: figures does not follow from the tables",)
+
+
+def test_verify_finds_a_csv_that_does_not_hold_its_table_under_a_seal_redone(made: Made, tmp_path: Path) -> None:
+    copy = copy_of(made, tmp_path)
+    text = (copy / "measures.csv").read_text(encoding="utf-8")
+    (copy / "measures.csv").write_text(text.replace("jpeg2000", "jpeg2001", 1), encoding="utf-8")
+    write_seal(copy)
+    ended = run("verify", copy, folder=tmp_path)
+    assert (ended.code, "measures.csv does not hold what measures.parquet holds" in ended.out) == (6, True)
+
+
+def test_verify_with_images_asks_for_the_regions_of_the_run(made: Made, hospital: Hospital, tmp_path: Path) -> None:
+    other = tmp_path / "regions.json"
+    other.write_text((hospital.folder / "regions.json").read_text(encoding="utf-8") + "\n", encoding="utf-8")
+    words = ("--images", hospital.studies, "--key", hospital.key, "--regions", other)
+    ended = run("verify", made.folder, *words, folder=hospital.folder)
+    assert (ended.code, ended.err) == (
+        2,
+        "safecheck: the regions given are not those of the run; name the same file by --regions\n",
+    )
 
 
 def test_verify_finds_a_table_that_the_record_does_not_name_under_a_seal_redone(made: Made, tmp_path: Path) -> None:
