@@ -70,7 +70,7 @@ _Work: TypeAlias = Callable[[], FrameResult]
 
 
 def _done(works: Sequence[_Work], threads: int) -> list[FrameResult]:
-    """Results in the order of the works; compiled kernels leave the interpreter's lock, the jpeg2000 binding does not."""
+    """Results in the order of the works; compiled kernels leave the interpreter's lock, jpeg2000's does not."""
     if threads == 1 or len(works) == 1:
         return [work() for work in works]
     with ThreadPoolExecutor(threads) as pool:
