@@ -62,16 +62,21 @@ def timed(call: Callable[[], object]) -> float:
     return statistics.median(times)
 
 
-def safecheck(*words: str | Path, out: Path | None = None) -> float:
-    """Run the command and give its largest resident memory in MB."""
+def begin(*words: str | Path, out: Path | None = None) -> subprocess.Popen[bytes]:
+    """Start the command, with a new dossier where it writes one."""
     if out is not None:
         subprocess.run(["rm", "-rf", str(out)], check=True)
         words = (*words, "--out", out)
     command = [sys.executable, "-m", "safecheck", *map(str, words), "--quiet"]
-    process = subprocess.Popen(command, stdout=subprocess.DEVNULL, stderr=subprocess.PIPE)
+    return subprocess.Popen(command, stdout=subprocess.DEVNULL, stderr=subprocess.PIPE)
+
+
+def safecheck(*words: str | Path, out: Path | None = None) -> float:
+    """Run the command and give its largest resident memory in MB."""
+    process = begin(*words, out=out)
     _, status, usage = os.wait4(process.pid, 0)
     if status:
-        raise SystemExit(f"{command} ended with {os.waitstatus_to_exitcode(status)}")
+        raise SystemExit(f"{process.args!r} ended with {os.waitstatus_to_exitcode(status)}")
     return usage.ru_maxrss / 1024
 
 
