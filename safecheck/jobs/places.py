@@ -12,7 +12,7 @@ from safecheck.evaluation.crops import take_crop
 from safecheck.evaluation.original import Original, prepare
 from safecheck.evaluation.treatment import Treated, deliver, recompress
 from safecheck.record.crops import CropMeta, write_crop
-from safecheck.record.document import WorstPlaceEntry
+from safecheck.record.worst import WorstPlaceEntry
 from safecheck.wording import DELIVERED_COPIES
 
 __all__ = ["PLACES", "write_places"]

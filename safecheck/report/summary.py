@@ -5,7 +5,8 @@ from __future__ import annotations
 import textwrap
 from collections.abc import Sequence
 
-from safecheck.record.document import OutcomeEntry, RecordDocument
+from safecheck.record.document import RecordDocument
+from safecheck.record.outcomes import OutcomeEntry
 from safecheck.record.run import RunFacts
 from safecheck.report.numbers import count, figure, joined, plural, unit_after
 from safecheck.report.sections.front import (

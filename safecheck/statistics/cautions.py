@@ -7,7 +7,8 @@ from collections.abc import Iterator
 import numpy as np
 
 from safecheck.policy.plan import Plan
-from safecheck.record.document import OutcomeEntry, StratumEntry
+from safecheck.record.inputs import StratumEntry
+from safecheck.record.outcomes import OutcomeEntry
 from safecheck.statistics.bounds import patients_needed
 from safecheck.statistics.groups import Groups
 from safecheck.wording import CAUTIONS, CAUTIONS_WHEN

@@ -8,7 +8,7 @@ from typing import Literal, get_args
 
 import numpy as np
 
-from safecheck.record.document import ControlEntry
+from safecheck.record.outcomes import ControlEntry
 from safecheck.statistics.groups import Groups, Indices, place_at
 
 __all__ = ["CONTROL_ROLES", "controls"]

@@ -9,7 +9,8 @@ from typing import Literal, cast
 import numpy as np
 
 from safecheck.policy.plan import Plan
-from safecheck.record.document import CandidateEntry, CountEntry, InputCounts, StratumEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.inputs import CountEntry, InputCounts, StratumEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups
 from safecheck.wording import ANALYSIS_CODEC, DELIVERED_COPIES, sentence_of

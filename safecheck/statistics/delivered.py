@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from safecheck.record.document import DeliveredEntry, DeliveredPairEntry, ExpectationEntry
+from safecheck.record.delivered import DeliveredEntry, DeliveredPairEntry, ExpectationEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups, place_at
 

@@ -8,7 +8,7 @@ import numpy as np
 import numpy.typing as npt
 
 from safecheck.measures.catalogue import IMAGE_UNIT, MEASURES, Measure
-from safecheck.record.document import FigureEntry
+from safecheck.record.figures import FigureEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups, Indices, place_at
 

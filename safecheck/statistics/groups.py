@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.record.document import Place
+from safecheck.record.place import Place
 from safecheck.record.tables import TableReader
 
 __all__ = ["PLACE_COLUMNS", "Groups", "Indices", "place_at", "places_at"]

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.record.document import LedgerEntry
+from safecheck.record.candidates import LedgerEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups, Indices
 

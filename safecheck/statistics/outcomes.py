@@ -11,7 +11,8 @@ import numpy.typing as npt
 from safecheck.measures.catalogue import IMAGE_UNIT
 from safecheck.policy.limits import Evidence, Outcome, judge, measure_of, scope_in_words
 from safecheck.policy.plan import LimitPlan, Plan
-from safecheck.record.document import CandidateEntry, OutcomeEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.outcomes import OutcomeEntry
 from safecheck.statistics.bounds import share_upper_bound
 from safecheck.statistics.figures import ROW_AND_COLUMN
 from safecheck.statistics.groups import Groups, Indices, place_at

@@ -6,7 +6,8 @@ from collections.abc import Iterator
 
 import numpy as np
 
-from safecheck.record.document import CandidateEntry, WorstPlaceEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.worst import WorstPlaceEntry
 from safecheck.statistics.groups import Groups, places_at
 
 __all__ = ["PATCH", "PLACES_PER_STRATUM", "worst_places"]

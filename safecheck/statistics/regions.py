@@ -7,7 +7,8 @@ from collections.abc import Iterator
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.record.document import CandidateEntry, RegionEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.figures import RegionEntry
 from safecheck.statistics.groups import Groups, Indices, place_at
 
 __all__ = ["region_entries"]

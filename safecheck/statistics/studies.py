@@ -8,7 +8,8 @@ import numpy as np
 import numpy.typing as npt
 
 from safecheck.measures.catalogue import MEASURES
-from safecheck.record.document import CandidateEntry, WorstStudyEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.worst import WorstStudyEntry
 from safecheck.statistics.groups import Groups, Indices, place_at
 
 __all__ = ["STUDIES_PER_STRATUM", "STUDY_MEASURE", "worst_studies"]

@@ -10,19 +10,11 @@ import numpy as np
 
 from safecheck.policy.conditions import CONDITION_TEXTS, ExitCondition, in_order, winning
 from safecheck.policy.plan import Plan, plan_hash
-from safecheck.record.document import (
-    SCHEMA_VERSION,
-    CandidateEntry,
-    CodecCheckEntry,
-    Condition,
-    ControlEntry,
-    DeliveredEntry,
-    InputCounts,
-    OutcomeEntry,
-    PlanEntry,
-    RecordDocument,
-    TableEntry,
-)
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.delivered import DeliveredEntry
+from safecheck.record.document import SCHEMA_VERSION, CodecCheckEntry, PlanEntry, RecordDocument, TableEntry
+from safecheck.record.inputs import InputCounts
+from safecheck.record.outcomes import Condition, ControlEntry, OutcomeEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.bounds import patients_needed
 from safecheck.statistics.cautions import cautions_that_apply

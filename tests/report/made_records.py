@@ -7,28 +7,15 @@ import hashlib
 import math
 from typing import Any
 
-from safecheck.record.document import (
-    CandidateEntry,
-    CodecCheckEntry,
-    Condition,
-    ControlEntry,
-    CountEntry,
-    DeliveredEntry,
-    DeliveredPairEntry,
-    ExpectationEntry,
-    FigureEntry,
-    InputCounts,
-    LedgerEntry,
-    OutcomeEntry,
-    Place,
-    PlanEntry,
-    RecordDocument,
-    RegionEntry,
-    StratumEntry,
-    TableEntry,
-    WorstPlaceEntry,
-)
+from safecheck.record.candidates import CandidateEntry, LedgerEntry
+from safecheck.record.delivered import DeliveredEntry, DeliveredPairEntry, ExpectationEntry
+from safecheck.record.document import CodecCheckEntry, PlanEntry, RecordDocument, TableEntry
+from safecheck.record.figures import FigureEntry, RegionEntry
+from safecheck.record.inputs import CountEntry, InputCounts, StratumEntry
+from safecheck.record.outcomes import Condition, ControlEntry, OutcomeEntry
+from safecheck.record.place import Place
 from safecheck.record.run import RunFacts
+from safecheck.record.worst import WorstPlaceEntry
 from safecheck.wording import (
     ANALYSIS_CODEC,
     CAUTIONS,

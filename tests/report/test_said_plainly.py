@@ -6,7 +6,9 @@ from typing import Any
 
 import pytest
 
-from safecheck.record.document import Condition, CountEntry, RecordDocument
+from safecheck.record.document import RecordDocument
+from safecheck.record.inputs import CountEntry
+from safecheck.record.outcomes import Condition
 from safecheck.report.blocks import Chart, Charts, Facts, Places, Prose, Table
 from safecheck.report.content import report_of
 from safecheck.report.formulas import FORMULAS

@@ -7,7 +7,9 @@ from collections import Counter
 from collections.abc import Mapping, Sequence
 from typing import Literal
 
-from safecheck.record.document import ControlEntry, CountEntry, InputCounts, RecordDocument
+from safecheck.record.document import RecordDocument
+from safecheck.record.inputs import CountEntry, InputCounts
+from safecheck.record.outcomes import ControlEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Table
 from safecheck.report.numbers import count, joined, plural
 from safecheck.report.sections.front import controls_line

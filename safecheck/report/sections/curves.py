@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from safecheck.record.document import CandidateEntry, StratumEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import Bound, Chart, Point, Series
 from safecheck.report.definitions import label_of
 from safecheck.report.numbers import figure

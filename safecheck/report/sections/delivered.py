@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from safecheck.record.document import DeliveredEntry
+from safecheck.record.delivered import DeliveredEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Table
 from safecheck.report.numbers import aligned, count, header_ratio, joined, plural
 from safecheck.report.sections.front import delivered_line

@@ -6,7 +6,9 @@ from collections import Counter
 from collections.abc import Sequence
 from typing import Any
 
-from safecheck.record.document import CandidateEntry, DeliveredEntry, OutcomeEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.delivered import DeliveredEntry
+from safecheck.record.outcomes import OutcomeEntry
 from safecheck.report.blocks import Block, Column, Contents, Facts, Heading, Numbered, Prose, Row, Table, Title
 from safecheck.report.definitions import label_of
 from safecheck.report.numbers import bytes_text, count, figure, joined, plural, rounded_time, unit_after

@@ -6,7 +6,9 @@ import math
 from collections.abc import Sequence
 
 from safecheck.measures.catalogue import MEASURES
-from safecheck.record.document import CandidateEntry, FigureEntry, StratumEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.figures import FigureEntry
+from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Table
 from safecheck.report.definitions import label_of
 from safecheck.report.numbers import aligned

@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
-from safecheck.record.document import CandidateEntry, LedgerEntry, StratumEntry
+from safecheck.record.candidates import CandidateEntry, LedgerEntry
+from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import Bar, Bars, Block, Column, Heading, Prose, Row, Section, Table
 from safecheck.report.numbers import aligned, bytes_text, count, joined, plural
 from safecheck.report.sections.view import View, is_analysis, names_with_status, rest_sentence

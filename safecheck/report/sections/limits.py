@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from safecheck.record.document import OutcomeEntry
+from safecheck.record.outcomes import OutcomeEntry
 from safecheck.report.blocks import Block, Column, Prose, Row, Section, Table
 from safecheck.report.numbers import aligned_beside, count, plural
 from safecheck.report.sections.front import limit_words, outcome_words, studies_words

@@ -8,7 +8,7 @@ from pathlib import Path
 import numpy as np
 
 from safecheck.record.crops import read_crop
-from safecheck.record.document import WorstPlaceEntry, WorstStudyEntry
+from safecheck.record.worst import WorstPlaceEntry, WorstStudyEntry
 from safecheck.report.blocks import Block, Column, Heading, Pictures, PlaceCard, Places, Prose, Row, Section, Table
 from safecheck.report.definitions import label_of
 from safecheck.report.numbers import NONE, aligned, count, figure

@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TypeAlias
 
-from safecheck.record.document import RegionEntry
+from safecheck.record.figures import RegionEntry
 from safecheck.report.blocks import Block, Column, Prose, Row, Section, Table
 from safecheck.report.numbers import NONE, aligned, count, figure, joined
 from safecheck.report.sections.view import View, place_short, rest_sentence

@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Sequence
 from typing import Literal
 
-from safecheck.record.document import CandidateEntry, StratumEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import (
     Block,
     Charts,

@@ -8,15 +8,12 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from safecheck.errors import DossierError
-from safecheck.record.document import (
-    CandidateEntry,
-    FigureEntry,
-    LedgerEntry,
-    OutcomeEntry,
-    Place,
-    RecordDocument,
-    StratumEntry,
-)
+from safecheck.record.candidates import CandidateEntry, LedgerEntry
+from safecheck.record.document import RecordDocument
+from safecheck.record.figures import FigureEntry
+from safecheck.record.inputs import StratumEntry
+from safecheck.record.outcomes import OutcomeEntry
+from safecheck.record.place import Place
 from safecheck.record.run import RunFacts
 from safecheck.report.numbers import NONE, count, figure, plural
 from safecheck.wording import CAUTIONS_WHEN, NO_LIMITS, RECORD_TITLE

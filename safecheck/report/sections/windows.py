@@ -4,7 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from safecheck.record.document import CandidateEntry, FigureEntry, StratumEntry
+from safecheck.record.candidates import CandidateEntry
+from safecheck.record.figures import FigureEntry
+from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import Block, Column, Prose, Row, Table
 from safecheck.report.numbers import NONE, aligned, count
 from safecheck.report.sections.view import View, names_with_status, window_words
