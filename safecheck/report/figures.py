@@ -74,7 +74,7 @@ def ratio_ticks(low: float, high: float, width: float, apart: float = 17.0) -> l
 def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
     """Draw one chart: title and key above, axes, declared limits, curves with their spread."""
     load_fonts()
-    drawing = Drawing(width, height)
+    drawing = Drawing(width, height, initialFontName=REGULAR)
     keys = _key(chart.series, width)
     top = height - 14 - 11 * len(keys) - 4
     ticks = nice_ticks(max([chart.highest, *(bound.value for bound in chart.near_bounds)]))
@@ -215,7 +215,7 @@ def bars_drawing(bars: Bars, width: float) -> Drawing:
     largest = max(bar.value for bar in bars.bars) or 1.0
     room = width - names - max(text_width(bar.text, REGULAR, 7.4) for bar in bars.bars) - 8
     height = line * len(bars.bars) + gap
-    drawing = Drawing(width, height)
+    drawing = Drawing(width, height, initialFontName=REGULAR)
     for index, bar in enumerate(bars.bars):
         y = height - gap / 2 - line * (index + 1) + 2
         size = max(bar.value / largest * room, 0.8)

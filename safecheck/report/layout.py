@@ -28,7 +28,7 @@ from safecheck.report.figures import bars_drawing, chart_drawing
 from safecheck.report.folio import PageNumber
 from safecheck.report.sketches import cards_flowables
 from safecheck.report.tables import least_room, table_flowable
-from safecheck.report.theme import ACCENT, BOTTOM, INK, PAGE_HEIGHT, RULE, TEXT_WIDTH, TOP, markup, style
+from safecheck.report.theme import ACCENT, BOTTOM, INK, PAGE_HEIGHT, RULE, TABLE_FONT, TEXT_WIDTH, TOP, markup, style
 
 __all__ = ["ContentsEntry", "flow"]
 
@@ -36,6 +36,7 @@ ContentsEntry: TypeAlias = tuple[str, str]
 """Key of the bookmark, title."""
 
 _PLAIN = [
+    TABLE_FONT,
     ("VALIGN", (0, 0), (-1, -1), "TOP"),
     ("LEFTPADDING", (0, 0), (-1, -1), 0),
     ("RIGHTPADDING", (0, 0), (-1, -1), 6),

@@ -25,6 +25,7 @@ from safecheck.report.theme import (
     LEFT,
     PAGE_HEIGHT,
     PAGE_WIDTH,
+    REGULAR,
     TEXT_WIDTH,
     TOP,
     load_fonts,
@@ -55,6 +56,7 @@ def draw_pdf(report: Report) -> bytes:
         subject=report.subject,
         keywords=f"SHA-256 of the record: {report.record_sha256}",
         lang="en",
+        initialFontName=REGULAR,
         invariant=1,
         pageCompression=1,
     )

@@ -22,6 +22,7 @@ from safecheck.report.theme import (
     MID,
     REGULAR,
     RULE,
+    TABLE_FONT,
     TEXT_WIDTH,
     WHITE,
     fit_text,
@@ -48,7 +49,7 @@ def sketch_drawing(card: PlaceCard, box: float = _BOX) -> Drawing:
     load_fonts()
     scale = box / max(card.rows, card.columns)
     wide, high = card.columns * scale, card.rows * scale
-    drawing = Drawing(box + _MARGIN + 8, high + _MARGIN)
+    drawing = Drawing(box + _MARGIN + 8, high + _MARGIN, initialFontName=REGULAR)
     left, bottom = _MARGIN + 8, 0.6
     drawing.add(Rect(left, bottom, wide, high, fillColor=FAINT, strokeColor=INK, strokeWidth=0.6))
     if card.row is None or card.column is None:
@@ -95,6 +96,7 @@ def _pairs(cards: list[PlaceCard]) -> list[Flowable]:
 
 
 _CARD_STYLE = [
+    TABLE_FONT,
     ("VALIGN", (0, 0), (-1, -1), "TOP"),
     ("LEFTPADDING", (0, 0), (-1, -1), 0),
     ("RIGHTPADDING", (0, 0), (-1, -1), 6),
@@ -132,6 +134,7 @@ def _wide(card: PlaceCard) -> Flowable:
     table = Table(cells, colWidths=[first, sketch, _STRIP_WIDTH], rowHeights=[17, _STRIP_HEIGHT + 4], hAlign="LEFT")
     table.setStyle(
         [
+            TABLE_FONT,
             ("VALIGN", (0, 0), (-1, -1), "TOP"),
             ("LEFTPADDING", (0, 0), (-1, -1), 0),
             ("RIGHTPADDING", (0, 0), (-1, -1), 4),
@@ -149,7 +152,7 @@ def _wide(card: PlaceCard) -> Flowable:
 
 def _empty(text: str) -> Drawing:
     """An empty frame in place of pictures, with the reason."""
-    drawing = Drawing(_STRIP_WIDTH, _STRIP_HEIGHT)
+    drawing = Drawing(_STRIP_WIDTH, _STRIP_HEIGHT, initialFontName=REGULAR)
     drawing.add(Rect(0.4, _BELOW, _STRIP_WIDTH - 0.8, _PICTURE, fillColor=None, strokeColor=HAIR, strokeWidth=0.6))
     drawing.add(_text(_STRIP_WIDTH / 2, _BELOW + _PICTURE / 2, text, "middle"))
     return drawing

@@ -18,6 +18,7 @@ from safecheck.report.theme import (
     PAGE_HEIGHT,
     REGULAR,
     RULE,
+    TABLE_FONT,
     TEXT_WIDTH,
     WHITE,
     markup,
@@ -58,6 +59,7 @@ def table_flowable(table: Table) -> PlatypusTable:
         heads + body, colWidths=column_widths(table), repeatRows=len(heads), hAlign="LEFT", spaceAfter=6
     )
     commands = [
+        TABLE_FONT,
         *_over_style(table.columns, top, over=over),
         *_base_style(top, len(heads), len(table.rows), numbers),
         *_together(len(heads), len(heads) + len(body)),

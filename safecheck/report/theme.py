@@ -34,6 +34,7 @@ __all__ = [
     "PAGE_WIDTH",
     "REGULAR",
     "RULE",
+    "TABLE_FONT",
     "TEXT_WIDTH",
     "TOP",
     "WHITE",
@@ -54,6 +55,10 @@ FIRST_TOP = 17 * mm
 BOTTOM = 25 * mm
 
 REGULAR, MEDIUM, ITALIC, LIGHT = "Roboto", "Roboto-Medium", "Roboto-Italic", "Roboto-Light"
+"""Pages, tables and drawings are each told to begin with the first: the library would begin with a font that is not
+embedded, and names it even where no text uses it."""
+TABLE_FONT = ("FONTNAME", (0, 0), (-1, -1), REGULAR)
+"""First command of every table's style."""
 _FILES = {
     REGULAR: "Roboto-Regular.ttf",
     MEDIUM: "Roboto-Medium.ttf",

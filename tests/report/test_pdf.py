@@ -3,6 +3,7 @@ from __future__ import annotations
 import hashlib
 import io
 import re
+from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
@@ -169,42 +170,51 @@ def test_without_attachment_the_pdf_carries_no_file() -> None:
         taken_out(pdf)
 
 
-def test_all_fonts_are_embedded_and_are_ours(drawn: dict[str, bytes]) -> None:
-    names = set()
-    for page in PdfReader(io.BytesIO(drawn["rich"])).pages:
-        fonts = page["/Resources"]["/Font"]  # type: ignore[index] # pypdf types this as any object
-        for reference in fonts.values():
-            font = reference.get_object()
-            assert isinstance(font, DictionaryObject)
-            descriptor = font.get("/FontDescriptor")
-            if descriptor is not None:
-                assert "/FontFile2" in descriptor.get_object()
-                names.add(str(font["/BaseFont"]).partition("+")[2])
-    assert names == {"Roboto-Regular", "Roboto-Medium", "Roboto-Italic", "Roboto-Light"}
+def resources_and_contents(holder: DictionaryObject, content: bytes) -> Iterator[tuple[DictionaryObject, bytes]]:
+    """Yield the resources and the content stream of a page or form, then those of all forms placed on it."""
+    resources = holder["/Resources"].get_object()
+    assert isinstance(resources, DictionaryObject)
+    yield resources, content
+    for reference in resources.get("/XObject", {}).values():
+        inner = reference.get_object()
+        if inner["/Subtype"] == "/Form":
+            yield from resources_and_contents(inner, inner.get_data())
 
 
-def test_every_text_is_set_in_an_embedded_font(drawn: dict[str, bytes]) -> None:
-    # reportlab names Helvetica in the resources of each page; no text may use it.
-    used = set()
-    for page in PdfReader(io.BytesIO(drawn["rich"])).pages:
-        used |= set(re.findall(rb"/(F\d+[+\w]*) [\d.]+ Tf", page.get_contents().get_data()))  # type: ignore[union-attr]
-    not_embedded = {name for name in used if b"+" not in name}
-    assert not_embedded <= {b"F1"}
-    assert_f1_shows_nothing(drawn["rich"])
-
-
-def assert_f1_shows_nothing(pdf: bytes) -> None:
+def fonts_and_contents(pdf: bytes) -> Iterator[tuple[dict[str, DictionaryObject], bytes]]:
+    """Yield the fonts by their name in the resources, with the content that may use them, of pages and forms."""
     for page in PdfReader(io.BytesIO(pdf)).pages:
-        data = page.get_contents().get_data()  # type: ignore[union-attr]
-        for part in data.split(b"BT")[1:]:
-            text, _, _ = part.partition(b"ET")
-            font = None
-            for found in re.finditer(rb"/(F\d+[+\w]*) [\d.]+ Tf|\((?:[^\\)]|\\.)+\) Tj", text):
-                if found.group(1):
-                    font = found.group(1)
-                else:
-                    assert font is not None
-                    assert font != b"F1", text[:200]
+        contents = page.get_contents()
+        assert contents is not None
+        for resources, content in resources_and_contents(page, contents.get_data()):
+            fonts = resources.get("/Font", DictionaryObject()).get_object()
+            yield {name: reference.get_object() for name, reference in fonts.items()}, content
+
+
+def fonts_by_embedding(pdf: bytes) -> dict[bool, set[str]]:
+    """Names of the fonts that pages and forms name, with a font file inside and without."""
+    found: dict[bool, set[str]] = {True: set(), False: set()}
+    for fonts, _ in fonts_and_contents(pdf):
+        for font in fonts.values():
+            descriptor = font.get("/FontDescriptor", DictionaryObject()).get_object()
+            found["/FontFile2" in descriptor].add(str(font["/BaseFont"]).rpartition("+")[2])
+    return found
+
+
+@pytest.mark.parametrize("case", CASES)
+def test_every_font_named_on_a_page_or_form_is_embedded_and_ours(drawn: dict[str, bytes], case: str) -> None:
+    ours = {"Roboto-Regular", "Roboto-Medium", "Roboto-Italic", "Roboto-Light"}
+    assert fonts_by_embedding(drawn[case]) == {True: ours, False: set()}
+
+
+@pytest.mark.parametrize("case", CASES)
+def test_no_content_uses_a_font_that_its_resources_lack(drawn: dict[str, bytes], case: str) -> None:
+    used = set()
+    for fonts, content in fonts_and_contents(drawn[case]):
+        here = {name.decode() for name in re.findall(rb"(/[^\s/]+) [\d.]+ Tf", content)}
+        assert here <= set(fonts)
+        used |= here
+    assert len(used) >= 4
 
 
 def test_sections_have_bookmarks_and_the_contents_name_their_pages(drawn: dict[str, bytes]) -> None:
@@ -292,6 +302,7 @@ def test_pictures_stand_only_where_the_dossier_has_them_and_never_where_text_may
     pdf = draw(both, folder=tmp_path)
     texts = " ".join(page_texts(pdf))
     assert images_on(pdf) == 3
+    assert not fonts_by_embedding(pdf)[False]
     assert "brain (centre 40 HU, width 80 HU)" in texts
     assert "after minus before" in texts
     assert "No picture: the frame may carry text." in texts
