@@ -8,11 +8,11 @@ from typing import Any
 from reportlab.lib.units import mm
 from reportlab.platypus.flowables import Flowable
 
-from safecheck.report.theme import INK, LEFT, REGULAR, TEXT_WIDTH
+from safecheck.report.theme import FOOT, INK, LEFT, REGULAR, TEXT_WIDTH
 
 __all__ = ["Anchor", "Closing", "Folio", "PageNumber", "place_folio"]
 
-_FOLIO_BASE = 17.5 * mm - 11
+_FOLIO_BASE = FOOT - 11
 _SIZE = 8.6
 
 

@@ -12,6 +12,7 @@ from safecheck.report.blocks import Report
 from safecheck.report.folio import place_folio
 from safecheck.report.theme import (
     FIRST_TOP,
+    FOOT,
     INK,
     LEFT,
     MEDIUM,
@@ -82,18 +83,17 @@ def _marks(canvas: Any, marks: tuple[str, ...], top: float) -> None:  # noqa: AN
 
 
 def _foot(canvas: Any, report: Report, page: int) -> None:  # noqa: ANN401 - reportlab's canvas
-    """Short caution on the left; page number and the beginning of the record's hash on the right."""
-    y = 17.5 * mm
+    """Short caution on the left, page number on the right, the whole hash of the record below."""
     canvas.setStrokeColor(RULE)
     canvas.setLineWidth(0.4)
-    canvas.line(LEFT, y, _RIGHT, y)
+    canvas.line(LEFT, FOOT, _RIGHT, FOOT)
     caution = Paragraph(markup(SHORT_CAUTION), style("small-label"))
     _, height = caution.wrap(TEXT_WIDTH - 48 * mm, 30)
-    caution.drawOn(canvas, LEFT, y - 4 - height)
+    caution.drawOn(canvas, LEFT, FOOT - 4 - height)
     place_folio(canvas, page)
     canvas.setFillColor(MID)
-    canvas.setFont(REGULAR, 7.2)
-    canvas.drawRightString(_RIGHT, y - 21.5, f"Record {report.record_sha256[:16]}")
+    canvas.setFont(REGULAR, 6.6)
+    canvas.drawString(LEFT, FOOT - 33, f"SHA-256 of the record {report.record_sha256}")
 
 
 def _across(canvas: Any, text: str) -> None:  # noqa: ANN401 - reportlab's canvas

@@ -23,6 +23,7 @@ __all__ = [
     "BOTTOM",
     "FAINT",
     "FIRST_TOP",
+    "FOOT",
     "HAIR",
     "INK",
     "ITALIC",
@@ -53,6 +54,8 @@ TOP = 25 * mm
 FIRST_TOP = 17 * mm
 """The first page has no running head."""
 BOTTOM = 25 * mm
+FOOT = 20 * mm
+"""Height of the rule above the foot of each page."""
 
 REGULAR, MEDIUM, ITALIC, LIGHT = "Roboto", "Roboto-Medium", "Roboto-Italic", "Roboto-Light"
 """Pages, tables and drawings are each told to begin with the first: the library would begin with a font that is not

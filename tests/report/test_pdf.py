@@ -90,9 +90,17 @@ def test_every_foot_has_the_caution_the_page_number_and_the_hash(drawn: dict[str
     texts = page_texts(drawn[case])
     for number, text in enumerate(texts, 1):
         assert f"Page {number} of {len(texts)}" in text
-        assert f"Record {sha256[:16]}" in text
+        assert f"SHA-256 of the record {sha256}" in text
         assert SHORT_CAUTION in text
     assert sha256 in texts[0]
+
+
+def test_the_hash_in_the_foot_is_at_least_six_points_high(drawn: dict[str, bytes]) -> None:
+    with pypdfium2.PdfDocument(drawn["one frame"]) as document:
+        for page in document:
+            text = page.get_textpage()
+            start = text.get_text_range().rindex(make_sha256(one_frame()))
+            assert pypdfium2.raw.FPDFText_GetFontSize(text, start) >= 6
 
 
 def make_sha256(record: RecordDocument) -> str:
