@@ -18,12 +18,13 @@ from typing import ClassVar
 
 from safecheck.codecs import search
 from safecheck.codecs.base import Encoded, Settings, admit, fitted
+from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.reversible import best_reversible
 from safecheck.codecs.stream_headers import MOST_LEVELS, check_jpeg2000
-from safecheck.errors import CannotEncode, CodecUnavailable, CorruptCode
+from safecheck.errors import CodecUnavailable
 from safecheck.frames import PixelFormat, Raster, Samples, SizeBasis
 
-__all__ = ["LIBRARY_ERRORS", "RATIO_HIGHEST", "RATIO_LOWEST", "Jpeg2000"]
+__all__ = ["RATIO_HIGHEST", "RATIO_LOWEST", "Jpeg2000"]
 
 RATIO_LOWEST = 1.001
 """Just above 1, at which the library would turn reversible."""
@@ -33,9 +34,6 @@ _SMALLEST_SIDE = 1 << MOST_LEVELS
 _RGB = 1
 _ENCODER = threading.Lock()
 """The binding crashes where two threads encode at once. It never leaves the interpreter's lock: none waits longer."""
-
-LIBRARY_ERRORS = (RuntimeError, ValueError, TypeError, OverflowError, MemoryError)
-"""What the library was seen, or says, to raise."""
 
 
 def _library() -> ModuleType:
@@ -100,7 +98,7 @@ class Jpeg2000:
         """
         admit(self, raster)
         library, form = _library(), raster.format
-        try:
+        with writing(self.name, "OpenJPEG"):
             with _ENCODER:
                 code = library.encode_array(
                     raster.samples,
@@ -108,12 +106,7 @@ class Jpeg2000:
                     photometric_interpretation=_RGB if form.channels == 3 else 0,
                     compression_ratios=[self.ratio],
                 )
-        except LIBRARY_ERRORS as error:
-            raise CannotEncode(f"{self.name}: OpenJPEG wrote no code: {error}") from error
-        try:
             check_jpeg2000(code, form, raster.shape, reversible=False)
-        except CorruptCode as error:
-            raise CannotEncode(f"{self.name}: OpenJPEG wrote another code than asked for: {error}") from error
         return bytes(code)
 
     def decode(self, code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
@@ -128,10 +121,8 @@ class Jpeg2000:
         """
         library = _library()
         check_jpeg2000(code, format, shape, reversible=False)
-        try:
+        with reading(self.name, "OpenJPEG"):
             decoded = library.decode(code, 0)
-        except LIBRARY_ERRORS as error:
-            raise CorruptCode(f"{self.name}: OpenJPEG cannot read the code: {error}") from error
         return fitted(decoded, self.name, format, shape)
 
     def encode_to_size(self, raster: Raster, target_bytes: float) -> Encoded:

@@ -17,14 +17,13 @@ from typing import ClassVar, Literal
 import numpy as np
 
 from safecheck.codecs.base import Codec, Settings, admit, fitted
+from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.stream_headers import check_jpeg2000, check_jpegls
-from safecheck.errors import CannotEncode, CodecUnavailable, CorruptCode
+from safecheck.errors import CannotEncode, CodecUnavailable
 from safecheck.frames import PixelFormat, Raster, Samples
 
-__all__ = ["LIBRARY_ERRORS", "Jpeg2000Lossless", "JpegLs", "Smallest", "best_reversible", "cheapest"]
+__all__ = ["Jpeg2000Lossless", "JpegLs", "Smallest", "best_reversible", "cheapest"]
 
-LIBRARY_ERRORS = (RuntimeError, ValueError, TypeError, NotImplementedError, OverflowError, MemoryError)
-"""What the library was seen, or says, to raise; its own errors are RuntimeError."""
 _OFFSET = "stored value + 2^(bits stored - 1)"
 _PRECISION = "8 or 16 bits"
 _LONGEST_SIDE = 0xFFFF
@@ -100,15 +99,10 @@ class JpegLs:
         admit(self, raster)
         library, form = _library("JPEGLS"), raster.format
         unsigned = _offset(raster.samples, -form.lowest).astype(_unsigned(form), copy=False)
-        try:
+        with writing(self.name, "CharLS"):
             # Noise can come out larger than it went in, for which the library's own buffer is too small.
             code = bytes(library.jpegls_encode(unsigned, level=0, out=2 * unsigned.nbytes + _HEADROOM_BYTES))
-        except LIBRARY_ERRORS as error:
-            raise CannotEncode(f"{self.name}: CharLS wrote no code: {error}") from error
-        try:
             check_jpegls(code, _unsigned(form).itemsize * 8, form.channels, raster.shape)
-        except CorruptCode as error:
-            raise CannotEncode(f"{self.name}: CharLS wrote another code than asked for: {error}") from error
         return code
 
     def decode(self, code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
@@ -123,10 +117,8 @@ class JpegLs:
         """
         library = _library("JPEGLS")
         check_jpegls(code, _unsigned(format).itemsize * 8, format.channels, shape)
-        try:
+        with reading(self.name, "CharLS"):
             decoded = library.jpegls_decode(code)
-        except LIBRARY_ERRORS as error:
-            raise CorruptCode(f"{self.name}: CharLS cannot read the code: {error}") from error
         return fitted(_offset(decoded, format.lowest), self.name, format, shape)
 
 
@@ -178,7 +170,7 @@ class Jpeg2000Lossless:
         library, form = _library("JPEG2K"), raster.format
         # Told 8 bits or fewer of a 16-bit sample, the library writes 16.
         narrow = np.dtype(f"{'i' if form.signed else 'u'}{_unsigned(form).itemsize}")
-        try:
+        with writing(self.name, "OpenJPEG"):
             code = library.jpeg2k_encode(
                 raster.samples.astype(narrow, copy=False),
                 codecformat="j2k",
@@ -187,12 +179,7 @@ class Jpeg2000Lossless:
                 mct=form.channels == 3,
                 numthreads=1,
             )
-        except LIBRARY_ERRORS as error:
-            raise CannotEncode(f"{self.name}: OpenJPEG wrote no code: {error}") from error
-        try:
             check_jpeg2000(code, form, raster.shape, reversible=True)
-        except CorruptCode as error:
-            raise CannotEncode(f"{self.name}: OpenJPEG wrote another code than asked for: {error}") from error
         return bytes(code)
 
     def decode(self, code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
@@ -207,10 +194,8 @@ class Jpeg2000Lossless:
         """
         library = _library("JPEG2K")
         check_jpeg2000(code, format, shape, reversible=True)
-        try:
+        with reading(self.name, "OpenJPEG"):
             decoded = library.jpeg2k_decode(code, numthreads=1)
-        except LIBRARY_ERRORS as error:
-            raise CorruptCode(f"{self.name}: OpenJPEG cannot read the code: {error}") from error
         return fitted(decoded, self.name, format, shape)
 
 

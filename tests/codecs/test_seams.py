@@ -14,9 +14,10 @@ import numpy as np
 import openjpeg.utils
 import pytest
 
-from safecheck.codecs import jpeg2000, reversible, selftest
+from safecheck.codecs import selftest
 from safecheck.codecs.base import Codec
 from safecheck.codecs.jpeg2000 import Jpeg2000
+from safecheck.codecs.library_calls import LIBRARY_ERRORS
 from safecheck.codecs.reversible import Jpeg2000Lossless, JpegLs
 from safecheck.errors import CannotEncode, CodecError, CodecUnavailable, CorruptCode
 from safecheck.frames import PixelFormat, Raster
@@ -51,7 +52,7 @@ def returning(value: object) -> Callable[..., Any]:
     return function
 
 
-@pytest.mark.parametrize("error", reversible.LIBRARY_ERRORS, ids=lambda error: error.__name__)
+@pytest.mark.parametrize("error", LIBRARY_ERRORS, ids=lambda error: error.__name__)
 def test_what_a_library_raises_has_our_name(
     seam: tuple[Codec, Any, str, str], error: type[Exception], monkeypatch: pytest.MonkeyPatch
 ) -> None:
@@ -68,7 +69,7 @@ def test_what_a_library_raises_has_our_name(
 def test_no_exception_of_imagecodecs_slips_by() -> None:
     for name in ("Jpeg2kError", "JpeglsError"):
         error = getattr(imagecodecs, name)
-        assert issubclass(error, reversible.LIBRARY_ERRORS)
+        assert issubclass(error, LIBRARY_ERRORS)
     # A part that a build lacks raises an ImportError at its first call; `available` is asked before.
     assert issubclass(imagecodecs.DelayedImportError, ImportError)
 
@@ -84,7 +85,7 @@ def test_no_exception_of_pylibjpeg_openjpeg_slips_by() -> None:
     assert raised
     builtins = importlib.import_module("builtins")
     for name in raised:
-        assert issubclass(getattr(builtins, name), jpeg2000.LIBRARY_ERRORS), name
+        assert issubclass(getattr(builtins, name), LIBRARY_ERRORS), name
 
 
 @pytest.mark.parametrize(
