@@ -3,54 +3,54 @@
 from __future__ import annotations
 
 from types import MappingProxyType
+from typing import TypeAlias
 
 __all__ = ["FORMULAS"]
 
 _STATED = "definition stated here"
 _WANG = "Wang et al. 2004, IEEE TIP 13:600"
 _COMMON = "common definition"
-_E = "e = after − before"
+_CIE = "ISO/CIE 11664-6"
+_CIEDE2000 = "CIEDE2000 over content; sRGB and D65 assumed"
 
-FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
+_Entry: TypeAlias = tuple[str, str, str]
+"""Label, formula with its domain, source."""
+
+
+def _errors(domain: str, over: str) -> dict[str, _Entry]:
+    """Measures of the error alone, which differ by the pixels that they are taken over."""
+    tail = f"99.9th percentile of |e| over {over}, from 1,000 pixels on"
+    return {
+        f"bias_{domain}": (f"Mean error, {domain}", f"Σ e ÷ n over {over}; e = after − before", _COMMON),
+        f"rmse_{domain}": (f"RMSE, {domain}", f"√(Σ e² ÷ n) over {over}", _COMMON),
+        f"mean_absolute_{domain}": (f"Mean absolute error, {domain}", f"Σ |e| ÷ n over {over}", _COMMON),
+        f"max_{domain}": (f"Largest error, {domain}", f"max |e| over {over}", _COMMON),
+        f"p999_{domain}": (f"99.9th percentile of error, {domain}", tail, _STATED),
+    }
+
+
+def _psnr(name: str, domain: str, over: str) -> dict[str, _Entry]:
+    """PSNR on both peaks."""
+    peaks = {
+        "bits": ("stored bits", "span that the stored bits can express"),
+        "range": ("content range", "span of the original's content"),
+    }
+    return {
+        name.format(key): (
+            f"PSNR, {domain}, peak of {peak}",
+            f"20 log₁₀(peak ÷ RMSE) over {over}; peak: {span}",
+            _COMMON,
+        )
+        for key, (peak, span) in peaks.items()
+    }
+
+
+FORMULAS: MappingProxyType[str, _Entry] = MappingProxyType(
     {
-        "bias_frame": ("Mean error, frame", f"Σ e ÷ n over all pixels; {_E}", _COMMON),
-        "bias_content": ("Mean error, content", f"Σ e ÷ n over content; {_E}", _COMMON),
-        "rmse_frame": ("RMSE, frame", "√(Σ e² ÷ n) over all pixels", _COMMON),
-        "rmse_content": ("RMSE, content", "√(Σ e² ÷ n) over content", _COMMON),
-        "mean_absolute_frame": ("Mean absolute error, frame", "Σ |e| ÷ n over all pixels", _COMMON),
-        "mean_absolute_content": ("Mean absolute error, content", "Σ |e| ÷ n over content", _COMMON),
-        "max_frame": ("Largest error, frame", "max |e| over all pixels", _COMMON),
-        "max_content": ("Largest error, content", "max |e| over content", _COMMON),
-        "p999_frame": (
-            "99.9th percentile of error, frame",
-            "99.9th percentile of |e| over all pixels, from 1,000 pixels on",
-            _STATED,
-        ),
-        "p999_content": (
-            "99.9th percentile of error, content",
-            "99.9th percentile of |e| over content, from 1,000 pixels on",
-            _STATED,
-        ),
-        "psnr_peak_bits_db": (
-            "PSNR, frame, peak of stored bits",
-            "20 log₁₀(peak ÷ RMSE) over all pixels; peak: span that the stored bits can express",
-            _COMMON,
-        ),
-        "psnr_peak_range_db": (
-            "PSNR, frame, peak of content range",
-            "20 log₁₀(peak ÷ RMSE) over all pixels; peak: span of the original's content",
-            _COMMON,
-        ),
-        "psnr_peak_bits_content_db": (
-            "PSNR, content, peak of stored bits",
-            "20 log₁₀(peak ÷ RMSE) over content; peak: span that the stored bits can express",
-            _COMMON,
-        ),
-        "psnr_peak_range_content_db": (
-            "PSNR, content, peak of content range",
-            "20 log₁₀(peak ÷ RMSE) over content; peak: span of the original's content",
-            _COMMON,
-        ),
+        **_errors("frame", "all pixels"),
+        **_errors("content", "content"),
+        **_psnr("psnr_peak_{}_db", "frame", "all pixels"),
+        **_psnr("psnr_peak_{}_content_db", "content", "content"),
         "worst_patch_rmse": (
             "RMSE, worst patch 8×8",
             "largest √(Σ e² ÷ 64) of the patches with at least half content",
@@ -96,21 +96,9 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
             _COMMON,
         ),
         "max_channels": ("Largest error, colour channels", "max |e| over all samples of red, green and blue", _COMMON),
-        "ciede2000_mean": (
-            "Colour difference, mean",
-            "mean CIEDE2000 over content; sRGB and D65 assumed",
-            "ISO/CIE 11664-6",
-        ),
-        "ciede2000_p95": (
-            "Colour difference, 95th percentile",
-            "95th percentile of CIEDE2000 over content; sRGB and D65 assumed",
-            "ISO/CIE 11664-6",
-        ),
-        "ciede2000_max": (
-            "Colour difference, largest",
-            "largest CIEDE2000 over content; sRGB and D65 assumed",
-            "ISO/CIE 11664-6",
-        ),
+        "ciede2000_mean": ("Colour difference, mean", f"mean {_CIEDE2000}", _CIE),
+        "ciede2000_p95": ("Colour difference, 95th percentile", f"95th percentile of {_CIEDE2000}", _CIE),
+        "ciede2000_max": ("Colour difference, largest", f"largest {_CIEDE2000}", _CIE),
         "ssim": (
             "SSIM",
             "mean of the SSIM map of display levels at the window named, over content not clipped in the original; "
@@ -143,16 +131,7 @@ FORMULAS: MappingProxyType[str, tuple[str, str, str]] = MappingProxyType(
             "99.9th percentile of |e| over pixels whose centre is inside, from 1,000 pixels on",
             _STATED,
         ),
-        "region_psnr_peak_bits_db": (
-            "PSNR, region, peak of stored bits",
-            "20 log₁₀(peak ÷ RMSE) over the region; peak: span that the stored bits can express",
-            _COMMON,
-        ),
-        "region_psnr_peak_range_db": (
-            "PSNR, region, peak of content range",
-            "20 log₁₀(peak ÷ RMSE) over the region; peak: span of the original's content",
-            _COMMON,
-        ),
+        **_psnr("region_psnr_peak_{}_db", "region", "the region"),
         "region_ssim": (
             "SSIM, region",
             "mean of the SSIM map at the first window over pixels whose centre is inside",
