@@ -148,7 +148,7 @@ class MeasureRow(TreatedFrame):
     worst_patch_region: str = column("", "Label of a drawn region that touches that patch, or empty.")
     patch_p95_rmse: float | None = optional(IMAGE_UNIT, "95th percentile of the patches' RMSE.")
     patch_median_rmse: float | None = optional(IMAGE_UNIT, "Median of the patches' RMSE.")
-    window_mm: float | None = optional("mm", "Side of the larger patch; null without a spacing.")
+    window_mm: float | None = optional("mm", "Side of the larger patch; null without a spacing or if not larger.")
     worst_window_rmse: float | None = optional(IMAGE_UNIT, "Largest RMSE of the larger patches.")
     worst_window_row: int | None = optional("pixels", "First row of that larger patch.")
     worst_window_column: int | None = optional("pixels", "First column of that larger patch.")

@@ -1,192 +1,81 @@
 """Figures of a dossier computed again from the DICOM files, with other people's libraries and nothing of the package.
 
-    python tests/end_to_end/independent.py DOSSIER ORIGINAL... [--delivered COPY...]
+    python -m tests.end_to_end.independent DOSSIER ORIGINAL... [--delivered COPY...] [--regions FILE]
 
-says for each figure of measures.csv and windows.csv how far it lies from the one computed here. Files are told apart
-by their rows and columns, since the tables hold no names.
+says for each figure of measures.csv, windows.csv and regions.csv how far it lies from the one computed here. Files are
+told apart by their rows and columns, since the tables hold no names.
 
-Decoding: pydicom with its own plug-ins. Encoding: OpenJPEG and CharLS by way of pylibjpeg-openjpeg and imagecodecs.
-SSIM: scikit-image. The rest: the definitions written out in NumPy and SciPy.
+SSIM: scikit-image. The rest: the definitions of docs/measures.md written out in NumPy, here and in the modules beside.
 """
 
 from __future__ import annotations
 
+import argparse
 import csv
-import functools
 import itertools
 import math
+import operator
 import sys
 import zlib
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 
-import imagecodecs
 import numpy as np
-import numpy.typing as npt
-import openjpeg.utils
-import scipy.ndimage
 import skimage.metrics
-from pydicom import Dataset, dcmread
-from pydicom.encaps import generate_frames
-from pydicom.pixels.utils import pixel_array
 
-__all__ = ["Difference", "Image", "compare", "read_image", "recompress"]
+from tests.end_to_end import independent_places as places
+from tests.end_to_end.independent_image import Image, bytes_of, content_of, read_image, recompress, reversible_sizes
+from tests.end_to_end.independent_places import Array, Figure
+from tests.end_to_end.independent_regions import Drawn, measure_region, read_regions
 
-Array = npt.NDArray[Any]
-Figures = dict[str, float | int | str]
+__all__ = ["Difference", "compare"]
+
+Figures = dict[str, Figure]
 """Column -> what it should hold."""
 SSIM_MARGIN = 5
 """Half of the 11x11 window of SSIM, which must lie wholly in the frame."""
-
-
-@dataclass(frozen=True, eq=False)
-class Image:
-    """First frame of a DICOM file."""
-
-    header: Dataset
-    stored: Array
-    values: Array
-    """In the modality's unit; luma for colour."""
-    padding: Array
-
-    @property
-    def bits(self) -> int:
-        return int(self.header.BitsStored)
-
-    @property
-    def signed(self) -> bool:
-        return bool(self.header.PixelRepresentation)
-
-    @property
-    def is_colour(self) -> bool:
-        return self.stored.ndim == 3
-
-    @property
-    def bytes_stored(self) -> float:
-        return self.stored.size * self.bits / 8
+ELLIPSE_BOUND = 1e-6
+"""An ellipse is integrated here and a polygon of many vertices there (docs/regions.md)."""
 
 
 @dataclass(frozen=True)
 class Difference:
     """One figure of the table beside the one computed here."""
 
+    table: str
     row: str
     column: str
     recorded: str
-    computed: float | int | str
+    computed: Figure
+    bound: float = 1e-9
+
+    @property
+    def agrees(self) -> bool:
+        return self.relative <= self.bound
 
     @property
     def relative(self) -> float:
-        """0 where equal; infinite where the table holds nothing. Below 1e-3 the difference counts, not its share."""
-        if isinstance(self.computed, str):
-            return 0.0 if self.computed == self.recorded else math.inf
+        """0 where equal; infinite where one is nothing. Below 1e-3 the difference counts, not its share."""
+        if self.computed is None or isinstance(self.computed, str):
+            return 0.0 if (self.computed or "") == self.recorded else math.inf
         recorded = float(self.recorded or "inf")
         return 0.0 if recorded == self.computed else abs(recorded - self.computed) / max(abs(self.computed), 1e-3)
 
 
-def read_image(path: Path) -> Image:
-    """Read header and first frame."""
-    header = dcmread(path, stop_before_pixels=True)
-    stored = pixel_array(path, index=0, raw=True)
-    return with_samples(header, stored)
+def peaks_of(before: Image) -> dict[str, float]:
+    """Peaks of both PSNR."""
+    return {
+        "bits": float((1 << before.bits) - 1) * before.step,
+        "range": float(np.ptp(before.values[content_of(before)[1]])),
+    }
 
 
-def with_samples(header: Dataset, stored: Array) -> Image:
-    """The image that these stored values make under a header."""
-    if stored.ndim == 3:
-        values = stored.astype(float) @ [0.299, 0.587, 0.114]  # ITU-R BT.601
-    else:
-        slope, intercept = float(header.get("RescaleSlope", 1)), float(header.get("RescaleIntercept", 0))
-        values = stored * slope + intercept
-    padding = np.zeros(stored.shape[:2], bool)
-    if "PixelPaddingValue" in header:
-        padding = stored == int(header.PixelPaddingValue)
-    return Image(header, stored, values, padding)
-
-
-def recompress(image: Image, ratio: float) -> tuple[bytes, Image]:
-    """JPEG 2000 9/7 at a ratio on the bits-stored basis, by OpenJPEG told the bits stored."""
-    code = openjpeg.utils.encode_array(
-        image.stored,
-        bits_stored=image.bits,
-        photometric_interpretation=1 if image.is_colour else 0,
-        compression_ratios=[ratio],
-    )
-    decoded = openjpeg.utils.decode(code, 0)
-    return code, with_samples(image.header, decoded.reshape(image.stored.shape))
-
-
-@functools.cache
-def reversible_sizes(image: Image) -> dict[str, int]:
-    """Bytes of JPEG-LS and of JPEG 2000 5/3."""
-    unsigned = image.stored.astype(np.int64) + (1 << (image.bits - 1)) * image.signed
-    narrow = f"u{1 if image.bits <= 8 else 2}"
-    jpegls = imagecodecs.jpegls_encode(unsigned.astype(narrow), level=0)
-    jpeg2000 = imagecodecs.jpeg2k_encode(
-        image.stored, codecformat="j2k", bitspersample=image.bits, reversible=True, mct=image.is_colour
-    )
-    return {"jpegls-reversible": len(jpegls), "jpeg2000-reversible": len(jpeg2000)}
-
-
-@functools.cache
-def content_of(image: Image) -> tuple[str, Array]:
-    """Content by the rule of the modality, with the rule's name."""
-    if image.header.Modality == "CT":
-        return "ct-air-1", ~(image.padding | _surrounding_air(image.values, image.padding))
-    if image.header.Modality == "MR":
-        return "mr-background-1", ~(image.padding | _background(image.values, image.padding))
-    return "padding-only-1", ~image.padding
-
-
-def _connected_to_outside(low: Array, padding: Array) -> Iterator[Array]:
-    """Yield the 4-connected areas of low values that touch the frame's rim or padding."""
-    areas, _ = scipy.ndimage.label(low & ~padding)
-    rim = scipy.ndimage.binary_dilation(padding)
-    rim[0], rim[-1], rim[:, 0], rim[:, -1] = True, True, True, True
-    for number in np.unique(areas[rim]):
-        if number:
-            yield areas == number
-
-
-def _surrounding_air(values: Array, padding: Array) -> Array:
-    """Areas below -500 HU that touch the outside and whose mean is below -900 HU."""
-    air = np.zeros(values.shape, bool)
-    for area in _connected_to_outside(values < -500, padding):
-        if values[area].mean() < -900:
-            air |= area
-    return air
-
-
-def _background(values: Array, padding: Array) -> Array:
-    """What lies around the body in a magnitude image: low after a mean of 3x3, and connected to the outside."""
-    least = values.min()
-    filled = np.zeros(values.shape, bool)
-    for area in _connected_to_outside(values == least, padding):
-        filled |= area
-    outside = filled | padding
-    width = max(4, min(values.shape) // 32)
-    near = scipy.ndimage.binary_dilation(outside, np.ones((2 * width + 1, 2 * width + 1)))
-    near[:width], near[-width:], near[:, :width], near[:, -width:] = True, True, True, True
-    # Of Rayleigh noise a quarter lies below sigma * sqrt(-2 ln 0.75).
-    level = 2.5 * np.percentile(values[near & ~outside], 25) / math.sqrt(-2 * math.log(0.75))
-    if level > 0.25 * np.percentile(values[~outside], 99):
-        if not filled.any():
-            raise ValueError("no background in this frame")
-        level = least
-    smooth = scipy.ndimage.uniform_filter(values, 3, mode="nearest")
-    background = np.zeros(values.shape, bool)
-    for area in _connected_to_outside((smooth <= max(level, least)) | (values == least), padding):
-        background |= area
-    return background
-
-
-def measure(before: Image, after: Image, code_bytes: int, source_bytes: int) -> Figures:
+def measure(before: Image, after: Image, code_bytes: int, source_bytes: int, drawn: dict[str, Drawn]) -> Figures:
     """Columns of measures.csv."""
     error = after.values - before.values
     rule, content = content_of(before)
-    peak_bits = float((1 << before.bits) - 1) * abs(float(before.header.get("RescaleSlope", 1)))
+    peaks = peaks_of(before)
     sizes = reversible_sizes(before)
     figures: Figures = {
         "content_rule": rule,
@@ -201,9 +90,11 @@ def measure(before: Image, after: Image, code_bytes: int, source_bytes: int) -> 
         "times_smaller_than_lossless": min(sizes.values()) / code_bytes,
         "lossless_bytes": min(sizes.values()),
         "times_smaller_than_now": source_bytes / code_bytes,
-        "peak_bits": peak_bits,
-        "peak_range": float(np.ptp(before.values[content])),
+        "peak_bits": peaks["bits"],
+        "peak_range": peaks["range"],
         "padding_changed": int((after.stored != before.stored)[before.padding].sum()),
+        "unchanged": "false" if (after.stored != before.stored).any() else "true",
+        "became_padding": int((after.padding & ~before.padding).sum()),
     }
     for name, errors in (("frame", error.ravel()), ("content", error[content])):
         figures |= {
@@ -213,30 +104,29 @@ def measure(before: Image, after: Image, code_bytes: int, source_bytes: int) -> 
             f"max_{name}": float(np.abs(errors).max()),
             f"p999_{name}": float(np.percentile(np.abs(errors), 99.9)),
         }
-    for peak in ("bits", "range"):
-        for name, suffix in (("frame", ""), ("content", "_content")):
-            ratio = float(figures[f"peak_{peak}"]) / float(figures[f"rmse_{name}"])
-            figures[f"psnr_peak_{peak}{suffix}_db"] = 20 * math.log10(ratio)
+    for (peak, value), (name, suffix) in itertools.product(peaks.items(), (("frame", ""), ("content", "_content"))):
+        rmse = error.ravel() if name == "frame" else error[content]
+        figures[f"psnr_peak_{peak}{suffix}_db"] = 20 * math.log10(value / math.sqrt(np.mean(rmse**2)))
     if before.is_colour:
         of_channels = after.stored.astype(float) - before.stored
         figures["rmse_channels"] = float(np.sqrt(np.mean(of_channels**2)))
         figures["max_channels"] = float(np.abs(of_channels).max())
-    return figures | _worst_patch(error, content)
+        figures |= places.colour_difference(before.stored, after.stored, content)
+    return (
+        figures
+        | places.place_of_largest(np.abs(error), content, "max_content")
+        | places.worst_patches(error, content, {each.label: each.coverage > 0 for each in drawn.values()})
+        | places.worst_windows(error, content, before.spacing_mm)
+        | places.edge_band(error, content, before.padding)
+        | places.noise(before.values, after.values, content, before.step)
+    )
 
 
-def _worst_patch(error: Array, content: Array) -> Figures:
-    """Largest RMSE over content of the complete 8x8 patches from (0, 0) with half content or more."""
-    rows, columns = (length // 8 * 8 for length in error.shape)
-    patches = (rows // 8, 8, columns // 8, 8)
-    inside = content[:rows, :columns]
-    counts = inside.reshape(patches).sum(axis=(1, 3))
-    sums = np.where(inside, error[:rows, :columns] ** 2, 0).reshape(patches).sum(axis=(1, 3))
-    means = np.where(counts >= 32, sums / np.maximum(counts, 1), -1)
-    return {"worst_patch_rmse": float(np.sqrt(means.max()))}
+def measure_window(before: Image, after: Image, row: dict[str, str]) -> tuple[Figures, Array]:
+    """Columns of windows.csv for the window that a row names by centre, width and function, and the map of SSIM.
 
-
-def measure_window(before: Image, after: Image, row: dict[str, str]) -> Figures:
-    """Columns of windows.csv for the window that a row names by centre, width and function."""
+    The map is not-a-number where the 11x11 window does not lie wholly in the frame.
+    """
     centre, width = float(row["centre"]), float(row["width"])
     if row["function"] == "LINEAR":  # PS3.3 C.11.2.1.2.1
         centre, width = centre - 0.5, width - 1
@@ -250,9 +140,10 @@ def measure_window(before: Image, after: Image, row: dict[str, str]) -> Figures:
     )[1]
     valid = np.zeros(ssim.shape, bool)
     valid[SSIM_MARGIN:-SSIM_MARGIN, SSIM_MARGIN:-SSIM_MARGIN] = True
-    scores = ssim[content & ~clipped & valid]
+    domain = content & ~clipped & valid
+    scores = ssim[domain]
     change = np.abs(shown[1] - shown[0])[content]
-    return {
+    figures: Figures = _window_expected(before, content) | {
         "share_clipped_percent": 100 * float(clipped[content].mean()),
         "pixels": int(scores.size),
         "ssim": float(scores.mean()),
@@ -261,13 +152,44 @@ def measure_window(before: Image, after: Image, row: dict[str, str]) -> Figures:
         "changed_5_levels_percent": 100 * float((change >= 5 - 1e-9).mean()),
         "max_levels": float(change.max()),
     }
+    figures |= places.place_of_largest(-ssim, domain, "ssim_lowest")
+    return figures, np.where(valid, ssim, np.nan)
 
 
-def compare(dossier: Path, originals: list[Path], delivered: list[Path]) -> Iterator[Difference]:
+def _window_expected(before: Image, content: Array) -> Figures:
+    """The window of the file, else the levels of colour, else the range of content (CT without one has others)."""
+    if "WindowCenter" in before.header:
+        centre, width = float(before.header.WindowCenter), float(before.header.WindowWidth)
+        return {"window_source": "file", "function": "LINEAR", "centre": centre, "width": width}
+    low, high = (0, (1 << before.bits) - 1) if before.is_colour else np.quantile(before.values[content], (0, 1))
+    centre, width = float(low + high) / 2, float(high - low)
+    return {"window_source": "default", "function": "LINEAR_EXACT", "centre": centre, "width": width}
+
+
+def measure_regions(
+    before: Image, after: Image, drawn: dict[str, Drawn], ssim: Array, window: str
+) -> dict[str, Figures]:
+    """Name -> columns of regions.csv, with the map of SSIM at the first window."""
+    found = {}
+    pixel_mm2 = math.prod(before.spacing_mm) if before.spacing_mm else None
+    for name, region in drawn.items():
+        background = drawn.get(region.background)
+        figures = measure_region(before.values, after.values, before.padding, region, background, pixel_mm2)
+        for peak, value in peaks_of(before).items():
+            figures[f"psnr_peak_{peak}_db"] = 20 * math.log10(value / float(figures["rmse"] or math.nan))
+        figures |= {"ssim": float(np.nanmean(ssim[region.centres & ~before.padding])), "ssim_window": window}
+        found[name] = figures
+    return found
+
+
+def compare(
+    dossier: Path, originals: list[Path], delivered: list[Path], regions: Path | None = None
+) -> Iterator[Difference]:
     """Yield each figure of the dossier's JPEG 2000 candidates and delivered copies beside the one computed here."""
-    tables = {name: _read_rows(dossier / f"{name}.csv") for name in ("measures", "windows")}
-    befores = {image.values.shape: (image, _bytes_of(path)) for path in originals for image in [read_image(path)]}
-    copies = {image.values.shape: (image, _bytes_of(path)) for path in delivered for image in [read_image(path)]}
+    tables = {name: _read_rows(dossier / f"{name}.csv") for name in ("measures", "windows", "regions")}
+    befores = {image.values.shape: (image, bytes_of(path)) for path in originals for image in [read_image(path)]}
+    copies = {image.values.shape: (image, bytes_of(path)) for path in delivered for image in [read_image(path)]}
+    drawn = {shape: read_regions(regions, shape) if regions else {} for shape in befores}
     for row in tables["measures"]:
         if row["codec"] not in ("jpeg2000", "delivered") or row["role"] not in ("candidate", "delivered"):
             continue
@@ -279,14 +201,29 @@ def compare(dossier: Path, originals: list[Path], delivered: list[Path]) -> Iter
         else:
             code, after = recompress(before, float(row["ratio_asked"]))
             code_bytes = len(code)
-            yield Difference(name, "code_crc32", row["code_crc32"], zlib.crc32(code))
-        figures = measure(before, after, code_bytes, source_bytes)
-        yield from (Difference(name, column, row[column], figure) for column, figure in figures.items())
-        for window in tables["windows"]:
-            if (window["instance"], window["candidate"]) == (row["instance"], row["candidate"]):
-                shown = measure_window(before, after, window)
-                label = f"{name}, {window['window']}"
-                yield from (Difference(label, column, window[column], figure) for column, figure in shown.items())
+            yield Difference("measures", name, "code_crc32", row["code_crc32"], zlib.crc32(code))
+        yield from _beside("measures", name, row, measure(before, after, code_bytes, source_bytes, drawn[shape]))
+        of_windows = [(window, *measure_window(before, after, window)) for window in _of_row(tables["windows"], row)]
+        for window, shown, _ in of_windows:
+            yield from _beside("windows", f"{name}, {window['window']}", window, shown)
+        first, _, ssim = of_windows[0]
+        computed = measure_regions(before, after, drawn[shape], ssim, first["window"])
+        recorded = {region["region"]: region for region in _of_row(tables["regions"], row)}
+        yield Difference("regions", name, "region", " ".join(recorded), " ".join(computed))
+        for region, figures in computed.items():
+            named = [drawn[shape][each] for each in (region, figures["background"]) if each in drawn[shape]]
+            bound = ELLIPSE_BOUND if any(each.has_ellipse for each in named) else 1e-9
+            yield from _beside("regions", f"{name}, {region}", recorded[region], figures, bound)
+
+
+def _of_row(table: list[dict[str, str]], row: dict[str, str]) -> list[dict[str, str]]:
+    """Rows of another table on the same frame and candidate."""
+    key = operator.itemgetter("instance", "candidate")
+    return [each for each in table if key(each) == key(row)]
+
+
+def _beside(table: str, name: str, row: dict[str, str], figures: Figures, bound: float = 1e-9) -> Iterator[Difference]:
+    return (Difference(table, name, column, row[column], figure, bound) for column, figure in figures.items())
 
 
 def _read_rows(path: Path) -> list[dict[str, str]]:
@@ -294,27 +231,20 @@ def _read_rows(path: Path) -> list[dict[str, str]]:
         return list(csv.DictReader(file))
 
 
-def _bytes_of(path: Path) -> int:
-    """Bytes of the first frame as they lie in the file: of a code stream up to its end marker FFD9."""
-    header = dcmread(path)
-    if not header.file_meta.TransferSyntaxUID.is_compressed:
-        return int(header.Rows * header.Columns * header.SamplesPerPixel * header.BitsAllocated // 8)
-    code = next(generate_frames(header.PixelData, number_of_frames=1))
-    return code.rindex(b"\xff\xd9") + 2
-
-
 def main(arguments: list[str]) -> int:
-    """Compare as the command line asks; 1 where a figure lies further than 1e-9 off."""
-    parts = [
-        list(part) for is_mark, part in itertools.groupby(arguments, lambda each: each == "--delivered") if not is_mark
-    ]
-    dossier, *originals = map(Path, parts[0])
-    found = list(compare(dossier, originals, [Path(each) for each in parts[1]] if len(parts) > 1 else []))
+    """Compare as the command line asks; 1 where a figure lies further off than its bound."""
+    parser = argparse.ArgumentParser()
+    parser.add_argument("dossier", type=Path)
+    parser.add_argument("originals", type=Path, nargs="+")
+    parser.add_argument("--delivered", type=Path, nargs="*", default=[])
+    parser.add_argument("--regions", type=Path)
+    asked = parser.parse_args(arguments)
+    found = list(compare(asked.dossier, asked.originals, asked.delivered, asked.regions))
     for each in found:
         sys.stdout.write(f"{each.relative:9.2e}  {each.row}: {each.column} {each.recorded} / {each.computed!r}\n")
     worst = max((each.relative for each in found), default=math.inf)
     sys.stdout.write(f"{len(found)} figures, largest relative difference {worst:.2e}\n")
-    return int(worst > 1e-9)
+    return int(not found or not all(each.agrees for each in found))
 
 
 if __name__ == "__main__":
