@@ -27,16 +27,20 @@ def _region(name: str, role: str, *parts: dict[str, Any], background: str | None
 
 
 def _ct() -> list[dict[str, Any]]:
-    """693: a disc and a box in the brain, and a corner that is mostly padding and reaches beyond the frame."""
+    """693: a disc and two boxes in the brain, a corner that is mostly padding and reaches beyond the frame, and a box
+    smaller than a patch where the delivered copy changed most.
+    """
     frame = (512, 512)
     disc = _part(frame, "ellipse", centre=[250.3, 260.65], height=41.2, width=26.6, angle_degrees=33)
     box = _part(frame, "rectangle", centre=[320.25, 240.5], height=50.5, width=31.3, angle_degrees=-20)
     small = _part(frame, "rectangle", centre=[300.0, 300.0], height=9.0, width=7.5, angle_degrees=45)
-    outline = [[[-6.3, -4.2], [-9.4, 180.7], [140.1, 60.3], [200.6, 130.2], [212.2, -7.4]]]
+    changed = _part(frame, "rectangle", centre=[484.3, 139.6], height=3.0, width=3.0)
+    outline = [[[-6.3, -4.2], [-9.4, 100.7], [90.1, 110.3], [80.6, 40.2], [110.2, -7.4]]]
     return [
         _region("ct-ellipse", "target", disc, background="ct-box"),
         _region("ct-box", "background", box),
         _region("ct-small", "target", small, background="ct-box"),
+        _region("ct-changed", "other", changed),
         _region("ct-corner", "edge", _part(frame, "polygon", outline=outline)),
     ]
 
@@ -45,8 +49,8 @@ def _mr() -> list[dict[str, Any]]:
     """MR2: a hollow polygon with the background of two parts that overlap, and another of one part."""
     frame = (1024, 1024)
     outline = [
-        [[400.5, 300.2], [430.1, 520.7], [620.3, 480.4], [560.6, 410.2], [640.9, 290.3]],
-        [[450.2, 350.1], [455.5, 420.7], [520.3, 400.2]],
+        [[400.5, 300.2], [415.1, 410.7], [510.3, 390.4], [480.6, 355.2], [520.9, 295.3]],
+        [[425.2, 325.1], [427.5, 360.7], [460.3, 350.2]],
     ]
     first = _part(frame, "rectangle", centre=[500.0, 650.0], height=60.0, width=41.0)
     second = _part(frame, "ellipse", centre=[520.2, 672.4], height=50.3, width=70.7)

@@ -176,7 +176,8 @@ def measure_regions(
         background = drawn.get(region.background)
         figures = measure_region(before.values, after.values, before.padding, region, background, pixel_mm2)
         for peak, value in peaks_of(before).items():
-            figures[f"psnr_peak_{peak}_db"] = 20 * math.log10(value / float(figures["rmse"] or math.nan))
+            rmse = float(figures["rmse"] or 0)
+            figures[f"psnr_peak_{peak}_db"] = 20 * math.log10(value / rmse) if rmse else None
         figures |= {"ssim": float(np.nanmean(ssim[region.centres & ~before.padding])), "ssim_window": window}
         found[name] = figures
     return found

@@ -87,9 +87,10 @@ def worst_windows(error: Array, content: Array, spacing_mm: tuple[float, float] 
 
 def edge_band(error: Array, content: Array, padding: Array) -> dict[str, Figure]:
     """Errors within four rows and columns of the other side of the content's edge."""
-    around = np.ones((2 * BAND + 1, 2 * BAND + 1))
-    near_both = [scipy.ndimage.binary_dilation(side, around) for side in (content, ~content)]
-    band = near_both[0] & near_both[1] & ~padding
+    near_content, near_rest = (
+        scipy.ndimage.maximum_filter(side, 2 * BAND + 1, mode="constant") for side in (content, ~content)
+    )
+    band = near_content & near_rest & ~padding
     if not band.any():
         return dict.fromkeys(("edge_band_rmse", "edge_band_max", "edge_band_row", "edge_band_column"))
     figures: dict[str, Figure] = {

@@ -90,6 +90,12 @@ def test_an_independent_script_computes_the_same_figures(computed_again: list[in
     assert max(each.relative for each in computed_again if each.bound > 1e-9) > 0
 
 
+def test_a_region_drawn_on_the_worst_patch_is_named_and_another_patch_is_the_worst_outside(dossier: Path) -> None:
+    rows = [row for row in rows_of(dossier, "measures") if row["worst_patch_region"] == "label of ct-changed"]
+    assert [row["role"] for row in rows] == ["delivered"]
+    assert float(rows[0]["worst_outside_rmse"]) < float(rows[0]["worst_patch_rmse"])
+
+
 def test_the_independent_script_leaves_no_figure_of_an_image_out(
     dossier: Path, computed_again: list[independent.Difference]
 ) -> None:
