@@ -15,16 +15,20 @@ import typer
 from safecheck import __version__
 from safecheck.errors import DossierError, Interrupted, SafecheckError, UsageError
 from safecheck.policy.conditions import ExitCondition
+from safecheck.runner.standby import Standby
 from safecheck.screen import Screen
 
 if TYPE_CHECKING:
     from safecheck.jobs.assess import AssessRequest
     from safecheck.policy.plan import Scope
+    from safecheck.record.document import RecordDocument
 
 __all__ = ["app", "main"]
 
 _TYPER_INTERRUPTED = 130
 """What typer makes of Ctrl-C."""
+_RATIOS, _CODECS = "5,8,10,15,20", "tiled,jpeg2000"
+"""Candidates without a plan."""
 
 app = typer.Typer(
     name="safecheck",
@@ -109,6 +113,24 @@ def census(
         typer.echo("A plan to start from was written; fill in what only you can say.")
 
 
+Delivered = Annotated[
+    list[Path] | None,
+    typer.Option("--delivered", metavar="PATH", help="Copies that the archive returned; may be given again."),
+]
+DryRun = Annotated[
+    bool, typer.Option("--dry-run", help="Print counts, time, disk and the plan's hash; measure nothing.")
+]
+Images = Annotated[
+    bool, typer.Option("--with-images", help="Write crops of the worst places, but none that may show text.")
+]
+Regions = Annotated[
+    Path | None, typer.Option("--regions", metavar="FILE", help="Region file, DICOM segmentation or RT Structure Set.")
+]
+Workers = Annotated[
+    int | None, typer.Option("--workers", min=1, metavar="NUMBER", help="Processes; by default one per core.")
+]
+
+
 @app.command()
 def assess(
     paths: Paths,
@@ -116,28 +138,16 @@ def assess(
     plan: Annotated[Path | None, typer.Option("--plan", metavar="FILE", help="Plan declared before the run.")] = None,
     ratios: Annotated[
         str, typer.Option("--ratios", metavar="LIST", help="Ratios on the bits-stored basis, without a plan.")
-    ] = ("5,8,10,15,20"),
-    codecs: Annotated[str, typer.Option("--codecs", metavar="LIST", help="Codecs, without a plan.")] = "tiled,jpeg2000",
-    regions: Annotated[
-        Path | None,
-        typer.Option("--regions", metavar="FILE", help="Region file, DICOM segmentation or RT Structure Set."),
-    ] = None,
-    delivered: Annotated[
-        list[Path] | None,
-        typer.Option("--delivered", metavar="PATH", help="Copies that the archive returned; may be given again."),
-    ] = None,
-    dry_run: Annotated[
-        bool, typer.Option("--dry-run", help="Print counts, time, disk and the plan's hash; measure nothing.")
-    ] = False,
-    with_images: Annotated[
-        bool, typer.Option("--with-images", help="Write crops of the worst places, but none that may show text.")
-    ] = False,
+    ] = _RATIOS,
+    codecs: Annotated[str, typer.Option("--codecs", metavar="LIST", help="Codecs, without a plan.")] = _CODECS,
+    regions: Regions = None,
+    delivered: Delivered = None,
+    dry_run: DryRun = False,
+    with_images: Images = False,
     no_attachment: Annotated[
         bool, typer.Option("--no-attachment", help="Leave the record out of the PDF's attachments.")
     ] = False,
-    workers: Annotated[
-        int | None, typer.Option("--workers", min=1, metavar="NUMBER", help="Processes; by default one per core.")
-    ] = None,
+    workers: Workers = None,
     key: Key = None,
     localizers: Localizers = False,
     secondary_captures: Captures = False,
@@ -148,30 +158,30 @@ def assess(
 
     The same command into the same dossier goes on where it was stopped.
     """
-    from safecheck.jobs.assess import AssessRequest
-
     if out is None and not dry_run:
         raise UsageError("no dossier is named; expected --out and a folder")
-    if plan is not None and (ratios != "5,8,10,15,20" or codecs != "tiled,jpeg2000"):
+    if plan is not None and (ratios != _RATIOS or codecs != _CODECS):
         raise UsageError("--plan declares the candidates; --ratios and --codecs go without it")
-    request = AssessRequest(
-        paths=tuple(paths),
-        out=out,
-        plan_file=plan,
-        ratios=_numbers(ratios),
-        codecs=tuple(name.strip() for name in codecs.split(",") if name.strip()),
-        scope=_scope(localizers, secondary_captures, allow_lossy_source),
-        regions_file=regions,
-        delivered=tuple(delivered or ()),
-        key_file=key,
-        workers=workers,
-        with_images=with_images,
-        attachment=not no_attachment,
-    )
-    if dry_run:
-        _dry_run(request, Screen(quiet=quiet))
-    else:
-        _assess(request, Screen(quiet=quiet))
+
+    def request() -> AssessRequest:
+        from safecheck.jobs.assess import AssessRequest
+
+        return AssessRequest(
+            paths=tuple(paths),
+            out=out,
+            plan_file=plan,
+            ratios=_numbers(ratios),
+            codecs=tuple(name.strip() for name in codecs.split(",") if name.strip()),
+            scope=_scope(localizers, secondary_captures, allow_lossy_source),
+            regions_file=regions,
+            delivered=tuple(delivered or ()),
+            key_file=key,
+            workers=workers,
+            with_images=with_images,
+            attachment=not no_attachment,
+        )
+
+    (_dry_run if dry_run else _assess)(request, Screen(quiet=quiet))
 
 
 @app.command()
@@ -267,29 +277,48 @@ def demo(
     quiet: Quiet = False,
 ) -> None:
     """Assess a synthetic study, to see a record."""
-    from safecheck.jobs.assess import AssessRequest
     from safecheck.jobs.demo import DOSSIER, STUDY, write_demo
 
     screen = Screen(quiet=quiet)
     screen.update("Making a synthetic study")
     plan = write_demo(out)
-    request = AssessRequest(paths=(out / STUDY,), out=out / DOSSIER, plan_file=plan, key_file=key, with_images=True)
-    _assess(request, screen, demonstration=True)
+
+    def request() -> AssessRequest:
+        from safecheck.jobs.assess import AssessRequest
+
+        return AssessRequest(paths=(out / STUDY,), out=out / DOSSIER, plan_file=plan, key_file=key, with_images=True)
+
+    _say_outcome(_perform(request, screen), demonstration=True)
 
 
-def _assess(request: AssessRequest, screen: Screen, *, demonstration: bool = False) -> None:
-    """Run the main job and say what came of it."""
-    from safecheck.jobs.assess import assess as job
+def _assess(request: Callable[[], AssessRequest], screen: Screen) -> None:
+    """Run the main job, say what came of it and leave with its exit code."""
+    record = _perform(request, screen)
+    _say_outcome(record)
+    if record.exit_code:
+        raise typer.Exit(record.exit_code)
 
+
+def _perform(request: Callable[[], AssessRequest], screen: Screen) -> RecordDocument:
+    """Run the main job; a worker loads its libraries while this process loads its own."""
     since = time.monotonic()
-    record = job(request, screen.update, screen.progress)
+    with Standby() as standby:
+        from safecheck.jobs.assess import assess as job
+
+        asked = request()
+        record = job(asked, screen.update, screen.progress, standby=standby)
     screen.clear()
-    typer.echo(f"Record: {request.out}/report.pdf")
+    typer.echo(f"Record: {asked.out}/report.pdf")
     counts = record.inputs
     typer.echo(
         f"{counts.frames_assessed} frames of {counts.studies} studies assessed in {time.monotonic() - since:.0f} s; "
         f"{counts.excluded} files excluded, {counts.refused} refused, {counts.frames_refused} frames refused"
     )
+    return record
+
+
+def _say_outcome(record: RecordDocument, *, demonstration: bool = False) -> None:
+    """Say what stands in the record."""
     if record.delivered is not None:
         copies = record.delivered
         typer.echo(
@@ -300,18 +329,16 @@ def _assess(request: AssessRequest, screen: Screen, *, demonstration: bool = Fal
     typer.echo(f"Controls: {'held' if record.controls_held else 'NOT HELD, run invalid'}")
     if demonstration:
         typer.echo(f"A run of this plan on these images ends with {record.exit_code}: {record.exit_text}")
-        return
-    typer.echo(f"Exit {record.exit_code}: {record.exit_text}")
-    if record.exit_code:
-        raise typer.Exit(record.exit_code)
+    else:
+        typer.echo(f"Exit {record.exit_code}: {record.exit_text}")
 
 
-def _dry_run(request: AssessRequest, screen: Screen) -> None:
+def _dry_run(request: Callable[[], AssessRequest], screen: Screen) -> None:
     """Say what a run would do."""
     from safecheck.jobs.assess import prepare_run
     from safecheck.jobs.dry_run import dry_run
 
-    prepared = prepare_run(request, screen.update)
+    prepared = prepare_run(request(), screen.update)
     screen.clear()
     for line in dry_run(prepared):
         typer.echo(line)

@@ -46,7 +46,7 @@ ARROWS: dict[str, frozenset[str]] = {
         }
     ),
     "screen": frozenset(),
-    "cli": frozenset({"jobs", "policy", "record", "screen"}),
+    "cli": frozenset({"jobs", "policy", "record", "runner", "screen"}),
     "__main__": frozenset({"cli"}),
     "__init__": frozenset(),
 }

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from concurrent.futures import ThreadPoolExecutor
+from concurrent.futures import Executor, ThreadPoolExecutor
+from contextlib import nullcontext
 from functools import partial
 from typing import TypeAlias
 
@@ -44,18 +45,25 @@ def evaluate(
     FrameResult
         A candidate whose codec does not take the frame has no row; `notes` says so.
     """
-    original = prepare(frame, assignment)
+    with ThreadPoolExecutor(threads) if threads > 1 else nullcontext() as pool:
+        return _evaluated(frame, assignment, full_controls, delivered, pool)
+
+
+def _evaluated(
+    frame: Frame, assignment: Assignment, full_controls: bool, delivered: Frame | None, pool: Executor | None
+) -> FrameResult:
+    """Do the works of one frame, beside each other where there is a pool."""
+    original = prepare(frame, assignment, pool)
     differs = _differs(frame, delivered) if delivered is not None else ""
     works: list[_Work] = [partial(_recompressed, original, candidate) for candidate in assignment.candidates]
     if delivered is not None and not differs:
         works.append(lambda: _measured(original, deliver(delivered)))
     works.append(lambda: FrameResult((pipe_control(original),)))
-    results = _done(works, threads)
+    results = _done(works, pool)
     if full_controls:
         candidates = tuple(row for result in results for row in result.measures if row.role == "candidate")
         results += _done(
-            [partial(_controlled, original, control) for control in controls_of(original, assignment, candidates)],
-            threads,
+            [partial(_controlled, original, control) for control in controls_of(original, assignment, candidates)], pool
         )
     return FrameResult(
         measures=tuple(row for result in results for row in result.measures),
@@ -69,12 +77,11 @@ def evaluate(
 _Work: TypeAlias = Callable[[], FrameResult]
 
 
-def _done(works: Sequence[_Work], threads: int) -> list[FrameResult]:
+def _done(works: Sequence[_Work], pool: Executor | None) -> list[FrameResult]:
     """Results in the order of the works; compiled kernels leave the interpreter's lock, jpeg2000's does not."""
-    if threads == 1 or len(works) == 1:
+    if pool is None:
         return [work() for work in works]
-    with ThreadPoolExecutor(threads) as pool:
-        return list(pool.map(lambda work: work(), works))
+    return list(pool.map(lambda work: work(), works))
 
 
 def _recompressed(original: Original, candidate: Candidate) -> FrameResult:

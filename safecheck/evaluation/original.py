@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from concurrent.futures import Executor, Future
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
 from safecheck.codecs.reversible import Jpeg2000Lossless, Smallest, cheapest
 from safecheck.evaluation.assignment import Assignment
-from safecheck.frames import Display, DisplayTable, DisplayWindow, Frame, Mask, Rescale, SizeBasis, Values
+from safecheck.frames import Display, DisplayTable, DisplayWindow, Frame, Mask, Raster, Rescale, SizeBasis, Values
 from safecheck.measures.baseline import Baseline, prepare_baseline
 from safecheck.measures.colour import ColourBaseline, prepare_colour
 from safecheck.measures.content import Content, find_content
@@ -45,8 +48,13 @@ class Original:
     colour: ColourBaseline | None
     control_code: bytes
     """Code of the cheapest reversible codec: the pipe's control."""
-    smallest: Smallest
-    """Smallest reversible code."""
+    smallest_sought: Future[Smallest]
+    """Smallest reversible code, the slowest part: sought while candidates are run, where there are threads."""
+
+    @property
+    def smallest(self) -> Smallest:
+        """Smallest reversible code; waits for it."""
+        return self.smallest_sought.result()
 
     def size_bytes(self, basis: SizeBasis) -> float:
         """Bytes before recompression on any basis."""
@@ -60,9 +68,11 @@ class Original:
         return raster.size_bytes(basis)
 
 
-def prepare(frame: Frame, assignment: Assignment) -> Original:
-    """Prepare a frame for its candidates."""
+def prepare(frame: Frame, assignment: Assignment, beside: Executor | None = None) -> Original:
+    """Prepare a frame for its candidates; with threads beside this one, some of it goes on after the return."""
     raster = frame.raster
+    control_code = cheapest().encode(raster)
+    smallest_sought = _soon(beside, partial(_smallest, raster, len(control_code)))
     values = frame.values(raster.samples)
     inverted = raster.format.photometric == "MONOCHROME1"
     content = find_content(
@@ -70,7 +80,6 @@ def prepare(frame: Frame, assignment: Assignment) -> Original:
     )
     displays = _displays(frame, assignment.windows, values[content.mask])
     regions = _place_regions(frame, assignment, values)
-    control_code, smallest = _reversible(frame)
     return Original(
         frame=frame,
         values=values,
@@ -92,20 +101,26 @@ def prepare(frame: Frame, assignment: Assignment) -> Original:
         if raster.format.channels == 3
         else None,
         control_code=control_code,
-        smallest=smallest,
+        smallest_sought=smallest_sought,
     )
 
 
-def _reversible(frame: Frame) -> tuple[bytes, Smallest]:
-    """Code of the control, and the smaller of it and JPEG 2000 5/3: the control is encoded once for both."""
-    control, other = cheapest(), Jpeg2000Lossless()
-    code = control.encode(frame.raster)
-    smallest = Smallest(control.name, len(code))
-    if other.refuses(frame.raster.format, frame.raster.shape) is None:
-        size = len(other.encode(frame.raster))
-        if size < smallest.size_bytes:
-            smallest = Smallest(other.name, size)
-    return code, smallest
+def _smallest(raster: Raster, control_bytes: int) -> Smallest:
+    """The smaller of the control's code, which is there already, and JPEG 2000 5/3."""
+    control, other = Smallest(cheapest().name, control_bytes), Jpeg2000Lossless()
+    if other.refuses(raster.format, raster.shape) is not None:
+        return control
+    size = len(other.encode(raster))
+    return Smallest(other.name, size) if size < control.size_bytes else control
+
+
+def _soon(beside: Executor | None, work: Callable[[], Smallest]) -> Future[Smallest]:
+    """Start a work beside this thread, or do it here and now."""
+    if beside is not None:
+        return beside.submit(work)
+    done: Future[Smallest] = Future()
+    done.set_result(work())
+    return done
 
 
 def _stored_unit(frame: Frame) -> float:

@@ -37,6 +37,7 @@ from safecheck.runner.merge import Merged, merge
 from safecheck.runner.pool import LocalPool, cores
 from safecheck.runner.progress import Progress
 from safecheck.runner.run import refused_frames, run
+from safecheck.runner.standby import Standby
 from safecheck.runner.tasks import Task, plan_tasks
 from safecheck.runner.worker import Treatment
 from safecheck.statistics.summary import Surroundings, summarise
@@ -89,8 +90,10 @@ class Prepared:
         return frozenset(each.study for each in self.inputs.assessed)
 
 
-def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
+def prepare_run(request: AssessRequest, tell: Tell, standby: Standby | None = None) -> Prepared:
     """Read plan, key, regions and headers, and cut the work into tasks.
+
+    A worker on standby makes itself ready meanwhile, unless kernels must be compiled first.
 
     Raises
     ------
@@ -99,6 +102,8 @@ def prepare_run(request: AssessRequest, tell: Tell) -> Prepared:
     """
     loaded = _loaded(request)
     site = open_site(request.key_file)
+    if standby is not None and site.has_kernels(versions()):
+        standby.prepare()
     site.see_plan(loaded.sha256)
     if request.out is not None and _lies_in(request.out, (*request.paths, *request.delivered)):
         raise UsageError("the dossier would lie among the images; name a folder elsewhere with --out")
@@ -159,7 +164,12 @@ def _loaded(request: AssessRequest) -> LoadedPlan:
 
 
 def assess(
-    request: AssessRequest, tell: Tell, report: Callable[[Progress], None], executor: Executor | None = None
+    request: AssessRequest,
+    tell: Tell,
+    report: Callable[[Progress], None],
+    *,
+    executor: Executor | None = None,
+    standby: Standby | None = None,
 ) -> RecordDocument:
     """Run the main job, or go on with one that was stopped, and write the dossier.
 
@@ -173,6 +183,8 @@ def assess(
         Takes how far the run is.
     executor
         Who performs the tasks; None for processes on this machine.
+    standby
+        The first of these processes, where it was started ahead.
 
     Raises
     ------
@@ -183,8 +195,8 @@ def assess(
     """
     if request.out is None:
         raise UsageError("no dossier is named; expected --out and a folder")
-    prepared = prepare_run(request, tell)
-    executor = executor or LocalPool(request.workers or cores())
+    prepared = prepare_run(request, tell, standby)
+    executor = executor or LocalPool(request.workers or cores(), standby)
     with begin(request.out, prepared.manifest) as held, resumable():
         record = _perform(prepared, held.path, request.out, executor, tell, report)
         held.finish()

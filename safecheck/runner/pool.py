@@ -7,7 +7,6 @@ memory; a frame under which a worker dies for the second time is refused, and th
 
 from __future__ import annotations
 
-import contextlib
 import json
 import os
 import pickle
@@ -26,14 +25,12 @@ from safecheck.errors import DossierError, WorkerLost
 from safecheck.runner.executor import Event, TaskDone, WorkerDied
 from safecheck.runner.faults import interrupted_by
 from safecheck.runner.process import Order
+from safecheck.runner.standby import Standby, close, start_process
 from safecheck.runner.tasks import Task
 from safecheck.runner.worker import Treatment
 
 __all__ = ["LocalPool", "cores"]
 
-_LIBRARIES = ("OMP_NUM", "OPENBLAS_NUM", "MKL_NUM", "VECLIB_MAXIMUM", "NUMBA_NUM")
-_ONE_THREAD = {f"{library}_THREADS": "1" for library in _LIBRARIES}
-"""Processes share the cores already; libraries read these when they are loaded."""
 _STILLBORN = 3
 """So many workers in a row that die before they begin anything: the next would too."""
 
@@ -51,6 +48,8 @@ class LocalPool:
 
     workers: int
     """At least 1."""
+    standby: Standby | None = None
+    """A worker that was started ahead, the first to be taken."""
 
     def __post_init__(self) -> None:
         """Check the number of workers."""
@@ -59,7 +58,7 @@ class LocalPool:
 
     def perform(self, tasks: Sequence[Task], treatment: Treatment, work: Path) -> Generator[Event]:
         """Perform the tasks, see `Executor.perform`."""
-        crew = _Crew(self.workers, pickle.dumps((treatment, work)), deque(tasks))
+        crew = _Crew(self.workers, pickle.dumps((treatment, work)), deque(tasks), self.standby)
         try:
             yield from crew.run()
         finally:
@@ -99,14 +98,9 @@ class _Worker:
     def stop(self) -> None:
         """End it at once."""
         self.process.kill()
-        self.process.wait()
         if self.listener is not None:
             self.listener.join()
-        for stream in (self.process.stdin, self.process.stdout):
-            if stream is not None:
-                # What a dead worker did not read cannot be flushed.
-                with contextlib.suppress(OSError):
-                    stream.close()
+        close(self.process)
 
 
 @dataclass(slots=True)
@@ -116,6 +110,7 @@ class _Crew:
     size: int
     treatment: bytes
     waiting: deque[Task]
+    standby: Standby | None
     again: deque[Task] = field(default_factory=deque)
     """Tasks whose worker died: done last, one at a time."""
     workers: list[_Worker] = field(default_factory=list)
@@ -169,8 +164,8 @@ class _Crew:
         return self._hire() if len(self.workers) < self.size else None
 
     def _hire(self) -> _Worker:
-        """Start a worker process, and a thread that listens to it."""
-        worker = _Worker(_start_process())
+        """Take the worker on standby or start one, and a thread that listens to it."""
+        worker = _Worker((self.standby and self.standby.take()) or start_process())
         self.workers.append(worker)
         worker.listener = threading.Thread(target=worker.listen, args=(self.inbox,), daemon=True)
         worker.listener.start()
@@ -212,20 +207,3 @@ class _Crew:
         if lost == everything:
             raise WorkerLost("worker processes end while they write to the dossier")
         self.lost[task.name] = everything if position == len(task.frames) else lost | {position}
-
-
-def _start_process() -> subprocess.Popen[bytes]:
-    """Start a worker with the parent's import path, one thread per library, and a process group of its own.
-
-    The group keeps Ctrl-C from reaching it; nothing it prints goes anywhere, since it may hold identifiers. The import
-    path goes by the environment, which other users of the machine cannot see.
-    """
-    command = [sys.executable, "-P", "-c", "from safecheck.runner.process import main; main()"]
-    path = os.pathsep.join(entry or str(Path.cwd()) for entry in sys.path)
-    environment = os.environ | _ONE_THREAD | {"PYTHONPATH": path}
-    if sys.platform == "win32":
-        flags = subprocess.CREATE_NEW_PROCESS_GROUP
-        return subprocess.Popen(
-            command, stdin=-1, stdout=-1, stderr=subprocess.DEVNULL, env=environment, creationflags=flags
-        )
-    return subprocess.Popen(command, stdin=-1, stdout=-1, stderr=subprocess.DEVNULL, env=environment, process_group=0)

@@ -16,7 +16,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any, BinaryIO
 
+from safecheck.evaluation import load_kernels
 from safecheck.runner.faults import word_of
+from safecheck.runner.standby import PREPARE
 from safecheck.runner.tasks import Task
 from safecheck.runner.worker import Opened, Treatment, perform
 
@@ -39,7 +41,11 @@ def main() -> None:
     _silence()
     inbox: queue.SimpleQueue[Any] = queue.SimpleQueue()
     threading.Thread(target=_listen, args=(orders, inbox, answers), daemon=True).start()
-    treatment, work = inbox.get()
+    first = inbox.get()
+    if first == PREPARE:
+        load_kernels()
+        first = inbox.get()
+    treatment, work = first
     opened = Opened.for_treatment(treatment)
     while True:
         _answer(answers, _carry_out(inbox.get(), treatment, work, answers, opened))

@@ -120,7 +120,7 @@ def build(folder: Path) -> Hospital:
 
 def assess_here(request: AssessRequest, report: Callable[[Progress], None] = lambda _: None) -> RecordDocument:
     """Run the main job in this process."""
-    return assess(request, lambda _: None, report, InProcess())
+    return assess(request, lambda _: None, report, executor=InProcess())
 
 
 def rows_of(dossier: Path, table: str) -> list[dict[str, str]]:

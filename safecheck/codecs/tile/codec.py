@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import partial
 from typing import ClassVar
 
 import numpy as np
@@ -94,7 +95,9 @@ class Tiled:
 
         analysis = coding.analyse(raster, self.transform, self.weighting, self.size)
         counts, fixed_bytes = coding.counts(analysis), coding.fixed_bytes(analysis)
-        index, code, encodes = rate.search(lambda step: coding.write(analysis, step), counts, fixed_bytes, target_bytes)
+        index, code, encodes = rate.search(
+            partial(coding.write, analysis), partial(coding.sampled_bytes, analysis), counts, fixed_bytes, target_bytes
+        )
         reached = _reached(len(code), target_bytes)
         if step_at(index) < EXACT_BELOW_STEP and self._exact(raster, code):
             low, high = index, nearest_step(EXACT_BELOW_STEP)

@@ -101,19 +101,29 @@ MOST_TRIES = 16
 BISECT_FROM = 5
 
 
-def predicted_bytes(counts: npt.NDArray[np.int64], index: int) -> int:
+@njit(cache=True, nogil=True)
+def predicted_bytes(counts: Array, index: int) -> int:
     """Bytes of the levels at the step of an index, before correction by a first try."""
-    octave = 128
-    ratio = (np.arange(BINS) - FIRST_BIN) * (octave // 4) - (index + 5 * octave) - FIRST_COST
-    knot = np.clip(ratio // 64, 0, len(COSTS) - 2)
-    part = ratio - 64 * knot
-    cost = (COSTS[knot] * (64 - part) + COSTS[knot + 1] * part) // 64
-    return int((counts * np.where(ratio < 0, 0, cost)).sum()) // 2048
+    bits = 0
+    for place in range(BINS):
+        # Both the classes and the steps lie evenly in the logarithm: 32 and 1 parts of 1/128 octave.
+        ratio = (place - FIRST_BIN) * 32 - index - 640 - FIRST_COST
+        if ratio >= 0:
+            knot = min(ratio // 64, COSTS.shape[0] - 2)
+            part = ratio - 64 * knot
+            bits += counts[place] * ((COSTS[knot] * (64 - part) + COSTS[knot + 1] * part) // 64)
+    return bits // 2048
 
 
 def _step_for(counts: npt.NDArray[np.int64], wanted: float) -> int:
     """Finest step at which no more than the wanted bytes are predicted."""
     return min(bisect.bisect_left(range(STEPS), -wanted, key=lambda k: -predicted_bytes(counts, k)), STEPS - 1)
+
+
+def _corrected(counts: npt.NDArray[np.int64], index: int, found: int, wanted: float) -> int:
+    """Step of the wanted bytes, given the bytes found where the counts predicted others."""
+    factor = max(found, 1) / max(predicted_bytes(counts, index), 1)
+    return _step_for(counts, wanted / factor)
 
 
 def _secant(tried: dict[int, bytes], target_bytes: float) -> int:
@@ -126,17 +136,24 @@ def _secant(tried: dict[int, bytes], target_bytes: float) -> int:
 
 
 def search(
-    write: Callable[[int], bytes], counts: npt.NDArray[np.int64], fixed_bytes: int, target_bytes: float
+    write: Callable[[int], bytes],
+    sample: Callable[[int], int | None],
+    counts: npt.NDArray[np.int64],
+    fixed_bytes: int,
+    target_bytes: float,
 ) -> tuple[int, bytes, int]:
     """Find the step whose code has the asked size.
 
-    The first step comes from the counts alone, the second from the counts corrected by the first try, further ones
-    from the line through the two nearest tries, or halfway between known bounds where that does not close in.
+    The first step comes from the counts, corrected by a sample of the tiles where there are enough, the second from
+    the counts corrected by the first try, further ones from the line through the two nearest tries, or halfway between
+    known bounds where that does not close in.
 
     Parameters
     ----------
     write
         Step index -> code.
+    sample
+        Step index -> bytes of the levels judged by some of the tiles; None where they are too few.
     counts
         Of `magnitude_counts`, scaled to all tiles and summed over planes.
     fixed_bytes
@@ -152,6 +169,9 @@ def search(
     tried: dict[int, bytes] = {}
     finer, coarser = -1, STEPS
     index = _step_for(counts, target_bytes - fixed_bytes)
+    sampled = sample(index)
+    if sampled is not None:
+        index = _corrected(counts, index, sampled, target_bytes - fixed_bytes)
     while True:
         code = write(index)
         tried[index] = code
@@ -164,8 +184,7 @@ def search(
         if coarser - finer <= 1:
             break
         if len(tried) == 1:
-            factor = max(len(code) - fixed_bytes, 1) / max(predicted_bytes(counts, index), 1)
-            guess = _step_for(counts, (target_bytes - fixed_bytes) / factor)
+            guess = _corrected(counts, index, len(code) - fixed_bytes, target_bytes - fixed_bytes)
         elif len(tried) < BISECT_FROM:
             guess = _secant(tried, target_bytes)
         else:

@@ -88,7 +88,7 @@ def test_levels_come_back(size: int, largest: int) -> None:
     buffer = np.empty(levels.WORST_BYTES * (count + 2) + 8 * before.size + 64, np.uint8)
     coder, fits = levels.encode_levels(
         before, ends, used, 3, tables(size), entropy.new_states(context.CONTEXTS),
-        levels.new_scratch(6, count), buffer, (0, 0, entropy.WIDE),
+        levels.new_scratch(6, count), buffer, (0, 0, entropy.WIDE), 0,
     )  # fmt: skip
     assert fits
     code = buffer[: entropy.finish_encoding(buffer, coder)].copy()
@@ -108,6 +108,6 @@ def test_a_buffer_too_short_is_told() -> None:
     buffer = np.empty(100, np.uint8)
     _, fits = levels.encode_levels(
         before, ends, np.ones(4, np.uint8), 2, tables(4), entropy.new_states(context.CONTEXTS),
-        levels.new_scratch(4, 16), buffer, (0, 0, entropy.WIDE),
+        levels.new_scratch(4, 16), buffer, (0, 0, entropy.WIDE), 0,
     )  # fmt: skip
     assert not fits
