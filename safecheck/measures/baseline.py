@@ -167,13 +167,12 @@ def measure_frame(baseline: Baseline, after: Plane) -> FrameFigures:
     ValueError
         If the shapes differ.
     """
-    after = check_plane(after, baseline.values.shape)
+    after, grid = check_plane(after, baseline.values.shape), baseline.large_patches
     frame, content = measure_errors(baseline.values, after, baseline.content)
     patches = measure_patches(baseline.patches, baseline.values, after)
-    grid = baseline.large_patches
     large = PatchFigures() if grid is None else measure_patches(grid, baseline.values, after)
     band = measure_band(baseline.band, baseline.values, after)
-    noise_sd, noise_sd_after = _noise(baseline.noise, after)
+    noise_sd, noise_sd_after, kept_percent = _noise(baseline.noise, after)
     return FrameFigures(
         bias_frame=frame.bias,
         rmse_frame=frame.rmse,
@@ -211,7 +210,7 @@ def measure_frame(baseline: Baseline, after: Plane) -> FrameFigures:
         edge_band_column=band.column,
         noise_sd=noise_sd,
         noise_sd_after=noise_sd_after,
-        noise_sd_kept_percent=None if not noise_sd or noise_sd_after is None else 100 * noise_sd_after / noise_sd,
+        noise_sd_kept_percent=kept_percent,
         rmse_over_noise=None if not noise_sd or content.rmse is None else content.rmse / noise_sd,
     )
 
@@ -222,8 +221,9 @@ def load_kernels() -> None:
         import_module(f"safecheck.measures.{module}_kernels")
 
 
-def _noise(places: NoisePlaces | None, after: Plane) -> tuple[float | None, float | None]:
-    """Noise before and after, or neither."""
+def _noise(places: NoisePlaces | None, after: Plane) -> tuple[float | None, float | None, float | None]:
+    """Noise before, after and what was kept of it in per cent, or none."""
     if places is None:
-        return None, None
-    return places.noise_sd, measure_noise(places, after)
+        return None, None, None
+    kept = measure_noise(places, after)
+    return places.noise_sd, kept, 100 * kept / places.noise_sd if places.noise_sd and kept is not None else None
