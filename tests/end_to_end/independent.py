@@ -35,8 +35,8 @@ Figures = dict[str, Figure]
 """Column -> what it should hold."""
 SSIM_MARGIN = 5
 """Half of the 11x11 window of SSIM, which must lie wholly in the frame."""
-ELLIPSE_BOUND = 1e-6
-"""An ellipse is integrated here and a polygon of many vertices there (docs/regions.md)."""
+BOUND = 1e-9
+"""Relative difference up to which figures agree."""
 
 
 @dataclass(frozen=True)
@@ -48,11 +48,10 @@ class Difference:
     column: str
     recorded: str
     computed: Figure
-    bound: float = 1e-9
 
     @property
     def agrees(self) -> bool:
-        return self.relative <= self.bound
+        return self.relative <= BOUND
 
     @property
     def relative(self) -> float:
@@ -212,9 +211,7 @@ def compare(
         recorded = {region["region"]: region for region in _of_row(tables["regions"], row)}
         yield Difference("regions", name, "region", " ".join(recorded), " ".join(computed))
         for region, figures in computed.items():
-            named = [drawn[shape][each] for each in (region, figures["background"]) if each in drawn[shape]]
-            bound = ELLIPSE_BOUND if any(each.has_ellipse for each in named) else 1e-9
-            yield from _beside("regions", f"{name}, {region}", recorded[region], figures, bound)
+            yield from _beside("regions", f"{name}, {region}", recorded[region], figures)
 
 
 def _of_row(table: list[dict[str, str]], row: dict[str, str]) -> list[dict[str, str]]:
@@ -223,8 +220,8 @@ def _of_row(table: list[dict[str, str]], row: dict[str, str]) -> list[dict[str, 
     return [each for each in table if key(each) == key(row)]
 
 
-def _beside(table: str, name: str, row: dict[str, str], figures: Figures, bound: float = 1e-9) -> Iterator[Difference]:
-    return (Difference(table, name, column, row[column], figure, bound) for column, figure in figures.items())
+def _beside(table: str, name: str, row: dict[str, str], figures: Figures) -> Iterator[Difference]:
+    return (Difference(table, name, column, row[column], figure) for column, figure in figures.items())
 
 
 def _read_rows(path: Path) -> list[dict[str, str]]:
@@ -233,7 +230,7 @@ def _read_rows(path: Path) -> list[dict[str, str]]:
 
 
 def main(arguments: list[str]) -> int:
-    """Compare as the command line asks; 1 where a figure lies further off than its bound."""
+    """Compare as the command line asks; 1 where a figure lies further off than the bound."""
     parser = argparse.ArgumentParser()
     parser.add_argument("dossier", type=Path)
     parser.add_argument("originals", type=Path, nargs="+")
