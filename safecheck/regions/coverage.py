@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
@@ -41,19 +42,23 @@ def cover(rings: Sequence[Ring], rows: int, columns: int) -> Coverage:
     """
     from safecheck.regions.coverage_kernels import accumulate_ring
 
-    sums = np.zeros((rows, columns + 1))
+    box = _box(rings, rows, columns)
+    sums = np.zeros((box.rows, box.columns + 1))
+    one = np.empty_like(sums)
     for index, ring in enumerate(rings):
         # A ring whose left side runs down the rows counts positive; its shoelace area is then negative.
         sense = -1.0 if signed_area(ring) > 0 else 1.0
         sense *= -1.0 if _depth(index, rings) % 2 else 1.0
-        one = np.zeros_like(sums)
+        one[:] = 0.0
         # From pixel centres on whole numbers to pixel corners on whole numbers.
-        accumulate_ring(one, np.ascontiguousarray(ring) + 0.5)
+        accumulate_ring(one, np.ascontiguousarray(ring) - (box.row - 0.5, box.column - 0.5))
         sums += sense * one
-    covered = np.clip(np.cumsum(sums, axis=1)[:, :columns], 0.0, 1.0)
+    inside = np.clip(np.cumsum(sums, axis=1)[:, : box.columns], 0.0, 1.0)
     # What the sums leave by rounding beside a shape is not coverage.
-    covered[covered < _LEAST] = 0.0
-    covered[covered > 1 - _LEAST] = 1.0
+    inside[inside < _LEAST] = 0.0
+    inside[inside > 1 - _LEAST] = 1.0
+    covered = np.zeros((rows, columns))
+    covered[box.place] = inside
     return covered
 
 
@@ -74,10 +79,39 @@ def find_centres(rings: Sequence[Ring], rows: int, columns: int) -> Centres:
     """
     from safecheck.regions.coverage_kernels import toggle_ring
 
-    toggles = np.zeros((rows, columns + 1), dtype=np.bool_)
+    box = _box(rings, rows, columns)
+    toggles = np.zeros((box.rows, box.columns + 1), dtype=np.bool_)
     for ring in rings:
-        toggle_ring(toggles, np.ascontiguousarray(ring))
-    return np.asarray(np.logical_xor.accumulate(toggles, axis=1)[:, :columns])
+        toggle_ring(toggles, np.ascontiguousarray(ring) - (box.row, box.column))
+    centres = np.zeros((rows, columns), dtype=np.bool_)
+    centres[box.place] = np.logical_xor.accumulate(toggles, axis=1)[:, : box.columns]
+    return centres
+
+
+@dataclass(frozen=True, slots=True)
+class _Box:
+    """The part of an image in which rings lie: the work is done there alone."""
+
+    row: int
+    column: int
+    rows: int
+    columns: int
+
+    @property
+    def place(self) -> tuple[slice, slice]:
+        """Index of the part in the image."""
+        return np.s_[self.row : self.row + self.rows, self.column : self.column + self.columns]
+
+
+def _box(rings: Sequence[Ring], rows: int, columns: int) -> _Box:
+    """All pixels that rings touch, cut at the image's borders; empty where they lie outside or there are none."""
+    vertices = np.concatenate([np.zeros((0, 2)), *rings])
+    if not len(vertices):
+        return _Box(0, 0, 0, 0)
+    size = np.array([rows, columns])
+    first = np.clip(np.floor(vertices.min(axis=0) - 0.5), 0, size).astype(int)
+    last = np.clip(np.ceil(vertices.max(axis=0) + 0.5) + 1, first, size).astype(int)
+    return _Box(int(first[0]), int(first[1]), int(last[0] - first[0]), int(last[1] - first[1]))
 
 
 def _depth(index: int, rings: Sequence[Ring]) -> int:
