@@ -18,7 +18,18 @@ import numpy.typing as npt
 from safecheck.errors import CannotEncode, CorruptCode
 from safecheck.frames import PixelFormat, Raster, Samples
 
-__all__ = ["EXEMPT_BYTES", "RATE_TOLERANCE", "Codec", "Encoded", "RatedCodec", "Reached", "Settings", "admit", "fitted"]
+__all__ = [
+    "EXEMPT_BYTES",
+    "RATE_TOLERANCE",
+    "Carriage",
+    "Codec",
+    "Encoded",
+    "RatedCodec",
+    "Reached",
+    "Settings",
+    "admit",
+    "fitted",
+]
 
 Settings: TypeAlias = Mapping[str, str | int | float | bool]
 """A codec's settings as JSON scalars, keys sorted by the registry where order matters."""
@@ -60,6 +71,23 @@ class Encoded:
     reached: Reached
     encodes: int = 1
     """How many times the frame was encoded on the way."""
+    neighbour: Encoded | None = None
+    """With `Reached.BRACKET`: the code of the next setting, on the other side of the asked size."""
+
+
+@dataclass(frozen=True, slots=True)
+class Carriage:
+    """How samples of a format are brought into a code stream, and what the stream says of them.
+
+    A sample s is coded as round(scale * (s + offset)), and read back the other way.
+    """
+
+    precision: int
+    """Bits a sample that the code stream's header declares."""
+    offset: int = 0
+    """Stored values added before coding, where a codec takes no sign."""
+    scale: float = 1.0
+    """Factor before coding, at least 1: where a codec judges error against the full range of its sample type."""
 
 
 @runtime_checkable
@@ -81,6 +109,15 @@ class Codec(Protocol):
     @property
     def version(self) -> str:
         """Library and version, or the version of our own bitstream."""
+        ...
+
+    @property
+    def error_bound(self) -> int | None:
+        """Largest error in stored values that the settings promise: 0 for a reversible codec; None without promise."""
+        ...
+
+    def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
+        """How samples of a format that the codec takes are brought into its code."""
         ...
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
@@ -130,10 +167,15 @@ class Codec(Protocol):
 class RatedCodec(Codec, Protocol):
     """A codec that can be asked for a size."""
 
+    dial: ClassVar[str]
+    """The setting by which its size is set, e.g. quality; the one that `encode_to_size` finds."""
+
     def encode_to_size(self, raster: Raster, target_bytes: float) -> Encoded:
         """Write the raster at the asked size, or as near as the codec comes.
 
-        The dial in ``self.settings`` is ignored; the other settings hold. The search starts from the raster alone.
+        The dial in ``self.settings`` is ignored; the other settings hold. The search starts from the raster alone. A
+        dial of whole numbers gives the two settings around the asked size: the smaller code, whose ratio is not below
+        the asked one, with the other as its `neighbour`.
 
         Parameters
         ----------

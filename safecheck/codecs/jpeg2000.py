@@ -17,7 +17,7 @@ from types import ModuleType
 from typing import ClassVar
 
 from safecheck.codecs import search
-from safecheck.codecs.base import Encoded, Settings, admit, fitted
+from safecheck.codecs.base import Carriage, Encoded, Settings, admit, fitted
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.reversible import best_reversible
 from safecheck.codecs.stream_headers import MOST_LEVELS, check_jpeg2000
@@ -61,6 +61,7 @@ class Jpeg2000:
     name: ClassVar[str] = "jpeg2000"
     archive_can_write: ClassVar[bool] = True
     reversible: ClassVar[bool] = False
+    dial: ClassVar[str] = "ratio"
 
     def __post_init__(self) -> None:
         """Check the range; keep a whole number as the float it stands for."""
@@ -77,6 +78,15 @@ class Jpeg2000:
     def version(self) -> str:
         """OpenJPEG's version and that of the package that carries it."""
         return _version(_library().get_openjpeg_version())
+
+    @property
+    def error_bound(self) -> int | None:
+        """No promise."""
+        return None
+
+    def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
+        """Samples as they are."""
+        return Carriage(format.bits_stored)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
         """Refuse frames smaller than the wavelet decompositions need, and colour of one bit a channel."""

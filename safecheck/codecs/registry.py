@@ -48,11 +48,16 @@ class Entry:
     """Distribution that carries it."""
     needs: str
     """Module of that distribution whose presence tells whether the codec works here."""
-    rated: bool
-    """Whether it can be asked for a size."""
+    dial: str
+    """Name of the setting by which its size is set; '' where it cannot be asked for a size."""
     archive_can_write: bool
     reversible_form: tuple[str, Settings] | None = None
     """Name and settings of the codec of the same family that gives every sample back."""
+
+    @property
+    def rated(self) -> bool:
+        """Whether it can be asked for a size."""
+        return bool(self.dial)
 
 
 ENTRIES: Mapping[str, Entry] = MappingProxyType(
@@ -62,13 +67,13 @@ ENTRIES: Mapping[str, Entry] = MappingProxyType(
             "Jpeg2000",
             "pylibjpeg-openjpeg",
             "openjpeg",
-            True,
+            "ratio",
             True,
             ("jpeg2000-reversible", MappingProxyType({})),
         ),
-        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLs", "imagecodecs", "imagecodecs", False, True),
+        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLs", "imagecodecs", "imagecodecs", "", True),
         "jpeg2000-reversible": Entry(
-            "safecheck.codecs.reversible", "Jpeg2000Lossless", "imagecodecs", "imagecodecs", False, True
+            "safecheck.codecs.reversible", "Jpeg2000Lossless", "imagecodecs", "imagecodecs", "", True
         ),
         # A step so fine that no sum of 64 x 64 quantiser errors reaches half a stored unit.
         "tiled": Entry(
@@ -76,7 +81,7 @@ ENTRIES: Mapping[str, Entry] = MappingProxyType(
             "Tiled",
             "numba",
             "numba",
-            True,
+            "step",
             False,
             ("tiled", MappingProxyType({"step": 2.0**-7})),
         ),

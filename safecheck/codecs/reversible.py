@@ -16,7 +16,7 @@ from typing import ClassVar, Literal
 
 import numpy as np
 
-from safecheck.codecs.base import Codec, Settings, admit, fitted
+from safecheck.codecs.base import Carriage, Codec, Settings, admit, fitted
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.stream_headers import check_jpeg2000, check_jpegls
 from safecheck.errors import CannotEncode, CodecUnavailable
@@ -81,6 +81,15 @@ class JpegLs:
     def version(self) -> str:
         """CharLS's version and that of the package that carries it."""
         return _version(_library("JPEGLS").jpegls_version())
+
+    @property
+    def error_bound(self) -> int | None:
+        """No error."""
+        return 0
+
+    def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
+        """Unsigned, in 8 or 16 bits: the library cannot be told another precision."""
+        return Carriage(8 * _unsigned(format).itemsize, -min(0, format.lowest))
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only what the header cannot say."""
@@ -149,6 +158,15 @@ class Jpeg2000Lossless:
     def version(self) -> str:
         """OpenJPEG's version and that of the package that carries it."""
         return _version(_library("JPEG2K").jpeg2k_version())
+
+    @property
+    def error_bound(self) -> int | None:
+        """No error."""
+        return 0
+
+    def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
+        """Samples as they are."""
+        return Carriage(format.bits_stored)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
         """Refuse one bit, which the library cannot write or loses where it is noise, and what no header can say."""

@@ -8,7 +8,7 @@ from typing import ClassVar
 
 import numpy as np
 
-from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Encoded, Reached, Settings, admit
+from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Carriage, Encoded, Reached, Settings, admit
 from safecheck.codecs.tile.settings import BITSTREAM_VERSION, SIZES, TRANSFORMS, WEIGHTINGS
 from safecheck.codecs.tile.steps import nearest_step, step_at
 from safecheck.frames import PixelFormat, Raster, Samples
@@ -30,6 +30,7 @@ class Tiled:
     name: ClassVar[str] = "tiled"
     archive_can_write: ClassVar[bool] = False
     reversible: ClassVar[bool] = False
+    dial: ClassVar[str] = "step"
 
     size: int = 8
     """Tile size in pixels, one of `SIZES`."""
@@ -62,6 +63,15 @@ class Tiled:
     def version(self) -> str:
         """Version of the bitstream."""
         return f"bitstream {BITSTREAM_VERSION}"
+
+    @property
+    def error_bound(self) -> int | None:
+        """No promise."""
+        return None
+
+    def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
+        """Samples as they are."""
+        return Carriage(format.bits_stored)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """See `Codec.refuses`; every pixel format is taken."""
