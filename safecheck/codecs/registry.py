@@ -33,6 +33,7 @@ __all__ = [
     "rated",
     "rated_names",
     "reversible_form",
+    "reversible_names",
     "settings_text",
 ]
 
@@ -98,6 +99,11 @@ def names() -> tuple[str, ...]:
 def rated_names() -> tuple[str, ...]:
     """Names of the codecs that can be asked for a size: what a plan may propose."""
     return tuple(name for name, found in ENTRIES.items() if found.rated)
+
+
+def reversible_names() -> tuple[str, ...]:
+    """Names of the codecs without a dial, which give every sample back: for controls and the ledger."""
+    return tuple(name for name, found in ENTRIES.items() if not found.rated)
 
 
 def entry(name: str) -> Entry:
