@@ -20,7 +20,7 @@ from safecheck.measures.region import RegionBaseline, prepare_region
 from safecheck.policy.plan import WindowPlan
 from safecheck.regions.region import Covered, Grid, Region, cover_grid
 
-__all__ = ["Original", "PlacedRegion", "prepare"]
+__all__ = ["Original", "PlacedRegion", "grid_of", "prepare"]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -179,7 +179,7 @@ def _place_regions(frame: Frame, assignment: Assignment, values: Values) -> tupl
     """Regions that cover part of this frame, in the order of their file."""
     if assignment.regions is None:
         return ()
-    grid, placed = _grid(frame), []
+    grid, placed = grid_of(frame), []
     for region in assignment.regions.regions:
         covered = cover_grid(region, grid)
         if covered is not None:
@@ -188,7 +188,7 @@ def _place_regions(frame: Frame, assignment: Assignment, values: Values) -> tupl
     return tuple(placed)
 
 
-def _grid(frame: Frame) -> Grid:
+def grid_of(frame: Frame) -> Grid:
     """The frame as regions need to know it."""
     place = frame.geometry
     return Grid(
