@@ -200,6 +200,8 @@ class Plan(Document):
     sample: SamplePlan
     scope: Scope = Scope()
     candidates: Annotated[tuple[CandidatePlan, ...], Field(min_length=1)]
+    reference: str = ""
+    """Name of the candidate whose damage the table of equal damage takes; '' for the first one proposed at a ratio."""
     windows: tuple[WindowPlan, ...] = ()
     regions: RegionPlan | None = None
     limits: tuple[LimitPlan, ...] = ()

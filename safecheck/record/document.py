@@ -13,6 +13,7 @@ from pydantic import Field
 from safecheck.documents import Document
 from safecheck.record.candidates import CandidateEntry, LedgerEntry
 from safecheck.record.delivered import DeliveredEntry
+from safecheck.record.equal_damage import EqualDamageEntry
 from safecheck.record.figures import FigureEntry, RegionEntry
 from safecheck.record.inputs import CountEntry, InputCounts, StratumEntry
 from safecheck.record.outcomes import Condition, ControlEntry, OutcomeEntry
@@ -71,6 +72,8 @@ class RecordDocument(Document):
     candidates: tuple[CandidateEntry, ...]
     ledger: tuple[LedgerEntry, ...]
     figures: tuple[FigureEntry, ...]
+    equal_damage: tuple[EqualDamageEntry, ...] = ()
+    """At which ratio each other codec does the damage of the reference candidate; empty with one codec."""
     outcomes: tuple[OutcomeEntry, ...]
     outcomes_text: str
     """'no limits declared' or a one-line count of outcomes."""

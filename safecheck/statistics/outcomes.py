@@ -16,6 +16,7 @@ from safecheck.record.outcomes import OutcomeEntry
 from safecheck.statistics.bounds import share_upper_bound
 from safecheck.statistics.figures import ROW_AND_COLUMN
 from safecheck.statistics.groups import Groups, Indices, place_at
+from safecheck.statistics.values import values_of
 from safecheck.wording import NO_BOUND, OutcomeWord
 
 __all__ = ["OVER_COMPRESSED", "outcomes"]
@@ -101,17 +102,8 @@ class _Held:
         return rows
 
     def _values(self) -> npt.NDArray[np.float64]:
-        """The measure's column; where nothing changed, a ratio that is infinite stands for null."""
-        measure, reader = measure_of(self.limit), self.table.reader
-        values = reader.numbers(measure.column)
-        if measure.null_when_equal:
-            error = reader.numbers("rmse_content" if "content" in measure.column else self._rmse_column())
-            values = np.where(np.isnan(values) & (error == 0), np.inf, values)
-        return values
-
-    def _rmse_column(self) -> str:
-        """Column of the error that goes with a ratio in decibels."""
-        return "rmse_frame" if self.table.reader.table == "measures" else "rmse"
+        """The measure's values."""
+        return values_of(self.table.reader, measure_of(self.limit))
 
     def _judged(self, rows: Indices) -> Outcome:
         """Hold the limit against some rows."""
