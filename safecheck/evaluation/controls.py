@@ -11,7 +11,7 @@ from typing import TypeAlias
 import numpy as np
 
 from safecheck.codecs.base import Codec, Reached
-from safecheck.codecs.registry import reversible_form
+from safecheck.codecs.registry import available, codec, reversible_form, reversible_names
 from safecheck.codecs.reversible import cheapest
 from safecheck.evaluation.assignment import Assignment, Candidate
 from safecheck.evaluation.original import Original
@@ -21,7 +21,7 @@ from safecheck.frames import Samples
 from safecheck.measures.local import PATCH_SIDE
 from safecheck.record.rows import MeasureRow
 
-__all__ = ["ControlWork", "full_controls", "pipe_control"]
+__all__ = ["ControlWork", "checked_row", "full_controls", "pipe_control"]
 
 ControlWork: TypeAlias = Callable[[], tuple[Treated, MeasureRow]]
 """Runs one control and measures it over the frame."""
@@ -32,8 +32,17 @@ PLANTED_SHARE = 64
 
 def pipe_control(original: Original) -> MeasureRow:
     """The reversible control that every frame carries."""
-    treated = reverse(original, cheapest(), original.control_code)
-    return _marked(measure_row(original, treated), *_unchanged(original, treated))
+    return checked_row(original, reverse(original, cheapest(), original.control_code))
+
+
+def checked_row(original: Original, treated: Treated) -> MeasureRow:
+    """Measure a treated frame, and hold its largest error against what the codec promises, where it promises any."""
+    row, bound, error = measure_row(original, treated), treated.error_bound, treated.coding_error
+    if bound is None or error is None:
+        return row
+    # Where every stored value came back, so does every value in the unit.
+    held = error <= bound and (error > 0 or treated.flattened_max is not None or not row.max_frame)
+    return _marked(row, held, f"largest error {error} in stored values, at most {bound} promised")
 
 
 def full_controls(
@@ -46,10 +55,11 @@ def full_controls(
     candidates
         Rows of the frame's candidates.
     """
-    for candidate in _one_of_each_codec(assignment, {row.candidate for row in candidates}):
-        own = reversible_form(candidate.codec)
-        if own is not None and own.refuses(original.frame.raster.format, original.frame.raster.shape) is None:
-            yield partial(_reversed, original, own)
+    run = tuple(_one_of_each_codec(assignment, {row.candidate for row in candidates}))
+    for exact in _exact_codecs(run):
+        if exact.refuses(original.frame.raster.format, original.frame.raster.shape) is None:
+            yield partial(_reversed, original, exact)
+    for candidate in run:
         own_rows = tuple(row for row in candidates if row.codec == candidate.codec)
         first = next(row for row in own_rows if row.candidate == candidate.name)
         yield partial(_repeat, original, candidate, first)
@@ -59,15 +69,24 @@ def full_controls(
         yield lambda: planted
 
 
-def _reversed(original: Original, own: Codec) -> tuple[Treated, MeasureRow]:
-    """A codec's own reversible form."""
-    treated = reverse(original, own)
-    return treated, _marked(measure_row(original, treated), *_unchanged(original, treated))
+def _exact_codecs(run: tuple[Candidate, ...]) -> tuple[Codec, ...]:
+    """Every reversible codec of this machine but the pipe's own, and the reversible form of each codec that was run."""
+    found = [codec(name) for name in reversible_names() if available(name)]
+    found += [form for candidate in run if (form := reversible_form(candidate.codec)) is not None]
+    by_name = {each.name: each for each in found}
+    by_name.pop(cheapest().name, None)
+    return tuple(by_name.values())
+
+
+def _reversed(original: Original, exact: Codec) -> tuple[Treated, MeasureRow]:
+    """A reversible code."""
+    treated = reverse(original, exact)
+    return treated, checked_row(original, treated)
 
 
 def _repeat(original: Original, candidate: Candidate, first: MeasureRow) -> tuple[Treated, MeasureRow]:
     """A candidate once more."""
-    again = recompress(original, candidate, "repeat")
+    (again,) = recompress(original, candidate, "repeat")
     return again, _marked(measure_row(original, again), *_repeated(first, again))
 
 
@@ -92,14 +111,6 @@ def _one_of_each_codec(assignment: Assignment, run: set[str]) -> Iterator[Candid
         if candidate.name in run and candidate.codec not in seen:
             seen.add(candidate.codec)
             yield candidate
-
-
-def _unchanged(original: Original, treated: Treated) -> tuple[bool, str]:
-    """A reversible code gives back every sample."""
-    same = np.array_equal(treated.values, original.values)
-    largest = 0.0 if same else float(np.abs(treated.values - original.values).max())
-    equal = bool(np.array_equal(treated.samples, original.frame.raster.samples))
-    return equal and largest == 0.0, f"largest error {largest:g} {original.frame.unit}"
 
 
 def _repeated(first: MeasureRow, again: Treated) -> tuple[bool, str]:

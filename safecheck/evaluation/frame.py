@@ -9,16 +9,16 @@ from functools import partial
 from typing import TypeAlias
 
 from safecheck.errors import CannotEncode
-from safecheck.evaluation.assignment import Assignment, Candidate
-from safecheck.evaluation.controls import ControlWork, pipe_control
+from safecheck.evaluation.assignment import Assignment, Candidate, SeriesDial
+from safecheck.evaluation.controls import ControlWork, checked_row, pipe_control
 from safecheck.evaluation.controls import full_controls as controls_of
 from safecheck.evaluation.original import Original, prepare
-from safecheck.evaluation.rows import measure_row, region_rows, window_rows
-from safecheck.evaluation.treatment import Treated, deliver, recompress
+from safecheck.evaluation.rows import region_rows, window_rows
+from safecheck.evaluation.treatment import Treated, deliver, find_dial, recompress
 from safecheck.frames import Frame
 from safecheck.record.rows import FrameResult
 
-__all__ = ["evaluate", "load_kernels"]
+__all__ = ["evaluate", "find_dials", "load_kernels"]
 
 
 def evaluate(
@@ -31,7 +31,7 @@ def evaluate(
     frame
         The original.
     assignment
-        What is done to every frame.
+        What is done to every frame; with a ratio per series, as `Assignment.in_series` gives it for the frame's series.
     full_controls
         Whether this frame carries the controls that only a seeded share of frames carries: repeat, over-compressed,
         planted, and each codec's own reversible form. The pipe's reversible control runs on every frame.
@@ -43,7 +43,8 @@ def evaluate(
     Returns
     -------
     FrameResult
-        A candidate whose codec does not take the frame has no row; `notes` says so.
+        A candidate whose codec does not take the frame has no row; `notes` says so. Where two settings of a codec
+        bracket the ratio asked for, the neighbour has rows of its own, with the role bracket.
     """
     with ThreadPoolExecutor(threads) if threads > 1 else nullcontext() as pool:
         return _evaluated(frame, assignment, full_controls, delivered, pool)
@@ -65,13 +66,7 @@ def _evaluated(
         results += _done(
             [partial(_controlled, original, control) for control in controls_of(original, assignment, candidates)], pool
         )
-    return FrameResult(
-        measures=tuple(row for result in results for row in result.measures),
-        windows=tuple(row for result in results for row in result.windows),
-        regions=tuple(row for result in results for row in result.regions),
-        notes=tuple(note for result in results for note in result.notes),
-        delivered_differs=differs,
-    )
+    return _joined(results, differs)
 
 
 _Work: TypeAlias = Callable[[], FrameResult]
@@ -87,16 +82,29 @@ def _done(works: Sequence[_Work], pool: Executor | None) -> list[FrameResult]:
 def _recompressed(original: Original, candidate: Candidate) -> FrameResult:
     """Rows of a candidate, or why it was not run."""
     try:
-        return _measured(original, recompress(original, candidate))
+        results = [_measured(original, treated) for treated in recompress(original, candidate)]
     except CannotEncode as error:
         return FrameResult(notes=(f"{candidate.name} not run: {error}",))
+    note = candidate.dial.note if candidate.dial else ""
+    return _joined([*results, FrameResult(notes=(note,) if note else ())])
 
 
 def _measured(original: Original, treated: Treated) -> FrameResult:
     """Measure over frame, windows and regions."""
     windows, ssim_map = window_rows(original, treated)
     regions = region_rows(original, treated, ssim_map)
-    return FrameResult((measure_row(original, treated),), tuple(windows), tuple(regions))
+    return FrameResult((checked_row(original, treated),), tuple(windows), tuple(regions))
+
+
+def _joined(results: Sequence[FrameResult], differs: str = "") -> FrameResult:
+    """Rows and notes of several works, in their order."""
+    return FrameResult(
+        measures=tuple(row for result in results for row in result.measures),
+        windows=tuple(row for result in results for row in result.windows),
+        regions=tuple(row for result in results for row in result.regions),
+        notes=tuple(note for result in results for note in result.notes),
+        delivered_differs=differs,
+    )
 
 
 def _controlled(original: Original, control: ControlWork) -> FrameResult:
@@ -106,6 +114,31 @@ def _controlled(original: Original, control: ControlWork) -> FrameResult:
         return FrameResult((row,))
     windows, ssim_map = window_rows(original, treated)
     return FrameResult((row,), tuple(windows), tuple(region_rows(original, treated, ssim_map)))
+
+
+def find_dials(frame: Frame, candidates: Sequence[Candidate]) -> dict[str, SeriesDial]:
+    """Find one setting for a series on its reference frame, for each of some candidates by ratio per series.
+
+    Parameters
+    ----------
+    frame
+        Reference frame of the series.
+    candidates
+        With a ratio per series.
+
+    Returns
+    -------
+    dict
+        Name of the candidate -> setting, or why there is none.
+    """
+    original = prepare(frame, Assignment(()))
+    found = {}
+    for candidate in candidates:
+        try:
+            found[candidate.name] = find_dial(original, candidate)
+        except CannotEncode as error:
+            found[candidate.name] = SeriesDial(None, str(error))
+    return found
 
 
 def _differs(frame: Frame, delivered: Frame) -> str:

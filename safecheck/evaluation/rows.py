@@ -99,11 +99,13 @@ def _written(original: Original, treated: Treated) -> dict[str, Any]:
     code_bytes, smallest = treated.code_bytes, original.smallest
     content_bytes = original.size_bytes(SizeBasis.CONTENT)
     return {
+        **_carried(treated),
         "codec": treated.codec,
         "codec_version": treated.codec_version,
         "settings": treated.settings,
         "archive_can_write": treated.archive_can_write,
         "codec_note": "" if treated.archive_can_write or treated.role == "planted" else ANALYSIS_CODEC,
+        "asked": treated.asked,
         "ratio_asked": treated.ratio_asked,
         "basis": treated.basis,
         "reached": treated.reached.value,
@@ -118,6 +120,18 @@ def _written(original: Original, treated: Treated) -> dict[str, Any]:
         "lossless_codec": smallest.codec,
         "times_smaller_than_lossless": smallest.size_bytes / code_bytes,
         "times_smaller_than_now": original.frame.origin.source_bytes / code_bytes,
+    }
+
+
+def _carried(treated: Treated) -> dict[str, Any]:
+    """Columns on the dial, and on how samples were brought into the code."""
+    carriage = treated.carriage
+    return {
+        "dial": treated.dial,
+        "dial_value": treated.dial_value,
+        "code_precision": carriage.precision if carriage else None,
+        "sample_offset": carriage.offset if carriage else None,
+        "sample_scale": carriage.scale if carriage else None,
     }
 
 

@@ -8,9 +8,10 @@ from typing import Literal
 
 import numpy as np
 
-from safecheck.codecs.base import Codec, Encoded, Reached
+from safecheck.codecs.base import Carriage, Codec, Encoded, Reached
 from safecheck.codecs.registry import rated, settings_text
-from safecheck.evaluation.assignment import Candidate
+from safecheck.errors import CannotEncode
+from safecheck.evaluation.assignment import Asked, Candidate, SeriesDial
 from safecheck.evaluation.original import Original
 from safecheck.frames import Frame, PixelFormat, Raster, Samples, Values
 from safecheck.wording import DELIVERED_COPIES
@@ -21,12 +22,13 @@ __all__ = [
     "Treated",
     "decode",
     "deliver",
+    "find_dial",
     "over_compress",
     "recompress",
     "reverse",
 ]
 
-Role = Literal["candidate", "delivered", "reversible", "repeat", "over-compressed", "planted"]
+Role = Literal["candidate", "bracket", "delivered", "reversible", "repeat", "over-compressed", "planted"]
 
 OVER_COMPRESSION = 8.0
 """How many times smaller than a codec's smallest candidate the over-compressed control is."""
@@ -52,8 +54,18 @@ class Treated:
     archive_can_write: bool
     reached: Reached
     encodes: int = 1
+    asked: Asked | Literal[""] = ""
     ratio_asked: float | None = None
     basis: str = ""
+    dial: str = ""
+    """Name of the setting that sets the size; '' where there is none."""
+    dial_value: float | None = None
+    carriage: Carriage | None = None
+    """How samples were brought into the code; None without a code of our own."""
+    error_bound: int | None = None
+    """Largest error in stored values that the codec promises; None without promise."""
+    coding_error: int | None = None
+    """Largest error in stored values against what was coded, where there is a promise."""
     flattened_max: float | None = None
     """Largest change made to what lies outside before coding, in the frame's unit; None where it was kept."""
 
@@ -63,17 +75,44 @@ def decode(codec: Codec, code: bytes, format: PixelFormat, shape: tuple[int, int
     return codec.decode(code, format, shape)
 
 
-def recompress(original: Original, candidate: Candidate, role: Role = "candidate") -> Treated:
-    """Write a frame at a candidate's ratio and read it back.
+def recompress(original: Original, candidate: Candidate, role: Role = "candidate") -> tuple[Treated, ...]:
+    """Write a frame as a candidate asks and read it back; a second time where two settings bracket the ratio.
+
+    Returns
+    -------
+    tuple of Treated
+        The candidate's own, which comes first, and with a bracket the one of the neighbouring setting.
 
     Raises
     ------
     CannotEncode
-        If the codec does not take such a frame.
+        If the codec does not take such a frame, or no setting was found for its series.
     """
-    target = original.size_bytes(candidate.basis) / candidate.ratio
-    treated = _to_size(original, candidate, role, target)
-    return replace(treated, ratio_asked=candidate.ratio, basis=str(candidate.basis))
+    raster = _coded(original, candidate)
+    if candidate.asked == "ratio per frame":
+        encoded = _to_size(original, candidate, raster, _target_bytes(original, candidate))
+    else:
+        codec = rated(candidate.codec, **_fixed(candidate))
+        encoded = Encoded(codec.encode(raster), codec.settings, Reached.SETTING)
+    own = _treated(original, candidate, raster, encoded, role)
+    if encoded.neighbour is None or role != "candidate":
+        return (own,)
+    return own, _treated(original, candidate, raster, encoded.neighbour, "bracket")
+
+
+def find_dial(original: Original, candidate: Candidate) -> SeriesDial:
+    """Find the setting at which a candidate's ratio is met on the reference frame of a series.
+
+    Raises
+    ------
+    CannotEncode
+        If the codec does not take the frame.
+    """
+    target = _target_bytes(original, candidate)
+    encoded = _to_size(original, candidate, _coded(original, candidate), target)
+    if encoded.reached in (Reached.ASKED, Reached.BRACKET):
+        return SeriesDial(encoded.settings)
+    return SeriesDial(encoded.settings, f"{candidate.name}: {encoded.reached} on the reference frame of the series")
 
 
 def over_compress(original: Original, candidate: Candidate, smallest_bytes: int) -> Treated:
@@ -84,22 +123,38 @@ def over_compress(original: Original, candidate: Candidate, smallest_bytes: int)
     CannotEncode
         If the codec does not take such a frame.
     """
-    return _to_size(original, candidate, "over-compressed", max(1.0, smallest_bytes / OVER_COMPRESSION))
+    raster = _coded(original, candidate)
+    encoded = _to_size(original, candidate, raster, max(1.0, smallest_bytes / OVER_COMPRESSION))
+    return _treated(original, candidate, raster, encoded, "over-compressed")
 
 
-def _to_size(original: Original, candidate: Candidate, role: Role, target: float) -> Treated:
-    """Write a frame with a candidate's codec and settings at a size in bytes, and read it back."""
-    codec = rated(candidate.codec, **dict(candidate.settings))
-    raster = _flattened(original) if candidate.flatten_outside else original.frame.raster
-    encoded = codec.encode_to_size(raster, target)
-    if encoded.reached is not Reached.ASKED and original.smallest.size_bytes <= target:
-        encoded = replace(encoded, reached=Reached.REVERSIBLE_SMALLER)
-    name = candidate.name if role == "candidate" else f"{role}, {candidate.codec}"
-    treated = _treated(original, codec, encoded, role, name)
-    if not candidate.flatten_outside:
-        return treated
-    moved = np.abs(original.frame.values(raster.samples) - original.values)
-    return replace(treated, flattened_max=float(moved.max()))
+def _target_bytes(original: Original, candidate: Candidate) -> float:
+    """Size that a candidate's ratio asks for."""
+    if candidate.ratio is None:
+        raise ValueError(f"{candidate.name} asks for no ratio")
+    return original.size_bytes(candidate.basis) / candidate.ratio
+
+
+def _fixed(candidate: Candidate) -> dict[str, str | int | float | bool]:
+    """Settings of a candidate that is no search, its dial among them."""
+    if candidate.asked == "setting":
+        return dict(candidate.settings)
+    if candidate.dial is None or candidate.dial.settings is None:
+        raise CannotEncode(candidate.dial.note if candidate.dial else "no setting was sought for its series")
+    return dict(candidate.dial.settings)
+
+
+def _to_size(original: Original, candidate: Candidate, raster: Raster, target: float) -> Encoded:
+    """Write a raster with a candidate's codec and settings at a size in bytes."""
+    encoded = rated(candidate.codec, **dict(candidate.settings)).encode_to_size(raster, target)
+    if encoded.reached not in (Reached.ASKED, Reached.BRACKET) and original.smallest.size_bytes <= target:
+        return replace(encoded, reached=Reached.REVERSIBLE_SMALLER)
+    return encoded
+
+
+def _coded(original: Original, candidate: Candidate) -> Raster:
+    """What a candidate codes: the frame, or the frame with its outside flattened."""
+    return _flattened(original) if candidate.flatten_outside else original.frame.raster
 
 
 def _flattened(original: Original) -> Raster:
@@ -116,10 +171,10 @@ def _flattened(original: Original) -> Raster:
 
 def reverse(original: Original, codec: Codec, code: bytes | None = None) -> Treated:
     """Write a frame reversibly and read it back; `code` where it is written already."""
-    written = codec.encode(original.frame.raster) if code is None else code
-    encoded = Encoded(written, codec.settings, Reached.SETTING)
+    raster = original.frame.raster
+    written = codec.encode(raster) if code is None else code
     name = "reversible" if code is not None else f"reversible, {codec.name}"
-    return _treated(original, codec, encoded, "reversible", name)
+    return _read_back(original, codec, raster, Encoded(written, codec.settings, Reached.SETTING), "reversible", name)
 
 
 def deliver(delivered: Frame) -> Treated:
@@ -139,15 +194,32 @@ def deliver(delivered: Frame) -> Treated:
     )
 
 
-def _treated(original: Original, codec: Codec, encoded: Encoded, role: Role, name: str) -> Treated:
+def _treated(original: Original, candidate: Candidate, raster: Raster, encoded: Encoded, role: Role) -> Treated:
+    """Read a candidate's code back, and say what was asked."""
+    own = role in ("candidate", "bracket")
+    name = candidate.name if own else f"{role}, {candidate.codec}"
+    codec = rated(candidate.codec, **dict(encoded.settings))
+    treated = _read_back(original, codec, raster, encoded, role, name)
+    value = encoded.settings.get(codec.dial)
+    treated = replace(treated, dial=codec.dial, dial_value=float(value) if isinstance(value, int | float) else None)
+    if role != "over-compressed":
+        basis = "" if candidate.ratio is None else str(candidate.basis)
+        treated = replace(treated, asked=candidate.asked, ratio_asked=candidate.ratio, basis=basis)
+    if not candidate.flatten_outside:
+        return treated
+    moved = np.abs(original.frame.values(raster.samples) - original.values)
+    return replace(treated, flattened_max=float(moved.max()))
+
+
+def _read_back(original: Original, codec: Codec, raster: Raster, encoded: Encoded, role: Role, name: str) -> Treated:
     """Read the code back and say what wrote it."""
-    frame = original.frame
-    samples = decode(codec, encoded.code, frame.raster.format, frame.raster.shape)
+    samples = decode(codec, encoded.code, raster.format, raster.shape)
+    bound = 0 if role == "reversible" else codec.error_bound
     return Treated(
         role=role,
         candidate=name,
         samples=samples,
-        values=frame.values(samples),
+        values=original.frame.values(samples),
         code_bytes=len(encoded.code),
         code_crc32=zlib.crc32(encoded.code),
         codec=codec.name,
@@ -156,4 +228,12 @@ def _treated(original: Original, codec: Codec, encoded: Encoded, role: Role, nam
         archive_can_write=codec.archive_can_write,
         reached=encoded.reached,
         encodes=encoded.encodes,
+        carriage=codec.carriage(raster.format),
+        error_bound=bound,
+        coding_error=None if bound is None else _largest_error(samples, raster.samples),
     )
+
+
+def _largest_error(samples: Samples, coded: Samples) -> int:
+    """Largest difference in stored values."""
+    return int(np.abs(samples.astype(np.int64) - coded.astype(np.int64)).max())

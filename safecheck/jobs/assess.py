@@ -21,7 +21,14 @@ from safecheck.evaluation import Assignment, Candidate, evaluate, load_kernels
 from safecheck.jobs.dossier import finish_dossier, readers, write_tables
 from safecheck.jobs.inputs import Inputs, gather_inputs
 from safecheck.jobs.places import write_places
-from safecheck.jobs.plans import DEFAULT_CODECS, DEFAULT_RATIOS, LoadedPlan, load_plan, plan_of_command_line
+from safecheck.jobs.plans import (
+    DEFAULT_CODECS,
+    DEFAULT_RATIOS,
+    LoadedPlan,
+    check_available,
+    load_plan,
+    plan_of_command_line,
+)
 from safecheck.jobs.regions import load_regions
 from safecheck.jobs.selftest import run_selftest
 from safecheck.jobs.site import Site, open_site
@@ -98,9 +105,11 @@ def prepare_run(request: AssessRequest, tell: Tell, standby: Standby | None = No
     Raises
     ------
     UsageError
-        If a document, a path or the key is wrong.
+        If a document, a path or the key is wrong, or a codec is missing that a run, other than a dry one, needs.
     """
     loaded = _loaded(request)
+    if request.out is not None:
+        check_available(loaded.plan)
     site = open_site(request.key_file)
     if standby is not None and site.has_kernels(versions()):
         standby.prepare()

@@ -4,12 +4,16 @@ from __future__ import annotations
 
 import time
 from collections.abc import Iterator
+from dataclasses import dataclass
 
 from safecheck.codecs import registry
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.evaluation import evaluate, load_kernels
 from safecheck.jobs.assess import Prepared
+from safecheck.jobs.plans import is_available
+from safecheck.jobs.series import SeriesAssignments
+from safecheck.record.rows import FrameResult
 from safecheck.runner.pool import cores
 from safecheck.runner.progress import weight_of
 from safecheck.runner.tasks import Task
@@ -38,7 +42,7 @@ def dry_run(prepared: Prepared) -> Iterator[str]:
         )
     yield f"Candidates: {len(plan.candidates)}, limits: {len(plan.limits)}"
     for name in dict.fromkeys(candidate.codec for candidate in plan.candidates):
-        yield f"  {name}: {'available' if registry.available(name) else 'not available here'}"
+        yield f"  {name}: {'available' if is_available(name) else 'not available here'}"
     yield from _cost(prepared)
     yield from _evidence(prepared, patients)
     yield from _idle_limits(prepared)
@@ -57,37 +61,62 @@ def _reasons(prepared: Prepared) -> Iterator[str]:
         yield f"  {files} left out: {sentence_of(reason)}"
 
 
+@dataclass(frozen=True, slots=True)
+class _Trial:
+    """What one frame gave, tried as the run would assess it."""
+
+    seconds_per_weight: float
+    rows: FrameResult
+    """Without the controls that only a share of frames carries."""
+
+
 def _cost(prepared: Prepared) -> Iterator[str]:
-    """Time and disk, from one task that is run for the purpose."""
+    """Time, rows and disk, from one frame that is run for the purpose."""
     if not prepared.tasks:
-        yield "Time and disk: nothing to assess"
+        yield "Time, rows and disk: nothing to assess"
         return
-    total = sum(weight_of(task, prepared.assignment) for task in prepared.tasks)
-    seconds = _seconds_per_weight(prepared, prepared.tasks[len(prepared.tasks) // 2])
-    workers = prepared.request.workers or cores()
-    frames = sum(len(task.frames) for task in prepared.tasks)
-    disk = frames * (len(prepared.assignment.candidates) + 2) * _BYTES_PER_FRAME_AND_CANDIDATE
-    if seconds is None:
-        yield "Time: not known, the frame tried was refused"
+    missing = [each.codec for each in prepared.assignment.candidates if not is_available(each.codec)]
+    if missing:
+        yield f"Time and rows: not known, and the run is refused, while {missing[0]} is not available here"
+        return
+    trial = _tried(prepared, prepared.tasks[len(prepared.tasks) // 2])
+    frames = [frame for task in prepared.tasks for frame in task.frames]
+    if trial is None:
+        yield "Time and rows: not known, the frame tried was refused"
     else:
-        expected = max(1.0, seconds * total / workers)
+        total = sum(weight_of(task, prepared.assignment) for task in prepared.tasks)
+        workers = prepared.request.workers or cores()
+        expected = max(1.0, trial.seconds_per_weight * total / workers)
         yield f"Time: about {expected:.0f} s on {workers} workers, after compiled code is prepared"
+        controls = sum(frame.full_controls for frame in frames) * _rows_of_controls(prepared)
+        copies = sum(frame.delivered is not None for frame in frames)
+        measures = len(frames) * len(trial.rows.measures) + controls + copies
+        windows, regions = len(frames) * len(trial.rows.windows), len(frames) * len(trial.rows.regions)
+        yield f"Rows: about {measures} of measures, {windows} of windows, {regions} of regions"
+    disk = len(frames) * (len(prepared.assignment.candidates) + 2) * _BYTES_PER_FRAME_AND_CANDIDATE
     yield f"Disk: about {max(disk / 1e6, 0.1):.1f} MB"
 
 
-def _seconds_per_weight(prepared: Prepared, task: Task) -> float | None:
-    """Time per unit of work, from the first frame of a task; None where it is refused."""
+def _rows_of_controls(prepared: Prepared) -> int:
+    """Rows of a frame's full controls: each reversible codec, repeat and over-compressed of each codec, planted."""
+    codecs = {candidate.codec for candidate in prepared.assignment.candidates}
+    return len(registry.reversible_names()) + 2 * len(codecs) + 1
+
+
+def _tried(prepared: Prepared, task: Task) -> _Trial | None:
+    """The first frame of a task, run twice, since the first time includes what is done once; None if it is refused."""
     load_kernels()
     each = task.frames[0]
     try:
+        assignment = SeriesAssignments(prepared.assignment, prepared.inputs.assessed).of(each.instance)
         with open_instance(each.instance) as reader:
-            frame = reader.frame(each.number)
-            evaluate(frame, prepared.assignment, full_controls=False)
+            rows = evaluate(reader.frame(each.number), assignment, full_controls=False)
             since = time.monotonic()
-            evaluate(reader.frame(each.number), prepared.assignment, full_controls=each.full_controls)
+            evaluate(reader.frame(each.number), assignment, full_controls=each.full_controls)
     except InputRefused:
         return None
-    return (time.monotonic() - since) / weight_of(Task("", (each,)), prepared.assignment)
+    weight = weight_of(Task("", (each,)), prepared.assignment)
+    return _Trial((time.monotonic() - since) / weight, rows)
 
 
 def _idle_limits(prepared: Prepared) -> Iterator[str]:

@@ -11,6 +11,7 @@ from safecheck.evaluation.assignment import Assignment
 from safecheck.evaluation.crops import take_crop
 from safecheck.evaluation.original import Original, prepare
 from safecheck.evaluation.treatment import Treated, deliver, recompress
+from safecheck.jobs.series import SeriesAssignments
 from safecheck.record.crops import CropMeta, write_crop
 from safecheck.record.worst import WorstPlaceEntry
 from safecheck.wording import DELIVERED_COPIES
@@ -48,13 +49,14 @@ def write_places(
         With the names of their crops.
     """
     (folder / PLACES).mkdir(exist_ok=True)
+    assignments = SeriesAssignments(assignment, instances)
     known = {(each.series, each.instance): each for each in instances}
     shown = []
     for number, entry in enumerate(places, start=1):
         instance = known[entry.place.series, entry.place.instance]
         name = "" if entry.may_show_text else f"place-{number:03d}"
         if name:
-            _write(folder / PLACES, name, entry, instance, pairs.get(instance.input), assignment)
+            _write(folder / PLACES, name, entry, instance, pairs.get(instance.input), assignments.of(instance))
         shown.append(entry.model_copy(update={"crop": name}))
     return tuple(shown)
 
@@ -92,4 +94,4 @@ def _treated(original: Original, entry: WorstPlaceEntry, delivered: Instance | N
         with open_instance(delivered) as reader:
             return deliver(reader.frame(entry.place.frame))
     candidate = next(each for each in assignment.candidates if each.name == entry.candidate)
-    return recompress(original, candidate)
+    return recompress(original, candidate)[0]

@@ -9,11 +9,20 @@ from typing import Literal
 
 from safecheck.codecs import registry
 from safecheck.documents import from_toml
-from safecheck.errors import DocumentError, UsageError
+from safecheck.errors import CodecUnavailable, DocumentError, UsageError
 from safecheck.policy.limits import check_limits
 from safecheck.policy.plan import CandidatePlan, Change, Plan, SamplePlan, Scope, plan_hash
+from safecheck.policy.reference import check_reference
 
-__all__ = ["DEFAULT_CODECS", "DEFAULT_RATIOS", "LoadedPlan", "load_plan", "plan_of_command_line"]
+__all__ = [
+    "DEFAULT_CODECS",
+    "DEFAULT_RATIOS",
+    "LoadedPlan",
+    "check_available",
+    "is_available",
+    "load_plan",
+    "plan_of_command_line",
+]
 
 DEFAULT_RATIOS = (5.0, 8.0, 10.0, 15.0, 20.0)
 DEFAULT_CODECS = ("tiled", "jpeg2000")
@@ -53,6 +62,7 @@ def load_plan(path: Path) -> LoadedPlan:
     plan = from_toml(Plan, text)
     _check_codecs(plan)
     check_limits(plan)
+    check_reference(plan)
     regions = path.parent / plan.regions.file if plan.regions else None
     return LoadedPlan(plan, "file", regions)
 
@@ -94,10 +104,56 @@ def plan_of_command_line(
     return LoadedPlan(plan, "command line", regions_file)
 
 
-def _check_codecs(plan: Plan) -> None:
-    """Ask the registry for each candidate's codec with its settings."""
+def is_available(codec: str) -> bool:
+    """Whether a codec works on this machine; a library may be here and lack the part that the codec needs."""
+    try:
+        return registry.available(codec) and bool(registry.codec(codec).version)
+    except CodecUnavailable:
+        return False
+
+
+def check_available(plan: Plan) -> None:
+    """Raise where this machine lacks the codec of a candidate.
+
+    Raises
+    ------
+    DocumentError
+        With the dotted path of the first such candidate.
+    """
     for index, candidate in enumerate(plan.candidates):
+        if not is_available(candidate.codec):
+            library = registry.entry(candidate.codec).library
+            raise DocumentError(
+                f"candidates[{index}].codec",
+                f"{candidate.codec} is not available here, expected {library} with that codec; see safecheck selftest",
+            )
+
+
+def _check_codecs(plan: Plan) -> None:
+    """Ask the registry for each candidate's codec with its settings, and for its dial where there is no ratio."""
+    for index, candidate in enumerate(plan.candidates):
+        path = f"candidates[{index}]"
         try:
             registry.rated(candidate.codec, **candidate.settings)
         except UsageError as error:
-            raise DocumentError(f"candidates[{index}].codec", str(error)) from error
+            raise DocumentError(f"{path}.codec", str(error)) from error
+        dial = registry.entry(candidate.codec).dial
+        if candidate.ratio is None and dial not in candidate.settings:
+            raise DocumentError(
+                f"{path}.settings.{dial}",
+                f"is missing; without a ratio {candidate.codec} is set by its {dial}, expected {_range_of(candidate)}",
+            )
+        if candidate.ratio is not None and dial in candidate.settings:
+            raise DocumentError(
+                f"{path}.settings.{dial}",
+                f"is what the ratio of {candidate.ratio:g}:1 sets; expected either a ratio or {dial}, not both",
+            )
+
+
+def _range_of(candidate: CandidatePlan) -> str:
+    """Range of a codec's dial, in the codec's own words: it says them when asked for what no dial can be."""
+    try:
+        registry.rated(candidate.codec, **{registry.entry(candidate.codec).dial: -1.0})
+    except UsageError as error:
+        return str(error).partition("expected ")[2]
+    return "a number"

@@ -14,6 +14,7 @@ from safecheck.dicom.instance import Instance
 from safecheck.dicom.reader import open_instance
 from safecheck.evaluation import Assignment, evaluate
 from safecheck.jobs.inputs import Inputs
+from safecheck.jobs.series import SeriesAssignments
 from safecheck.record.rows import TABLES, columns_of
 from safecheck.record.tables import TableReader
 
@@ -69,6 +70,7 @@ def recompute(
     drawn = sorted(every, key=lambda each: hashlib.sha256(f"{seed}/{each[0]}/{each[1]}".encode()).digest())[:frames]
     rows = {table: _rows_of(tables[table], frozenset(drawn)) for table in _NAMED_BY}
     known = {each.instance: each for each in inputs.assessed}
+    assignments = SeriesAssignments(assignment, inputs.assessed)
     differences: list[str] = []
     for instance, number in drawn:
         if instance not in known:
@@ -76,7 +78,8 @@ def recompute(
             continue
         found = {table: rows[table].get((instance, number), []) for table in _NAMED_BY}
         copy = inputs.pairs.get(known[instance].input)
-        differences += _differing(known[instance], copy, number, assignment, found)
+        own = assignments.of(known[instance])
+        differences += _differing(known[instance], copy, number, own, found)
     return Recomputed(len(drawn), len(every), tuple(differences))
 
 

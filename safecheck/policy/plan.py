@@ -69,25 +69,39 @@ class SamplePlan(Document):
 
 
 class CandidatePlan(Document):
-    """One codec at one asked ratio."""
+    """One codec at one asked ratio, or at one encoder setting."""
 
     codec: Text
-    ratio: Annotated[float, Field(gt=1, le=1000)]
+    ratio: Annotated[float, Field(gt=1, le=1000)] | None = None
+    """Without it the codec's dial stands in `settings`, and the ratio is what comes of it."""
+    per: Literal["frame", "series"] = "frame"
+    """Whether each frame is brought to the ratio, or one setting, found on the middle frame of a series, serves all."""
     basis: SizeBasis = SizeBasis.BITS_STORED
     status: Literal["proposed", "context"] = "proposed"
     """Only proposed candidates decide the exit code."""
     settings: dict[str, str | int | float | bool] = Field(default_factory=dict)
-    """The codec's other settings, e.g. size = 16 for tiled."""
+    """The codec's other settings, e.g. size = 16 for tiled; without a ratio its dial too, e.g. quality = 85."""
     outside: Literal["keep", "flatten"] = "keep"
     """Whether what is neither content nor padding is coded like the rest, or set to one value before coding."""
+
+    @model_validator(mode="after")
+    def _of_a_ratio(self) -> CandidatePlan:
+        """Two keys say how a ratio is meant, and nothing without one."""
+        if self.ratio is None and self.per == "series":
+            raise ValueError("per = 'series' is expected with a ratio; a setting serves every frame as it is")
+        if self.ratio is None and self.basis is not SizeBasis.BITS_STORED:
+            raise ValueError("basis is expected with a ratio, and there is none")
+        return self
 
     @property
     def name(self) -> str:
         """How outputs name it: codec, ratio, basis where it is not bits-stored, what else was asked."""
         basis = "" if self.basis is SizeBasis.BITS_STORED else f" of {self.basis}"
+        per = " per series" if self.per == "series" else ""
+        ratio = "" if self.ratio is None else f" {self.ratio:g}:1{basis}{per}"
         settings = "".join(f", {key} {value}" for key, value in sorted(self.settings.items()))
         outside = ", outside flattened" if self.outside == "flatten" else ""
-        return f"{self.codec} {self.ratio:g}:1{basis}{settings}{outside}"
+        return f"{self.codec}{ratio}{settings}{outside}"
 
 
 class WindowPlan(Document):

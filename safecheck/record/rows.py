@@ -64,7 +64,7 @@ class TreatedFrame:
     modality: str = column("", "Modality.")
     body_part: str = column("", "Body part: a term of the standard's list, other, or empty.")
     unit: str = column("", "Unit of every column in the unit of the image.")
-    role: str = column("", "candidate, delivered, reversible, repeat, over-compressed or planted.")
+    role: str = column("", "candidate, bracket, delivered, reversible, repeat, over-compressed or planted.")
     candidate: str = column("", "Name of the candidate or control.")
 
 
@@ -103,9 +103,15 @@ class MeasureRow(TreatedFrame):
     settings: str = column("", "Settings that wrote the code, as canonical JSON.")
     archive_can_write: bool = column("", "Whether a DICOM transfer syntax exists for the codec.")
     codec_note: str = column("", "What must be known of the codec, e.g. that no archive writes it, or empty.")
+    dial: str = column("", "Setting by which the codec's size is set, or empty.", default="")
+    dial_value: float | None = optional("", "Value of that setting.")
+    code_precision: int | None = optional("bits", "Bits a sample that the code stream declares.")
+    sample_offset: int | None = optional("stored values", "Added to each sample before coding.")
+    sample_scale: float | None = optional("times", "Factor of each sample, once the offset is added, before coding.")
+    asked: str = column("", "ratio per frame, ratio per series or setting; empty for controls.", default="")
     ratio_asked: float | None = optional("to 1", "Ratio asked for, on the basis named beside it.")
     basis: str = column("", "Basis of the ratio asked for.")
-    reached: str = column("", "asked, or why the ratio was not met.")
+    reached: str = column("", "asked, or why the ratio was not met; bracket, or setting where none was asked.")
     encodes: int = column("", "Encodings needed to reach it.")
     code_bytes: int = column("bytes", "Size of the code stream.")
     code_crc32: int | None = optional("", "CRC-32 of the code stream; null for delivered copies.")
@@ -179,8 +185,10 @@ class MeasureRow(TreatedFrame):
     ciede2000_max: float | None = optional("CIEDE2000", "Largest of it.")
 
     # Controls
-    control_held: bool | None = optional("", "Controls: whether what was asked of it was found; null for candidates.")
-    control_found: str = column("", "Controls: what was found, in words; empty for candidates.", default="")
+    control_held: bool | None = optional(
+        "", "Whether what was asked was found: of controls, and of a promised largest error."
+    )
+    control_found: str = column("", "What was found, in words; empty where nothing was asked.", default="")
     planted_size: float | None = optional(IMAGE_UNIT, "Planted control: displacement added to one 8x8 patch.")
     planted_row: int | None = optional("pixels", "Planted control: first row of that patch.")
     planted_column: int | None = optional("pixels", "Planted control: first column of that patch.")

@@ -16,6 +16,7 @@ from safecheck.evaluation import Assignment
 from safecheck.record.canonical import canonical_bytes
 from safecheck.runner.full_controls import choose_full_controls, codecs_of
 from safecheck.runner.manifest import Manifest
+from safecheck.runner.references import Reference, SeriesKey, references_of, series_of
 
 __all__ = ["TASK_FRAMES", "FrameTask", "Task", "pixels_of", "plan_tasks"]
 
@@ -47,6 +48,14 @@ class Task:
     name: str
     """HMAC-SHA256 under the site key over what is done to which frames, as hexadecimal."""
     frames: tuple[FrameTask, ...]
+    references: tuple[Reference, ...] = ()
+    """Frames of its series on which one setting for all of them is found, the first readable one serving; empty where
+    no candidate needs it."""
+
+    @property
+    def series(self) -> SeriesKey:
+        """Series of its frames."""
+        return series_of(self.frames[0].instance)
 
 
 def pixels_of(instance: Instance) -> int:
@@ -107,7 +116,13 @@ def plan_tasks(
         for instance in ordered
         for number in range(1, instance.frames + 1)
     ]
-    return tuple(Task(_name(part, manifest, key), part) for part in _cut(frames))
+    references = references_of(ordered) if assignment.per_series else {}
+    return tuple(_task(part, references.get(series_of(part[0].instance), ()), manifest, key) for part in _cut(frames))
+
+
+def _task(frames: tuple[FrameTask, ...], references: tuple[Reference, ...], manifest: Manifest, key: bytes) -> Task:
+    """One task with its name."""
+    return Task(_name(frames, references, manifest, key), frames, references)
 
 
 def _place(instance: Instance) -> tuple[str, str, str, int, str, str]:
@@ -120,7 +135,7 @@ def _cut(frames: list[FrameTask]) -> Iterator[tuple[FrameTask, ...]]:
     """Cut frames in order into parts of one series, few enough frames and few enough pixels."""
     total = sum(pixels_of(frame.instance) for frame in frames)
     most_pixels = min(_TASK_PIXELS, total // _TASKS_WANTED)
-    for _, series in itertools.groupby(frames, lambda frame: (frame.instance.study, frame.instance.series)):
+    for _, series in itertools.groupby(frames, lambda frame: series_of(frame.instance)):
         part: list[FrameTask] = []
         pixels = 0
         for frame in series:
@@ -133,7 +148,7 @@ def _cut(frames: list[FrameTask]) -> Iterator[tuple[FrameTask, ...]]:
         yield tuple(part)
 
 
-def _name(frames: Iterable[FrameTask], manifest: Manifest, key: bytes) -> str:
+def _name(frames: Iterable[FrameTask], references: Iterable[Reference], manifest: Manifest, key: bytes) -> str:
     """Keyed name of a task."""
     content = {
         "assignment": manifest.assignment,
@@ -143,5 +158,6 @@ def _name(frames: Iterable[FrameTask], manifest: Manifest, key: bytes) -> str:
             [each.instance.input, each.number, each.full_controls, each.delivered.input if each.delivered else ""]
             for each in frames
         ],
+        "references": [[instance.input, number] for instance, number in references],
     }
     return hmac.digest(key, b"task\0" + canonical_bytes(content), "sha256").hex()

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Callable, Collection
-from contextlib import AbstractContextManager, ExitStack
+from contextlib import ExitStack
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Protocol
@@ -13,36 +13,15 @@ import pyarrow as pa
 
 from safecheck.dicom.instance import Instance
 from safecheck.errors import InputExcluded, InputRefused
-from safecheck.evaluation import Assignment
+from safecheck.evaluation import Assignment, SeriesDials
 from safecheck.frames import Frame
 from safecheck.record.rows import FrameResult
 from safecheck.record.tables import from_rows
+from safecheck.runner.references import FrameReader, OpenInstance, SeriesKey, find_series_dials
 from safecheck.runner.shards import SHARD_TABLES, LeftOut, write_shard
 from safecheck.runner.tasks import FrameTask, Task
 
-__all__ = ["Done", "Evaluate", "FrameReader", "OpenInstance", "Opened", "Treatment", "perform"]
-
-
-class FrameReader(Protocol):
-    """An open instance."""
-
-    def frame(self, number: int) -> Frame:
-        """Read one frame, counted from 1.
-
-        Raises
-        ------
-        InputRefused
-            If its pixel path is doubtful.
-        """
-        ...
-
-
-class OpenInstance(Protocol):
-    """Opens an instance for reading frames one at a time."""
-
-    def __call__(self, instance: Instance, /) -> AbstractContextManager[FrameReader]:
-        """Open; raises InputRefused if it cannot be read."""
-        ...
+__all__ = ["Done", "Evaluate", "Opened", "Treatment", "perform"]
 
 
 class Evaluate(Protocol):
@@ -102,10 +81,12 @@ class _Side:
 
 @dataclass(slots=True)
 class Opened:
-    """What a worker keeps open from one task to the next: one instance of each side at most."""
+    """What a worker keeps from one task to the next: an open instance of each side at most, and settings of series."""
 
     originals: _Side
     delivered: _Side
+    dials: dict[SeriesKey, SeriesDials] = field(default_factory=dict)
+    """Series -> settings that serve all its frames, where candidates need them."""
 
     @classmethod
     def for_treatment(cls, treatment: Treatment) -> Opened:
@@ -113,7 +94,7 @@ class Opened:
         return cls(_Side(treatment.open_instance), _Side(treatment.open_instance))
 
     def close(self) -> None:
-        """Close both."""
+        """Close both instances."""
         self.originals.close()
         self.delivered.close()
 
@@ -166,20 +147,19 @@ def perform(
             bench.left_out.append(_left_out(each, "worker-lost", ""))
             continue
         begun(position)
-        _assess(each, bench)
+        _assess(each, task, bench)
     begun(len(task.frames))
     write_shard(work, task, bench.tables, bench.left_out, bench.notes)
     return Done(task.name, sum(each.side == "original" for each in bench.left_out))
 
 
-def _assess(each: FrameTask, bench: _Bench) -> None:
+def _assess(each: FrameTask, task: Task, bench: _Bench) -> None:
     """Assess one frame; whatever goes wrong with it becomes an entry, and the run goes on."""
     try:
         frame = bench.opened.originals.read(each.instance, each.number)
         delivered = _read_delivered(each, bench)
-        result = bench.treatment.evaluate(
-            frame, bench.treatment.assignment, full_controls=each.full_controls, delivered=delivered
-        )
+        assignment = _assignment(task, bench)
+        result = bench.treatment.evaluate(frame, assignment, full_controls=each.full_controls, delivered=delivered)
         tables = {name: from_rows(name, getattr(result, name)) for name in SHARD_TABLES}
     except (InputRefused, InputExcluded) as refusal:
         bench.left_out.append(_left_out(each, refusal.reason, refusal.detail))
@@ -196,6 +176,16 @@ def _assess(each: FrameTask, bench: _Bench) -> None:
             bench.left_out.append(
                 _without_copy(each.delivered, each.number, "delivered-differs", result.delivered_differs)
             )
+
+
+def _assignment(task: Task, bench: _Bench) -> Assignment:
+    """What is done to a frame of a task, with the settings of its series where candidates need them."""
+    treatment, dials = bench.treatment, bench.opened.dials
+    if not task.references:
+        return treatment.assignment
+    if task.series not in dials:
+        dials[task.series] = find_series_dials(task.references, treatment.assignment, treatment.open_instance)
+    return treatment.assignment.in_series(dials[task.series])
 
 
 def _read_delivered(each: FrameTask, bench: _Bench) -> Frame | None:
