@@ -6,6 +6,7 @@ from safecheck.report.blocks import Report, Section
 from safecheck.report.sections.back import definitions, keeping, plan, signatures, versions
 from safecheck.report.sections.checks import controls, left_out
 from safecheck.report.sections.delivered import delivered
+from safecheck.report.sections.equal_damage import equal_damage
 from safecheck.report.sections.front import front
 from safecheck.report.sections.further import further
 from safecheck.report.sections.ledger import ledger
@@ -59,6 +60,7 @@ def _sections(view: View) -> tuple[Section, ...]:
         places(view),
         regions(view),
         ledger(view),
+        *equal_damage(view),
         controls(view),
         left_out(view),
         delivered(view),

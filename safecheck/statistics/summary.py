@@ -21,6 +21,7 @@ from safecheck.statistics.cautions import cautions_that_apply
 from safecheck.statistics.controls import controls
 from safecheck.statistics.counts import candidate_entries, input_counts, left_out, stratum_entries
 from safecheck.statistics.delivered import delivered_entry
+from safecheck.statistics.equal_damage import equal_damage
 from safecheck.statistics.figures import figures
 from safecheck.statistics.groups import Groups
 from safecheck.statistics.ledger import ledger
@@ -92,6 +93,7 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
         candidates=candidates,
         ledger=tuple(ledger(measures, names)),
         figures=tuple(figures(measures, groups["windows"], names)),
+        equal_damage=tuple(equal_damage(plan, groups, candidates)),
         outcomes=held,
         outcomes_text=_outcomes_text(held),
         controls=checks,

@@ -10,6 +10,7 @@ from typing import Any
 from safecheck.record.candidates import CandidateEntry, LedgerEntry
 from safecheck.record.delivered import DeliveredEntry, DeliveredPairEntry, ExpectationEntry
 from safecheck.record.document import CodecCheckEntry, PlanEntry, RecordDocument, TableEntry
+from safecheck.record.equal_damage import Between, EqualDamageEntry
 from safecheck.record.figures import FigureEntry, RegionEntry
 from safecheck.record.inputs import CountEntry, InputCounts, StratumEntry
 from safecheck.record.outcomes import Condition, ControlEntry, OutcomeEntry
@@ -194,6 +195,54 @@ def ledger(stratum: StratumEntry) -> list[LedgerEntry]:
             )
         )
     return found
+
+
+def equal_damages(stratum: StratumEntry) -> list[EqualDamageEntry]:
+    """JPEG 2000 at 10:1 beside tiled, by the RMSE in content and by the largest error, some of it beyond the run."""
+    common: dict[str, Any] = {"reference": "jpeg2000 10:1", "stratum": stratum.stratum, "unit": stratum.unit}
+    common |= {"worse": "higher", "candidates": 5, "reference_ratio": 10.01, "reference_bits_per_pixel": 1.199}
+    return [
+        EqualDamageEntry(
+            **common,
+            codec="tiled",
+            measure="rmse_content",
+            frames=stratum.frames,
+            frames_below=2,
+            reference_value=2.86,
+            ratio_median=Between(least=8.97, most=8.97),
+            ratio_p05=Between(least=7.31, most=7.31),
+            ratio_p95=Between(least=11.52, most=11.52),
+            bits_per_pixel_median=Between(least=1.338, most=1.338),
+        ),
+        EqualDamageEntry(
+            **common,
+            codec="tiled, size 16",
+            measure="rmse_content",
+            frames=stratum.frames - 3,
+            frames_above=stratum.frames - 5,
+            frames_unchanged=1,
+            frames_without=2,
+            reference_value=2.86,
+            ratio_median=Between(least=20.03),
+            ratio_p05=Between(least=12.2, most=12.9),
+            ratio_p95=Between(least=20.1),
+            bits_per_pixel_median=Between(most=0.599),
+        ),
+        EqualDamageEntry(
+            **common,
+            codec="tiled",
+            measure="region_max",
+            region="left basal ganglia",
+            region_role="target",
+            limits=("largest error in the target",),
+            frames=1,
+            reference_value=17.4,
+            ratio_median=Between(least=9.4, most=9.4),
+            ratio_p05=Between(least=9.4, most=9.4),
+            ratio_p95=Between(least=9.4, most=9.4),
+            bits_per_pixel_median=Between(least=1.277, most=1.277),
+        ),
+    ]
 
 
 def outcomes() -> list[OutcomeEntry]:
@@ -508,6 +557,7 @@ def make_record(
         "candidates": candidates(frames),
         "ledger": tuple(item for stratum in groups for item in ledger(stratum)),
         "figures": tuple(item for stratum in groups for item in figures(stratum)),
+        "equal_damage": tuple(item for stratum in groups for item in equal_damages(stratum)),
         "outcomes": tuple(lines),
         "outcomes_text": "2 limits against 6 proposed candidates: 4 outside declared limits" if lines else NO_LIMITS,
         "controls": controls(held=held),
