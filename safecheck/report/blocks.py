@@ -19,8 +19,11 @@ __all__ = [
     "Column",
     "Contents",
     "Facts",
+    "Gallery",
+    "GreyScale",
     "Heading",
     "Numbered",
+    "Picture",
     "Pictures",
     "PlaceCard",
     "Places",
@@ -51,6 +54,8 @@ class Title:
     facts: tuple[tuple[str, str], ...]
     """Label and value, shown side by side."""
     record_sha256: str
+    hashed: str = "the record"
+    """What the hash is of."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -152,6 +157,8 @@ class Chart:
     y_title: str
     series: tuple[Series, ...]
     bounds: tuple[Bound, ...] = ()
+    apart: bool = True
+    """Whether curves are moved sideways by a little, so that their spreads do not cover each other."""
 
     @property
     def highest(self) -> float:
@@ -248,6 +255,33 @@ class Places:
     cards: tuple[PlaceCard, ...]
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class Picture:
+    """Grey pixels with a line of words below."""
+
+    pixels: Grey
+    caption: str
+
+
+@dataclass(frozen=True, slots=True)
+class GreyScale:
+    """What the greys of pictures stand for: from minus to plus a value."""
+
+    value: float
+    unit: str
+
+
+@dataclass(frozen=True, slots=True)
+class Gallery:
+    """Rows of pictures of one size on one scale."""
+
+    rows: tuple[tuple[Picture, ...], ...]
+    side: float
+    """Of the longer side of a picture, in points."""
+    scale: GreyScale | None = None
+    note: str = ""
+
+
 @dataclass(frozen=True, slots=True)
 class Signatures:
     """Blank blocks for named roles."""
@@ -261,7 +295,9 @@ class Contents:
     """Where the list of sections with their pages stands."""
 
 
-Block: TypeAlias = Title | Heading | Prose | Numbered | Facts | Table | Charts | Bars | Places | Signatures | Contents
+Block: TypeAlias = (
+    Title | Heading | Prose | Numbered | Facts | Table | Charts | Bars | Places | Gallery | Signatures | Contents
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -291,3 +327,5 @@ class Report:
     """What stands at the head of every page, e.g. that sources were already lossy."""
     across: str = ""
     """What stands across every page, or ''."""
+    hashed: str = "the record"
+    """What the hash at the foot of every page is of."""

@@ -28,8 +28,8 @@ from safecheck.report.theme import (
 __all__ = ["bars_drawing", "chart_drawing", "nice_ticks", "ratio_ticks"]
 
 _SMALL = 7.0
-_DASHES: tuple[tuple[float, ...] | None, ...] = (None, (4, 2), (1.4, 1.6), (7, 2, 1.5, 2), (2.5, 1.2))
-_GREYS = (INK, ACCENT, MID, INK, ACCENT)
+_DASHES: tuple[tuple[float, ...] | None, ...] = (None, (4, 2), (1.4, 1.6), (7, 2, 1.5, 2), (2.5, 1.2), (9, 3))
+_GREYS = (INK, ACCENT, MID, INK, ACCENT, MID)
 _RATIOS = (1, 1.5, 2, 3, 4, 5, 6, 8, 10, 15, 20, 30, 40, 60, 80, 100, 150, 200, 300, 400, 600, 800, 1000)
 
 
@@ -89,7 +89,7 @@ def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
     _axes(drawing, chart, x, y, list(zip(ticks, labels, strict=True)), width)
     _bounds(drawing, x, y, chart.near_bounds)
     for index, item in enumerate(chart.series):
-        shift = 4.2 * (index - (len(chart.series) - 1) / 2)
+        shift = 4.2 * (index - (len(chart.series) - 1) / 2) if chart.apart else 0.0
         _curve(drawing, item.points, x, y, index, shift)
     return drawing
 
@@ -161,9 +161,9 @@ def _dash(index: int) -> list[float] | None:
 
 
 def _marker(index: int, x: float, y: float, colour: object) -> Group:
-    """Filled circle, open square, filled triangle, open diamond, filled square."""
+    """Filled circle, open square, filled triangle, open diamond, filled square, open triangle upside down."""
     r = 2.4
-    kind = index % 5
+    kind = index % len(_GREYS)
     fill = colour if kind in (0, 2, 4) else WHITE
     drawn = {"fillColor": fill, "strokeColor": colour, "strokeWidth": 0.9}
     if kind == 0:
@@ -172,6 +172,8 @@ def _marker(index: int, x: float, y: float, colour: object) -> Group:
         return Group(Rect(x - r, y - r, 2 * r, 2 * r, **drawn))
     if kind == 2:
         return Group(Polygon([x - r * 1.2, y - r, x + r * 1.2, y - r, x, y + r * 1.3], **drawn))
+    if kind == 5:
+        return Group(Polygon([x - r * 1.2, y + r, x + r * 1.2, y + r, x, y - r * 1.3], **drawn))
     return Group(Polygon([x - r * 1.3, y, x, y + r * 1.3, x + r * 1.3, y, x, y - r * 1.3], **drawn))
 
 

@@ -93,7 +93,7 @@ def _foot(canvas: Any, report: Report, page: int) -> None:  # noqa: ANN401 - rep
     place_folio(canvas, page)
     canvas.setFillColor(MID)
     canvas.setFont(REGULAR, 6.6)
-    canvas.drawString(LEFT, FOOT - 33, f"SHA-256 of the record {report.record_sha256}")
+    canvas.drawString(LEFT, FOOT - 33, f"SHA-256 of {report.hashed} {report.record_sha256}")
 
 
 def _across(canvas: Any, text: str) -> None:  # noqa: ANN401 - reportlab's canvas

@@ -16,6 +16,7 @@ from safecheck.report.blocks import (
     Charts,
     Contents,
     Facts,
+    Gallery,
     Heading,
     Numbered,
     Places,
@@ -26,6 +27,7 @@ from safecheck.report.blocks import (
 )
 from safecheck.report.figures import bars_drawing, chart_drawing
 from safecheck.report.folio import PageNumber
+from safecheck.report.gallery import gallery_flowables
 from safecheck.report.sketches import cards_flowables
 from safecheck.report.tables import least_room, table_flowable
 from safecheck.report.theme import ACCENT, BOTTOM, INK, PAGE_HEIGHT, RULE, TABLE_FONT, TEXT_WIDTH, TOP, markup, style
@@ -115,6 +117,8 @@ def _flowables_of(block: Block, contents: Sequence[ContentsEntry]) -> list[Flowa
             return [_paragraph(block.caption, "caption"), bars_drawing(block, TEXT_WIDTH), Spacer(1, 6)]
         case Places():
             return cards_flowables(block.cards)
+        case Gallery():
+            return _Whole(gallery_flowables(block))
         case Signatures():
             return [_signatures(block)]
         case Contents():
@@ -139,7 +143,7 @@ def _title(block: Title) -> list[Flowable]:
     labels = [_paragraph(label, "small-label") for label, _ in block.facts]
     values = [_paragraph(value, "value") for _, value in block.facts]
     facts = _plain_table([labels, values], [TEXT_WIDTH / count] * count)
-    hashed = [[_paragraph("SHA-256 of the record", "small-label"), _paragraph(block.record_sha256, "hash")]]
+    hashed = [[_paragraph(f"SHA-256 of {block.hashed}", "small-label"), _paragraph(block.record_sha256, "hash")]]
     sealed = _plain_table(hashed, [TEXT_WIDTH / count, TEXT_WIDTH * (1 - 1 / count)])
     head: list[Flowable] = [_paragraph(block.title, "title")]
     if block.subject:

@@ -54,7 +54,7 @@ def draw_pdf(report: Report) -> bytes:
         title=report.title,
         author="",
         subject=report.subject,
-        keywords=f"SHA-256 of the record: {report.record_sha256}",
+        keywords=f"SHA-256 of {report.hashed}: {report.record_sha256}",
         lang="en",
         initialFontName=REGULAR,
         invariant=1,
