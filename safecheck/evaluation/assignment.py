@@ -8,12 +8,10 @@ from typing import Literal, TypeAlias
 
 from safecheck.codecs.base import Settings
 from safecheck.frames import SizeBasis
-from safecheck.policy.plan import CandidatePlan, WindowPlan
+from safecheck.policy.plan import Asked, CandidatePlan, WindowPlan, asked_of
 from safecheck.regions.region import RegionSet
 
-__all__ = ["Asked", "Assignment", "Candidate", "SeriesDial", "SeriesDials"]
-
-Asked: TypeAlias = Literal["ratio per frame", "ratio per series", "setting"]
+__all__ = ["Assignment", "Candidate", "SeriesDial", "SeriesDials"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,9 +57,7 @@ class Candidate:
     @property
     def asked(self) -> Asked:
         """What is asked of the codec."""
-        if self.ratio is None:
-            return "setting"
-        return "ratio per series" if self.per == "series" else "ratio per frame"
+        return asked_of(self.ratio, self.per)
 
 
 @dataclass(frozen=True, slots=True)

@@ -9,11 +9,12 @@ from typing import Literal
 import numpy as np
 
 from safecheck.codecs.base import Carriage, Codec, Encoded, Reached
-from safecheck.codecs.registry import rated, settings_text
+from safecheck.codecs.registry import entry, rated, settings_text
 from safecheck.errors import CannotEncode
-from safecheck.evaluation.assignment import Asked, Candidate, SeriesDial
+from safecheck.evaluation.assignment import Candidate, SeriesDial
 from safecheck.evaluation.original import Original
 from safecheck.frames import Frame, PixelFormat, Raster, Samples, Values
+from safecheck.policy.plan import Asked
 from safecheck.wording import DELIVERED_COPIES
 
 __all__ = [
@@ -200,8 +201,6 @@ def _treated(original: Original, candidate: Candidate, raster: Raster, encoded: 
     name = candidate.name if own else f"{role}, {candidate.codec}"
     codec = rated(candidate.codec, **dict(encoded.settings))
     treated = _read_back(original, codec, raster, encoded, role, name)
-    value = encoded.settings.get(codec.dial)
-    treated = replace(treated, dial=codec.dial, dial_value=float(value) if isinstance(value, int | float) else None)
     if role != "over-compressed":
         basis = "" if candidate.ratio is None else str(candidate.basis)
         treated = replace(treated, asked=candidate.asked, ratio_asked=candidate.ratio, basis=basis)
@@ -215,6 +214,8 @@ def _read_back(original: Original, codec: Codec, raster: Raster, encoded: Encode
     """Read the code back and say what wrote it."""
     samples = decode(codec, encoded.code, raster.format, raster.shape)
     bound = 0 if role == "reversible" else codec.error_bound
+    dial = entry(codec.name).dial
+    value = encoded.settings.get(dial)
     return Treated(
         role=role,
         candidate=name,
@@ -228,6 +229,8 @@ def _read_back(original: Original, codec: Codec, raster: Raster, encoded: Encode
         archive_can_write=codec.archive_can_write,
         reached=encoded.reached,
         encodes=encoded.encodes,
+        dial=dial,
+        dial_value=float(value) if isinstance(value, int | float) else None,
         carriage=codec.carriage(raster.format),
         error_bound=bound,
         coding_error=None if bound is None else _largest_error(samples, raster.samples),

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime
 import hashlib
-from typing import Annotated, Literal
+from typing import Annotated, Literal, TypeAlias
 
 import rfc8785
 from pydantic import Field, model_validator
@@ -15,6 +15,7 @@ from safecheck.frames import SizeBasis
 __all__ = [
     "TO_FILL_IN",
     "Allowed",
+    "Asked",
     "CandidatePlan",
     "Change",
     "Claim",
@@ -25,6 +26,7 @@ __all__ = [
     "SamplePlan",
     "Scope",
     "WindowPlan",
+    "asked_of",
     "plan_hash",
 ]
 
@@ -66,6 +68,17 @@ class SamplePlan(Document):
     """Only a random sample carries a bound on studies not assessed."""
     source: str = ""
     """From which studies, e.g. 'CT head 2025, main site'."""
+
+
+Asked: TypeAlias = Literal["ratio per frame", "ratio per series", "setting"]
+"""What a candidate asks of its codec."""
+
+
+def asked_of(ratio: float | None, per: Literal["frame", "series"]) -> Asked:
+    """Say what a candidate asks of its codec."""
+    if ratio is None:
+        return "setting"
+    return "ratio per series" if per == "series" else "ratio per frame"
 
 
 class CandidatePlan(Document):

@@ -11,7 +11,7 @@ from typing import Any, Literal
 from pydantic import Field
 
 from safecheck.documents import Document
-from safecheck.record.candidates import CandidateEntry, LedgerEntry
+from safecheck.record.candidates import CandidateEntry, CarriageEntry, LedgerEntry, ReversibleEntry
 from safecheck.record.delivered import DeliveredEntry
 from safecheck.record.equal_damage import EqualDamageEntry
 from safecheck.record.figures import FigureEntry, RegionEntry
@@ -71,6 +71,10 @@ class RecordDocument(Document):
     strata: tuple[StratumEntry, ...]
     candidates: tuple[CandidateEntry, ...]
     ledger: tuple[LedgerEntry, ...]
+    reversible: tuple[ReversibleEntry, ...] = ()
+    """Every reversible codec on the frames that carry the full controls."""
+    carriage: tuple[CarriageEntry, ...] = ()
+    """Where the precision of a code stream is not that of the image, or samples were offset or scaled."""
     figures: tuple[FigureEntry, ...]
     equal_damage: tuple[EqualDamageEntry, ...] = ()
     """At which ratio each other codec does the damage of the reference candidate; empty with one codec."""

@@ -56,9 +56,11 @@ class OutcomeEntry(Document):
 class ControlEntry(Document):
     """One kind of control, for one codec where it applies."""
 
-    control: Literal["reversible", "repeat", "over-compressed", "planted"]
+    control: Literal["reversible", "repeat", "over-compressed", "planted", "promised error"]
+    """The last is of candidates, where a codec promises a largest error."""
     codec: str
     frames: int
+    """Frames, or rows of candidates for the promised error."""
     held: int
     not_held: int
     text: str

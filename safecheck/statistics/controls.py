@@ -9,19 +9,23 @@ from typing import Literal, get_args
 import numpy as np
 
 from safecheck.record.outcomes import ControlEntry
-from safecheck.statistics.groups import Groups, Indices, place_at
+from safecheck.statistics.groups import BRACKET, Groups, Indices, place_at
 
-__all__ = ["CONTROL_ROLES", "controls"]
+__all__ = ["CONTROL_ROLES", "PROMISED", "controls"]
 
 ControlRole = Literal["reversible", "repeat", "over-compressed", "planted"]
 CONTROL_ROLES: tuple[ControlRole, ...] = get_args(ControlRole)
 
-_ASKED: MappingProxyType[ControlRole, str] = MappingProxyType(
+PROMISED: Literal["promised error"] = "promised error"
+"""Not a recompression of its own: candidates of a codec that promises a largest error are held against it."""
+
+_ASKED: MappingProxyType[str, str] = MappingProxyType(
     {
         "reversible": "a reversible code gives back every sample: largest error exactly 0",
         "repeat": "the same frame gives the same code again, byte for byte",
         "over-compressed": "RMSE in content above that of every candidate of the codec; constant frames exempt",
         "planted": "a known displacement in one patch comes back with its size, row and column",
+        PROMISED: "no stored value of a candidate is moved further than its setting promises",
     }
 )
 
@@ -35,9 +39,16 @@ def controls(groups: Groups) -> Iterator[ControlEntry]:
         for code in np.unique(codec_of[rows]):
             of_codec = rows[codec_of[rows] == code]
             yield _entry(groups, role, codecs[code], of_codec, of_codec[held[of_codec] != 1])
+    rows = np.concatenate([groups.of_role("candidate"), groups.of_role(BRACKET)])
+    rows = np.sort(rows[~np.isnan(held[rows])])
+    for code in np.unique(codec_of[rows]):
+        of_codec = rows[codec_of[rows] == code]
+        yield _entry(groups, PROMISED, codecs[code], of_codec, of_codec[held[of_codec] != 1])
 
 
-def _entry(groups: Groups, role: ControlRole, codec: str, rows: Indices, not_held: Indices) -> ControlEntry:
+def _entry(
+    groups: Groups, role: ControlRole | Literal["promised error"], codec: str, rows: Indices, not_held: Indices
+) -> ControlEntry:
     """Count one kind of control for one codec; a row without a finding counts as not held."""
     first = int(not_held[0]) if len(not_held) else None
     return ControlEntry(

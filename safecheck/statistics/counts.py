@@ -8,11 +8,12 @@ from typing import Literal, cast
 
 import numpy as np
 
-from safecheck.policy.plan import Plan
+from safecheck.policy.plan import Plan, asked_of
 from safecheck.record.candidates import CandidateEntry
 from safecheck.record.inputs import CountEntry, InputCounts, StratumEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups
+from safecheck.statistics.spread import spread
 from safecheck.wording import ANALYSIS_CODEC, DELIVERED_COPIES, sentence_of
 
 __all__ = ["candidate_entries", "input_counts", "left_out", "stratum_entries"]
@@ -105,17 +106,21 @@ def candidate_entries(plan: Plan, groups: Groups, archive_codecs: frozenset[str]
     """
     for candidate in sorted(plan.candidates, key=lambda candidate: candidate.codec not in archive_codecs):
         can_write = candidate.codec in archive_codecs
+        asked = asked_of(candidate.ratio, candidate.per)
         yield CandidateEntry(
             candidate=candidate.name,
             codec=candidate.codec,
             role="candidate",
             status=candidate.status,
+            asked=asked,
             ratio_asked=candidate.ratio,
-            basis=str(candidate.basis),
+            basis="" if candidate.ratio is None else str(candidate.basis),
+            dial=_dial(groups, candidate.name),
             archive_can_write=can_write,
             note=_notes(groups, candidate.name, "" if can_write else ANALYSIS_CODEC),
             frames=len(groups.of_candidate(candidate.name)),
             reached=_reached(groups, candidate.name),
+            spread=tuple(spread(groups, candidate.name, asked)),
         )
     if len(groups.of_role("delivered")):
         yield CandidateEntry(
@@ -127,7 +132,15 @@ def candidate_entries(plan: Plan, groups: Groups, archive_codecs: frozenset[str]
             note=_notes(groups, DELIVERED_COPIES, ""),
             frames=len(groups.of_candidate(DELIVERED_COPIES)),
             reached={},
+            spread=tuple(spread(groups, DELIVERED_COPIES, "")),
         )
+
+
+def _dial(groups: Groups, name: str) -> str:
+    """Name of the setting that sets a candidate's size; '' where no frame was run with it."""
+    rows = groups.of_candidate(name)
+    dial_of, dials = groups.reader.codes("dial")
+    return dials[dial_of[rows[0]]] if len(rows) else ""
 
 
 def _notes(groups: Groups, name: str, note: str) -> str:

@@ -11,10 +11,13 @@ import numpy.typing as npt
 from safecheck.record.place import Place
 from safecheck.record.tables import TableReader
 
-__all__ = ["PLACE_COLUMNS", "Groups", "Indices", "place_at", "places_at"]
+__all__ = ["BRACKET", "PLACE_COLUMNS", "Groups", "Indices", "place_at", "places_at"]
 
 Indices = npt.NDArray[np.int64]
 """(n,) row numbers of a table."""
+
+BRACKET = "bracket"
+"""Role of the neighbouring setting: it goes by its candidate's name, and speaks for it in no figure."""
 
 PLACE_COLUMNS = ("patient", "study", "series", "instance", "series_number", "instance_number", "frame")
 """Columns of every table of treated frames that say where."""
@@ -47,10 +50,20 @@ class Groups:
         return np.flatnonzero(self.role_of == self.roles.index(role))
 
     def of_candidate(self, candidate: str) -> Indices:
-        """Rows of a candidate or control."""
+        """Rows of a candidate or control, without those of a neighbouring setting."""
+        return self._named(candidate, bracket=False)
+
+    def neighbours_of(self, candidate: str) -> Indices:
+        """Rows of the neighbouring settings of a candidate."""
+        return self._named(candidate, bracket=True)
+
+    def _named(self, candidate: str, *, bracket: bool) -> Indices:
+        """Rows that go by a name."""
         if candidate not in self.candidates:
             return np.empty(0, np.int64)
-        return np.flatnonzero(self.candidate_of == self.candidates.index(candidate))
+        named = self.candidate_of == self.candidates.index(candidate)
+        neighbour = self.role_of == (self.roles.index(BRACKET) if BRACKET in self.roles else -1)
+        return np.flatnonzero(named & (neighbour == bracket))
 
     def by_stratum(self, rows: Indices) -> Iterator[tuple[str, Indices]]:
         """Split rows by stratum; strata without any are left out."""

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.record.candidates import LedgerEntry
+from safecheck.record.candidates import LedgerEntry, NeighbourEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups, Indices
 
@@ -22,7 +22,9 @@ def ledger(groups: Groups, candidates: tuple[str, ...]) -> Iterator[LedgerEntry]
         for stratum, rows in groups.by_stratum(groups.of_candidate(candidate)):
             counts = {codecs[code]: int((codec_of[rows] == code).sum()) for code in np.unique(codec_of[rows])}
             counts.pop("", None)
-            yield _entry(candidate, stratum, rows, columns, counts)
+            beside = dict(groups.by_stratum(groups.neighbours_of(candidate)))
+            neighbour = _neighbour(beside[stratum], columns) if stratum in beside else None
+            yield _entry(candidate, stratum, rows, columns, counts).model_copy(update={"neighbour": neighbour})
 
 
 def _columns(reader: TableReader) -> dict[str, npt.NDArray[np.float64]]:
@@ -39,7 +41,23 @@ def _columns(reader: TableReader) -> dict[str, npt.NDArray[np.float64]]:
         "now": reader.numbers("source_bytes"),
         "code": reader.numbers("code_bytes"),
         "ratio": reader.numbers("ratio_bits_stored"),
+        "dial": reader.numbers("dial_value"),
     }
+
+
+def _neighbour(rows: Indices, columns: dict[str, npt.NDArray[np.float64]]) -> NeighbourEntry:
+    """Totals and spread of the neighbouring settings."""
+    ratios, dial, code = columns["ratio"][rows], columns["dial"][rows], columns["code"][rows].sum()
+    return NeighbourEntry(
+        frames=len(rows),
+        dial_least=float(dial.min()),
+        dial_largest=float(dial.max()),
+        code_bytes=int(code),
+        ratio_bits_stored=float(columns["stored"][rows].sum() / code),
+        ratio_bits_stored_least=float(ratios.min()),
+        ratio_bits_stored_median=float(np.median(ratios)),
+        ratio_bits_stored_largest=float(ratios.max()),
+    )
 
 
 def _entry(
@@ -54,7 +72,8 @@ def _entry(
     code = total["code"]
     lossless = None if np.isnan(total["lossless"]) else int(total["lossless"])
     content = total["content"] or None
-    ratios = columns["ratio"][rows]
+    ratios, dial = columns["ratio"][rows], columns["dial"][rows]
+    known = dial[~np.isnan(dial)]
     return LedgerEntry(
         candidate=candidate,
         stratum=stratum,
@@ -75,4 +94,8 @@ def _entry(
         ratio_bits_stored_least=float(ratios.min()),
         ratio_bits_stored_median=float(np.median(ratios)),
         ratio_bits_stored_largest=float(ratios.max()),
+        ratio_bits_stored_p05=float(np.percentile(ratios, 5)),
+        ratio_bits_stored_p95=float(np.percentile(ratios, 95)),
+        dial_least=float(known.min()) if len(known) else None,
+        dial_largest=float(known.max()) if len(known) else None,
     )

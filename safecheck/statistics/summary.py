@@ -28,6 +28,7 @@ from safecheck.statistics.ledger import ledger
 from safecheck.statistics.outcomes import outcomes
 from safecheck.statistics.places import worst_places
 from safecheck.statistics.regions import region_entries
+from safecheck.statistics.reversible import carriages, reversible_codecs
 from safecheck.statistics.studies import worst_studies
 from safecheck.wording import NO_LIMITS, RECORD_TITLE
 
@@ -92,6 +93,8 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
         strata=strata,
         candidates=candidates,
         ledger=tuple(ledger(measures, names)),
+        reversible=tuple(reversible_codecs(measures)),
+        carriage=tuple(carriages(measures)),
         figures=tuple(figures(measures, groups["windows"], names)),
         equal_damage=tuple(equal_damage(plan, groups, candidates)),
         outcomes=held,
