@@ -53,7 +53,8 @@ def test_a_row_is_one_sentence_with_its_spread_and_the_frames_beyond() -> None:
         ({"ratio_median": Between(least=20.04)}, "at a median beyond what was run, above 20.0:1 (5th"),
         ({"ratio_median": Between(most=5.03)}, "at a median beyond what was run, below 5.03:1 (5th"),
         ({"ratio_median": Between()}, "at no known median: most frames lie beyond what was run, on both sides"),
-        ({"ratio_median": Between(least=8.0, most=9.5)}, "at a median of 8.00 to 9.50:1"),
+        ({"ratio_median": Between(least=8.0, most=9.5)}, "at a median between 8.00 and 9.50:1"),
+        ({"codec": "tiled, size 16"}, "is reached by tiled (size 16) at a median of 12.3:1"),
         ({"ratio_p05": Between(most=5.03)}, "5th to 95th percentile below 5.03:1 to 13.0:1"),
         ({"frames": 1, "frames_above": 0}, "jpeg2000 10:1 (4.21 HU at 10.1:1) is reached by tiled at 12.3:1"),
         (
@@ -66,7 +67,17 @@ def test_a_row_is_one_sentence_with_its_spread_and_the_frames_beyond() -> None:
             "value of both",
         ),
     ],
-    ids=["above", "below", "both sides", "between", "a percentile", "one frame", "one frame beyond", "no frame"],
+    ids=[
+        "above",
+        "below",
+        "both sides",
+        "between",
+        "settings",
+        "a percentile",
+        "one frame",
+        "one frame beyond",
+        "no frame",
+    ],
 )
 def test_what_lies_beyond_the_run_is_said_in_words(changes: dict[str, Any], words: str) -> None:
     assert words in sentence(**changes)

@@ -29,10 +29,6 @@ _COLUMNS = (
     Column("reference", "bits", number=True, over="Bits per pixel, median"),
     Column("codec", "bits", number=True, over="Bits per pixel, median"),
 )
-_NOTE = (
-    "Below: frames on which the codec does more even at its smallest ratio run; above: on which it does less even at "
-    "its largest. Both count for the percentiles, as smaller or larger than all that is known."
-)
 
 
 def equal_damage(view: View) -> tuple[Section, ...]:
@@ -58,7 +54,9 @@ def _intro(reference: str) -> str:
         f"The achieved ratio, on the bits-stored basis, at which each codec does the damage of {reference}, the "
         "reference candidate. On every frame it lies between candidates that were run on this frame: the curve of the "
         "codec joins them by straight lines in the logarithms of ratio and damage, and its first crossing counts. "
-        "Nothing is extrapolated. One codec with other settings counts as another."
+        "Nothing is extrapolated: below are frames on which the codec does more even at its smallest ratio run, above "
+        "those on which it does less even at its largest; for the percentiles they count as smaller, or larger, than "
+        "that ratio. One codec with other settings counts as another."
     )
 
 
@@ -73,7 +71,7 @@ def _table(entries: Sequence[EqualDamageEntry]) -> Table:
     for name in dict.fromkeys(map(_measure, entries)):
         rows.append(Row((name,), group=True))
         rows += [_row(item) for item in entries if _measure(item) == name]
-    return Table(_COLUMNS, tuple(rows), note=_NOTE)
+    return Table(_COLUMNS, tuple(rows))
 
 
 def _measure(item: EqualDamageEntry) -> str:
@@ -92,7 +90,7 @@ def _row(item: EqualDamageEntry) -> Row:
             count(item.frames),
             count(item.frames_below),
             count(item.frames_above),
-            figure(item.reference_bits_per_pixel),
+            _two(item.reference_bits_per_pixel),
             _bits(item.bits_per_pixel_median),
         )
     )
@@ -103,8 +101,10 @@ def _sentence(item: EqualDamageEntry) -> str:
     if not item.frames:
         return f"{item.codec}: no frame to compare{_left_out(item)}"
     value = f"{figure(item.reference_value)}{unit_after(item.unit)}"
+    codec, comma, settings = item.codec.partition(", ")
+    named = f"{codec} ({settings})" if comma else codec
     middle = "" if item.frames == 1 else "median "
-    what = f"{item.reference} ({middle}{value} at {_to_one(item.reference_ratio)}:1) is reached by {item.codec}"
+    what = f"{item.reference} ({middle}{value} at {_to_one(item.reference_ratio)}:1) is reached by {named}"
     beyond = item.frames_below + item.frames_above
     if item.frames == 1:
         return f"{what} {'beyond what was run,' if beyond else 'at'} {_ratio(item.ratio_median)}{_left_out(item)}"
@@ -120,7 +120,7 @@ def _middle(median: Between) -> str:
         return "at no known median: most frames lie beyond what was run, on both sides"
     if median.least is None or median.most is None:
         return f"at a median beyond what was run, {_ratio(median)}"
-    return f"at a median of {_ratio(median)}"
+    return f"at a median {'of ' if median.least == median.most else ''}{_ratio(median)}"
 
 
 def _left_out(item: EqualDamageEntry) -> str:
@@ -140,7 +140,7 @@ def _ratio(found: Between) -> str:
         return "beyond" if found.most is None else f"below {most}:1"
     if found.most is None:
         return f"above {least}:1"
-    return f"{least}:1" if found.least == found.most else f"{least} to {most}:1"
+    return f"{least}:1" if found.least == found.most else f"between {least} and {most}:1"
 
 
 def _to_one(ratio: float | None) -> str:
@@ -148,9 +148,14 @@ def _to_one(ratio: float | None) -> str:
     return aligned([ratio], 2 if ratio is not None and ratio < _TWO_DECIMALS else 1)[0]
 
 
+def _two(bits: float | None) -> str:
+    """Bits per pixel with two decimals, as everywhere in the column."""
+    return aligned([bits], 2)[0]
+
+
 def _bits(found: Between) -> str:
     """Bits per pixel as a cell, or their bounds in signs."""
-    least, most = figure(found.least), figure(found.most)
+    least, most = _two(found.least), _two(found.most)
     if found.least is None:
         return NONE if found.most is None else f"< {most}"
     if found.most is None:
