@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import pytest
 
-from safecheck.documents import from_toml
+from safecheck.documents import from_mapping, from_toml
 from safecheck.errors import DocumentError
 from safecheck.frames import SizeBasis
-from safecheck.policy.plan import Plan, plan_hash
+from safecheck.policy.plan import CandidatePlan, Plan, asked_of, plan_hash
 
 PLAN = """
 version = 1
@@ -101,3 +103,46 @@ def test_the_hash_does_not_depend_on_comments_or_order_of_keys() -> None:
     turned = PLAN.replace('codec = "jpeg2000"\nratio = 10', 'ratio = 10 # of bits stored\ncodec = "jpeg2000"')
     assert plan_hash(from_toml(Plan, turned)) == plan_hash(from_toml(Plan, PLAN))
     assert plan_hash(from_toml(Plan, PLAN.replace("at_most = 8", "at_most = 9"))) != plan_hash(from_toml(Plan, PLAN))
+
+
+@pytest.mark.parametrize(
+    ("candidate", "name", "asked"),
+    [
+        ({"codec": "jpeg", "settings": {"quality": 85}}, "jpeg, quality 85", "setting"),
+        ({"codec": "tiled", "settings": {"step": 2.5, "size": 16}}, "tiled, size 16, step 2.5", "setting"),
+        ({"codec": "jpeg2000", "ratio": 10}, "jpeg2000 10:1", "ratio per frame"),
+        ({"codec": "jpeg2000", "ratio": 10, "per": "series"}, "jpeg2000 10:1 per series", "ratio per series"),
+        (
+            {"codec": "tiled", "ratio": 2.5, "per": "series", "basis": "lossless", "settings": {"size": 16}},
+            "tiled 2.5:1 of lossless per series, size 16",
+            "ratio per series",
+        ),
+    ],
+    ids=["setting", "two settings", "per frame", "per series", "per series, on a basis, with a setting"],
+)
+def test_a_candidate_is_named_by_what_it_asks(candidate: dict[str, Any], name: str, asked: str) -> None:
+    read = from_mapping(CandidatePlan, candidate)
+    assert read.name == name
+    assert asked_of(read.ratio, read.per) == asked
+
+
+@pytest.mark.parametrize(
+    ("candidate", "message"),
+    [
+        ({"codec": "jpeg", "per": "series", "settings": {"quality": 85}}, "per = 'series' is expected with a ratio"),
+        ({"codec": "jpeg", "basis": "now", "settings": {"quality": 85}}, "basis is expected with a ratio"),
+        ({"codec": "jpeg", "ratio": 10, "per": "study"}, "per"),
+    ],
+    ids=["per series", "basis", "per what"],
+)
+def test_what_goes_with_a_ratio_is_refused_without_one(candidate: dict[str, Any], message: str) -> None:
+    with pytest.raises(DocumentError, match=message):
+        from_mapping(CandidatePlan, candidate)
+
+
+def test_two_candidates_of_one_name_by_setting_are_refused() -> None:
+    twice = PLAN.replace(
+        "[[windows]]", "[[candidates]]\ncodec = 'jpeg'\nsettings = { quality = 85 }\n\n" * 2 + "[[windows]]"
+    )
+    with pytest.raises(DocumentError, match="'jpeg, quality 85' twice"):
+        from_toml(Plan, twice)
