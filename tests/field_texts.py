@@ -136,6 +136,7 @@ _RECORD: dict[str, str] = {
     "FigureEntry.p95": "95th percentile over frames; null without values.",
     "FigureEntry.least": "Least value; null without values.",
     "FigureEntry.largest": "Largest value; null without values.",
+    "EqualDamageEntry.unit": "Unit of the measure, that of `reference_value`.",
     "OutcomeEntry.limit": "Name of the limit.",
     "OutcomeEntry.side": "Side of the bound.",
     "OutcomeEntry.bound": "The bound, in `unit`.",
