@@ -25,6 +25,7 @@ __all__ = [
     "REDRAWN",
     "RUN_INVALID",
     "SHORT_CAUTION",
+    "STUDY_TITLE",
     "ForbiddenWord",
     "OutcomeWord",
     "Reason",
@@ -33,6 +34,7 @@ __all__ = [
 ]
 
 RECORD_TITLE = "Recompression record"
+STUDY_TITLE = "Transform study"
 RUN_INVALID = "RUN INVALID: controls not held"
 REDRAWN = "REDRAWN from the record, without images"
 NO_LIMITS = "no limits declared"

@@ -21,6 +21,7 @@ __all__ = [
     "Fixed",
     "LeftAside",
     "StudiedFrame",
+    "StudyBasis",
     "StudyMeasure",
     "StudyPicture",
     "StudyPictures",
@@ -132,6 +133,15 @@ class StudiedFrame:
     pictures: StudyPictures | None = None
 
 
+@dataclass(frozen=True, slots=True, eq=False)
+class StudyBasis:
+    """Functions of a transform along one direction; a tile's are the products of two."""
+
+    transform: str
+    functions: npt.NDArray[np.float64]
+    """(size, size), a function a row, low frequency first."""
+
+
 @dataclass(frozen=True, slots=True)
 class LeftAside:
     """Inputs or frames that were not studied, for one reason."""
@@ -154,8 +164,8 @@ class TransformStudy:
     """At most so many frames were to be studied."""
     left_aside: tuple[LeftAside, ...]
     codec_version: str
-    basis_functions: bool = False
-    """Whether they are to be drawn."""
+    bases: tuple[StudyBasis, ...] = ()
+    """Those to be drawn."""
 
 
 COLUMNS = (

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 
@@ -13,7 +13,7 @@ from safecheck.statistics.bounds import patients_needed
 from safecheck.statistics.groups import Groups
 from safecheck.wording import CAUTIONS, CAUTIONS_WHEN
 
-__all__ = ["MANY_COMPARISONS", "cautions_that_apply"]
+__all__ = ["MANY_COMPARISONS", "cautions_that_apply", "image_cautions"]
 
 MANY_COMPARISONS = 10
 """From this many limits times candidates on, chance exceedances are worth a caution."""
@@ -38,24 +38,46 @@ def cautions_that_apply(
 
 def _of_images(measures: Groups, strata: tuple[StratumEntry, ...]) -> Iterator[str]:
     """Yield what the images are."""
-    modalities = {stratum.modality for stratum in strata}
+    under_18, source_lossy, may_show_text = (
+        bool(np.any(measures.reader.numbers(column) == 1)) for column in ("under_18", "source_lossy", "may_show_text")
+    )
+    yield from image_cautions(
+        [(entry.modality, entry.stratum) for entry in strata],
+        under_18=under_18,
+        source_lossy=source_lossy,
+        may_show_text=may_show_text,
+    )
+
+
+def image_cautions(
+    strata: Sequence[tuple[str, str]], *, under_18: bool, source_lossy: bool, may_show_text: bool
+) -> Iterator[str]:
+    """Yield the keys of the cautions that images call for by what they are.
+
+    Parameters
+    ----------
+    strata
+        Modality and words of each group of like images.
+    under_18, source_lossy, may_show_text
+        Whether any image is such.
+    """
+    modalities = {modality for modality, _ in strata}
     if "MG" in modalities:
         yield "mammography"
     if modalities & {"RTIMAGE", "CT"}:
         yield "radiotherapy"
     if modalities & {"PT", "NM"}:
         yield "quantification"
-    if any(stratum.modality == "CT" and _DENSITY_PARTS & set(stratum.stratum.split(", ")) for stratum in strata):
+    if any(modality == "CT" and _DENSITY_PARTS & set(stratum.split(", ")) for modality, stratum in strata):
         yield "density"
     if strata:
         yield "ai_or_cad"
-    for caution, column in (
-        ("paediatric", "under_18"),
-        ("already_lossy", "source_lossy"),
-        ("burned_in_text", "may_show_text"),
-    ):
-        if np.any(measures.reader.numbers(column) == 1):
-            yield caution
+    if under_18:
+        yield "paediatric"
+    if source_lossy:
+        yield "already_lossy"
+    if may_show_text:
+        yield "burned_in_text"
 
 
 def _of_evidence(plan: Plan, strata: tuple[StratumEntry, ...], held: tuple[OutcomeEntry, ...]) -> Iterator[str]:
