@@ -34,7 +34,7 @@ def plan(folder: Path, *candidates: str) -> Path:
         ),
         (
             'codec = "tiled"\nsettings = { size = 16 }',
-            r"candidates\[0\]\.settings\.step: is missing; without a ratio tiled is set by its step, expected a positive",
+            r"candidates\[0\]\.settings\.step: is missing; without a ratio tiled is set by its step, expected a pos",
         ),
         (
             'codec = "tiled"\nratio = 10\nsettings = { step = 4.0 }',
