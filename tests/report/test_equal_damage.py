@@ -56,6 +56,14 @@ def test_a_row_is_one_sentence_with_its_spread_and_the_frames_beyond() -> None:
         ({"ratio_median": Between(least=8.0, most=9.5)}, "at a median between 8.00 and 9.50:1"),
         ({"codec": "tiled, size 16"}, "is reached by tiled (size 16) at a median of 12.3:1"),
         ({"ratio_p05": Between(most=5.03)}, "5th to 95th percentile below 5.03:1 to 13.0:1"),
+        (
+            {"frames_above": 40, "ratio_median": Between(least=20.04)},
+            "is reached by tiled beyond what was run on every frame, at a median above 20.0:1",
+        ),
+        (
+            {"frames_above": 30, "frames_below": 10, "ratio_median": Between(least=20.04)},
+            "is reached by tiled beyond what was run on every frame, below on some and above on others",
+        ),
         ({"frames": 1, "frames_above": 0}, "jpeg2000 10:1 (4.21 HU at 10.1:1) is reached by tiled at 12.3:1"),
         (
             {"frames": 1, "frames_above": 1, "ratio_median": Between(least=20.5)},
@@ -74,8 +82,10 @@ def test_a_row_is_one_sentence_with_its_spread_and_the_frames_beyond() -> None:
         "between",
         "settings",
         "a percentile",
+        "every frame above",
+        "every frame beyond",
         "one frame",
-        "one frame beyond",
+        "one beyond",
         "no frame",
     ],
 )

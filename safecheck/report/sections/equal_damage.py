@@ -108,6 +108,8 @@ def _sentence(item: EqualDamageEntry) -> str:
     beyond = item.frames_below + item.frames_above
     if item.frames == 1:
         return f"{what} {'beyond what was run,' if beyond else 'at'} {_ratio(item.ratio_median)}{_left_out(item)}"
+    if beyond == item.frames:
+        return f"{what} beyond what was run on every frame, {_beyond(item)}{_left_out(item)}"
     spread = f"5th to 95th percentile {_ratio(item.ratio_p05)} to {_ratio(item.ratio_p95)}"
     if beyond:
         spread += f"; {plural(beyond, 'frame')} beyond what was run"
@@ -121,6 +123,13 @@ def _middle(median: Between) -> str:
     if median.least is None or median.most is None:
         return f"at a median beyond what was run, {_ratio(median)}"
     return f"at a median {'of ' if median.least == median.most else ''}{_ratio(median)}"
+
+
+def _beyond(item: EqualDamageEntry) -> str:
+    """Where every frame lies beyond: the median as far as it is known."""
+    if item.frames_below and item.frames_above:
+        return "below on some and above on others"
+    return f"at a median {_ratio(item.ratio_median)}"
 
 
 def _left_out(item: EqualDamageEntry) -> str:
