@@ -5,7 +5,6 @@ from __future__ import annotations
 import contextlib
 import os
 import sys
-import time
 from collections.abc import Callable
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -14,14 +13,35 @@ import typer
 
 from safecheck import __version__
 from safecheck.errors import DossierError, Interrupted, SafecheckError, UsageError
+from safecheck.main_job import perform, run_main_job, say_dry_run, say_outcome
+from safecheck.options import (
+    Basis,
+    Captures,
+    Codecs,
+    Delivered,
+    DraftPlan,
+    DryRun,
+    ErrorImages,
+    Images,
+    Key,
+    Localizers,
+    LossySources,
+    MostFrames,
+    NoAttachment,
+    Paths,
+    PlanFile,
+    Quiet,
+    Ratios,
+    Regions,
+    StudyFolder,
+    Workers,
+)
 from safecheck.policy.conditions import ExitCondition
-from safecheck.runner.standby import Standby
 from safecheck.screen import Screen
 
 if TYPE_CHECKING:
     from safecheck.jobs.assess import AssessRequest
     from safecheck.policy.plan import Scope
-    from safecheck.record.document import RecordDocument
 
 __all__ = ["app", "main"]
 
@@ -29,6 +49,8 @@ _TYPER_INTERRUPTED = 130
 """What typer makes of Ctrl-C."""
 _RATIOS, _CODECS = "5,8,10,15,20", "tiled,jpeg2000"
 """Candidates without a plan."""
+_MOST_FRAMES = 6
+"""Frames of a transform study."""
 
 app = typer.Typer(
     name="safecheck",
@@ -49,22 +71,6 @@ app = typer.Typer(
     ),
 )
 
-Paths = Annotated[
-    list[Path],
-    typer.Argument(
-        metavar="PATH...", help="Files, folders, zip archives, a DICOMDIR or a list file; mixed as you like."
-    ),
-]
-Key = Annotated[
-    Path | None, typer.Option("--key", metavar="FILE", help="Site key file; by default in your configuration folder.")
-]
-Quiet = Annotated[bool, typer.Option("--quiet", "-q", help="No progress on the screen.")]
-Localizers = Annotated[bool, typer.Option("--localizers", help="Take localizers too.")]
-Captures = Annotated[bool, typer.Option("--secondary-captures", help="Take secondary captures too.")]
-LossySources = Annotated[
-    bool, typer.Option("--allow-lossy-source", help="Take sources already lossy, as second generation.")
-]
-
 
 @app.callback(invoke_without_command=True)
 def _root(
@@ -81,9 +87,7 @@ def _root(
 @app.command()
 def census(
     paths: Paths,
-    draft_plan: Annotated[
-        Path | None, typer.Option("--draft-plan", metavar="FILE", help="Write a plan to start from.")
-    ] = None,
+    draft_plan: DraftPlan = None,
     key: Key = None,
     localizers: Localizers = False,
     secondary_captures: Captures = False,
@@ -113,40 +117,18 @@ def census(
         typer.echo("A plan to start from was written; fill in what only you can say.")
 
 
-Delivered = Annotated[
-    list[Path] | None,
-    typer.Option("--delivered", metavar="PATH", help="Copies that the archive returned; may be given again."),
-]
-DryRun = Annotated[
-    bool, typer.Option("--dry-run", help="Print counts, time, disk and the plan's hash; measure nothing.")
-]
-Images = Annotated[
-    bool, typer.Option("--with-images", help="Write crops of the worst places, but none that may show text.")
-]
-Regions = Annotated[
-    Path | None, typer.Option("--regions", metavar="FILE", help="Region file, DICOM segmentation or RT Structure Set.")
-]
-Workers = Annotated[
-    int | None, typer.Option("--workers", min=1, metavar="NUMBER", help="Processes; by default one per core.")
-]
-
-
 @app.command()
 def assess(
     paths: Paths,
     out: Annotated[Path | None, typer.Option("--out", metavar="DOSSIER", help="Folder for the dossier.")] = None,
-    plan: Annotated[Path | None, typer.Option("--plan", metavar="FILE", help="Plan declared before the run.")] = None,
-    ratios: Annotated[
-        str, typer.Option("--ratios", metavar="LIST", help="Ratios on the bits-stored basis, without a plan.")
-    ] = _RATIOS,
-    codecs: Annotated[str, typer.Option("--codecs", metavar="LIST", help="Codecs, without a plan.")] = _CODECS,
+    plan: PlanFile = None,
+    ratios: Ratios = _RATIOS,
+    codecs: Codecs = _CODECS,
     regions: Regions = None,
     delivered: Delivered = None,
     dry_run: DryRun = False,
     with_images: Images = False,
-    no_attachment: Annotated[
-        bool, typer.Option("--no-attachment", help="Leave the record out of the PDF's attachments.")
-    ] = False,
+    no_attachment: NoAttachment = False,
     workers: Workers = None,
     key: Key = None,
     localizers: Localizers = False,
@@ -181,7 +163,7 @@ def assess(
             attachment=not no_attachment,
         )
 
-    (_dry_run if dry_run else _assess)(request, Screen(quiet=quiet))
+    (say_dry_run if dry_run else run_main_job)(request, Screen(quiet=quiet))
 
 
 @app.command()
@@ -209,9 +191,7 @@ def verify(
     delivered: Annotated[
         list[Path] | None, typer.Option("--delivered", metavar="PATH", help="Delivered copies of the run.")
     ] = None,
-    regions: Annotated[
-        Path | None, typer.Option("--regions", metavar="FILE", help="Region file of the run, if it had one.")
-    ] = None,
+    regions: Regions = None,
     frames: Annotated[int, typer.Option("--frames", min=1, help="How many frames to compute again.")] = 10,
     seed: Annotated[int, typer.Option("--seed", help="Another seed draws other frames.")] = 1,
     key: Key = None,
@@ -233,6 +213,47 @@ def verify(
     if found.differences:
         raise typer.Exit(ExitCondition.DIFFERENCE)
     typer.echo("No difference was found.")
+
+
+@app.command()
+def transforms(
+    paths: Paths,
+    out: StudyFolder,
+    frames: MostFrames = _MOST_FRAMES,
+    regions: Regions = None,
+    with_images: ErrorImages = False,
+    basis: Basis = False,
+    key: Key = None,
+    localizers: Localizers = False,
+    secondary_captures: Captures = False,
+    allow_lossy_source: LossySources = False,
+    quiet: Quiet = False,
+) -> None:
+    """Set cosine, Walsh-Hadamard and Fourier side by side.
+
+    On the middle frame of each series: which part of a loss is the transform's, the tile size's, the quantiser's.
+    """
+    from safecheck.jobs.transforms import TransformRequest, lines_of, study_transforms
+
+    screen = Screen(quiet=quiet)
+    request = TransformRequest(
+        paths=tuple(paths),
+        out=out,
+        scope=_scope(localizers, secondary_captures, allow_lossy_source),
+        regions_file=regions,
+        key_file=key,
+        most_frames=frames,
+        with_images=with_images,
+        basis_functions=basis,
+    )
+    study = study_transforms(request, screen.update)
+    screen.clear()
+    for line in lines_of(study):
+        typer.echo(line)
+    if not study.frames:
+        typer.echo("No frame could be studied; nothing was written.")
+        raise typer.Exit(ExitCondition.LEFT_OUT)
+    typer.echo(f"Pages: {out}/transforms.pdf")
 
 
 @app.command()
@@ -288,60 +309,7 @@ def demo(
 
         return AssessRequest(paths=(out / STUDY,), out=out / DOSSIER, plan_file=plan, key_file=key, with_images=True)
 
-    _say_outcome(_perform(request, screen), demonstration=True)
-
-
-def _assess(request: Callable[[], AssessRequest], screen: Screen) -> None:
-    """Run the main job, say what came of it and leave with its exit code."""
-    record = _perform(request, screen)
-    _say_outcome(record)
-    if record.exit_code:
-        raise typer.Exit(record.exit_code)
-
-
-def _perform(request: Callable[[], AssessRequest], screen: Screen) -> RecordDocument:
-    """Run the main job; a worker loads its libraries while this process loads its own."""
-    since = time.monotonic()
-    with Standby() as standby:
-        from safecheck.jobs.assess import assess as job
-
-        asked = request()
-        record = job(asked, screen.update, screen.progress, standby=standby)
-    screen.clear()
-    typer.echo(f"Record: {asked.out}/report.pdf")
-    counts = record.inputs
-    typer.echo(
-        f"{counts.frames_assessed} frames of {counts.studies} studies assessed in {time.monotonic() - since:.0f} s; "
-        f"{counts.excluded} files excluded, {counts.refused} refused, {counts.frames_refused} frames refused"
-    )
-    return record
-
-
-def _say_outcome(record: RecordDocument, *, demonstration: bool = False) -> None:
-    """Say what stands in the record."""
-    if record.delivered is not None:
-        copies = record.delivered
-        typer.echo(
-            f"Delivered copies: {copies.pairs_measured} pairs measured, {copies.copies_without_original} copies "
-            f"without an original, {copies.originals_without_copy} originals without a copy"
-        )
-    typer.echo(f"Limits: {record.outcomes_text}")
-    typer.echo(f"Controls: {'held' if record.controls_held else 'NOT HELD, run invalid'}")
-    if demonstration:
-        typer.echo(f"A run of this plan on these images ends with {record.exit_code}: {record.exit_text}")
-    else:
-        typer.echo(f"Exit {record.exit_code}: {record.exit_text}")
-
-
-def _dry_run(request: Callable[[], AssessRequest], screen: Screen) -> None:
-    """Say what a run would do."""
-    from safecheck.jobs.assess import prepare_run
-    from safecheck.jobs.dry_run import dry_run
-
-    prepared = prepare_run(request(), screen.update)
-    screen.clear()
-    for line in dry_run(prepared):
-        typer.echo(line)
+    say_outcome(perform(request, screen), demonstration=True)
 
 
 def _scope(localizers: bool, secondary_captures: bool, lossy_sources: bool) -> Scope:

@@ -48,7 +48,9 @@ ARROWS: dict[str, frozenset[str]] = {
         }
     ),
     "screen": frozenset(),
-    "cli": frozenset({"jobs", "policy", "record", "runner", "screen"}),
+    "options": frozenset(),
+    "main_job": frozenset({"jobs", "record", "runner", "screen"}),
+    "cli": frozenset({"jobs", "main_job", "options", "policy", "screen"}),
     "__main__": frozenset({"cli"}),
     "__init__": frozenset(),
 }
@@ -60,7 +62,7 @@ LIBRARIES: dict[str, frozenset[str]] = {
     "openjpeg": frozenset({"codecs", "dicom"}),
     "reportlab": frozenset({"report"}),
     "pypdf": frozenset({"report"}),
-    "typer": frozenset({"cli", "screen"}),
+    "typer": frozenset({"cli", "main_job", "options", "screen"}),
     "rich": frozenset({"cli"}),
     "click": frozenset({"cli"}),
     "pyarrow": frozenset({"record", "runner"}),

@@ -29,7 +29,6 @@ from safecheck.wording import sentence_of
 
 __all__ = [
     "CAUTIONS_FILE",
-    "MOST_FRAMES",
     "PAGES_FILE",
     "TABLE_FILE",
     "TransformRequest",
@@ -39,7 +38,6 @@ __all__ = [
 ]
 
 PAGES_FILE, TABLE_FILE, CAUTIONS_FILE = "transforms.pdf", "transforms.csv", "cautions.txt"
-MOST_FRAMES = 6
 DRAWN_SIZES = (4, 8)
 """Tile sizes of which basis functions are drawn."""
 
@@ -54,7 +52,8 @@ class TransformRequest:
     scope: Scope = field(default_factory=Scope)
     regions_file: Path | None = None
     key_file: Path | None = None
-    most_frames: int = MOST_FRAMES
+    most_frames: int = 6
+    """One of each series at most."""
     with_images: bool = False
     basis_functions: bool = False
 

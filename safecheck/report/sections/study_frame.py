@@ -38,8 +38,12 @@ from safecheck.report.sections.study_words import (
 
 __all__ = ["basis_section", "frame_section"]
 
+_WHOLE_PAGE_MM = 200.0
+"""Each frame begins on a page of its own."""
 _SPAN = 3.0
 """Greys span so many times the root mean square of the cosine transform's error at the usual size."""
+_COPIES = 6
+"""Copies of each pixel of a basis function."""
 _SMALL, _LARGE = 74.0, 150.0
 """Sides of pictures in points."""
 
@@ -55,7 +59,7 @@ def frame_section(item: FrameFigures, *, with_images: bool) -> Section:
         blocks.append(_regions(item))
     if with_images:
         blocks += _pictures(item)
-    return Section(frame_name(item), tuple(blocks))
+    return Section(frame_name(item), tuple(blocks), room_mm=_WHOLE_PAGE_MM)
 
 
 def _lines(item: FrameFigures) -> tuple[str, ...]:
@@ -72,9 +76,10 @@ def _lines(item: FrameFigures) -> tuple[str, ...]:
 
 def _by_size(item: FrameFigures) -> Charts:
     """Curves of the cosine transform, one for each tile size."""
-    return _charts(
-        item, "Cosine, by tile size", {f"{size} by {size}": ("cosine", size) for size in item.sizes}, caption=""
-    )
+    # Sizes without a code come last, so that a curve has one marker on both charts.
+    sizes = sorted(item.sizes, key=lambda size: (size not in item.coded_sizes, size))
+    curves = {f"{size} by {size}": ("cosine", size) for size in sizes}
+    return _charts(item, "Cosine, by tile size", curves, caption="")
 
 
 def _by_transform(item: FrameFigures) -> Charts:
@@ -162,6 +167,7 @@ def _parts(item: FrameFigures) -> Table:
     columns = [
         aligned([item.at(measure, *line, AT_RATIO, area) for line in lines], places) for measure, area, places in _PARTS
     ]
+    splits = [item.at("dropped_part", *line, AT_RATIO, "inner tiles") for line in lines]
     cells = dict(zip(lines, zip(*columns, strict=True), strict=True))
     rows: list[Row] = []
     for transform, name in SHORT_NAMES.items():
@@ -182,7 +188,7 @@ def _parts(item: FrameFigures) -> Table:
         heads,
         tuple(rows),
         caption=f"Transform, tile size and quantiser in codes at {RATIO:g}:1",
-        note="Dashes: no inner tile of that size.",
+        note="" if all(known is not None for known in splits) else "Dashes: no inner tile of that size.",
     )
 
 
@@ -310,11 +316,12 @@ def basis_section(bases: Sequence[StudyBasis]) -> Section:
 
 
 def _mosaic(functions: npt.NDArray[np.float64]) -> npt.NDArray[np.uint8]:
-    """All products of two functions side by side, a white line between them."""
+    """All products of two functions side by side, each within a thin line and apart from the next."""
     size = len(functions)
     every = np.einsum("ui,vj->uvij", functions, functions)
     greys = _grey(every / np.abs(every).max(axis=(2, 3), keepdims=True))
-    framed = np.full((size, size, size + 1, size + 1), 255, np.uint8)
-    framed[:, :, 1:, 1:] = greys
-    inside = framed.transpose(0, 2, 1, 3).reshape(size * (size + 1), size * (size + 1))
-    return np.pad(inside, ((0, 1), (0, 1)), constant_values=255)
+    enlarged = np.repeat(np.repeat(greys, _COPIES, axis=2), _COPIES, axis=3)
+    lined = np.pad(enlarged, ((0, 0), (0, 0), (1, 1), (1, 1)), constant_values=0)
+    apart = np.pad(lined, ((0, 0), (0, 0), (2, 2), (2, 2)), constant_values=255)
+    side = size * apart.shape[2]
+    return apart.transpose(0, 2, 1, 3).reshape(side, side)
