@@ -20,6 +20,7 @@ __all__ = [
     "FORBIDDEN",
     "NO_BOUND",
     "NO_LIMITS",
+    "ON_REFERENCE",
     "REASONS",
     "RECORD_TITLE",
     "REDRAWN",
@@ -41,6 +42,9 @@ NO_LIMITS = "no limits declared"
 NO_BOUND = "no bound: not a random sample"
 DELIVERED_COPIES = "delivered copies"
 """Name under which the copies that an archive returned stand among the candidates."""
+ON_REFERENCE = "on the reference frame of the series"
+"""Ends the note that one setting for a series did not meet the ratio where it was sought."""
+
 ANALYSIS_CODEC = "analysis codec, not an archive encoder"
 
 SHORT_CAUTION = (

@@ -15,7 +15,7 @@ from safecheck.evaluation.assignment import Candidate, SeriesDial
 from safecheck.evaluation.original import Original
 from safecheck.frames import Frame, PixelFormat, Raster, Samples, Values
 from safecheck.policy.plan import Asked
-from safecheck.wording import DELIVERED_COPIES
+from safecheck.wording import DELIVERED_COPIES, ON_REFERENCE
 
 __all__ = [
     "OVER_COMPRESSION",
@@ -113,7 +113,7 @@ def find_dial(original: Original, candidate: Candidate) -> SeriesDial:
     encoded = _to_size(original, candidate, _coded(original, candidate), target)
     if encoded.reached in (Reached.ASKED, Reached.BRACKET):
         return SeriesDial(encoded.settings)
-    return SeriesDial(encoded.settings, f"{candidate.name}: {encoded.reached} on the reference frame of the series")
+    return SeriesDial(encoded.settings, f"{candidate.name}: {encoded.reached} {ON_REFERENCE}")
 
 
 def over_compress(original: Original, candidate: Candidate, smallest_bytes: int) -> Treated:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from safecheck.report.blocks import Report, Section
 from safecheck.report.sections.back import definitions, keeping, plan, signatures, versions
+from safecheck.report.sections.candidates import candidates
 from safecheck.report.sections.checks import controls, left_out
 from safecheck.report.sections.delivered import delivered
 from safecheck.report.sections.equal_damage import equal_damage
@@ -59,6 +60,7 @@ def _sections(view: View) -> tuple[Section, ...]:
         *strata(view),
         places(view),
         regions(view),
+        *candidates(view),
         ledger(view),
         *equal_damage(view),
         controls(view),

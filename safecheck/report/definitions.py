@@ -23,8 +23,17 @@ TERMS: tuple[tuple[str, str], ...] = (
     ("Error", "after minus before, in the unit of the image; never the other way round"),
     (
         "Candidate",
-        "one codec at one asked ratio, or the copies that an archive delivered; only proposed candidates decide the "
-        "exit code, those for context are shown beside them",
+        "one codec at one asked ratio or one setting, or the copies that an archive delivered; only proposed "
+        "candidates decide the exit code, those for context are shown beside them",
+    ),
+    (
+        "Dial",
+        "the setting by which the size of a codec's code is set: a ratio, a step, a quality, a largest error",
+    ),
+    (
+        "Reference frame",
+        "with a ratio per series, the middle frame of those assessed, in order along the normal of the slices, then "
+        "instance number, then frame number; where it cannot be read or coded, the next nearest to the middle",
     ),
     (
         "Bases of a ratio",

@@ -25,7 +25,7 @@ _ASKED: MappingProxyType[str, str] = MappingProxyType(
         "repeat": "the same frame gives the same code again, byte for byte",
         "over-compressed": "RMSE in content above that of every candidate of the codec; constant frames exempt",
         "planted": "a known displacement in one patch comes back with its size, row and column",
-        PROMISED: "no stored value of a candidate is moved further than its setting promises",
+        PROMISED: "no stored value moves further than the setting promises; counted: rows of candidates and neighbours",
     }
 )
 

@@ -9,7 +9,7 @@ from typing import Any
 from safecheck.record.document import CodecCheckEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Signatures, Table
 from safecheck.report.definitions import CONTENT_RULES, REGION_FIGURES, TERMS, definition_of
-from safecheck.report.numbers import NONE, count, rounded_time
+from safecheck.report.numbers import NONE, count, rounded_time, signed
 from safecheck.report.sections.view import View, dash, rest_sentence
 
 __all__ = ["definitions", "keeping", "plan", "signatures", "versions"]
@@ -79,9 +79,41 @@ def versions(view: View) -> Section:
     blocks: list[Block] = [Table(heads * 2, _two_by_two(programs))]
     if checks:
         blocks += [Heading("Selftest of the codecs"), Table(columns, checks)]
+    blocks += _carriage(view)
     blocks += [Heading("The run"), Table((Column("What"), Column("Value")), tuple(facts))]
     blocks += _tables(view)
     return Section("Versions and selftest", tuple(blocks))
+
+
+def _carriage(view: View) -> list[Block]:
+    """Codecs whose code stream says other than the image of its samples, or that were given them offset or scaled."""
+    if not view.record.carriage:
+        return []
+    columns = (
+        Column("Codec"),
+        Column("Stored", "bits", number=True),
+        Column("Sign"),
+        Column("Code stream says", "bits", number=True),
+        Column("Added before coding", "stored values", number=True),
+        Column("Factor before coding", "times", number=True),
+        Column("Rows", number=True),
+    )
+    rows = tuple(
+        Row(
+            (
+                item.codec,
+                count(item.bits_stored),
+                "signed" if item.signed else "unsigned",
+                count(item.code_precision),
+                signed(f"{item.sample_offset:d}"),
+                f"{item.sample_scale:.6g}",
+                count(item.rows),
+            )
+        )
+        for item in view.record.carriage
+    )
+    note = "All other codes were given the samples as they are stored, and say their bits."
+    return [Heading("How samples were carried into the codes"), Table(columns, rows, note=note)]
 
 
 def _exact(view: View, check: CodecCheckEntry) -> str:

@@ -14,7 +14,7 @@ from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section,
 from safecheck.report.numbers import count, joined, plural
 from safecheck.report.sections.front import controls_line
 from safecheck.report.sections.view import View, dash, place_words
-from safecheck.wording import RUN_INVALID
+from safecheck.wording import ON_REFERENCE, RUN_INVALID
 
 __all__ = ["controls", "left_out", "not_run"]
 
@@ -157,7 +157,8 @@ def _noticed(view: View) -> list[Block]:
     record = view.record
     frames = Column("Frames", number=True)
     idle = not_run(record.notes, [item.candidate for item in record.candidates])
-    noticed = {text: number for text, number in record.notes.items() if not _parts_of(text)}
+    missed = {text: number for text, number in record.notes.items() if text.endswith(ON_REFERENCE)}
+    noticed = {text: number for text, number in record.notes.items() if not _parts_of(text) and text not in missed}
     parts: tuple[tuple[str, tuple[Column, ...], list[Row]], ...] = (
         (
             "Noticed and set right before measuring",
@@ -168,6 +169,11 @@ def _noticed(view: View) -> list[Block]:
             "Not run",
             (Column("Why"), Column("Candidates"), frames),
             [Row((reason, joined(names), count(number))) for reason, names, number in idle],
+        ),
+        (
+            "One setting for a series, sought where the ratio was not met",
+            (Column("What was reached instead"), frames),
+            [Row((text, count(number))) for text, number in sorted(missed.items())],
         ),
         (
             "Content rules applied",

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
-from safecheck.record.candidates import CandidateEntry, LedgerEntry
+from safecheck.record.candidates import CandidateEntry, LedgerEntry, NeighbourEntry
 from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import Bar, Bars, Block, Column, Heading, Prose, Row, Section, Table
 from safecheck.report.numbers import aligned, bytes_text, count, joined, plural
@@ -23,12 +23,19 @@ _COLUMNS = (
     Column("Bits per pixel", "bits", number=True),
     Column("total", "to 1", number=True, over="Bits stored"),
     Column("least", "to 1", number=True, over="Bits stored"),
+    Column("5th", "to 1", number=True, over="Bits stored"),
+    Column("median", "to 1", number=True, over="Bits stored"),
+    Column("95th", "to 1", number=True, over="Bits stored"),
     Column("largest", "to 1", number=True, over="Bits stored"),
     Column("Bits allocated", "to 1", number=True),
     Column("Content", "to 1", number=True),
     Column("lossless", "times", number=True, over="Smaller than"),
     Column("now", "times", number=True, over="Smaller than"),
 )
+
+
+_OVER_FRAMES = ("Frames", "least", "5th", "median", "95th", "largest")
+"""Columns that say nothing of a single frame."""
 
 
 def ledger(view: View) -> Section:
@@ -64,27 +71,84 @@ def _of_stratum(view: View, stratum: StratumEntry) -> list[Block]:
     names = _starred([item for item, _ in found])
     entries = [entry for _, entry in found]
     blocks: list[Block] = [Heading(f"Ledger: {stratum.stratum}"), *_bars(names, entries, stratum)]
+    rows = _rows(names, entries, [item.dial for item, _ in found])
+    table = Table(_COLUMNS, rows, note=_reversible(entries))
+    return [*blocks, _of_one(table) if stratum.frames == 1 else table, *_reversible_codecs(view, stratum)]
+
+
+def _rows(names: Sequence[str], entries: Sequence[LedgerEntry], dials: Sequence[str]) -> tuple[Row, ...]:
+    """A row for each candidate, and below it one for the neighbouring setting, where the two bracket the ratio."""
+    lines: list[tuple[str, LedgerEntry, NeighbourEntry | None]] = []
+    for name, entry, dial in zip(names, entries, dials, strict=True):
+        lines.append((_with_dial(name, dial, entry), entry, None))
+        if entry.neighbour is not None:
+            low, high = entry.neighbour.dial_least, entry.neighbour.dial_largest
+            lines.append((f"beside it: {_between(dial, low, high)}", entry, entry.neighbour))
+    shown = [neighbour or entry for _, entry, neighbour in lines]
+    alone = [None if neighbour else entry for _, entry, neighbour in lines]
     cells = zip(
-        names,
-        [count(item.frames) for item in entries],
-        aligned([item.code_bytes / 1e6 for item in entries]),
-        aligned([item.bits_per_pixel for item in entries], 2),
-        aligned([item.ratio_bits_stored for item in entries], 2),
-        aligned([item.ratio_bits_stored_least for item in entries], 2),
-        aligned([item.ratio_bits_stored_largest for item in entries], 2),
-        aligned([item.ratio_bits_allocated for item in entries], 2),
-        aligned([item.ratio_content for item in entries], 2),
-        aligned([item.times_smaller_than_lossless for item in entries], 2),
-        aligned([item.times_smaller_than_now for item in entries], 2),
+        [name for name, _, _ in lines],
+        [count(item.frames) for item in shown],
+        aligned([item.code_bytes / 1e6 for item in shown]),
+        aligned([item.bits_per_pixel if item else None for item in alone], 2),
+        aligned([item.ratio_bits_stored for item in shown], 2),
+        aligned([item.ratio_bits_stored_least for item in shown], 2),
+        aligned([item.ratio_bits_stored_p05 if item else None for item in alone], 2),
+        aligned([item.ratio_bits_stored_median for item in shown], 2),
+        aligned([item.ratio_bits_stored_p95 if item else None for item in alone], 2),
+        aligned([item.ratio_bits_stored_largest for item in shown], 2),
+        aligned([item.ratio_bits_allocated if item else None for item in alone], 2),
+        aligned([item.ratio_content if item else None for item in alone], 2),
+        aligned([item.times_smaller_than_lossless if item else None for item in alone], 2),
+        aligned([item.times_smaller_than_now if item else None for item in alone], 2),
         strict=True,
     )
-    table = Table(_COLUMNS, tuple(Row(row) for row in cells), note=_reversible(entries))
-    return [*blocks, _of_one(table) if stratum.frames == 1 else table]
+    return tuple(Row(row) for row in cells)
+
+
+def _with_dial(name: str, dial: str, entry: LedgerEntry) -> str:
+    """A candidate's name, with the settings that bracket its ratio."""
+    if entry.neighbour is None or entry.dial_least is None or entry.dial_largest is None:
+        return name
+    return f"{name}: {_between(dial, entry.dial_least, entry.dial_largest)}"
+
+
+def _between(dial: str, least: float, largest: float) -> str:
+    """A dial with its value, or with the range of its values."""
+    return f"{dial} {least:g}" if least == largest else f"{dial} {least:g} to {largest:g}"
+
+
+def _reversible_codecs(view: View, stratum: StratumEntry) -> list[Block]:
+    """Every reversible codec on the frames that carry the full controls, beside the smallest code of these frames."""
+    entries = [item for item in view.record.reversible if item.stratum == stratum.stratum]
+    if not entries:
+        return []
+    columns = (
+        Column("Reversible codec"),
+        Column("Frames", number=True),
+        Column("Code", "MB", number=True),
+        Column("Bits stored", "to 1", number=True),
+        Column("Smallest reversible code of the ledger", "MB", number=True),
+        Column("Of that smallest", "times", number=True),
+    )
+    sizes = aligned([size / 1e6 for item in entries for size in (item.code_bytes, item.smallest_bytes or 0)])
+    shares = [item.code_bytes / item.smallest_bytes if item.smallest_bytes else None for item in entries]
+    cells = zip(
+        [item.codec for item in entries],
+        [count(item.frames) for item in entries],
+        sizes[::2],
+        aligned([item.ratio_bits_stored for item in entries], 2),
+        sizes[1::2],
+        aligned(shares, 3),
+        strict=True,
+    )
+    caption = "Reversible codecs, on the frames that carry all controls"
+    return [Table(columns, tuple(Row(row) for row in cells), caption=caption)]
 
 
 def _of_one(table: Table) -> Table:
     """The table of a single frame, whose total, least and largest ratio are one."""
-    kept = [index for index, column in enumerate(table.columns) if column.head not in ("Frames", "least", "largest")]
+    kept = [index for index, column in enumerate(table.columns) if column.head not in _OVER_FRAMES]
     columns = [table.columns[index] for index in kept]
     columns = [replace(column, head=column.over, over="") if column.head == "total" else column for column in columns]
     rows = tuple(Row(tuple(row.cells[index] for index in kept)) for row in table.rows)
@@ -119,21 +183,24 @@ def _reversible(entries: Sequence[LedgerEntry]) -> str:
     if all(item.frames == 1 for item in entries):
         return f"Smallest reversible code: {parts}."
     return (
-        f"Smallest reversible code: {parts}. Ratios are of totals over frames; least and largest are of single frames."
+        f"Smallest reversible code: {parts}. Ratios are of totals over frames; least, percentiles, median and largest "
+        "are of single frames."
     )
 
 
 def _reached(view: View) -> list[Block]:
-    """Where the ratio asked for was not met."""
+    """Where the ratio asked for was not met; a ratio per series is asked of one frame of each."""
+    asked = [item for item in view.candidates if item.ratio_asked is not None and item.asked != "ratio per series"]
     rows = [
         Row((item.candidate, reached, count(frames), count(item.frames)))
-        for item in view.candidates
+        for item in asked
         for reached, frames in sorted(item.reached.items())
-        if reached != "asked" and item.ratio_asked is not None and frames
+        if reached not in ("asked", "bracket") and frames
     ]
+    notes: list[Block] = [Prose(_BRACKET, "note")] if any(item.reached.get("bracket") for item in asked) else []
     if not rows:
-        if not view.ran or not any(item.frames and item.ratio_asked for item in view.candidates):
-            return []
+        if notes or not view.ran or not any(item.frames for item in asked):
+            return notes
         return [Prose("Every frame reached the ratio that was asked for.", "note")]
     columns = (
         Column("Candidate"),
@@ -141,4 +208,10 @@ def _reached(view: View) -> list[Block]:
         Column("Frames", number=True),
         Column("of", number=True),
     )
-    return [Heading("Ratios not reached"), Table(columns, tuple(rows))]
+    return [*notes, Heading("Ratios not reached"), Table(columns, tuple(rows))]
+
+
+_BRACKET = (
+    "A dial of whole numbers seldom meets a ratio, so the two settings around it were run. All tables use the one "
+    "whose ratio is not below the one asked for; the other stands beside it here."
+)
