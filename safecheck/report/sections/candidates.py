@@ -75,7 +75,8 @@ def _decimals(entry: SpreadEntry, parts: list[float]) -> int | None:
     """Ratios as in the ledger; a dial of whole numbers without decimals."""
     if entry.figure == "ratio_bits_stored":
         return 2
-    return 0 if all(value == round(value) for value in parts) else None
+    whole = entry.figure == "dial_value" and all(value == round(value) for value in parts)
+    return 0 if whole else None
 
 
 def _parts(entry: SpreadEntry) -> tuple[float, ...]:
