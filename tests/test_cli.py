@@ -93,7 +93,7 @@ def test_every_command_has_help(
 
 
 def test_all_commands_are_there() -> None:
-    assert set(COMMANDS) >= {"assess", "census", "demo", "lookup", "report", "selftest", "verify"}
+    assert set(COMMANDS) >= {"assess", "census", "demo", "lookup", "report", "selftest", "transforms", "verify"}
 
 
 WRONG = [
@@ -141,6 +141,20 @@ WRONG = [
     (["verify", "binary"], "no such dossier"),
     (["verify", "in", "--frames", "0"], "--frames"),
     (["lookup", "P-00000-00000"], "Missing argument"),
+    (["transforms"], "Missing argument"),
+    (["transforms", "in"], "Missing option '--out'"),
+    (["transforms", "nowhere", "--out", "d"], "1 of the paths given do not exist"),
+    (["transforms", "in", "--out", "full"], "the folder of --out is not empty"),
+    (["transforms", "in", "--out", "binary"], "the folder of --out cannot be used"),
+    (["transforms", "in", "--out", "binary/d"], "the folder of --out cannot be used"),
+    (["transforms", "in", "--out", "in/d"], "would lie among the images"),
+    (["transforms", "in", "--out", "d", "--frames", "0"], "--frames"),
+    (["transforms", "in", "--out", "d", "--frames", "many"], "--frames"),
+    (["transforms", "in", "--out", "d", "--regions", "nowhere"], "the region file cannot be read"),
+    (["transforms", "in", "--out", "d", "--regions", "words.json"], "regions[0]"),
+    (["transforms", "in", "--out", "d", "--regions", "binary"], "region"),
+    (["transforms", "in", "--out", "d", "--key", "in"], "the site key cannot be read"),
+    (["transforms", "in", "--out", "d", "--basis", "8"], "do not exist"),
 ]
 
 
@@ -154,7 +168,7 @@ def test_a_wrong_call_ends_with_2_and_one_sentence(
 ) -> None:
     monkeypatch.chdir(place)
     monkeypatch.setenv("XDG_CONFIG_HOME", str(place / "config"))
-    assert call(monkeypatch, *arguments, *(["-q"] if arguments[0] in ("assess", "census", "demo") else [])) == 2
+    assert call(monkeypatch, *arguments, *(["-q"] if arguments[0] in ("assess", "census", "demo", "transforms") else [])) == 2
     captured = capsys.readouterr()
     # A census that was taken is shown even where its draft cannot be written.
     assert captured.out == "" or "nowhere/plan.toml" in arguments

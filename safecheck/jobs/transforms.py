@@ -92,14 +92,13 @@ def study_transforms(request: TransformRequest, tell: Tell) -> TransformStudy:
 
 
 def _check_folder(request: TransformRequest) -> None:
-    """Refuse a folder that holds anything, or whose files would be taken for inputs."""
-    try:
-        occupied = request.out.exists() and any(request.out.iterdir())
-    except OSError as error:
-        raise UsageError(f"the folder of --out cannot be used: {os.strerror(error.errno or 0)}") from None
-    if occupied:
-        raise UsageError("the folder of --out is not empty; name a new one")
+    """Refuse a folder that cannot be made, holds anything, or whose files would be taken for inputs."""
     place = request.out.resolve()
+    nearest = next(folder for folder in (place, *place.parents) if folder.exists())
+    if not nearest.is_dir() or not os.access(nearest, os.W_OK):
+        raise UsageError("the folder of --out cannot be used; expected one that is new or empty and can be written to")
+    if place.exists() and any(place.iterdir()):
+        raise UsageError("the folder of --out is not empty; name a new one")
     if any(place.is_relative_to(path.resolve()) for path in request.paths if path.is_dir()):
         raise UsageError("the folder of --out would lie among the images; name one elsewhere")
 
@@ -172,10 +171,7 @@ def _write(study: TransformStudy, request: TransformRequest) -> None:
     """Write the files."""
     table = table_bytes(study.frames)
     pages = draw_study(study, hashlib.sha256(table).hexdigest(), with_images=request.with_images)
-    try:
-        request.out.mkdir(parents=True, exist_ok=True)
-    except OSError as error:
-        raise UsageError(f"the folder of --out cannot be used: {os.strerror(error.errno or 0)}") from None
+    request.out.mkdir(parents=True, exist_ok=True)
     (request.out / CAUTIONS_FILE).write_text(cautions_text(study), encoding="utf-8")
     (request.out / TABLE_FILE).write_bytes(table)
     (request.out / PAGES_FILE).write_bytes(pages)
