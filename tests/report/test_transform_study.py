@@ -145,7 +145,7 @@ def test_figures_of_the_table_stand_on_the_pages() -> None:
             assert line is not None
             for shown, size in zip(line.groups(), (2, 4, 8, 16, 32, 64), strict=True):
                 value = figures.get((transform, size, share))
-                assert shown == "–" if value is None else float(shown) == pytest.approx(value, abs=0.06)
+                assert shown == "–" if value is None else float(shown) == pytest.approx(value, rel=0.005)
 
 
 def test_regions_have_a_table_of_their_own() -> None:

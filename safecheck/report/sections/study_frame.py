@@ -32,6 +32,7 @@ from safecheck.report.sections.study_words import (
     SHORT_NAMES,
     USUAL_SIZE,
     FrameFigures,
+    fine,
     frame_name,
     place_line,
 )
@@ -122,7 +123,7 @@ def _grouped(
 ) -> tuple[Row, ...]:
     """Rows under the name of each transform, all figures of the table with equal decimals."""
     places = [(group, line, column) for group in groups for line in lines for column in range(columns)]
-    cells = dict(zip(places, aligned([value(*place) for place in places]), strict=True))
+    cells = dict(zip(places, fine([value(*place) for place in places]), strict=True))
     rows: list[Row] = []
     for group in groups:
         rows.append(Row((SHORT_NAMES[group],), group=True))
@@ -229,7 +230,7 @@ def _regions(item: FrameFigures) -> Table:
     shown += [("ratio", RATIO, "cosine", size) for size in (16, 32)]
     areas = ("content", *item.regions)
     columns = [
-        aligned([item.at("rmse", transform, size, (_fixed(fixed), at), area) for area in areas])
+        fine([item.at("rmse", transform, size, (_fixed(fixed), at), area) for area in areas])
         for fixed, at, transform, size in shown
     ]
     heads = [

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from safecheck.record.transforms import StudiedFrame, TransformStudy
 from safecheck.report.blocks import Block, Column, Facts, Heading, Numbered, Prose, Row, Table, Title
 from safecheck.report.numbers import aligned, count, plural
-from safecheck.report.sections.study_words import AT_RATIO, RATIO, USUAL_SIZE, FrameFigures
+from safecheck.report.sections.study_words import AT_RATIO, RATIO, USUAL_SIZE, FrameFigures, fine
 from safecheck.statistics.cautions import image_cautions
 from safecheck.wording import ANALYSIS_CODEC, CAUTIONS, CAUTIONS_WHEN, SHORT_CAUTION, STUDY_TITLE, sentence_of
 
@@ -107,7 +107,10 @@ def _answer(figures: Sequence[FrameFigures]) -> tuple[Block, ...]:
         Column("rounding", "%", number=True, over=f"Squared error, cosine {side}"),
     )
     cells = [_answer_cells(item) for item in coded]
-    numbers = [aligned(values, places) for values, places in zip(zip(*cells, strict=True), _DECIMALS, strict=True)]
+    numbers = [
+        fine(values) if places is None else aligned(values, places)
+        for values, places in zip(zip(*cells, strict=True), _DECIMALS, strict=True)
+    ]
     rows = tuple(
         Row((f"{item.number}: {item.frame.stratum}", item.frame.unit, *line))
         for item, line in zip(coded, zip(*numbers, strict=True), strict=True)

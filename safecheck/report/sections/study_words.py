@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+import math
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from safecheck.record.transforms import Finding, Fixed, StudiedFrame
+from safecheck.report.numbers import aligned
 
 __all__ = [
     "AT_RATIO",
@@ -15,6 +17,7 @@ __all__ = [
     "USUAL_SIZE",
     "FrameFigures",
     "figures_of",
+    "fine",
     "frame_name",
     "place_line",
 ]
@@ -80,6 +83,12 @@ def figures_of(number: int, frame: StudiedFrame) -> FrameFigures:
 
 def _key(item: Finding) -> tuple[str, str, int | None, Fixed, float | None, str]:
     return item.area, item.transform, item.tile_size, item.fixed, item.fixed_at, item.measure
+
+
+def fine(values: Sequence[float | None], most: int = 4) -> tuple[str, ...]:
+    """Write figures with equal decimals, so many that the least of them has three significant digits."""
+    sizes = [abs(value) for value in values if value]
+    return aligned(values, min(max(2 - math.floor(math.log10(min(sizes))), 0), most) if sizes else None)
 
 
 def frame_name(figures: FrameFigures) -> str:
