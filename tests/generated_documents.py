@@ -20,7 +20,9 @@ from annotated_types import Ge, Gt, Le, Lt, MaxLen, MinLen
 from pydantic import AwareDatetime
 from pydantic.fields import FieldInfo
 
+from safecheck.codecs import registry
 from safecheck.documents import Document
+from safecheck.jobs.plans import dial_range
 from safecheck.measures.catalogue import MEASURES, Measure
 from safecheck.policy.plan import Plan
 from safecheck.record.crops import CropDocument
@@ -255,11 +257,27 @@ def _plan_parts() -> Iterator[Part]:
         yield Part("plans_and_limits.md", name, lambda model=model: plan_table(model))  # type: ignore[misc]
 
 
+def _codecs() -> str:
+    """The codecs that a candidate may name, with what their classes say of their settings."""
+    rows = []
+    for name in registry.rated_names():
+        dial = registry.entry(name).dial
+        others = [
+            f"`{key}` (default `{json.dumps(value)}`)"
+            for key, value in sorted(registry.codec(name).settings.items())
+            if key != dial
+        ]
+        writes = "yes" if registry.entry(name).archive_can_write else "no"
+        rows.append((f"`{name}`", f"`{dial}`", dial_range(name), ", ".join(others) or "–", writes))
+    return table(("codec", "its dial", "expected of the dial", "other settings", "an archive can write it"), rows)
+
+
 PARTS: tuple[Part, ...] = (
     Part("columns.md", "columns", _columns),
     Part("plans_and_limits.md", "measures", _measures),
     Part("plans_and_limits.md", "measures without limits", _no_limit),
     *_plan_parts(),
+    Part("plans_and_limits.md", "codecs", _codecs),
     Part("record_format.md", "record", lambda: objects(RecordDocument)),
     Part("record_format.md", "run", lambda: fields_table(RunFacts)),
     Part("record_format.md", "seal", lambda: objects(Seal)),

@@ -19,6 +19,7 @@ __all__ = [
     "DEFAULT_RATIOS",
     "LoadedPlan",
     "check_available",
+    "dial_range",
     "is_available",
     "load_plan",
     "plan_of_command_line",
@@ -141,7 +142,8 @@ def _check_codecs(plan: Plan) -> None:
         if candidate.ratio is None and dial not in candidate.settings:
             raise DocumentError(
                 f"{path}.settings.{dial}",
-                f"is missing; without a ratio {candidate.codec} is set by its {dial}, expected {_range_of(candidate)}",
+                f"is missing; without a ratio {candidate.codec} is set by its {dial}, "
+                f"expected {dial_range(candidate.codec)}",
             )
         if candidate.ratio is not None and dial in candidate.settings:
             raise DocumentError(
@@ -150,10 +152,10 @@ def _check_codecs(plan: Plan) -> None:
             )
 
 
-def _range_of(candidate: CandidatePlan) -> str:
+def dial_range(codec: str) -> str:
     """Range of a codec's dial, in the codec's own words: it says them when asked for what no dial can be."""
     try:
-        registry.rated(candidate.codec, **{registry.entry(candidate.codec).dial: -1.0})
+        registry.rated(codec, **{registry.entry(codec).dial: -1.0})
     except UsageError as error:
         return str(error).partition("expected ")[2]
     return "a number"

@@ -85,10 +85,10 @@ class CandidatePlan(Document):
     """One codec at one asked ratio, or at one encoder setting."""
 
     codec: Text
-    ratio: Annotated[float, Field(gt=1, le=1000)] | None = None
-    """Without it the codec's dial stands in `settings`, and the ratio is what comes of it."""
+    ratio: Annotated[float | None, Field(gt=1, le=1000)] = None
+    """Ratio asked for on `basis`; without it the codec's dial is among `settings`, and the ratio follows from it."""
     per: Literal["frame", "series"] = "frame"
-    """Whether each frame is brought to the ratio, or one setting, found on the middle frame of a series, serves all."""
+    """Whether each frame is brought to the ratio, or one setting, found on the middle frame of a series, serves it."""
     basis: SizeBasis = SizeBasis.BITS_STORED
     status: Literal["proposed", "context"] = "proposed"
     """Only proposed candidates decide the exit code."""
