@@ -19,10 +19,12 @@ from safecheck.jobs.assess import Tell
 from safecheck.jobs.inputs import Inputs, gather_inputs
 from safecheck.jobs.regions import load_regions
 from safecheck.jobs.site import open_site
+from safecheck.jobs.versions import versions
 from safecheck.policy.plan import Scope
 from safecheck.record.transforms import LeftAside, StudiedFrame, StudyBasis, TransformStudy, table_bytes
 from safecheck.regions.region import RegionSet
 from safecheck.report.transform_study import cautions_text, draw_study
+from safecheck.runner.pool import cores
 from safecheck.study import study_frame
 from safecheck.study.tiles import TRANSFORMS, basis
 from safecheck.wording import sentence_of
@@ -38,6 +40,8 @@ __all__ = [
 ]
 
 PAGES_FILE, TABLE_FILE, CAUTIONS_FILE = "transforms.pdf", "transforms.csv", "cautions.txt"
+MOST_THREADS = 4
+"""Each holds a few planes of real numbers."""
 DRAWN_SIZES = (4, 8)
 """Tile sizes of which basis functions are drawn."""
 
@@ -85,6 +89,8 @@ def study_transforms(request: TransformRequest, tell: Tell) -> TransformStudy:
         pseudonyms=site.pseudonyms,
         progress=lambda done, found: tell(f"Reading headers: {done} of {found} files"),
     )
+    if inputs.assessed and not site.has_kernels(versions()):
+        tell("Preparing compiled code (some seconds on the first run after an installation)")
     study = _study(request, inputs, regions, tell)
     if study.frames:
         _write(study, request)
@@ -141,7 +147,10 @@ def _study_middle(group: list[Instance], regions: RegionSet | None, *, with_imag
             frame = reader.frame(number)
     except (InputRefused, InputExcluded) as error:
         return error.reason
-    return study_frame(frame, regions, with_images=with_images) or "every pixel is padding"
+    return (
+        study_frame(frame, regions, with_images=with_images, threads=min(cores(), MOST_THREADS))
+        or "every pixel is padding"
+    )
 
 
 def middle_frame(group: list[Instance]) -> tuple[Instance, int]:

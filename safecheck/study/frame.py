@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 
-from safecheck.errors import CannotEncode
+from safecheck.codecs.tile.codec import Tiled
 from safecheck.frames import Frame, SizeBasis
 from safecheck.record.transforms import Finding, Fixed, StudiedFrame
 from safecheck.regions.region import RegionSet
@@ -25,7 +27,7 @@ CORRELATION = 0.95
 """Of the Markov field that frames are set beside."""
 
 
-def study_frame(frame: Frame, regions: RegionSet | None, *, with_images: bool) -> StudiedFrame | None:
+def study_frame(frame: Frame, regions: RegionSet | None, *, with_images: bool, threads: int = 1) -> StudiedFrame | None:
     """Study one frame.
 
     Parameters
@@ -36,6 +38,8 @@ def study_frame(frame: Frame, regions: RegionSet | None, *, with_images: bool) -
         None for content alone.
     with_images
         Whether pictures are taken; never of a frame that may show text.
+    threads
+        How many transforms are at work at once, at least 1; what is found does not depend on it.
 
     Returns
     -------
@@ -46,17 +50,20 @@ def study_frame(frame: Frame, regions: RegionSet | None, *, with_images: bool) -
     if subject is None:
         return None
     shown = choose_part(subject) if with_images and not frame.origin.may_show_text else None
-    kept, coded = Findings(subject), Findings(subject)
+    refusal = Tiled().refuses(subject.raster.format, subject.raster.shape)
     correlations = _correlations(subject)
-    for name, value in zip(("correlation_down", "correlation_across"), correlations, strict=True):
-        kept.add(name, value, area="content")
-    # Compiled code, linear algebra and sorting leave the interpreter's lock, so the two go on beside each other.
-    with ThreadPoolExecutor(1) as beside:
-        coding = beside.submit(_study_codes, coded, shown)
-        _study_tiles(kept, shown, correlations)
-        notes = coding.result()
-    found = (*kept.found, *coded.found)
-    return _studied(subject, (*subject.notes, *notes), (*found, *comparisons(found)), shown)
+    found = list(_of_frame(subject, correlations).found)
+    # Compiled code and sorting leave the interpreter's lock.
+    with ThreadPoolExecutor(threads) as pool:
+        for size in SIZES:
+            work = _Work(subject, shown, size, subject.tiles(size), tile_areas(subject.areas, size), correlations)
+            steps = [partial(step, transform) for step in (work.kept, work.coded) for transform in TRANSFORMS]
+            if size not in CODED_SIZES or refusal:
+                steps = steps[: len(TRANSFORMS)]
+            for findings in pool.map(lambda step: step(), [work.of_size, *steps]):
+                found += findings.found
+    notes = (*subject.notes, f"No codes were written: {refusal}.") if refusal else subject.notes
+    return _studied(subject, notes, (*found, *comparisons(found)), shown)
 
 
 def _studied(
@@ -90,33 +97,60 @@ def _correlations(subject: Subject) -> tuple[float | None, float | None]:
     return down, across
 
 
-def _study_tiles(findings: Findings, shown: Shown | None, correlations: tuple[float | None, float | None]) -> None:
-    """Kept shares and gains of every tile size and transform."""
-    for size in SIZES:
-        pixels, areas = findings.subject.tiles(size), tile_areas(findings.subject.areas, size)
-        findings.add("inner_tiles", int(np.count_nonzero(areas.inner)), area="inner tiles", size=size)
-        for transform in TRANSFORMS:
-            tiles = forward(pixels, basis(transform, size))
-            _study_kept(findings, shown, tiles, areas, transform, size)
-            _add_gain(findings, "gain", variances(tiles[areas.inner]), transform, size)
-            _add_models(findings, transform, size, correlations)
-        _add_gain(findings, "gain_complex", complex_variances(pixels[areas.inner], size), "fourier", size)
+def _of_frame(subject: Subject, correlations: tuple[float | None, float | None]) -> Findings:
+    """Figures that depend on no tile."""
+    findings = Findings(subject)
+    for name, value in zip(("correlation_down", "correlation_across"), correlations, strict=True):
+        findings.add(name, value, area="content")
+    return findings
 
 
-def _study_kept(
-    findings: Findings, shown: Shown | None, tiles: Reals, areas: TiledAreas, transform: str, size: int
-) -> None:
-    """Errors at every share of which a tile of this size keeps at least one coefficient."""
-    counts = {share: count for share in SHARES_PERCENT if (count := kept_count(size, share))}
-    every = keep(tiles, basis(transform, size), list(counts.values()))
-    for (share, count), kept in zip(counts.items(), every, strict=True):
-        fixed = _fixed("kept share", share)
-        findings.add("kept_coefficients", count, transform=transform, size=size, fixed=fixed)
-        findings.add("kept_share", 100 * count / size**2, transform=transform, size=size, fixed=fixed)
-        errors = areas.root_mean_squares(kept.dropped_energies, kept.errors)
-        findings.add_errors(errors, transform, size, fixed)
-        if shown and share == PICTURED_PERCENT:
-            shown.see_kept(kept.errors, transform, size)
+@dataclass(frozen=True, slots=True, eq=False)
+class _Work:
+    """All that is done with tiles of one size."""
+
+    subject: Subject
+    shown: Shown | None
+    size: int
+    pixels: Reals
+    """(tiles, size * size)."""
+    areas: TiledAreas
+    correlations: tuple[float | None, float | None]
+
+    def of_size(self) -> Findings:
+        """Figures that depend on no transform, and the gain of the complex form."""
+        findings, inner = Findings(self.subject), self.areas.inner
+        findings.add("inner_tiles", int(np.count_nonzero(inner)), area="inner tiles", size=self.size)
+        _add_gain(findings, "gain_complex", complex_variances(self.pixels[inner], self.size), "fourier", self.size)
+        return findings
+
+    def kept(self, transform: str) -> Findings:
+        """Kept shares and gains of a transform."""
+        findings, table = Findings(self.subject), basis(transform, self.size)
+        tiles = forward(self.pixels, table)
+        counts = {share: count for share in SHARES_PERCENT if (count := kept_count(self.size, share))}
+        for (share, count), kept in zip(counts.items(), keep(tiles, table, list(counts.values())), strict=True):
+            fixed = _fixed("kept share", share)
+            findings.add("kept_coefficients", count, transform=transform, size=self.size, fixed=fixed)
+            findings.add("kept_share", 100 * count / self.size**2, transform=transform, size=self.size, fixed=fixed)
+            errors = self.areas.root_mean_squares(kept.dropped_energies, kept.errors)
+            findings.add_errors(errors, transform, self.size, fixed)
+            if self.shown and share == PICTURED_PERCENT:
+                self.shown.see_kept(kept.errors, transform, self.size)
+        _add_gain(findings, "gain", variances(tiles[self.areas.inner]), transform, self.size)
+        _add_models(findings, transform, self.size, self.correlations)
+        return findings
+
+    def coded(self, transform: str) -> Findings:
+        """Codes of a transform at all ratios."""
+        findings, inner = Findings(self.subject), self.areas.inner
+        coefficients = forward(self.pixels[inner], basis(transform, self.size))
+        for ratio in RATIOS:
+            coded = code_at(self.subject, transform, self.size, ratio)
+            _add_code(findings, coded, split_error(coefficients, inner, coded))
+            if self.shown and ratio == PICTURED_RATIO:
+                self.shown.see_coded(coded.error, transform, self.size)
+        return findings
 
 
 def _fixed(what: Fixed, at: float) -> tuple[Fixed, float]:
@@ -138,25 +172,6 @@ def _add_models(findings: Findings, transform: str, size: int, correlations: tup
             known = [part for part in parts if part is not None]
             value = sum(known) if len(known) == 2 else None
             findings.add(f"gain_model_{name}{ending}", value, transform=transform, size=size)
-
-
-def _study_codes(findings: Findings, shown: Shown | None) -> list[str]:
-    """Write codes at all ratios; return why not, where the codec does not take the frame."""
-    subject = findings.subject
-    try:
-        for size in CODED_SIZES:
-            inner = tile_areas(subject.areas[:1], size).inner
-            pixels = subject.tiles(size)[inner]
-            for transform in TRANSFORMS:
-                coefficients = forward(pixels, basis(transform, size))
-                for ratio in RATIOS:
-                    coded = code_at(subject, transform, size, ratio)
-                    _add_code(findings, coded, split_error(coefficients, inner, coded))
-                    if shown and ratio == PICTURED_RATIO:
-                        shown.see_coded(coded.error, transform, size)
-    except CannotEncode as error:
-        return [f"No codes were written: {error}."]
-    return []
 
 
 def _add_code(findings: Findings, coded: Coded, split: Split | None) -> None:

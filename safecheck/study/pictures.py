@@ -11,7 +11,7 @@ import numpy.typing as npt
 from safecheck.record.transforms import StudyPicture, StudyPictures
 from safecheck.study.kept import keep, kept_count
 from safecheck.study.subject import Subject
-from safecheck.study.tiles import Reals, basis, forward
+from safecheck.study.tiles import TRANSFORMS, Reals, basis, forward
 
 __all__ = ["PICTURED_PERCENT", "PICTURED_RATIO", "Shown", "choose_part"]
 
@@ -63,15 +63,20 @@ class Shown:
             original=samples,
             low=low,
             high=max(high, low + 1.0),
-            kept=tuple(self.kept),
+            kept=_sorted(self.kept),
             kept_percent=PICTURED_PERCENT,
-            coded=tuple(self.coded),
+            coded=_sorted(self.coded),
             ratio=PICTURED_RATIO,
         )
 
     def _cut(self, plane: Reals) -> Reals:
         """Return the part of a frame's plane that is shown."""
         return plane[self.first_row : self.first_row + SIDE, self.first_column : self.first_column + SIDE].copy()
+
+
+def _sorted(pictures: list[StudyPicture]) -> tuple[StudyPicture, ...]:
+    """In an order that does not depend on which was found first."""
+    return tuple(sorted(pictures, key=lambda item: (TRANSFORMS.index(item.transform), item.tile_size)))
 
 
 def choose_part(subject: Subject) -> Shown:

@@ -295,6 +295,21 @@ def test_the_same_frame_gives_the_same_figures() -> None:
     assert one.findings == other.findings
 
 
+def test_what_is_found_does_not_depend_on_the_number_of_threads() -> None:
+    one, other = (study_frame(frame(), None, with_images=True, threads=threads) for threads in (1, 3))
+    assert one is not None
+    assert other is not None
+    assert one.findings == other.findings
+    assert one.pictures is not None
+    assert other.pictures is not None
+    for pictures in ("kept", "coded"):
+        first, second = (getattr(each, pictures) for each in (one.pictures, other.pictures))
+        assert [(item.transform, item.tile_size) for item in first] == [
+            (item.transform, item.tile_size) for item in second
+        ]
+        assert all(np.array_equal(a.error, b.error) for a, b in zip(first, second, strict=True))
+
+
 def test_every_figure_is_of_a_known_measure() -> None:
     assert {item.measure for name in SMALL for item in studied(name).findings} == MEASURES.keys()
     assert set(SMALL) <= set(REAL)
