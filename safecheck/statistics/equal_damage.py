@@ -31,7 +31,9 @@ _APART: Mapping[str, tuple[str, ...]] = {"measures": (), "windows": ("window",),
 
 
 def reference_of(plan: Plan, candidates: tuple[CandidateEntry, ...]) -> str:
-    """Name the candidate whose damage is taken: the plan's, or the first of those proposed at a ratio.
+    """Name the candidate whose damage is taken: the plan's, or the middle ratio of the first codec proposed at ratios.
+
+    At either end of the ratios run the damage of another codec would mostly lie beyond them.
 
     Parameters
     ----------
@@ -42,7 +44,10 @@ def reference_of(plan: Plan, candidates: tuple[CandidateEntry, ...]) -> str:
     """
     own = [item for item in candidates if item.role == "candidate"]
     ranked = sorted(own, key=lambda item: (item.status != "proposed", item.ratio_asked is None))
-    return plan.reference or ranked[0].candidate
+    first = ranked[0]
+    peers = [item for item in ranked if (item.status, item.codec) == (first.status, first.codec) and item.ratio_asked]
+    peers.sort(key=lambda item: item.ratio_asked or 0.0)
+    return plan.reference or (peers[(len(peers) - 1) // 2] if peers else first).candidate
 
 
 def equal_damage(

@@ -309,10 +309,19 @@ def test_candidates_alike_but_for_their_size_lie_on_one_curve(given: dict[str, A
         ([{"codec": "jpeg2000", "ratio": 8, "status": "context"}, {"codec": "tiled", "ratio": 8}], "tiled 8:1"),
         ([{"codec": "jpeg", "settings": {"quality": 85}}, {"codec": "tiled", "ratio": 8}], "tiled 8:1"),
         ([{"codec": "jpeg", "settings": {"quality": 85}}], "jpeg, quality 85"),
+        ([{"codec": "jpeg2000", "ratio": ratio} for ratio in (20, 5, 15, 10, 8)], "jpeg2000 10:1"),
+        ([{"codec": "jpeg2000", "ratio": ratio} for ratio in (20, 5)], "jpeg2000 5:1"),
     ],
-    ids=["codecs of archives first", "proposed first", "at a ratio first", "a setting where there is no ratio"],
+    ids=[
+        "codecs of archives first",
+        "proposed first",
+        "at a ratio first",
+        "a setting where there is no ratio",
+        "the middle ratio",
+        "the lower of two",
+    ],
 )
-def test_without_a_name_the_reference_is_the_first_proposed_at_a_ratio(
+def test_without_a_name_the_reference_is_the_middle_ratio_of_the_first_codec_proposed(
     tmp_path: Path, made: list[dict[str, Any]], name: str
 ) -> None:
     declared = plan(candidates=made)
