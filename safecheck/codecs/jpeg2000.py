@@ -7,21 +7,17 @@ precision counts as none: the dial keeps clear of both.
 
 from __future__ import annotations
 
-import functools
-import importlib
-import importlib.metadata
 import math
 import threading
 from dataclasses import dataclass
-from types import ModuleType
 from typing import ClassVar
 
 from safecheck.codecs import search
 from safecheck.codecs.base import Carriage, Encoded, Settings, admit, fitted
+from safecheck.codecs.libraries import carried_by, openjpeg
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.reversible import best_reversible
 from safecheck.codecs.stream_headers import MOST_LEVELS, check_jpeg2000
-from safecheck.errors import CodecUnavailable
 from safecheck.frames import PixelFormat, Raster, Samples, SizeBasis
 
 __all__ = ["RATIO_HIGHEST", "RATIO_LOWEST", "Jpeg2000"]
@@ -34,21 +30,6 @@ _SMALLEST_SIDE = 1 << MOST_LEVELS
 _RGB = 1
 _ENCODER = threading.Lock()
 """The binding crashes where two threads encode at once. It never leaves the interpreter's lock: none waits longer."""
-
-
-def _library() -> ModuleType:
-    """OpenJPEG's binding, loaded on first use."""
-    try:
-        return importlib.import_module("openjpeg.utils")
-    except ImportError as error:
-        raise CodecUnavailable("jpeg2000: pylibjpeg-openjpeg is not on this machine") from error
-
-
-@functools.cache
-def _version(numbers: tuple[int, ...]) -> str:
-    """(2, 5, 2) -> 'OpenJPEG 2.5.2 in pylibjpeg-openjpeg 2.6.0'; kept, since every row asks and files are read."""
-    carrier = importlib.metadata.version("pylibjpeg-openjpeg")
-    return f"OpenJPEG {'.'.join(str(number) for number in numbers)} in pylibjpeg-openjpeg {carrier}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,7 +58,8 @@ class Jpeg2000:
     @property
     def version(self) -> str:
         """OpenJPEG's version and that of the package that carries it."""
-        return _version(_library().get_openjpeg_version())
+        numbers = openjpeg(self.name).get_openjpeg_version()
+        return carried_by(f"OpenJPEG {'.'.join(str(number) for number in numbers)}", "pylibjpeg-openjpeg")
 
     @property
     def error_bound(self) -> int | None:
@@ -107,7 +89,7 @@ class Jpeg2000:
             Where the library is missing.
         """
         admit(self, raster)
-        library, form = _library(), raster.format
+        library, form = openjpeg(self.name), raster.format
         with writing(self.name, "OpenJPEG"):
             with _ENCODER:
                 code = library.encode_array(
@@ -129,7 +111,7 @@ class Jpeg2000:
         CodecUnavailable
             Where the library is missing.
         """
-        library = _library()
+        library = openjpeg(self.name)
         check_jpeg2000(code, format, shape, reversible=False)
         with reading(self.name, "OpenJPEG"):
             decoded = library.decode(code, 0)

@@ -46,9 +46,9 @@ class Entry:
     kind: str
     """Name of the class in the module."""
     library: str
-    """Distribution that carries it."""
+    """Distribution, or distributions, that carry it."""
     needs: str
-    """Module of that distribution whose presence tells whether the codec works here."""
+    """Modules, parted by spaces, whose presence tells whether the codec works here."""
     dial: str
     """Name of the setting by which its size is set; '' where it cannot be asked for a size."""
     archive_can_write: bool
@@ -61,21 +61,27 @@ class Entry:
         return bool(self.dial)
 
 
+_IMAGECODECS = ("imagecodecs", "imagecodecs")
+_OPENJPEG = ("pylibjpeg-openjpeg", "openjpeg")
+_BOTH = ("imagecodecs and pylibjpeg-openjpeg", "imagecodecs openjpeg")
+_NONE: Settings = MappingProxyType({})
+
 ENTRIES: Mapping[str, Entry] = MappingProxyType(
     {
         "jpeg2000": Entry(
-            "safecheck.codecs.jpeg2000",
-            "Jpeg2000",
-            "pylibjpeg-openjpeg",
-            "openjpeg",
-            "ratio",
-            True,
-            ("jpeg2000-reversible", MappingProxyType({})),
+            "safecheck.codecs.jpeg2000", "Jpeg2000", *_OPENJPEG, "ratio", True, ("jpeg2000-reversible", _NONE)
         ),
-        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLs", "imagecodecs", "imagecodecs", "", True),
-        "jpeg2000-reversible": Entry(
-            "safecheck.codecs.reversible", "Jpeg2000Lossless", "imagecodecs", "imagecodecs", "", True
+        "jpeg": Entry("safecheck.codecs.jpeg", "Jpeg", *_IMAGECODECS, "quality", True),
+        "jpegls": Entry("safecheck.codecs.jpegls", "JpegLs", *_IMAGECODECS, "near", True, ("jpegls-reversible", _NONE)),
+        "htj2k": Entry("safecheck.codecs.htj2k", "Htj2k", *_BOTH, "step", True, ("htj2k-reversible", _NONE)),
+        "jpegxl": Entry(
+            "safecheck.codecs.jpegxl", "JpegXl", *_IMAGECODECS, "distance", True, ("jpegxl-reversible", _NONE)
         ),
+        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLsLossless", *_IMAGECODECS, "", True),
+        "jpeg2000-reversible": Entry("safecheck.codecs.reversible", "Jpeg2000Lossless", *_IMAGECODECS, "", True),
+        "htj2k-reversible": Entry("safecheck.codecs.htj2k", "Htj2kLossless", *_BOTH, "", True),
+        "jpegxl-reversible": Entry("safecheck.codecs.jpegxl", "JpegXlLossless", *_IMAGECODECS, "", True),
+        "rle-reversible": Entry("safecheck.codecs.rle", "RleLossless", *_IMAGECODECS, "", True),
         # A step so fine that no sum of 64 x 64 quantiser errors reaches half a stored unit.
         "tiled": Entry(
             "safecheck.codecs.tile.codec",
@@ -128,7 +134,7 @@ def available(name: str) -> bool:
     UsageError
         If no codec has that name.
     """
-    return importlib.util.find_spec(entry(name).needs) is not None
+    return all(importlib.util.find_spec(module) is not None for module in entry(name).needs.split())
 
 
 def codec(name: str, **settings: str | float | bool) -> Codec:

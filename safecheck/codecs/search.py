@@ -21,8 +21,10 @@ __all__ = ["MOST_ENCODES", "Dial", "End", "Found", "Step", "bracket", "tell", "t
 
 MOST_ENCODES = 12
 """No frame is encoded more often than this on the way to a size."""
-_ONE_SIDED = 3
+_ONE_SIDED = 5
 """After so many codes on the same side of the asked size the end of the dial is tried."""
+_BEYOND = 1.25
+"""From the third code on the same side on, the secant is followed so much further: on a bent curve it falls short."""
 _NARROW = 1e-3
 """A bracket narrower than this, in natural logarithms of the dial, holds one stair of the size."""
 
@@ -143,15 +145,13 @@ def _next(points: list[_Point], exponent: float, low: float, high: float) -> flo
         slope = (last.excess - points[-2].excess) / (last.at - points[-2].at)
     if slope * exponent <= 0 or abs(slope) < abs(exponent) / 10:
         return wanted
-    return min(max(last.at - last.excess / slope, low), high)
+    reach = _BEYOND if len(points) > 1 else 1.0
+    return min(max(last.at - reach * last.excess / slope, low), high)
 
 
 def _pair(above: list[_Point], below: list[_Point]) -> tuple[_Point, _Point]:
-    """Nearest sizes on both sides of the asked one; of equal sizes the dials that lie nearest to each other."""
-    least = min(point.excess for point in above)
-    most = max(point.excess for point in below)
-    pairs = [(a, b) for a in above if a.excess == least for b in below if b.excess == most]
-    return min(pairs, key=lambda pair: abs(pair[0].at - pair[1].at))
+    """Two dials next to each other whose codes lie on both sides of the asked size."""
+    return min(((a, b) for a in above for b in below), key=lambda pair: abs(pair[0].at - pair[1].at))
 
 
 def _inside(points: list[_Point], above: _Point, below: _Point) -> float | None:

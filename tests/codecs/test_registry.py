@@ -9,14 +9,15 @@ import pytest
 
 from safecheck.codecs import registry
 from safecheck.codecs.jpeg2000 import Jpeg2000
-from safecheck.codecs.reversible import JpegLs
+from safecheck.codecs.jpegls import JpegLs
 from safecheck.errors import CodecUnavailable, UsageError
 
 
 def test_codecs_that_an_archive_can_write_stand_first() -> None:
     writable = [registry.entry(name).archive_can_write for name in registry.names()]
     assert writable == sorted(writable, reverse=True)
-    assert registry.rated_names() == ("jpeg2000", "tiled")
+    assert registry.rated_names() == ("jpeg2000", "jpeg", "jpegls", "htj2k", "jpegxl", "tiled")
+    assert all(registry.codec(name).reversible for name in registry.reversible_names())
 
 
 def test_the_registry_loads_no_codec_library() -> None:
@@ -30,7 +31,7 @@ def test_the_registry_loads_no_codec_library() -> None:
 
 def test_a_codec_is_made_by_name_and_settings() -> None:
     assert registry.codec("jpeg2000", ratio=8) == Jpeg2000(8.0)
-    assert registry.from_settings("jpegls-reversible", JpegLs().settings) == JpegLs()
+    assert registry.from_settings("jpegls", JpegLs(3).settings) == JpegLs(3)
 
 
 def test_a_whole_number_is_the_same_setting_as_its_float() -> None:
@@ -45,7 +46,7 @@ def test_text_of_settings_is_sorted_and_without_spaces() -> None:
 @pytest.mark.parametrize(
     ("name", "text", "message"),
     [
-        ("jpeg", "{}", "codec 'jpeg' is unknown, expected one of"),
+        ("gif", "{}", "codec 'gif' is unknown, expected one of"),
         ("jpeg2000", '{"rato":10}', "setting 'rato' is unknown"),
         ("jpeg2000", "{}", "setting 'ratio' is missing"),
         ("jpeg2000", '{"ratio":1}', r"ratio is 1, expected 1\.001 to"),
@@ -54,7 +55,13 @@ def test_text_of_settings_is_sorted_and_without_spaces() -> None:
         ("jpeg2000", '{"ratio":NaN}', "ratio is nan"),
         ("jpeg2000", "[10]", "expected a table"),
         ("jpeg2000", "{", "not JSON"),
-        ("jpegls-reversible", '{"precision":"12 bits","signed_as":"as is"}', "settings are"),
+        ("jpegls-reversible", '{"precision":"12 bits"}', "setting 'precision' is unknown"),
+        ("jpeg", '{"quality":0}', "quality is 0, expected a whole number from 1 to 100"),
+        ("jpeg", '{"quality":85.5}', r"quality is 85\.5, expected a whole number"),
+        ("jpegls", '{"near":256}', "near is 256, expected a whole number from 1 to 255"),
+        ("htj2k", '{"step":0}', "step is 0, expected 1e-06 to 0.5"),
+        ("jpegxl", '{"distance":0,"effort":7}', r"distance is 0, expected 0\.01 to 25; even 0 would not be lossless"),
+        ("jpegxl", '{"distance":1,"effort":10}', "effort is 10, expected a whole number from 1 to 9"),
     ],
 )
 def test_wrong_names_and_settings_are_named(name: str, text: str, message: str) -> None:
@@ -77,4 +84,4 @@ def test_a_missing_library_makes_a_codec_unavailable(monkeypatch: pytest.MonkeyP
 def test_availability_is_told_without_loading() -> None:
     assert registry.available("jpeg2000")
     with pytest.raises(UsageError, match="unknown"):
-        registry.available("jpeg")
+        registry.available("gif")
