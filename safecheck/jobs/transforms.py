@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import hashlib
-import itertools
 import os
 from collections import Counter
 from collections.abc import Iterator
@@ -25,6 +24,7 @@ from safecheck.record.transforms import LeftAside, StudiedFrame, StudyBasis, Tra
 from safecheck.regions.region import RegionSet
 from safecheck.report.transform_study import cautions_text, draw_study
 from safecheck.runner.pool import cores
+from safecheck.runner.references import references_of
 from safecheck.study import study_frame
 from safecheck.study.tiles import TRANSFORMS, basis
 from safecheck.wording import sentence_of
@@ -35,7 +35,6 @@ __all__ = [
     "TABLE_FILE",
     "TransformRequest",
     "lines_of",
-    "middle_frame",
     "study_transforms",
 ]
 
@@ -111,18 +110,19 @@ def _check_folder(request: TransformRequest) -> None:
 
 def _study(request: TransformRequest, inputs: Inputs, regions: RegionSet | None, tell: Tell) -> TransformStudy:
     """Study frames until there are as many as asked for."""
-    series = [list(group) for _, group in itertools.groupby(inputs.assessed, _series_of)]
+    series = references_of(inputs.assessed)
     left: Counter[tuple[Literal["file", "frame"], str]] = Counter(("file", each.reason) for each in inputs.left_out)
     left.update(("file", "not-selected") for _ in inputs.out_of_scope)
     frames: list[StudiedFrame] = []
-    for group in series:
+    for references in series.values():
         if len(frames) == request.most_frames:
             break
         tell(f"Studying frames: {len(frames) + 1} of at most {min(request.most_frames, len(series))}")
-        found = _study_middle(group, regions, with_images=request.with_images)
-        if isinstance(found, StudiedFrame):
-            frames.append(found)
-        else:
+        for reference in references:
+            found = _study_one(*reference, regions, with_images=request.with_images)
+            if isinstance(found, StudiedFrame):
+                frames.append(found)
+                break
             left["frame", found] += 1
     return TransformStudy(
         frames=tuple(frames),
@@ -135,38 +135,15 @@ def _study(request: TransformRequest, inputs: Inputs, regions: RegionSet | None,
     )
 
 
-def _series_of(instance: Instance) -> tuple[str, str, str]:
-    return instance.patient, instance.study, instance.series
-
-
-def _study_middle(group: list[Instance], regions: RegionSet | None, *, with_images: bool) -> StudiedFrame | str:
-    """Study the middle frame of a series, or say by its reason why not."""
-    instance, number = middle_frame(group)
+def _study_one(instance: Instance, number: int, regions: RegionSet | None, *, with_images: bool) -> StudiedFrame | str:
+    """Study a frame, or say by its reason why not."""
     try:
         with open_instance(instance) as reader:
             frame = reader.frame(number)
     except (InputRefused, InputExcluded) as error:
         return error.reason
-    return (
-        study_frame(frame, regions, with_images=with_images, threads=min(cores(), MOST_THREADS))
-        or "every pixel is padding"
-    )
-
-
-def middle_frame(group: list[Instance]) -> tuple[Instance, int]:
-    """Give the middle frame of a series: along the slice normal where every instance lies on it, else by number.
-
-    Of an even number of frames it is the earlier of the two in the middle.
-    """
-    positions = [each.origin.slice_position_mm for each in group]
-    known = [position for position in positions if position is not None]
-    along = known if len(known) == len(group) else [0.0] * len(group)
-    order = sorted(
-        range(len(group)),
-        key=lambda index: (along[index], group[index].instance_number or 0, group[index].instance, group[index].input),
-    )
-    frames = [(group[index], number) for index in order for number in range(1, group[index].frames + 1)]
-    return frames[(len(frames) - 1) // 2]
+    threads = min(cores(), MOST_THREADS)
+    return study_frame(frame, regions, with_images=with_images, threads=threads) or "every pixel is padding"
 
 
 def _bases() -> Iterator[StudyBasis]:
@@ -192,4 +169,5 @@ def lines_of(study: TransformStudy) -> list[str]:
     lines += [
         f"{item.number} {item.what}{'s' * (item.number > 1)}: {sentence_of(item.reason)}" for item in study.left_aside
     ]
-    return [*lines, f"{len(study.frames)} frames studied, at most {study.most_frames}"]
+    left = study.series - len(study.frames)
+    return [*lines, f"{len(study.frames)} frames studied, at most {study.most_frames}; {left} series not studied"]

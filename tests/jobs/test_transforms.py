@@ -3,9 +3,9 @@ from __future__ import annotations
 import csv
 from pathlib import Path
 
+import pydicom
 import pytest
 
-from safecheck.dicom.instance import Instance, Source
 from safecheck.errors import UsageError
 from safecheck.jobs.transforms import (
     CAUTIONS_FILE,
@@ -13,55 +13,10 @@ from safecheck.jobs.transforms import (
     TABLE_FILE,
     TransformRequest,
     lines_of,
-    middle_frame,
     study_transforms,
 )
 from safecheck.wording import lint
 from synthetic_studies import ct_body, mr_head
-from tests.evaluation.frames import origin
-
-
-def instance(number: int | None, position_mm: float | None = None, frames: int = 1) -> Instance:
-    name = f"I-{number}-{position_mm}"
-    return Instance(
-        source=Source(Path("x")),
-        input=name,
-        patient="P",
-        study="S",
-        series="R",
-        instance=name,
-        series_number=1,
-        instance_number=number,
-        frames=frames,
-        object_class="CT Image Storage",
-        rows=8,
-        columns=8,
-        bits_allocated=16,
-        bits_stored=12,
-        photometric="MONOCHROME2",
-        size_bytes=1,
-        pixel_bytes=1,
-        derived=False,
-        origin=origin(slice_position_mm=position_mm),
-        uid="1",
-    )
-
-
-# (instance number, position along the normal, frames) of each instance; which one, and which of its frames.
-MIDDLES = {
-    "by position, not by number": ([(1, 30.0, 1), (2, 10.0, 1), (3, 20.0, 1)], 3, 1),
-    "by number where one lies nowhere": ([(3, None, 1), (1, 10.0, 1), (2, 20.0, 1)], 2, 1),
-    "the earlier of two": ([(1, 1.0, 1), (2, 2.0, 1), (3, 3.0, 1), (4, 4.0, 1)], 2, 1),
-    "one": ([(7, None, 1)], 7, 1),
-    "frames of one instance": ([(1, None, 9)], 1, 5),
-    "frames of two instances": ([(2, None, 3), (1, None, 4)], 1, 4),
-}
-
-
-@pytest.mark.parametrize(("group", "number", "frame"), MIDDLES.values(), ids=MIDDLES)
-def test_the_middle_frame_of_a_series(group: list[tuple[int, float | None, int]], number: int, frame: int) -> None:
-    found, at = middle_frame([instance(*each) for each in group])
-    assert (found.instance_number, at) == (number, frame)
 
 
 @pytest.fixture(scope="module")
@@ -115,7 +70,18 @@ def test_where_nothing_can_be_studied_nothing_is_written(studies: Path, tmp_path
     assert not (tmp_path / "out").exists()
 
 
-def test_a_frame_that_is_refused_is_named_and_the_next_series_is_studied(tmp_path: Path) -> None:
+def test_where_the_middle_frame_is_refused_the_next_nearest_is_studied_and_it_is_counted(tmp_path: Path) -> None:
+    truth = ct_body(tmp_path / "in", seed=1, rows=64, columns=64, slices=3)
+    broken = truth.files[1]
+    dataset = pydicom.dcmread(broken)
+    dataset.RescaleSlope = 0
+    dataset.save_as(broken)
+    study = study_transforms(request(tmp_path / "in", tmp_path / "out"), lambda _: None)
+    assert [frame.key.instance_number for frame in study.frames] == [1]
+    assert [(item.what, item.reason, item.number) for item in study.left_aside] == [("frame", "rescale", 1)]
+
+
+def test_a_file_that_is_refused_is_named_and_the_next_series_is_studied(tmp_path: Path) -> None:
     truth = ct_body(tmp_path / "in" / "ct", seed=1, rows=64, columns=64, slices=1)
     mr_head(tmp_path / "in" / "mr", seed=2, rows=64, columns=64, slices=1)
     content = truth.files[0].read_bytes()

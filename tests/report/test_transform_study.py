@@ -61,6 +61,7 @@ def test_the_first_page_says_what_was_studied_and_what_was_left_aside() -> None:
     for words in (
         "Transform study",
         "1 frame of 3 series",
+        "2 series were not studied",
         "12 files read",
         "2 files: a localizer",
         "1 frame: every pixel is padding",

@@ -73,9 +73,11 @@ def _title(study: TransformStudy, table_sha256: str) -> Title:
 
 def _studied(study: TransformStudy) -> tuple[str, ...]:
     """What was studied."""
+    left = study.series - len(study.frames)
+    rest = f" {plural(left, 'series was', 'series were')} not studied." if left else ""
     return (
         f"{plural(len(study.frames), 'frame')} of {plural(study.series, 'series', 'series')} with images to study: the "
-        f"middle frame of each, for at most {plural(study.most_frames, 'series', 'series')}.",
+        f"middle frame of each, for at most {plural(study.most_frames, 'series', 'series')}.{rest}",
         f"Every figure of these pages and many more stand in {TABLE_NAME}, each with its unit.",
     )
 
