@@ -112,9 +112,14 @@ class CandidatePlan(Document):
         basis = "" if self.basis is SizeBasis.BITS_STORED else f" of {self.basis}"
         per = " per series" if self.per == "series" else ""
         ratio = "" if self.ratio is None else f" {self.ratio:g}:1{basis}{per}"
-        settings = "".join(f", {key} {value}" for key, value in sorted(self.settings.items()))
+        settings = "".join(f", {key} {_in_name(value)}" for key, value in sorted(self.settings.items()))
         outside = ", outside flattened" if self.outside == "flatten" else ""
         return f"{self.codec}{ratio}{settings}{outside}"
+
+
+def _in_name(value: str | int | float | bool) -> str:
+    """A setting as names hold it: canonical JSON knows one number 8, which a plan may write 8 or 8.0."""
+    return f"{value:.12g}" if isinstance(value, float) else str(value)
 
 
 class WindowPlan(Document):

@@ -54,7 +54,7 @@ def test_candidates_by_setting_and_per_series_are_read(tmp_path: Path) -> None:
     by_setting = 'codec = "tiled"\nsettings = { size = 16, step = 4.0 }'
     per_series = 'codec = "jpeg2000"\nratio = 10\nper = "series"'
     found = load_plan(plan(tmp_path, by_setting, per_series)).plan.candidates
-    assert [each.name for each in found] == ["tiled, size 16, step 4.0", "jpeg2000 10:1 per series"]
+    assert [each.name for each in found] == ["tiled, size 16, step 4", "jpeg2000 10:1 per series"]
 
 
 def lacking(monkeypatch: pytest.MonkeyPatch, codec: str) -> None:

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import json
 from typing import Any
 
 import pytest
+import rfc8785
 
 from safecheck.documents import from_mapping, from_toml
 from safecheck.errors import DocumentError
@@ -146,3 +148,14 @@ def test_two_candidates_of_one_name_by_setting_are_refused() -> None:
     )
     with pytest.raises(DocumentError, match="'jpeg, quality 85' twice"):
         from_toml(Plan, twice)
+
+
+@pytest.mark.parametrize("value", [8, 8.0, 0.1, 2.0**-7, 1e-9, 123456.5, True, "perceptual"])
+def test_a_name_outlives_the_canonical_form_of_the_plan(value: float | bool | str) -> None:
+    plan = from_toml(Plan, PLAN)
+    candidate = CandidatePlan(codec="tiled", settings={"step": value})
+    changed = plan.model_copy(update={"candidates": (candidate,)})
+    content = json.loads(rfc8785.dumps(changed.model_dump(mode="json")))
+    again = Plan.model_validate_json(json.dumps(content), strict=True)
+    assert again.candidates[0].name == candidate.name
+    assert again.candidates[0].settings == candidate.settings
