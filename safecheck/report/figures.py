@@ -28,8 +28,11 @@ from safecheck.report.theme import (
 __all__ = ["bars_drawing", "chart_drawing", "nice_ticks", "ratio_ticks"]
 
 _SMALL = 7.0
-_DASHES: tuple[tuple[float, ...] | None, ...] = (None, (4, 2), (1.4, 1.6), (7, 2, 1.5, 2), (2.5, 1.2), (9, 3))
-_GREYS = (INK, ACCENT, MID, INK, ACCENT, MID)
+_DASHES: tuple[tuple[float, ...] | None, ...] = (
+    *(None, (4, 2), (1.4, 1.6), (7, 2, 1.5, 2), (2.5, 1.2), (9, 3)),
+    *((1, 3), (6, 1.5), (3, 3, 1, 3)),
+)
+_GREYS = (INK, ACCENT, MID) * 3
 _RATIOS = (1, 1.5, 2, 3, 4, 5, 6, 8, 10, 15, 20, 30, 40, 60, 80, 100, 150, 200, 300, 400, 600, 800, 1000)
 
 
@@ -161,16 +164,16 @@ def _dash(index: int) -> list[float] | None:
 
 
 def _marker(index: int, x: float, y: float, colour: object) -> Group:
-    """Filled circle, open square, filled triangle, open diamond, filled square, open triangle upside down."""
+    """Circle, square, triangle, diamond, triangle upside down, filled or open; nine in all."""
     r = 2.4
     kind = index % len(_GREYS)
-    fill = colour if kind in (0, 2, 4) else WHITE
+    fill = colour if kind in (0, 2, 4, 7) else WHITE
     drawn = {"fillColor": fill, "strokeColor": colour, "strokeWidth": 0.9}
-    if kind == 0:
+    if kind in (0, 6):
         return Group(Circle(x, y, r, **drawn))
     if kind in (1, 4):
         return Group(Rect(x - r, y - r, 2 * r, 2 * r, **drawn))
-    if kind == 2:
+    if kind in (2, 8):
         return Group(Polygon([x - r * 1.2, y - r, x + r * 1.2, y - r, x, y + r * 1.3], **drawn))
     if kind == 5:
         return Group(Polygon([x - r * 1.2, y + r, x + r * 1.2, y + r, x, y - r * 1.3], **drawn))

@@ -64,13 +64,12 @@ def beyond(view: View, stratum: StratumEntry, candidates: Sequence[CandidateEntr
 
 
 def _codec_name(item: CandidateEntry) -> str:
-    """Name of a curve: codec and what was asked of it, with settings beside the dial kept apart."""
+    """Name of a curve: the codec, with settings other than its dial kept apart, however it was asked."""
     if item.role == "delivered":
         return "delivered copies"
     _, *settings = item.candidate.split(", ")
     others = [setting for setting in settings if not setting.startswith(f"{item.dial} ")]
-    asked = {"setting": " by setting", "ratio per series": " per series"}.get(item.asked, "")
-    return ", ".join((f"{item.codec}{asked}", *others))
+    return ", ".join((item.codec, *others))
 
 
 def _point(view: View, stratum: str, candidate: str, measure: str) -> Point | None:
