@@ -79,17 +79,13 @@ def split_error(coefficients: Reals, inner: npt.NDArray[np.bool_], coded: Coded)
     """
     if not len(coefficients):
         return None
-    size = coded.size
+    from safecheck.study.kernels import split_squares
+
+    size, step = coded.size, coded.step
     moved = forward(as_tiles(in_whole_tiles(coded.error, size), size)[inner], basis(coded.transform, size))
-    return _split(moved * moved, np.abs(coefficients + moved) >= coded.step / 2, coded.step)
-
-
-def _split(squares: Reals, back: npt.NDArray[np.bool_], step: float) -> Split:
-    """Shares from squared errors and whether each coefficient came back."""
-    count, total = int(np.count_nonzero(back)), float(squares.sum())
-    rounding = float(squares[back].sum())
+    count, total, rounding = split_squares(coefficients, moved, step / 2)
     return Split(
-        kept_share=count / back.size,
+        kept_share=count / moved.size,
         dropped=1 - rounding / total if total > 0 else None,
         rounding_over_law=rounding / count / (step * step / 12) if count else None,
     )

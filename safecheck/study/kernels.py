@@ -8,7 +8,7 @@ import numpy as np
 import numpy.typing as npt
 from numba import njit
 
-__all__ = ["energies_below", "rank", "transform"]
+__all__ = ["energies_below", "rank", "split_squares", "transform"]
 
 Array: TypeAlias = npt.NDArray[Any]
 
@@ -86,3 +86,32 @@ def energies_below(tiles: Array, keys: Array, least: Array, energies: Array) -> 
             if keys[tile, k] < least[tile]:
                 total += tiles[tile, k] * tiles[tile, k]
         energies[tile] = total
+
+
+@njit(cache=True, nogil=True)
+def split_squares(coefficients: Array, moved: Array, least: float) -> tuple[int, float, float]:
+    """Tell squared errors apart by whether a coefficient came back.
+
+    Parameters
+    ----------
+    coefficients, moved
+        (tiles, coefficients) before, and what was added to them.
+    least
+        Size from which a coefficient after counts as one that came back.
+
+    Returns
+    -------
+    tuple
+        How many came back, the squared error of all, and of those that came back.
+    """
+    count = 0
+    total = 0.0
+    rounding = 0.0
+    for tile in range(moved.shape[0]):
+        for k in range(moved.shape[1]):
+            square = moved[tile, k] * moved[tile, k]
+            total += square
+            if abs(coefficients[tile, k] + moved[tile, k]) >= least:
+                count += 1
+                rounding += square
+    return count, total, rounding
