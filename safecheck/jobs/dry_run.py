@@ -6,7 +6,6 @@ import time
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from safecheck.codecs import registry
 from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.evaluation import evaluate, load_kernels
@@ -15,7 +14,7 @@ from safecheck.jobs.plans import is_available
 from safecheck.jobs.series import SeriesAssignments
 from safecheck.record.rows import FrameResult
 from safecheck.runner.pool import cores
-from safecheck.runner.progress import weight_of
+from safecheck.runner.progress import full_controls_of, weight_of
 from safecheck.runner.tasks import Task
 from safecheck.statistics.bounds import patients_needed
 from safecheck.wording import NO_BOUND, SHORT_CAUTION, sentence_of
@@ -88,19 +87,13 @@ def _cost(prepared: Prepared) -> Iterator[str]:
         workers = prepared.request.workers or cores()
         expected = max(1.0, trial.seconds_per_weight * total / workers)
         yield f"Time: about {expected:.0f} s on {workers} workers, after compiled code is prepared"
-        controls = sum(frame.full_controls for frame in frames) * _rows_of_controls(prepared)
+        controls = sum(frame.full_controls for frame in frames) * full_controls_of(prepared.assignment)
         copies = sum(frame.delivered is not None for frame in frames)
         measures = len(frames) * len(trial.rows.measures) + controls + copies
         windows, regions = len(frames) * len(trial.rows.windows), len(frames) * len(trial.rows.regions)
         yield f"Rows: about {measures} of measures, {windows} of windows, {regions} of regions"
     disk = len(frames) * (len(prepared.assignment.candidates) + 2) * _BYTES_PER_FRAME_AND_CANDIDATE
     yield f"Disk: about {max(disk / 1e6, 0.1):.1f} MB"
-
-
-def _rows_of_controls(prepared: Prepared) -> int:
-    """Rows of a frame's full controls: each reversible codec, repeat and over-compressed of each codec, planted."""
-    codecs = {candidate.codec for candidate in prepared.assignment.candidates}
-    return len(registry.reversible_names()) + 2 * len(codecs) + 1
 
 
 def _tried(prepared: Prepared, task: Task) -> _Trial | None:

@@ -4,13 +4,12 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+from safecheck.codecs.registry import reversible_names
 from safecheck.evaluation import Assignment
 from safecheck.runner.tasks import Task, pixels_of
 
-__all__ = ["Pace", "Progress", "kind_of", "weight_of"]
+__all__ = ["Pace", "Progress", "full_controls_of", "kind_of", "weight_of"]
 
-_FULL_CONTROLS = 4
-"""Further treatments of a frame that carries the full controls: repeat, over-compressed, planted, reversible."""
 _TASKS_NEEDED = 3
 """Below so many finished tasks nothing is said about the time that remains."""
 
@@ -31,13 +30,18 @@ class Progress:
     """What happened that is worth telling, or ''."""
 
 
+def full_controls_of(assignment: Assignment) -> int:
+    """About how many treatments a frame's full controls are: reversible codecs, two of each codec, and planted."""
+    codecs = {candidate.codec for candidate in assignment.candidates}
+    return len(reversible_names()) + 2 * len(codecs) + 1
+
+
 def weight_of(task: Task, assignment: Assignment) -> float:
     """Work in a task: samples times treatments, of which the pipe's own reversible control is one."""
-    each = 1 + len(assignment.candidates)
+    each, full = 1 + len(assignment.candidates), full_controls_of(assignment)
     return float(
         sum(
-            pixels_of(frame.instance)
-            * (each + (frame.delivered is not None) + (_FULL_CONTROLS if frame.full_controls else 0))
+            pixels_of(frame.instance) * (each + (frame.delivered is not None) + (full if frame.full_controls else 0))
             for frame in task.frames
         )
     )

@@ -4,6 +4,7 @@ import random
 
 import pytest
 
+from safecheck.codecs.registry import reversible_names
 from safecheck.evaluation import Assignment
 from safecheck.runner.progress import Pace, weight_of
 from tests.runner.studies import ASSIGNMENT, instance, tasks_of
@@ -13,7 +14,9 @@ def test_work_is_samples_times_treatments() -> None:
     # Computed from the stated definition: 16 x 16 samples, two candidates, the pipe's control; the only frame of its
     # stratum carries the four full controls as well.
     task = tasks_of([instance("a")])[0]
-    assert weight_of(task, ASSIGNMENT) == 256 * (2 + 1 + 4)
+    # Of the one codec: repeat and over-compressed; each reversible codec; planted.
+    controls = 2 + len(reversible_names()) + 1
+    assert weight_of(task, ASSIGNMENT) == 256 * (2 + 1 + controls)
     plain = dataclasses.replace(task.frames[0], full_controls=False)
     assert weight_of(dataclasses.replace(task, frames=(plain,)), ASSIGNMENT) == 256 * 3
     delivered = dataclasses.replace(plain, delivered=instance("b"))
