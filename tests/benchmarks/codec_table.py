@@ -95,9 +95,7 @@ def table(name: str, raster: Raster, totals: dict[str, list[tuple[float, int, fl
     """Print the table of one frame."""
     bits = raster.format.bits_stored
     say(f"\n### {name}: {raster.shape[0]} x {raster.shape[1]}, {bits} bits stored, {raster.format.photometric}\n")
-    say(
-        "| codec | asked | size off by % | reached | encodes | encode ms | decode ms | PSNR dB | gain over JPEG 2000 dB |"
-    )
+    say("| codec | asked | size off by % | reached | encodes | encode ms | decode ms | PSNR dB | over JPEG 2000, dB |")
     say("| --- | --- | --- | --- | --- | --- | --- | --- | --- |")
     reference, whole = registry.rated(REFERENCE), filled(raster)
     for label, codec in codecs():
