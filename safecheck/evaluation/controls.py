@@ -13,6 +13,7 @@ import numpy as np
 from safecheck.codecs.base import Codec, Reached
 from safecheck.codecs.registry import available, codec, reversible_form, reversible_names
 from safecheck.codecs.reversible import cheapest
+from safecheck.errors import CodecUnavailable
 from safecheck.evaluation.assignment import Assignment, Candidate
 from safecheck.evaluation.original import Original
 from safecheck.evaluation.rows import measure_row
@@ -71,11 +72,19 @@ def full_controls(
 
 def _exact_codecs(run: tuple[Candidate, ...]) -> tuple[Codec, ...]:
     """Every reversible codec of this machine but the pipe's own, and the reversible form of each codec that was run."""
-    found = [codec(name) for name in reversible_names() if available(name)]
+    found = [made for name in reversible_names() if available(name) and _works(made := codec(name))]
     found += [form for candidate in run if (form := reversible_form(candidate.codec)) is not None]
     by_name = {each.name: each for each in found}
     by_name.pop(cheapest().name, None)
     return tuple(by_name.values())
+
+
+def _works(made: Codec) -> bool:
+    """Whether the library of a codec is not only there, but was built with the codec."""
+    try:
+        return bool(made.version)
+    except CodecUnavailable:
+        return False
 
 
 def _reversed(original: Original, exact: Codec) -> tuple[Treated, MeasureRow]:

@@ -12,7 +12,8 @@ import numpy as np
 import pytest
 
 from safecheck.codecs import registry
-from safecheck.evaluation import Assignment, Candidate, SeriesDial, evaluate, find_dials
+from safecheck.errors import CodecUnavailable
+from safecheck.evaluation import Assignment, Candidate, SeriesDial, controls, evaluate, find_dials
 from safecheck.frames import PixelFormat, Raster, SizeBasis
 from safecheck.policy.plan import CandidatePlan
 from safecheck.record.rows import FrameResult, MeasureRow
@@ -143,3 +144,16 @@ def test_an_assignment_without_its_series_cannot_be_carried_out() -> None:
     per_series = dataclasses.replace(candidate(ratio=6, per="series"), dial=None)
     result = run(per_series)
     assert result.notes == ("near 6:1 per series not run: no setting was sought for its series",)
+
+
+def test_a_reversible_codec_that_its_library_was_built_without_is_left_out(monkeypatch: pytest.MonkeyPatch) -> None:
+    class Lacking(registry.codec("jpeg2000-reversible").__class__):  # type: ignore[misc]
+        @property
+        def version(self) -> str:
+            raise CodecUnavailable("built without it")
+
+    honest = registry.codec
+    monkeypatch.setattr(controls, "codec", lambda name: Lacking() if name == "jpeg2000-reversible" else honest(name))
+    result = run(candidate(settings={"near": 1}), full_controls=True)
+    assert "jpeg2000-reversible" not in {row.codec for row in rows(result, "reversible")}
+    assert all(row.control_held for row in result.measures if row.control_held is not None)
