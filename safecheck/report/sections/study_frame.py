@@ -39,7 +39,7 @@ from safecheck.report.sections.study_words import (
 
 __all__ = ["basis_section", "frame_section"]
 
-_WHOLE_PAGE_MM = 200.0
+_WHOLE_PAGE_MM = 240.0
 """Each frame begins on a page of its own."""
 _SPAN = 3.0
 """Greys span so many times the root mean square of the cosine transform's error at the usual size."""

@@ -87,8 +87,8 @@ def _left_aside(study: TransformStudy) -> tuple[str, ...]:
     lines = [
         f"{plural(item.number, item.what)}: {sentence_of(item.reason)}." for item in study.left_aside if item.number
     ]
-    total = f"{plural(study.files, 'file')} read."
-    return (total, *lines) if lines else (f"{total} Nothing was left aside.",)
+    total = f"{plural(study.files, 'file')} read"
+    return (f"{total}.", *lines) if lines else (f"{total}; none was excluded, no frame refused.",)
 
 
 def _answer(figures: Sequence[FrameFigures]) -> tuple[Block, ...]:
