@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import partial
 from typing import ClassVar
@@ -9,7 +10,14 @@ from typing import ClassVar
 import numpy as np
 
 from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Carriage, Encoded, Reached, Settings, admit
-from safecheck.codecs.tile.settings import BITSTREAM_VERSION, SIZES, TRANSFORMS, WEIGHTINGS
+from safecheck.codecs.tile.settings import (
+    ADAPTIVE,
+    ADAPTIVE_VERSION,
+    BITSTREAM_VERSION,
+    SIZES,
+    TRANSFORMS,
+    WEIGHTINGS,
+)
 from safecheck.codecs.tile.steps import nearest_step, step_at
 from safecheck.frames import PixelFormat, Raster, Samples
 
@@ -32,8 +40,8 @@ class Tiled:
     reversible: ClassVar[bool] = False
     dial: ClassVar[str] = "step"
 
-    size: int = 8
-    """Tile size in pixels, one of `SIZES`."""
+    size: int | str = 8
+    """Tile size in pixels, one of `SIZES`, or `ADAPTIVE`: all of them, chosen over the frame."""
     transform: str = "cosine"
     """One of `TRANSFORMS`."""
     weighting: str = "flat"
@@ -44,7 +52,7 @@ class Tiled:
     def __post_init__(self) -> None:
         """Check values; move the step to the grid, so that equal codes have equal settings."""
         for value, choices, what in (
-            (self.size, SIZES, "size"),
+            (self.size, (*SIZES, ADAPTIVE), "size"),
             (self.transform, TRANSFORMS, "transform"),
             (self.weighting, WEIGHTINGS, "weighting"),
         ):
@@ -62,7 +70,7 @@ class Tiled:
     @property
     def version(self) -> str:
         """Version of the bitstream."""
-        return f"bitstream {BITSTREAM_VERSION}"
+        return f"bitstream {ADAPTIVE_VERSION if self.size == ADAPTIVE else BITSTREAM_VERSION}"
 
     @property
     def error_bound(self) -> int | None:
@@ -83,16 +91,43 @@ class Tiled:
     def encode(self, raster: Raster) -> bytes:
         """See `Codec.encode`."""
         admit(self, raster)
+        return self._writer(raster)(nearest_step(self.step))
+
+    def _writer(self, raster: Raster) -> Callable[[int], bytes]:
+        """Analyse a raster; step index -> code."""
+        if isinstance(self.size, str):
+            from safecheck.codecs.tile.adaptive import coding as adaptive
+
+            return partial(adaptive.write, adaptive.analyse(raster, self.transform, self.weighting))
         from safecheck.codecs.tile import coding
 
+        return partial(coding.write, coding.analyse(raster, self.transform, self.weighting, self.size))
+
+    def _search(self, raster: Raster, target_bytes: float) -> tuple[int, bytes, int]:
+        """Step index, code and number of encodes."""
+        if isinstance(self.size, str):
+            from safecheck.codecs.tile.adaptive import coding as adaptive
+
+            return adaptive.search(adaptive.analyse(raster, self.transform, self.weighting), target_bytes)
+        from safecheck.codecs.tile import coding, rate
+
         analysis = coding.analyse(raster, self.transform, self.weighting, self.size)
-        return coding.write(analysis, nearest_step(self.step))
+        counts, fixed_bytes = coding.counts(analysis), coding.fixed_bytes(analysis)
+        write, sample = partial(coding.write, analysis), partial(coding.sampled_bytes, analysis)
+        return rate.search(write, sample, counts, fixed_bytes, target_bytes)
 
     def decode(self, code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
         """See `Codec.decode`; the settings stand in the code."""
+        from safecheck.codecs.tile import stream
+
+        header, payload = stream.read(code, format, shape)
+        if header.version == ADAPTIVE_VERSION:
+            from safecheck.codecs.tile.adaptive import coding as adaptive
+
+            return adaptive.decode(header, payload, format)
         from safecheck.codecs.tile import coding
 
-        return coding.decode(code, format, shape)
+        return coding.decode(header, payload, format)
 
     def encode_to_size(self, raster: Raster, target_bytes: float) -> Encoded:
         """See `RatedCodec.encode_to_size`; the dial is the step.
@@ -101,19 +136,14 @@ class Tiled:
         sought and `reached` says that a reversible code is smaller.
         """
         admit(self, raster)
-        from safecheck.codecs.tile import coding, rate
-
-        analysis = coding.analyse(raster, self.transform, self.weighting, self.size)
-        counts, fixed_bytes = coding.counts(analysis), coding.fixed_bytes(analysis)
-        index, code, encodes = rate.search(
-            partial(coding.write, analysis), partial(coding.sampled_bytes, analysis), counts, fixed_bytes, target_bytes
-        )
+        index, code, encodes = self._search(raster, target_bytes)
         reached = _reached(len(code), target_bytes)
         if step_at(index) < EXACT_BELOW_STEP and self._exact(raster, code):
+            write = self._writer(raster)
             low, high = index, nearest_step(EXACT_BELOW_STEP)
             while high - low > EXACT_GAP:
                 middle = (low + high) // 2
-                tried = coding.write(analysis, middle)
+                tried = write(middle)
                 encodes += 1
                 if self._exact(raster, tried):
                     low, code = middle, tried

@@ -16,7 +16,19 @@ from safecheck.codecs.tile.settings import TRANSFORMS, WEIGHTINGS
 from safecheck.errors import CorruptCode
 from safecheck.frames import Mask, PixelFormat, Raster, Samples
 
-__all__ = ["Analysis", "Padding", "analyse", "counts", "decode", "fixed_bytes", "write"]
+__all__ = [
+    "Analysis",
+    "Padding",
+    "analyse",
+    "counts",
+    "decode",
+    "fixed_bytes",
+    "read_padding",
+    "restore_padding",
+    "sampled_bytes",
+    "write",
+    "write_padding",
+]
 
 START: Coder = (0, 0, WIDE)
 """An encoder before its first bit."""
@@ -71,7 +83,7 @@ def analyse(raster: Raster, name: str, weighting: str, size: int) -> Analysis:
     values = planes.to_planes(raster.samples, padding, centres, size)
     coefficients = tuple(transform.forward(plane, table) for plane in values)
     used = planes.used_tiles(raster.shape, padding, size)
-    return Analysis(raster, name, weighting, size, centres, used, coefficients, _write_padding(raster))
+    return Analysis(raster, name, weighting, size, centres, used, coefficients, write_padding(raster))
 
 
 def _tables(size: int) -> tuple[npt.NDArray[Any], npt.NDArray[Any], npt.NDArray[Any], npt.NDArray[Any]]:
@@ -99,7 +111,8 @@ def _padding_values(raster: Raster, padding: Mask) -> npt.NDArray[np.int32]:
     return pixels.reshape(len(pixels), raster.format.channels)
 
 
-def _write_padding(raster: Raster) -> Padding:
+def write_padding(raster: Raster) -> Padding:
+    """Code mask and values of padding without loss, once for all steps."""
     if raster.padding is None:
         return Padding(0, (0, 0, 0), b"", START)
     buffer = np.empty(6 * raster.pixels * raster.format.channels + 1024, dtype=np.uint8)
@@ -219,11 +232,11 @@ def _write_levels(
         buffer = larger
 
 
-def _read_padding(
+def read_padding(
     header: stream.Header,
     format: PixelFormat,  # noqa: A002
     buffer: npt.NDArray[np.uint8],
-) -> tuple[Coder, npt.NDArray[np.uint8] | None, npt.NDArray[np.int32]]:
+) -> tuple[Coder, Mask | None, npt.NDArray[np.int32]]:
     """Read mask and values (pixels or 1, channels); no mask where the frame has no padding."""
     coder = start_decoding(buffer)
     values = np.array([header.padding_values[: header.channels]], dtype=np.int32)
@@ -235,15 +248,27 @@ def _read_padding(
     if header.padding == 2:
         values = np.zeros((int(np.count_nonzero(found)), header.channels), dtype=np.int32)
         coder = mask.decode_padding_values(values, format.bits_stored, states, buffer, coder)
-    return coder, found, values + format.lowest
+    return coder, found.view(np.bool_), values + format.lowest
 
 
-def decode(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:  # noqa: A002
-    """Read a code back; see `Codec.decode`."""
-    header, payload = stream.read(code, format, shape)
+def restore_padding(
+    samples: Samples, header: stream.Header, padding: Mask | None, values: npt.NDArray[np.int32]
+) -> None:
+    """Put the values that `read_padding` gave back in their places."""
+    if padding is None:
+        return
+    exact = values.astype(samples.dtype)
+    if header.padding == 1:
+        np.copyto(samples, exact[0], where=padding if samples.ndim == 2 else padding[..., None])
+    else:
+        samples[padding] = exact[:, 0] if samples.ndim == 2 else exact
+
+
+def decode(header: stream.Header, payload: bytes, format: PixelFormat) -> Samples:  # noqa: A002
+    """Read the payload of a code of one tile size; see `Codec.decode`."""
+    shape = (header.rows, header.columns)
     buffer = np.frombuffer(payload, dtype=np.uint8)
-    coder, found, values = _read_padding(header, format, buffer)
-    padding = None if found is None else found.view(np.bool_)
+    coder, padding, values = read_padding(header, format, buffer)
     size = header.size
     used = planes.used_tiles(shape, padding, size)
     whole = planes.padded_shape(shape, size)
@@ -265,10 +290,5 @@ def decode(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> Samples:
     if coder[0] != len(buffer) + 4:
         raise CorruptCode("a tiled code holds more or fewer bytes than its levels take")
     samples = planes.from_planes(results, header.centres, format, shape)
-    if padding is not None:
-        exact = values.astype(format.dtype)
-        if header.padding == 1:
-            np.copyto(samples, exact[0], where=padding if format.channels == 1 else padding[..., None])
-        else:
-            samples[padding] = exact[:, 0] if format.channels == 1 else exact
+    restore_padding(samples, header, padding, values)
     return samples

@@ -15,7 +15,10 @@ import numpy.typing as npt
 from numba import njit
 
 __all__ = [
+    "NARROW",
     "WIDE",
+    "Coder",
+    "adapted",
     "decode_bit",
     "decode_raw",
     "decode_sign",
@@ -23,6 +26,8 @@ __all__ = [
     "encode_raw",
     "finish_encoding",
     "new_states",
+    "shift_in",
+    "shift_out",
     "start_decoding",
 ]
 
@@ -43,7 +48,7 @@ def new_states(contexts: int) -> npt.NDArray[np.int64]:
 
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _adapted(state: int, bit: int) -> int:
+def adapted(state: int, bit: int) -> int:
     """Move both estimates towards the bit, by 1/2, 1/4, ... at first, then by 1/16 and 1/128; within 32 to 65504."""
     seen = state & 15
     fast = state >> 21
@@ -56,7 +61,7 @@ def _adapted(state: int, bit: int) -> int:
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
 def _one_share(state: int, width: int) -> int:
-    """Part of the interval that a one takes: probability on 15 bits, 16 to 32752 as `_adapted` keeps it."""
+    """Part of the interval that a one takes: probability on 15 bits, 16 to 32752 as `adapted` keeps it."""
     return (width >> 15) * (((state >> 21) + ((state >> 4) & 0x1FFFF)) >> 2)
 
 
@@ -71,7 +76,7 @@ def _carry(buffer: Array, position: int) -> None:
 
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _shift_out(buffer: Array, position: int, low: int, width: int) -> Coder:
+def shift_out(buffer: Array, position: int, low: int, width: int) -> Coder:
     """Move two bytes out, a pending carry first; one move always makes the interval wide enough."""
     if low >> 48:
         _carry(buffer, position)
@@ -93,9 +98,9 @@ def encode_bit(buffer: Array, coder: Coder, states: Array, context: int, bit: in
     else:
         low += share
         width -= share
-    states[place] = _adapted(state, bit)
+    states[place] = adapted(state, bit)
     if width < NARROW:
-        position, low, width = _shift_out(buffer, position, low, width)
+        position, low, width = shift_out(buffer, position, low, width)
     return position, low, width
 
 
@@ -106,7 +111,7 @@ def encode_raw(buffer: Array, coder: Coder, value: int, bits: int) -> Coder:
     width >>= bits
     low += (value & ((1 << bits) - 1)) * width
     if width < NARROW:
-        position, low, width = _shift_out(buffer, position, low, width)
+        position, low, width = shift_out(buffer, position, low, width)
     return position, low, width
 
 
@@ -114,7 +119,7 @@ def encode_raw(buffer: Array, coder: Coder, value: int, bits: int) -> Coder:
 def finish_encoding(buffer: Array, coder: Coder) -> int:
     """Write what a decoder needs to tell the last bits; return the number of bytes."""
     position, low, width = coder
-    position, low, width = _shift_out(buffer, position, low + NARROW - 1, width)
+    position, low, width = shift_out(buffer, position, low + NARROW - 1, width)
     return int(position)
 
 
@@ -128,7 +133,8 @@ def start_decoding(buffer: Array) -> Coder:
 
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _shift_in(buffer: Array, position: int, code: int, width: int) -> Coder:
+def shift_in(buffer: Array, position: int, code: int, width: int) -> Coder:
+    """Take two bytes in; what lies behind the end reads as zero."""
     two: Any = 0
     if position + 1 < buffer.shape[0]:
         place = np.uintp(position)
@@ -149,9 +155,9 @@ def decode_bit(buffer: Array, coder: Coder, states: Array, context: int) -> tupl
     else:
         code -= share
         width -= share
-    states[place] = _adapted(state, bit)
+    states[place] = adapted(state, bit)
     if width < NARROW:
-        position, code, width = _shift_in(buffer, position, code, width)
+        position, code, width = shift_in(buffer, position, code, width)
     return (position, code, width), bit
 
 
@@ -164,7 +170,7 @@ def decode_sign(buffer: Array, coder: Coder) -> tuple[Coder, bool]:
     if negative:
         code -= width
     if width < NARROW:
-        position, code, width = _shift_in(buffer, position, code, width)
+        position, code, width = shift_in(buffer, position, code, width)
     return (position, code, width), negative
 
 
@@ -176,5 +182,5 @@ def decode_raw(buffer: Array, coder: Coder, bits: int) -> tuple[Coder, int]:
     value = min(code // width, (1 << bits) - 1)
     code -= value * width
     if width < NARROW:
-        position, code, width = _shift_in(buffer, position, code, width)
+        position, code, width = shift_in(buffer, position, code, width)
     return (position, code, width), value

@@ -34,7 +34,14 @@ from safecheck.codecs.tile.entropy import (
     encode_raw,
 )
 
-__all__ = ["WORST_BYTES", "decode_levels", "encode_levels"]
+__all__ = [
+    "LARGEST_LEVEL",
+    "WORST_BYTES",
+    "bit_length",
+    "decode_levels",
+    "encode_levels",
+    "new_scratch",
+]
 
 Array: TypeAlias = npt.NDArray[Any]
 
@@ -44,7 +51,8 @@ LARGEST_LEVEL = 1 << 29
 
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _bit_length(value: int) -> int:
+def bit_length(value: int) -> int:
+    """Tell how many bits a whole number from 0 on has."""
     length = 0
     while value:
         value >>= 1
@@ -126,7 +134,7 @@ def _decode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, gra
 @njit(cache=True, nogil=True, _nrt=False)
 def _encode_end(buffer: Array, coder: Coder, states: Array, around: int, end: int, limit: int) -> Coder:
     """Write the place of a tile's last level that is not zero; 0 where only the constant may differ from zero."""
-    length = _bit_length(end)
+    length = bit_length(end)
     row = END + around * END_LENGTHS
     for k in range(length):
         coder = encode_bit(buffer, coder, states, row + k, 1)
@@ -171,10 +179,10 @@ def _around(ends: Array, residuals: Array, used: Array, tile: int, across: int) 
     lengths = 0
     residual = 0
     if tile % across > 0 and used[tile - 1]:
-        lengths += _bit_length(ends[tile - 1])
+        lengths += bit_length(ends[tile - 1])
         residual += residuals[tile - 1]
     if tile >= across and used[tile - across]:
-        lengths += _bit_length(ends[tile - across])
+        lengths += bit_length(ends[tile - across])
         residual += residuals[tile - across]
     return lengths, min(2 * residual, MAGNITUDE_CAP)
 
@@ -226,7 +234,7 @@ def encode_levels(
     places, zones, classes, higher = tables
     tiles, count = levels.shape
     side = _side(count)
-    limit = _bit_length(count - 1)
+    limit = bit_length(count - 1)
     magnitudes, sums, before, residuals = scratch
     for tile in range(tiles):
         if not used[tile]:
@@ -287,7 +295,7 @@ def decode_levels(
     places, zones, classes, higher = tables
     tiles, count = levels.shape
     side = _side(count)
-    limit = _bit_length(count - 1)
+    limit = bit_length(count - 1)
     magnitudes, sums, before, residuals = scratch
     for tile in range(tiles):
         if not used[tile]:

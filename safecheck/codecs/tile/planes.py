@@ -61,7 +61,7 @@ def _nearest_in_line(line: Array, known: Array) -> bool:
 
 
 @njit(cache=True, nogil=True)
-def _fill_tile(tile: Array, known: Array) -> None:
+def _fill_tile(tile: Array, known: Array, sweeps: int) -> None:
     """Extend along rows, then whole rows up and down, then smooth by means of four neighbours in quarters."""
     size = tile.shape[0]
     rows = np.zeros(size, np.uint8)
@@ -69,24 +69,24 @@ def _fill_tile(tile: Array, known: Array) -> None:
         rows[r] = _nearest_in_line(tile[r], known[r])
     for c in range(size):
         _nearest_in_line(tile[:, c], rows)
-    for _ in range(SWEEPS):
-        for r in range(size):
-            for c in range(size):
-                if not known[r, c]:
-                    total = tile[max(r - 1, 0), c] + tile[min(r + 1, size - 1), c]
-                    total += tile[r, max(c - 1, 0)] + tile[r, min(c + 1, size - 1)]
-                    tile[r, c] = np.floor(total + 0.5) / 4.0
+    unknown = np.flatnonzero(known.ravel() == 0)
+    for _ in range(sweeps):
+        for k in unknown:
+            r, c = k // size, k % size
+            total = tile[max(r - 1, 0), c] + tile[min(r + 1, size - 1), c]
+            total += tile[r, max(c - 1, 0)] + tile[r, min(c + 1, size - 1)]
+            tile[r, c] = np.floor(total + 0.5) / 4.0
 
 
 @njit(cache=True, nogil=True)
-def _fill(plane: Array, known: Array, size: int, mixed: Array) -> None:
+def _fill(plane: Array, known: Array, size: int, mixed: Array, sweeps: int) -> None:
     """Fill each tile of which some pixels are known and some are not."""
     across = plane.shape[1] // size
     for tile in range(mixed.shape[0]):
         if mixed[tile]:
             top = tile // across * size
             left = tile % across * size
-            _fill_tile(plane[top : top + size, left : left + size], known[top : top + size, left : left + size])
+            _fill_tile(plane[top : top + size, left : left + size], known[top : top + size, left : left + size], sweeps)
 
 
 def _known(shape: tuple[int, int], padding: Mask | None, size: int) -> npt.NDArray[np.uint8]:
@@ -112,7 +112,7 @@ def used_tiles(shape: tuple[int, int], padding: Mask | None, size: int) -> npt.N
 
 
 def to_planes(
-    samples: Samples, padding: Mask | None, centres: tuple[int, ...], size: int
+    samples: Samples, padding: Mask | None, centres: tuple[int, ...], size: int, sweeps: int = SWEEPS
 ) -> list[npt.NDArray[np.float64]]:
     """Planes of whole tiles, filled where there is nothing to code, less each channel's centre."""
     shape = (samples.shape[0], samples.shape[1])
@@ -129,7 +129,7 @@ def to_planes(
         known = _known(shape, padding, size)
         mixed = _over_tiles(np.bitwise_or, known, size) - _over_tiles(np.bitwise_and, known, size)
         for plane in channels:
-            _fill(plane, known, size, mixed)
+            _fill(plane, known, size, mixed, sweeps)
     return channels
 
 

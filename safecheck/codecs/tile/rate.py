@@ -19,7 +19,17 @@ from numba import njit
 from safecheck.codecs.base import RATE_TOLERANCE
 from safecheck.codecs.tile.steps import STEPS
 
-__all__ = ["BINS", "magnitude_counts", "predicted_bytes", "search"]
+__all__ = [
+    "BINS",
+    "COSTS",
+    "FIRST_BIN",
+    "FIRST_COST",
+    "magnitude_counts",
+    "predicted_bytes",
+    "search",
+    "step_for",
+    "tile_magnitudes",
+]
 
 Array: TypeAlias = npt.NDArray[Any]
 
@@ -32,7 +42,7 @@ THIN_FROM = 1024
 
 
 @njit(cache=True, nogil=True)
-def _tile_magnitudes(coefficients: Array, places: Array, side: int, magnitudes: Array, expected: Array) -> None:
+def tile_magnitudes(coefficients: Array, places: Array, side: int, magnitudes: Array, expected: Array) -> None:
     """Weighted sums of magnitudes around each coefficient of one tile, itself included; weights sum to 8."""
     for k in range(1, coefficients.shape[0]):
         magnitudes[places[k]] = abs(coefficients[k])
@@ -77,7 +87,7 @@ def magnitude_counts(coefficients: Array, used: Array, across: int, places: Arra
         column = tile % across
         if not used[tile] or (column + 2 * (tile // across)) & thin:
             continue
-        _tile_magnitudes(coefficients[tile], places, side, magnitudes, expected)
+        tile_magnitudes(coefficients[tile], places, side, magnitudes, expected)
         before = coefficients[tile - 1, 0] if column and used[tile - 1] else 0
         expected[0] = 8 * abs(coefficients[tile, 0] - before) + 1
         for k in range(count):
@@ -115,7 +125,7 @@ def predicted_bytes(counts: Array, index: int) -> int:
     return bits // 2048
 
 
-def _step_for(counts: npt.NDArray[np.int64], wanted: float) -> int:
+def step_for(counts: npt.NDArray[np.int64], wanted: float) -> int:
     """Finest step at which no more than the wanted bytes are predicted."""
     return min(bisect.bisect_left(range(STEPS), -wanted, key=lambda k: -predicted_bytes(counts, k)), STEPS - 1)
 
@@ -123,7 +133,7 @@ def _step_for(counts: npt.NDArray[np.int64], wanted: float) -> int:
 def _corrected(counts: npt.NDArray[np.int64], index: int, found: int, wanted: float) -> int:
     """Step of the wanted bytes, given the bytes found where the counts predicted others."""
     factor = max(found, 1) / max(predicted_bytes(counts, index), 1)
-    return _step_for(counts, wanted / factor)
+    return step_for(counts, wanted / factor)
 
 
 def _secant(tried: dict[int, bytes], target_bytes: float) -> int:
@@ -168,7 +178,7 @@ def search(
     """
     tried: dict[int, bytes] = {}
     finer, coarser = -1, STEPS
-    index = _step_for(counts, target_bytes - fixed_bytes)
+    index = step_for(counts, target_bytes - fixed_bytes)
     sampled = sample(index)
     if sampled is not None:
         index = _corrected(counts, index, sampled, target_bytes - fixed_bytes)

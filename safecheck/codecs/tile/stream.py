@@ -10,7 +10,7 @@ import zlib
 from dataclasses import astuple, dataclass
 from typing import Final
 
-from safecheck.codecs.tile.settings import BITSTREAM_VERSION, SIZES, TRANSFORMS, WEIGHTINGS
+from safecheck.codecs.tile.settings import ADAPTIVE_VERSION, BITSTREAM_VERSION, SIZES, TRANSFORMS, VERSIONS, WEIGHTINGS
 from safecheck.codecs.tile.steps import STEPS
 from safecheck.errors import CorruptCode
 from safecheck.frames import PixelFormat
@@ -32,7 +32,7 @@ class Header:
     weighting: int
     """Place in `WEIGHTINGS`."""
     size: int
-    """Tile size in pixels."""
+    """Tile size in pixels; 0 where tiles are chosen over the frame."""
     rows: int
     columns: int
     bits: int
@@ -51,14 +51,16 @@ class Header:
     """Subtracted from each channel."""
     shifts: tuple[int, int, int, int, int, int]
     """Reconstruction shifts in 1/256 steps, for levels of 1 and above, a pair for each plane."""
+    version: int = BITSTREAM_VERSION
+    """One of `VERSIONS`."""
 
 
 def write(header: Header, payload: bytes) -> bytes:
     """Join header, payload and checksum (CRC-32 of all that stands before and behind it)."""
     transform, weighting, size, rows, columns, bits, signed, channels, padding, step, *rest = astuple(header)
-    values, centres, shifts = rest
+    values, centres, shifts, version = rest
     head = _LAYOUT.pack(
-        MAGIC, BITSTREAM_VERSION, transform, weighting, size, rows, columns, bits, signed, channels, padding,
+        MAGIC, version, transform, weighting, size, rows, columns, bits, signed, channels, padding,
         step, *values, *centres, *shifts, 0, len(payload),
     )  # fmt: skip
     return head + _CHECKSUM.pack(zlib.crc32(payload, zlib.crc32(head))) + payload
@@ -80,14 +82,14 @@ def read(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> tuple[Head
         _LAYOUT.unpack(head)
     )
     reserved, length = rest[-2:]
-    if magic != MAGIC or version != BITSTREAM_VERSION:
-        raise CorruptCode(f"not a tiled code of version {BITSTREAM_VERSION}")
+    if magic != MAGIC or version not in VERSIONS:
+        raise CorruptCode(f"not a tiled code of version {' or '.join(map(str, VERSIONS))}")
     if length != len(payload) or checksum != zlib.crc32(payload, zlib.crc32(head)):
         raise CorruptCode("the checksum or the length of a tiled code differs from its bytes")
     header = Header(
         transform, weighting, size, rows, columns, bits, signed, channels, padding, step,
         (rest[0], rest[1], rest[2]), (rest[3], rest[4], rest[5]),
-        (rest[6], rest[7], rest[8], rest[9], rest[10], rest[11]),
+        (rest[6], rest[7], rest[8], rest[9], rest[10], rest[11]), version,
     )  # fmt: skip
     if (rows, columns) != shape or (bits, signed, channels) != (
         format.bits_stored,
@@ -104,7 +106,7 @@ def _check_settings(header: Header, format: PixelFormat, reserved: int) -> None:
     fits = (
         header.transform < len(TRANSFORMS)
         and header.weighting < len(WEIGHTINGS)
-        and header.size in SIZES
+        and header.size in ((0,) if header.version == ADAPTIVE_VERSION else SIZES)
         and header.step < STEPS
         and header.padding <= 2
         and reserved == 0

@@ -19,12 +19,14 @@ from numba import njit
 __all__ = [
     "GRID",
     "TABLE_GRID",
+    "backward_tables",
     "basis",
     "cosine_basis",
     "forward",
     "fourier_basis",
     "inverse",
     "scan_order",
+    "turn_back",
     "walsh_hadamard_basis",
 ]
 
@@ -32,6 +34,11 @@ TABLE_GRID = 1 << 22
 """Basis tables hold multiples of one over this."""
 GRID = 1 << 8
 """Coefficients are whole numbers of one over this, in stored units."""
+
+TOGETHER = 8192
+"""Samples turned at once, so that work space stays near the processor."""
+FOLDED_FROM = 8
+"""Tables of at least so many rows are folded where they can be; smaller ones gain nothing."""
 
 Array = npt.NDArray[Any]
 
@@ -125,42 +132,149 @@ def _apply(table: Array, source: Array, target: Array) -> None:
 
 
 @njit(cache=True, nogil=True)
-def _forward(plane: Array, table: Array, order: Array, coefficients: Array) -> None:
-    size = table.shape[0]
-    across = plane.shape[1] // size
-    rows, columns = (order // size * across).astype(np.uint64), (order % size).astype(np.uint64)
-    work = np.empty((size, plane.shape[1]))
-    turned = np.empty((size, plane.shape[1]))
-    for stripe in range(plane.shape[0] // size):
-        _apply(table, plane[stripe * size : (stripe + 1) * size], work)
-        for u in range(size):
-            for t in range(across):
-                for k in range(size):
-                    turned[k, u * across + t] = np.floor(work[u, t * size + k] * 256.0 + 0.5) / 256.0
-        _apply(table, turned, work)
-        for t in range(across):
-            for k in range(size * size):
-                value = np.floor(work[columns[k], rows[k] + np.uint64(t)] * 256.0 + 0.5)
-                coefficients[stripe * across + t, k] = np.int32(value)
+def _fold(source: Array, top: int, left: int, halves: Array) -> None:
+    """Sums of rows that mirror each other, then their differences, of a part of the source."""
+    size = halves.shape[0]
+    half = size // 2
+    for k in range(half):
+        for i in range(halves.shape[1]):
+            first, last = source[top + k, left + i], source[top + size - 1 - k, left + i]
+            halves[k, i] = first + last
+            halves[half + k, i] = first - last
 
 
 @njit(cache=True, nogil=True)
-def _inverse(coefficients: Array, table: Array, order: Array, plane: Array) -> None:
-    size = table.shape[0]
+def _unfold(halves: Array, target: Array) -> None:
+    """Undo `_fold`, but for a factor of 2."""
+    size = target.shape[0]
+    half = size // 2
+    for k in range(half):
+        for i in range(target.shape[1]):
+            even, odd = halves[k, i], halves[half + k, i]
+            target[k, i] = even + odd
+            target[size - 1 - k, i] = even - odd
+
+
+@njit(cache=True, nogil=True)
+def _turn(even: Array, odd: Array, source: Array, top: int, left: int, halves: Array, target: Array) -> None:
+    """Write table @ a part of the source into target: folded, even rows first, or as it is."""
+    size = halves.shape[0]
+    if odd.shape[1]:
+        half = size // 2
+        _fold(source, top, left, halves)
+        _apply(even, halves[:half], target[:half])
+        _apply(odd, halves[half:], target[half:])
+    else:
+        for k in range(size):
+            for i in range(halves.shape[1]):
+                halves[k, i] = source[top + k, left + i]
+        _apply(even, halves, target)
+
+
+@njit(cache=True, nogil=True)
+def _forward(plane: Array, even: Array, odd: Array, places: Array, coefficients: Array) -> None:
+    size = even.shape[0] + odd.shape[0]
+    tiles = plane.shape[1] // size
+    together = max(TOGETHER // (size * size), 1)
+    for first in range(0, tiles, together):
+        across = min(together, tiles - first)
+        # Whole arrays of just this width: slices of wider ones would keep the loops from being vectorised.
+        work, turned, halves = (
+            np.empty((size, across * size)),
+            np.empty((size, across * size)),
+            np.empty((size, across * size)),
+        )
+        starts, lines = (places[:, 0] * across).astype(np.uint64), places[:, 1].astype(np.uint64)
+        for stripe in range(plane.shape[0] // size):
+            _turn(even, odd, plane, stripe * size, first * size, halves, work)
+            for u in range(size):
+                for t in range(across):
+                    for k in range(size):
+                        turned[k, u * across + t] = np.floor(work[u, t * size + k] * 256.0 + 0.5) / 256.0
+            _turn(even, odd, turned, 0, 0, halves, work)
+            for t in range(across):
+                tile = stripe * tiles + first + t
+                for k in range(size * size):
+                    value = np.floor(work[lines[k], starts[k] + np.uint64(t)] * 256.0 + 0.5)
+                    coefficients[tile, k] = np.int32(value)
+
+
+@njit(cache=True, nogil=True)
+def turn_back(work: Array, even: Array, odd: Array, turned: Array, halves: Array) -> None:
+    """Sum basis functions by column, then by row: columns of `work` are tiles side by side.
+
+    Parameters
+    ----------
+    work
+        (size, rows of all tiles) by column frequency; row frequency, then tile. Overwritten.
+    even, odd
+        Of `backward_tables`.
+    turned, halves
+        Work space like `work`; samples come back in `turned`, (size, columns of all tiles).
+    """
+    size = work.shape[0]
+    half = size // 2
+    across = work.shape[1] // size
+    for turn in range(2):
+        if odd.shape[1]:
+            _apply(even, work[:half], halves[:half])
+            _apply(odd, work[half:], halves[half:])
+            _unfold(halves, turned)
+        else:
+            _apply(even, work, turned)
+        if turn == 0:
+            for u in range(size):
+                # The first turn leaves row frequencies in the order of `work`, so rows stay where they are.
+                for t in range(across):
+                    for k in range(size):
+                        work[u, t * size + k] = np.floor(turned[k, u * across + t] * 256.0 + 0.5) / 256.0
+
+
+@njit(cache=True, nogil=True)
+def _inverse(coefficients: Array, even: Array, odd: Array, places: Array, plane: Array) -> None:
+    size = even.shape[1] + odd.shape[1]
     across = plane.shape[1] // size
-    rows, columns = (order // size * across).astype(np.uint64), (order % size).astype(np.uint64)
+    starts, lines = (places[:, 0] * across).astype(np.uint64), places[:, 1].astype(np.uint64)
     work = np.empty((size, plane.shape[1]))
-    turned = np.empty((size, plane.shape[1]))
+    halves = np.empty((size, plane.shape[1]))
     for stripe in range(plane.shape[0] // size):
         for t in range(across):
             for k in range(size * size):
-                work[columns[k], rows[k] + np.uint64(t)] = coefficients[stripe * across + t, k] / 256.0
-        _apply(table, work, turned)
-        for u in range(size):
-            for t in range(across):
-                for k in range(size):
-                    work[u, t * size + k] = np.floor(turned[k, u * across + t] * 256.0 + 0.5) / 256.0
-        _apply(table, work, plane[stripe * size : (stripe + 1) * size])
+                work[lines[k], starts[k] + np.uint64(t)] = coefficients[stripe * across + t, k] / 256.0
+        turn_back(work, even, odd, plane[stripe * size : (stripe + 1) * size], halves)
+
+
+def _mirrored(table: npt.NDArray[np.float64]) -> bool:
+    """Whether functions are symmetric and antisymmetric by turns, so that half the products serve."""
+    return np.array_equal(table[0::2], table[0::2, ::-1]) and np.array_equal(table[1::2], -table[1::2, ::-1])
+
+
+def _halves(
+    table: npt.NDArray[np.float64],
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.int32]]:
+    """Two tables that serve for one, and each coefficient's row and column frequency there, in `scan_order`.
+
+    The left halves of the even and of the odd rows; or the whole table and nothing.
+    """
+    size = len(table)
+    order = scan_order(size)
+    places = np.stack([order // size, order % size], axis=1).astype(np.int32)
+    if not _mirrored(table) or size < FOLDED_FROM:
+        return table, np.empty((0, 0)), places
+    half = size // 2
+    folded = ((places & 1) * half + (places >> 1)).astype(np.int32)
+    return np.ascontiguousarray(table[0::2, :half]), np.ascontiguousarray(table[1::2, :half]), folded
+
+
+def backward_tables(
+    table: npt.NDArray[np.float64],
+) -> tuple[npt.NDArray[np.float64], npt.NDArray[np.float64], npt.NDArray[np.int32]]:
+    """What `turn_back` needs of a table of `basis`: two tables, and each coefficient's row and column frequency there.
+
+    The last is (size * size, 2), in `scan_order`.
+    """
+    even, odd, places = _halves(table)
+    return np.ascontiguousarray(even.T), np.ascontiguousarray(odd.T), places
 
 
 def forward(plane: npt.NDArray[np.float64], table: npt.NDArray[np.float64]) -> npt.NDArray[np.int32]:
@@ -182,7 +296,7 @@ def forward(plane: npt.NDArray[np.float64], table: npt.NDArray[np.float64]) -> n
     size = len(table)
     tiles = (plane.shape[0] // size) * (plane.shape[1] // size)
     coefficients = np.empty((tiles, size * size), dtype=np.int32)
-    _forward(plane, table, scan_order(size), coefficients)
+    _forward(plane, *_halves(table), coefficients)
     return coefficients
 
 
@@ -191,5 +305,5 @@ def inverse(
 ) -> npt.NDArray[np.float64]:
     """Undo `forward`; `shape` is that of the plane. Returns (rows, columns), not rounded to whole numbers."""
     plane = np.empty(shape)
-    _inverse(coefficients, np.ascontiguousarray(table.T), scan_order(len(table)), plane)
+    _inverse(coefficients, *backward_tables(table), plane)
     return plane

@@ -28,12 +28,31 @@ def rasters() -> dict[str, tuple[Tiled, Raster]]:
         "noise": (Tiled(16, "walsh-hadamard", "flat", 300.0), contract.raster(GREY, (40, 40), "noise")),
         "padding": (Tiled(step=20.0), Raster(padded, GREY, padding)),
         "colour": (Tiled(64, "fourier", "perceptual", 2.0), contract.raster(COLOUR, (40, 70), "slopes")),
+        "adaptive": (Tiled("adaptive", step=4.0), contract.raster(GREY, (48, 50), "slopes")),
+        "adaptive noise": (Tiled("adaptive", "walsh-hadamard", step=300.0), contract.raster(GREY, (40, 70), "noise")),
+        "adaptive padding": (Tiled("adaptive", step=20.0), Raster(padded, GREY, padding)),
+        "adaptive colour": (
+            Tiled("adaptive", "fourier", "perceptual", 2.0),
+            contract.raster(COLOUR, (40, 70), "slopes"),
+        ),
     }
 
 
-@pytest.mark.parametrize("name", ["grey", "noise", "padding", "colour"])
-def test_ten_thousand_corruptions_are_told_or_give_the_declared_shape(name: str) -> None:
-    # 2,500 for each of four kinds of code; of every second one the checksum is computed again.
+NAMES = (
+    "grey",
+    "noise",
+    "padding",
+    "colour",
+    "adaptive",
+    "adaptive noise",
+    "adaptive padding",
+    "adaptive colour",
+)
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_twenty_thousand_corruptions_are_told_or_give_the_declared_shape(name: str) -> None:
+    # 2,500 for each of eight kinds of code, four of them adaptive; of every second one the checksum is computed again.
     codec, before = rasters()[name]
     code = codec.encode(before)
     usual = _seconds(codec, code, before)

@@ -65,7 +65,7 @@ def test_another_shape_or_format_is_told(change: dict[str, int]) -> None:
 
 def test_another_version_is_told() -> None:
     code = bytearray(stream.write(HEADER, b""))
-    code[4] += 1
+    code[4] = 77
     with pytest.raises(CorruptCode, match="not a tiled code of version"):
         stream.read(resealed(bytes(code)), FORM, SHAPE)
 
