@@ -168,7 +168,8 @@ def test_a_wrong_call_ends_with_2_and_one_sentence(
 ) -> None:
     monkeypatch.chdir(place)
     monkeypatch.setenv("XDG_CONFIG_HOME", str(place / "config"))
-    assert call(monkeypatch, *arguments, *(["-q"] if arguments[0] in ("assess", "census", "demo", "transforms") else [])) == 2
+    quiet = ["-q"] if arguments[0] in ("assess", "census", "demo", "transforms") else []
+    assert call(monkeypatch, *arguments, *quiet) == 2
     captured = capsys.readouterr()
     # A census that was taken is shown even where its draft cannot be written.
     assert captured.out == "" or "nowhere/plan.toml" in arguments
