@@ -33,7 +33,8 @@ _APART: Mapping[str, tuple[str, ...]] = {"measures": (), "windows": ("window",),
 def reference_of(plan: Plan, candidates: tuple[CandidateEntry, ...]) -> str:
     """Name the candidate whose damage is taken: the plan's, or the middle ratio of the first codec proposed at ratios.
 
-    At either end of the ratios run the damage of another codec would mostly lie beyond them.
+    Codecs that took the most frames come first, since others cannot be held beside a codec that was not run. At either
+    end of the ratios run the damage of another codec would mostly lie beyond them.
 
     Parameters
     ----------
@@ -43,7 +44,7 @@ def reference_of(plan: Plan, candidates: tuple[CandidateEntry, ...]) -> str:
         In the order of all tables; where none is proposed at a ratio the first proposed counts, else the first.
     """
     own = [item for item in candidates if item.role == "candidate"]
-    ranked = sorted(own, key=lambda item: (item.status != "proposed", item.ratio_asked is None))
+    ranked = sorted(own, key=lambda item: (item.status != "proposed", item.ratio_asked is None, -item.frames))
     first = ranked[0]
     peers = [item for item in ranked if (item.status, item.codec) == (first.status, first.codec) and item.ratio_asked]
     peers.sort(key=lambda item: item.ratio_asked or 0.0)

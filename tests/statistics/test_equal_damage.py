@@ -328,3 +328,11 @@ def test_without_a_name_the_reference_is_the_middle_ratio_of_the_first_codec_pro
     groups = Groups.of(reader(tmp_path, "measures", [measured(ONE)]))
     entries = tuple(candidate_entries(declared, groups, frozenset({"jpeg2000", "jpeg"})))
     assert reference_of(declared, entries) == name
+
+
+def test_a_codec_that_took_no_frame_is_no_reference(tmp_path: Path) -> None:
+    declared = plan(candidates=[{"codec": "jpeg", "ratio": 10}, {"codec": "jpeg2000", "ratio": 10}])
+    rows = [measured("jpeg2000 10:1", codec="jpeg2000")]
+    groups = Groups.of(reader(tmp_path, "measures", rows))
+    entries = tuple(candidate_entries(declared, groups, frozenset({"jpeg2000", "jpeg"})))
+    assert reference_of(declared, entries) == "jpeg2000 10:1"
