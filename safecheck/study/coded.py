@@ -8,13 +8,15 @@ import numpy as np
 import numpy.typing as npt
 
 from safecheck.codecs.tile.codec import Tiled
-from safecheck.codecs.tile.settings import SIZES as CODED_SIZES
+from safecheck.codecs.tile.settings import SIZES as CODEC_SIZES
 from safecheck.frames import SizeBasis
 from safecheck.study.subject import Subject
-from safecheck.study.tiles import Reals, as_tiles, basis, forward, in_whole_tiles
+from safecheck.study.tiles import SIZES, Reals, as_tiles, basis, forward, in_whole_tiles
 
 __all__ = ["CODED_SIZES", "RATIOS", "Coded", "Split", "code_at", "split_error"]
 
+CODED_SIZES = tuple(size for size in SIZES if size in CODEC_SIZES)
+"""Tile sizes studied of which the codec writes codes."""
 RATIOS = (5.0, 10.0, 20.0)
 """Ratios studied, on the bits-stored basis."""
 
