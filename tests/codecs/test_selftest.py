@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import dataclasses
 
+import imagecodecs
+import pytest
+
 from safecheck import wording
 from safecheck.codecs import registry, selftest
 
@@ -24,6 +27,19 @@ def test_reversible_codecs_are_exact_and_others_are_not_asked() -> None:
 
 def test_the_two_jpeg_2000_decoders_are_compared() -> None:
     assert "second decoder agrees" in selftest.check("jpeg2000").detail
+
+
+def test_a_promised_error_is_held(monkeypatch: pytest.MonkeyPatch) -> None:
+    assert selftest.check("jpegls").detail.startswith("no sample off by more than promised")
+    honest = imagecodecs.jpegls_decode
+
+    def far_off(code: bytes) -> object:
+        samples = honest(code).copy()
+        samples.flat[7] ^= 16
+        return samples
+
+    monkeypatch.setattr(imagecodecs, "jpegls_decode", far_off)
+    assert "came back off by" in selftest.check("jpegls").detail
 
 
 def test_what_it_says_holds_no_forbidden_word_and_no_path() -> None:
