@@ -56,10 +56,8 @@ class JpegXl:
     def __post_init__(self) -> None:
         """Check the ranges; keep a whole number as the float it stands for."""
         if isinstance(self.distance, bool) or not DISTANCE_LOWEST <= self.distance <= DISTANCE_HIGHEST:
-            raise ValueError(
-                f"distance is {self.distance}, expected {DISTANCE_LOWEST} to {DISTANCE_HIGHEST:g}; "
-                "even 0 would not be lossless"
-            )
+            but = ", which would not be lossless" if self.distance == 0 else ""
+            raise ValueError(f"distance is {self.distance}{but}, expected {DISTANCE_LOWEST} to {DISTANCE_HIGHEST:g}")
         _effort_checked(self.effort)
         object.__setattr__(self, "distance", float(self.distance))
 
