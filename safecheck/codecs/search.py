@@ -202,9 +202,9 @@ def bracket(
     within: Step | None = None
     beyond: Step | None = None
     small, large = (lowest, highest) if rising else (highest, lowest)
-    at, stride = start, 1
+    at, stride, tried = start, 1, 0
     while True:
-        step = Step(at, encode(at))
+        step, tried = Step(at, encode(at)), tried + 1
         if len(step.code) <= target_bytes:
             within = step
         else:
@@ -212,14 +212,25 @@ def bracket(
         if within is not None and beyond is not None:
             if abs(within.dial - beyond.dial) == 1:
                 return within, beyond
-            at = (within.dial + beyond.dial) // 2
+            at = _between(within, beyond, target_bytes, halve=tried % 3 == 0)
             continue
         end = large if beyond is None else small
         if at == end:
             return (step,)
-        # Strides double: a start that is nearly right costs two or three codes, a wrong one stays logarithmic.
+        # Strides grow: a start that is nearly right costs two or three codes, a wrong one stays logarithmic.
         at = min(at + stride, end) if end > at else max(at - stride, end)
-        stride *= 2
+        stride *= 3
+
+
+def _between(within: Step, beyond: Step, target_bytes: float, *, halve: bool) -> int:
+    """Setting strictly between two: on the line through the logarithms of their sizes, or in the middle."""
+    low, high = sorted((within.dial, beyond.dial))
+    if halve:
+        return (low + high) // 2
+    sizes = [math.log(max(len(step.code), 1)) for step in (within, beyond)]
+    share = (math.log(max(target_bytes, 1)) - sizes[0]) / (sizes[1] - sizes[0]) if sizes[0] != sizes[1] else 0.5
+    at = round(within.dial + share * (beyond.dial - within.dial))
+    return min(max(at, low + 1), high - 1)
 
 
 def tell(end: End, target_bytes: float, reversible_bytes: Callable[[], int]) -> Reached:
