@@ -1,6 +1,7 @@
 """Reading, recompressing and content of an image: other people's libraries and nothing of the package.
 
-Decoding: pydicom with its own plug-ins. Encoding: OpenJPEG and CharLS by way of pylibjpeg-openjpeg and imagecodecs.
+Decoding: pydicom with its own plug-ins. Encoding: OpenJPEG by way of pylibjpeg-openjpeg and imagecodecs, CharLS by way
+of pyjpegls.
 Content: the rules of docs/measures.md written out in NumPy and SciPy.
 """
 
@@ -13,6 +14,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import imagecodecs
+import jpeg_ls
 import numpy as np
 import openjpeg.utils
 import scipy.ndimage
@@ -100,7 +102,11 @@ def reversible_sizes(image: Image) -> dict[str, int]:
     """Bytes of JPEG-LS and of JPEG 2000 5/3."""
     unsigned = image.stored.astype(np.int64) + (1 << (image.bits - 1)) * image.signed
     narrow = f"u{1 if image.bits <= 8 else 2}"
-    jpegls = imagecodecs.jpegls_encode(unsigned.astype(narrow), level=0)
+    samples = unsigned.astype(narrow).tobytes()
+    # Colour is interleaved pixel by pixel.
+    mode = 2 if image.is_colour else 0
+    channels = 3 if image.is_colour else 1
+    jpegls = jpeg_ls.encode_buffer(samples, *image.stored.shape[:2], channels, image.bits, interleave_mode=mode)
     jpeg2000 = imagecodecs.jpeg2k_encode(
         image.stored, codecformat="j2k", bitspersample=image.bits, reversible=True, mct=image.is_colour
     )
