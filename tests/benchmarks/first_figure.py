@@ -41,7 +41,7 @@ def steps_ms(path: Path, candidate: Candidate) -> list[float]:
     marks.append(time.perf_counter())
     original = prepare(frame, Assignment((candidate,)))
     marks.append(time.perf_counter())
-    treated = recompress(original, candidate)
+    treated = recompress(original, candidate)[0]
     marks.append(time.perf_counter())
     measure_row(original, treated)
     window_rows(original, treated)

@@ -59,7 +59,7 @@ def bring(path: Path) -> AtHand:
     (instance,) = gather([path], pseudonyms=Pseudonyms(bytes(32))).instances
     with open_instance(instance) as reader:
         original = prepare(reader.frame(1), Assignment((CANDIDATE,)))
-    treated = recompress(original, CANDIDATE)
+    treated = recompress(original, CANDIDATE)[0]
     values, rendering = original.values, original.baseline.windows[0].rendering
     everywhere = prepare_window(values, original.content.mask, rendering, np.ones(values.shape, np.bool_))
     _, ssim_map = measure_window(everywhere, treated.values, with_map=True)
