@@ -53,15 +53,17 @@ class Header:
     """Reconstruction shifts in 1/256 steps, for levels of 1 and above, a pair for each plane."""
     version: int = BITSTREAM_VERSION
     """One of `VERSIONS`."""
+    drawn: int = 0
+    """1 where cells of two values are told beside the transform, in codes of chosen tiles only."""
 
 
 def write(header: Header, payload: bytes) -> bytes:
     """Join header, payload and checksum (CRC-32 of all that stands before and behind it)."""
     transform, weighting, size, rows, columns, bits, signed, channels, padding, step, *rest = astuple(header)
-    values, centres, shifts, version = rest
+    values, centres, shifts, version, drawn = rest
     head = _LAYOUT.pack(
         MAGIC, version, transform, weighting, size, rows, columns, bits, signed, channels, padding,
-        step, *values, *centres, *shifts, 0, len(payload),
+        step, *values, *centres, *shifts, drawn, len(payload),
     )  # fmt: skip
     return head + _CHECKSUM.pack(zlib.crc32(payload, zlib.crc32(head))) + payload
 
@@ -81,7 +83,7 @@ def read(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> tuple[Head
     magic, version, transform, weighting, size, rows, columns, bits, signed, channels, padding, step, *rest = (
         _LAYOUT.unpack(head)
     )
-    reserved, length = rest[-2:]
+    length = rest[-1]
     if magic != MAGIC or version not in VERSIONS:
         raise CorruptCode(f"not a tiled code of version {' or '.join(map(str, VERSIONS))}")
     if length != len(payload) or checksum != zlib.crc32(payload, zlib.crc32(head)):
@@ -89,7 +91,7 @@ def read(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> tuple[Head
     header = Header(
         transform, weighting, size, rows, columns, bits, signed, channels, padding, step,
         (rest[0], rest[1], rest[2]), (rest[3], rest[4], rest[5]),
-        (rest[6], rest[7], rest[8], rest[9], rest[10], rest[11]), version,
+        (rest[6], rest[7], rest[8], rest[9], rest[10], rest[11]), version, rest[12],
     )  # fmt: skip
     if (rows, columns) != shape or (bits, signed, channels) != (
         format.bits_stored,
@@ -97,11 +99,11 @@ def read(code: bytes, format: PixelFormat, shape: tuple[int, int]) -> tuple[Head
         format.channels,
     ):
         raise CorruptCode("a tiled code tells another frame shape or pixel format than expected")
-    _check_settings(header, format, reserved)
+    _check_settings(header, format)
     return header, payload
 
 
-def _check_settings(header: Header, format: PixelFormat, reserved: int) -> None:  # noqa: A002
+def _check_settings(header: Header, format: PixelFormat) -> None:  # noqa: A002
     span = format.highest - format.lowest
     fits = (
         header.transform < len(TRANSFORMS)
@@ -109,7 +111,7 @@ def _check_settings(header: Header, format: PixelFormat, reserved: int) -> None:
         and header.size in ((0,) if header.version == ADAPTIVE_VERSION else SIZES)
         and header.step < STEPS
         and header.padding <= 2
-        and reserved == 0
+        and header.drawn <= (1 if header.version == ADAPTIVE_VERSION else 0)
         and max(header.padding_values) <= span
         and all(format.lowest <= value <= format.highest for value in header.centres[: header.channels])
     )

@@ -8,35 +8,35 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.codecs.tile import context, planes, rate, steps, stream, transform
-from safecheck.codecs.tile.adaptive import around, contexts, leaves, levels, mixing, partition, tree
+from safecheck.codecs.tile import context, planes, steps, stream, transform
+from safecheck.codecs.tile.adaptive import around, contexts, drawing, leaves, levels, mixing, partition, tree
 from safecheck.codecs.tile.coding import Padding, read_padding, restore_padding, write_padding
 from safecheck.codecs.tile.entropy import Coder, finish_encoding, new_states
 from safecheck.codecs.tile.levels import WORST_BYTES
 from safecheck.codecs.tile.settings import ADAPTIVE_VERSION, SIZES, TRANSFORMS, WEIGHTINGS
 from safecheck.errors import CorruptCode
-from safecheck.frames import PixelFormat, Raster, Samples
+from safecheck.frames import Mask, PixelFormat, Raster, Samples, SizeBasis
 
-__all__ = ["Analysis", "analyse", "decode", "fixed_bytes", "search", "write"]
+__all__ = [
+    "Analysis",
+    "Partition",
+    "analyse",
+    "coded_tiles",
+    "decode",
+    "exact",
+    "fixed_bytes",
+    "partition_at",
+    "relative_steps",
+    "write",
+    "write_planes",
+]
 
 STEPS_TOGETHER = 128
 """Tiles are chosen once for so many places of the grid of steps, an octave."""
+DRAWING_SHARE = 32
+"""A drawing may take the frame's size over this."""
 SWEEPS = 4
 """How often what is filled is smoothed; more gains nothing here."""
-COUNTED = 2
-"""Place in `SIZES` of the tiles by which the first step is guessed."""
-FIRST_SCALE = 1.1
-"""How much more the first guess may take, since chosen tiles take less than those of one size; measured once."""
-SAMPLED_FROM = 256
-"""Fewer tiles are not sampled."""
-SAMPLED_AGAIN = 12
-"""Places on the grid of steps by which the first sample may move the step before another is taken."""
-USUAL = 0.94
-"""What a code takes of the bytes predicted, on most frames."""
-LEARNING = 150
-"""Bytes that the contexts take to learn, in a sample as in a whole code; measured once on real frames."""
-SAMPLE_SCALE = 0.983
-"""What a whole code takes of the sample's share beside, since weights learn longer. Measured once on real frames."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -52,6 +52,11 @@ class Analysis:
     coefficients: tuple[tuple[npt.NDArray[np.int32], ...], ...]
     """Of each plane and size: (tiles, size * size), in `transform.scan_order`."""
     padding: Padding
+    """With the drawing behind it, where there is one."""
+    drawn: bool
+    """Whether there is one."""
+    hidden: Mask | None
+    """Pixels that the transform need not give back: padding and drawing."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -72,7 +77,7 @@ def _tables() -> tuple[levels.Lookup, npt.NDArray[np.int64], npt.NDArray[np.int3
 
 
 @functools.lru_cache(maxsize=16)
-def _relative(weighting: str, size: int, chroma: bool) -> npt.NDArray[np.float64]:
+def relative_steps(weighting: str, size: int, chroma: bool) -> npt.NDArray[np.float64]:
     """Steps over that of the constant, in scan order."""
     factors: npt.NDArray[np.float64] = steps.weights(weighting, size, chroma).ravel()[transform.scan_order(size)]
     return factors
@@ -91,7 +96,7 @@ def _plane_steps(weighting: str, step: int, channels: int) -> list[npt.NDArray[n
     return planes_steps
 
 
-def _coded_tiles(coded: npt.NDArray[np.uint8], kind: int) -> npt.NDArray[np.uint8]:
+def coded_tiles(coded: npt.NDArray[np.uint8], kind: int) -> npt.NDArray[np.uint8]:
     """1 for each tile of a size that holds a coded cell: (tile rows, tile columns)."""
     side = 1 << kind
     rows, columns = coded.shape
@@ -103,27 +108,50 @@ def _coded_tiles(coded: npt.NDArray[np.uint8], kind: int) -> npt.NDArray[np.uint
 @functools.lru_cache(maxsize=1)
 def analyse(raster: Raster, name: str, weighting: str) -> Analysis:
     """Transform a raster at every size, once for all steps; a raster is told from another by identity."""
-    padding = raster.padding
-    centres = planes.centre(raster.samples, padding)
-    filled = planes.to_planes(raster.samples, padding, centres, contexts.LARGEST, SWEEPS)
+    drawn, written = _write_exact(raster)
+    hidden = _hidden(raster.padding, drawn)
+    centres = planes.centre(raster.samples, hidden)
+    filled = planes.to_planes(raster.samples, hidden, centres, contexts.LARGEST, SWEEPS)
     coefficients = tuple(
         tuple(transform.forward(plane, transform.basis(name, size)) for size in SIZES) for plane in filled
     )
-    coded = _coded(raster.shape, padding)
-    return Analysis(raster, name, weighting, centres, coded, coefficients, write_padding(raster))
+    coded = _coded(raster.shape, hidden)
+    return Analysis(raster, name, weighting, centres, coded, coefficients, written, drawn is not None, hidden)
 
 
-def _coded(shape: tuple[int, int], padding: npt.NDArray[np.bool_] | None) -> npt.NDArray[np.uint8]:
+def _write_exact(raster: Raster) -> tuple[drawing.Drawing | None, Padding]:
+    """Padding, and behind it what is drawn, unless that takes more than it may."""
+    padding = write_padding(raster)
+    drawn = drawing.find(raster)
+    if drawn is None:
+        return None, padding
+    done = len(padding.written)
+    buffer = np.empty(done + 2 * raster.pixels + 1024, np.uint8)
+    buffer[:done] = np.frombuffer(padding.written, np.uint8)
+    coder = drawing.write(drawn, raster.format.bits_stored, buffer, padding.coder)
+    if DRAWING_SHARE * (coder[0] - done) > raster.size_bytes(SizeBasis.BITS_STORED):
+        return None, padding
+    return drawn, Padding(padding.kind, padding.values, buffer[: coder[0]].tobytes(), coder)
+
+
+def _hidden(padding: Mask | None, drawn: drawing.Drawing | None) -> Mask | None:
+    """Pixels that the transform need not give back."""
+    if drawn is None:
+        return padding
+    return drawn.covered if padding is None else padding | drawn.covered
+
+
+def _coded(shape: tuple[int, int], hidden: Mask | None) -> npt.NDArray[np.uint8]:
     whole = planes.padded_shape(shape, contexts.LARGEST)
     coded = np.zeros((whole[0] // tree.CELL, whole[1] // tree.CELL), np.uint8)
     rows, columns = (side // tree.CELL for side in planes.padded_shape(shape, tree.CELL))
-    coded[:rows, :columns] = planes.used_tiles(shape, padding, tree.CELL).reshape(rows, columns)
+    coded[:rows, :columns] = planes.used_tiles(shape, hidden, tree.CELL).reshape(rows, columns)
     return coded
 
 
 def _costs(analysis: Analysis, steps_of_planes: list[npt.NDArray[np.float64]], kind: int) -> npt.NDArray[np.int64]:
     """What tiles of a size cost, over all planes: (tile rows, tile columns), 0 where nothing is coded."""
-    coded = _coded_tiles(analysis.coded, kind)
+    coded = coded_tiles(analysis.coded, kind)
     costs = np.zeros(coded.size, np.int64)
     size = SIZES[kind]
     for plane, by_size in enumerate(steps_of_planes):
@@ -152,20 +180,43 @@ def _partition(analysis: Analysis, group: int) -> Partition:
     return Partition(cells, tiles, values)
 
 
-def _partition_at(analysis: Analysis, step: int) -> Partition:
+def partition_at(analysis: Analysis, step: int) -> Partition:
+    """Tiles chosen for the group of steps that holds a step of an index."""
     return _partition(analysis, (step + STEPS_TOGETHER // 2) // STEPS_TOGETHER)
 
 
 def fixed_bytes(analysis: Analysis) -> int:
-    """Bytes that do not depend on the step: header, mask and padding values."""
+    """Bytes that do not depend on the step: header, mask, padding values and drawing."""
     return stream.HEADER_BYTES + len(analysis.padding.written)
+
+
+def exact(analysis: Analysis, step: int) -> bool:
+    """Whether the code at a step gives every sample back; without writing it."""
+    raster = analysis.raster
+    chosen = partition_at(analysis, step)
+    tables = _bases(analysis.transform)
+    results = []
+    for values, by_size in zip(
+        chosen.values, _plane_steps(analysis.weighting, step, raster.format.channels), strict=True
+    ):
+        found, ends = np.empty_like(values), np.zeros(len(chosen.tiles), dtype=np.int32)
+        shifts = leaves.quantise_tiles(values, chosen.tiles, by_size, _tables()[2], found, ends)
+        leaves.dequantise_tiles(found, chosen.tiles, ends, by_size, *shifts)
+        whole = planes.padded_shape(raster.shape, contexts.LARGEST)
+        results.append(leaves.inverse_tiles(found, chosen.tiles, ends, tables, whole))
+    wrong = planes.from_planes(results, analysis.centres, raster.format, raster.shape) != raster.samples
+    return not (wrong if analysis.hidden is None else wrong[~analysis.hidden]).any()
+
+
+def _bases(name: str) -> tuple[npt.NDArray[np.float64], ...]:
+    return tuple(transform.basis(name, size) for size in SIZES)
 
 
 def write(analysis: Analysis, step: int) -> bytes:
     """Quantise and code at the step of an index; equal arguments give equal bytes on every processor."""
     raster = analysis.raster
-    chosen = _partition_at(analysis, step)
-    buffer, coder, shifts = _write_planes(analysis, chosen, step, thin=0)
+    chosen = partition_at(analysis, step)
+    buffer, coder, shifts = write_planes(analysis, chosen, step, thin=0)
     centres = [*analysis.centres, 0, 0]
     header = stream.Header(
         transform=TRANSFORMS.index(analysis.transform),
@@ -182,18 +233,22 @@ def write(analysis: Analysis, step: int) -> bytes:
         centres=(centres[0], centres[1], centres[2]),
         shifts=(shifts[0], shifts[1], shifts[2], shifts[3], shifts[4], shifts[5]),
         version=ADAPTIVE_VERSION,
+        drawn=int(analysis.drawn),
     )
     return stream.write(header, buffer[: finish_encoding(buffer, coder)].tobytes())
 
 
-def _write_planes(
+def write_planes(
     analysis: Analysis, chosen: Partition, step: int, thin: int
 ) -> tuple[npt.NDArray[np.uint8], Coder, list[int]]:
     """Quantise and code all planes; buffer, encoder behind them and quantiser's shifts."""
     found = np.empty_like(chosen.values[0])
     ends = np.zeros(len(chosen.tiles), dtype=np.int32)
     coder, done = analysis.padding.coder, len(analysis.padding.written)
-    buffer = np.empty(done + WORST_BYTES * (contexts.LARGEST**2 + 2) + 2 * chosen.cells.size + 2 * found.size, np.uint8)
+    buffer = np.empty(
+        done + WORST_BYTES * (contexts.LARGEST**2 + 2) + 2 * chosen.cells.size + 2 * found.size,
+        np.uint8,
+    )
     buffer[:done] = np.frombuffer(analysis.padding.written, dtype=np.uint8)
     states = new_states(contexts.CONTEXTS)
     coder = tree.encode_tree(chosen.cells, states, buffer, coder)
@@ -230,77 +285,23 @@ def _write_levels(
         buffer = larger
 
 
-def _partition_counts(analysis: Analysis, chosen: Partition) -> npt.NDArray[np.int64]:
-    """Expected magnitudes of all tiles and of every fourth: (2, bins)."""
-    counts = np.zeros((2, rate.BINS), np.int64)
-    places = np.zeros((len(SIZES), SIZES[-1] ** 2), np.int32)
-    for plane, scale in enumerate(planes.PLANE_SCALES[analysis.raster.format.channels]):
-        relative = np.ones(places.shape)
-        for kind, size in enumerate(SIZES):
-            relative[kind, : size * size] = _relative(analysis.weighting, size, plane > 0) * scale
-            places[kind, : size * size] = context.place_table(size)
-        partition.tile_counts(chosen.values[plane], chosen.tiles, places, relative, counts)
-    return counts
-
-
-def search(analysis: Analysis, target_bytes: float) -> tuple[int, bytes, int]:
-    """Find the step whose code has the asked size; see `rate.search`."""
-    wanted = target_bytes - fixed_bytes(analysis)
-    chosen = _partition_at(analysis, rate.step_for(_counts(analysis), wanted * FIRST_SCALE))
-    counts = _partition_counts(analysis, chosen)
-
-    def share(step: int) -> float:
-        """Bytes of a sample of the tiles, over what the counts predict of them."""
-        _, coder, _ = _write_planes(analysis, _partition_at(analysis, step), step, thin=3)
-        written = coder[0] - len(analysis.padding.written)
-        predicted = max(rate.predicted_bytes(counts[1], step), 1)
-        return float(max(written - LEARNING, written // 2) / predicted)
-
-    def sample(asked: int) -> int | None:
-        if len(chosen.tiles) < SAMPLED_FROM:
-            return None
-        step = rate.step_for(counts[0], wanted / USUAL)
-        found = share(step)
-        again = rate.step_for(counts[0], (wanted - LEARNING) / (found * SAMPLE_SCALE))
-        if abs(again - step) > SAMPLED_AGAIN:
-            found = share(again)
-        return int(found * SAMPLE_SCALE * rate.predicted_bytes(counts[0], asked)) + LEARNING
-
-    put = functools.partial(write, analysis)
-    return rate.search(put, sample, counts[0], fixed_bytes(analysis), target_bytes)
-
-
-@functools.lru_cache(maxsize=1)
-def _counts(analysis: Analysis) -> npt.NDArray[np.int64]:
-    """Expected magnitudes of tiles of one size, for a first guess of the step."""
-    total = np.zeros(rate.BINS, dtype=np.int64)
-    size = SIZES[COUNTED]
-    coded = _coded_tiles(analysis.coded, COUNTED)
-    for plane, scale in enumerate(planes.PLANE_SCALES[analysis.raster.format.channels]):
-        part = rate.magnitude_counts(
-            analysis.coefficients[plane][COUNTED],
-            coded.ravel(),
-            coded.shape[1],
-            context.place_table(size),
-            _relative(analysis.weighting, size, plane > 0) * scale,
-        )
-        total += part * (int(coded.sum()) * size * size) // max(int(part.sum()), 1)
-    return total
-
-
 def decode(header: stream.Header, payload: bytes, format: PixelFormat) -> Samples:  # noqa: A002
     """Read the payload of an adaptive code; see `Codec.decode`."""
     shape = (header.rows, header.columns)
     buffer = np.frombuffer(payload, dtype=np.uint8)
     coder, padding, values = read_padding(header, format, buffer)
-    cells = np.where(_coded(shape, padding), 0, tree.EMPTY).astype(np.uint8)
+    drawn = None
+    if header.drawn:
+        coder, drawn = drawing.read(shape, format, buffer, coder)
+    hidden = _hidden(padding, drawn)
+    cells = np.where(_coded(shape, hidden), 0, tree.EMPTY).astype(np.uint8)
     coder = tree.decode_tree(cells, new_states(contexts.CONTEXTS), buffer, coder)
     if coder[0] > len(buffer) + 4:
         raise CorruptCode("a tiled code ends early")
     tiles = tree.tiles_of(cells)
     count = sum(16 << (2 * int(kind)) for kind in tiles[:, 0])
     lookup, _, _ = _tables()
-    tables = tuple(transform.basis(TRANSFORMS[header.transform], size) for size in SIZES)
+    tables = _bases(TRANSFORMS[header.transform])
     results = []
     weighting = WEIGHTINGS[header.weighting]
     for plane, by_size in enumerate(_plane_steps(weighting, header.step, header.channels)):
@@ -317,5 +318,7 @@ def decode(header: stream.Header, payload: bytes, format: PixelFormat) -> Sample
     if coder[0] != len(buffer) + 4:
         raise CorruptCode("a tiled code holds more or fewer bytes than its levels take")
     samples = planes.from_planes(results, header.centres, format, shape)
+    if drawn is not None:
+        drawing.restore(samples, drawn, format)
     restore_padding(samples, header, padding, values)
     return samples

@@ -16,6 +16,8 @@ __all__ = ["dequantise_tiles", "gather", "inverse_tiles", "neighbour_table", "qu
 
 Array: TypeAlias = npt.NDArray[Any]
 
+THIN_FROM: Final = 256
+"""Of so many tiles and more the shifts are measured on every fourth."""
 LONE: Final = 1.05
 """A magnitude of 1 is dropped below this, in steps, where all around is zero."""
 COMPANY: Final = 0.04
@@ -63,14 +65,20 @@ def neighbour_table() -> npt.NDArray[np.int32]:
 
 
 @njit(cache=True, nogil=True, _nrt=False)
-def _company(own: Array, steps: Array, near: Array) -> float:
-    """Magnitudes around a coefficient in steps, those that share a side twice."""
+def _is_lone(own: Array, steps: Array, near: Array, k: int) -> bool:
+    """Whether a level of 1 costs more than it is worth: small itself, and little around it.
+
+    Magnitudes around are summed in steps, those that share a side twice.
+    """
+    fine = abs(own[k]) / steps[k]
+    if fine >= LONE:
+        return False
     total = 0.0
     for j in range(8):
-        k = near[j]
-        if k > 0:
-            total += (2.0 if j < 4 else 1.0) * (abs(own[k]) / steps[k])
-    return total
+        other = near[j]
+        if other > 0:
+            total += (2.0 if j < 4 else 1.0) * (abs(own[other]) / steps[other])
+    return bool(fine < LONE - COMPANY * total)
 
 
 @njit(cache=True, nogil=True)
@@ -93,26 +101,30 @@ def quantise_tiles(
         target = levels[start : start + count]
         step = steps[kind]
         for k in range(count):
-            level = np.int32(np.floor(abs(own[k]) / step[k] + OFFSET))
-            target[k] = -level if own[k] < 0 else level
-        level = np.int32(np.floor(abs(own[0]) / step[0] + 0.5))
+            # From a double, since 64-bit whole numbers would keep this loop from being vectorised.
+            value = np.float64(own[k])
+            level = np.int32(abs(value) / step[k] + OFFSET)
+            target[k] = -level if value < 0 else level
+        level = np.int32(abs(np.float64(own[0])) / step[0] + 0.5)
         target[0] = -level if own[0] < 0 else level
         end = 0
+        measured = tile & 3 == 0 or tiles.shape[0] < THIN_FROM
         for k in range(1, count):
             size = abs(target[k])
-            if not size:
+            if size == 0:
                 continue
-            fine = abs(own[k]) / step[k]
-            if size == 1:
-                if fine < LONE and fine < LONE - COMPANY * _company(own, step, neighbours[kind, k]):
-                    target[k] = 0
-                    continue
-                total_one += int(np.floor((fine - 1.0) * 256.0))
-                count_one += 1
-            else:
-                total_more += int(np.floor((fine - size) * 256.0))
-                count_more += 1
+            if size == 1 and _is_lone(own, step, neighbours[kind, k], k):
+                target[k] = 0
+                continue
             end = k
+            if measured:
+                part = int(np.floor((abs(own[k]) / step[k] - size) * 256.0))
+                if size == 1:
+                    total_one += part
+                    count_one += 1
+                else:
+                    total_more += part
+                    count_more += 1
         ends[tile] = end
     one = min(max(total_one // max(count_one, 1), -127), 127)
     return one, min(max(total_more // max(count_more, 1), -127), 127)

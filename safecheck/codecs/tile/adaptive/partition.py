@@ -73,7 +73,7 @@ def tile_costs(
     while side * side < count:
         side *= 2
     side += 4
-    magnitudes = np.zeros(side * side, np.int64)
+    magnitudes = np.zeros(side * side)
     expected = np.empty(count)
     quarters = expected.view(np.int64)
     for tile in range(coefficients.shape[0]):
@@ -96,7 +96,7 @@ def tile_costs(
         for k in range(count):
             quarter = (quarters[k] >> 50) - (1023 << 2) - LOWEST_QUARTER
             spent += bits[np.uintp(min(max(quarter, 0), BINS - 1))]
-            fine = np.int64(abs(own[k]) * scale[k] * FINE)
+            fine = np.int64(abs(np.float64(own[k])) * scale[k] * FINE)
             level = (fine + ROUNDED_UP) >> 6
             if k:
                 largest |= level
@@ -141,7 +141,7 @@ def tile_counts(values: Array, tiles: Array, places: Array, relative: Array, cou
     `values` are coefficients tile after tile, `tiles` of `tree.tiles_of`; `places` of `context.place_table`, `relative`
     (5, 4096) by size. Into the first row of `counts` (2, `BINS`) go all tiles, into the second every fourth.
     """
-    magnitudes = np.zeros(68 * 68, np.int64)
+    magnitudes = np.zeros(68 * 68)
     expected = np.empty(4096)
     quarters = expected.view(np.int64)
     mean: Any = 0
