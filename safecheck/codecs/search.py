@@ -24,7 +24,9 @@ MOST_ENCODES = 12
 _ONE_SIDED = 5
 """After so many codes on the same side of the asked size the end of the dial is tried."""
 _BEYOND = 1.25
-"""From the third code on the same side on, the secant is followed so much further: on a bent curve it falls short."""
+"""After three codes on the same side the secant is followed so much further: on a bent curve it falls short."""
+_MARGIN = 0.02
+"""The secant keeps this share of the bracket away from its ends."""
 _NARROW = 1e-3
 """A bracket narrower than this, in natural logarithms of the dial, holds one stair of the size."""
 
@@ -145,7 +147,7 @@ def _next(points: list[_Point], exponent: float, low: float, high: float) -> flo
         slope = (last.excess - points[-2].excess) / (last.at - points[-2].at)
     if slope * exponent <= 0 or abs(slope) < abs(exponent) / 10:
         return wanted
-    reach = _BEYOND if len(points) > 1 else 1.0
+    reach = _BEYOND if len(points) > 2 else 1.0
     return min(max(last.at - reach * last.excess / slope, low), high)
 
 
@@ -163,8 +165,9 @@ def _inside(points: list[_Point], above: _Point, below: _Point) -> float | None:
     # The secant alone creeps where the size is a staircase, so every third code halves the bracket.
     if first.excess != second.excess and len(points) % 3 != 2:
         at = first.at - first.excess * (second.at - first.at) / (second.excess - first.excess)
-        if 0.02 <= (at - above.at) / width <= 0.98:
-            return at
+        share = (at - above.at) / width
+        if 0 < share < 1:
+            return above.at + min(max(share, _MARGIN), 1 - _MARGIN) * width
     return above.at + width / 2
 
 
