@@ -109,7 +109,9 @@ def turn(encode: Callable[[float], bytes], target_bytes: float, dial: Dial, star
     best: tuple[float, float, bytes] | None = None
     at: float | None = min(max(math.log(start), low), high)
     while at is not None and len(points) < MOST_ENCODES:
-        setting = min(max(math.exp(at), dial.lowest), dial.highest)
+        # Logarithms there and back miss an end by the last digit.
+        inside = min(max(math.exp(at), dial.lowest), dial.highest)
+        setting = {low: dial.lowest, high: dial.highest}.get(at, inside)
         code = encode(setting)
         points.append(_Point(at, math.log(max(len(code), 1) / target_bytes)))
         miss = abs(len(code) / target_bytes - 1)

@@ -64,6 +64,7 @@ def test_the_ends_of_the_dial_tell_floor_and_ceiling(exponent: float) -> None:
     sizes = [len(encode(1)), len(encode(10))]
     floor = search.turn(encode, min(sizes) / 2, dial, 5)
     assert (floor.end, len(floor.code)) == ("floor", min(sizes))
+    assert floor.dial in (dial.lowest, dial.highest)
     ceiling = search.turn(encode, max(sizes) * 2, dial, 5)
     assert (ceiling.end, len(ceiling.code)) == ("ceiling", max(sizes))
 
