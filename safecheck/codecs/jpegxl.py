@@ -28,6 +28,8 @@ DISTANCE_LOWEST, DISTANCE_HIGHEST = 0.01, 25.0
 """What libjxl itself brings a distance to."""
 _EFFORT = 7
 """libjxl's own default."""
+_REVERSIBLE_EFFORT = 3
+"""On real frames 4 to 13 times as fast as 7, for codes from 1 % smaller to 15 % larger."""
 _EFFORTS = range(1, 10)
 _SLOPE = -0.7
 """d log(size) / d log(distance), as seen on CT, MR, CR and ultrasound frames at 5 to 20:1."""
@@ -138,7 +140,7 @@ class JpegXl:
 class JpegXlLossless:
     """Reversible JPEG XL."""
 
-    effort: int = _EFFORT
+    effort: int = _REVERSIBLE_EFFORT
     """How hard the library tries, 1 to 9."""
 
     name: ClassVar[str] = "jpegxl-reversible"
