@@ -238,5 +238,7 @@ def _read_back(original: Original, codec: Codec, raster: Raster, encoded: Encode
 
 
 def _largest_error(samples: Samples, coded: Samples) -> int:
-    """Largest difference in stored values."""
-    return int(np.abs(samples.astype(np.int64) - coded.astype(np.int64)).max())
+    """Largest difference in stored values, of which none has more than 16 bits."""
+    if np.array_equal(samples, coded):
+        return 0
+    return int(np.abs(np.subtract(samples, coded, dtype=np.int32)).max())
