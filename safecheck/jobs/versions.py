@@ -15,6 +15,7 @@ LIBRARIES = (
     "numpy",
     "pyarrow",
     "pydicom",
+    "pyjpegls",
     "pylibjpeg-openjpeg",
     "pypdf",
     "reportlab",
