@@ -233,7 +233,7 @@ class Plan(Document):
     scope: Scope = Scope()
     candidates: Annotated[tuple[CandidatePlan, ...], Field(min_length=1)]
     reference: str = ""
-    """Name of the candidate whose damage the table of equal damage takes; '' for the first one proposed at a ratio."""
+    """Name of the candidate whose damage the others are to equal; '' for the middle ratio of the first codec."""
     windows: tuple[WindowPlan, ...] = ()
     regions: RegionPlan | None = None
     limits: tuple[LimitPlan, ...] = ()

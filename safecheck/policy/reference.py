@@ -1,4 +1,4 @@
-"""The candidate whose damage the others are held beside: named by the plan, or the first that it proposes."""
+"""The candidate whose damage the others are held beside: named by the plan, or found by the record."""
 
 from __future__ import annotations
 
