@@ -139,14 +139,14 @@ class Tiled:
         admit(self, raster)
         index, code, encodes = self._search(raster, target_bytes)
         reached = _reached(len(code), target_bytes)
-        if step_at(index) < EXACT_BELOW_STEP and self._exact(raster, index, code):
+        if step_at(index) < EXACT_BELOW_STEP and self._exact(raster, code):
             write = self._writer(raster)
             low, high = index, nearest_step(EXACT_BELOW_STEP)
             while high - low > EXACT_GAP:
                 middle = (low + high) // 2
                 tried = write(middle)
                 encodes += 1
-                if self._exact(raster, middle, tried):
+                if self._exact(raster, tried):
                     low, code = middle, tried
                 else:
                     high = middle
@@ -154,11 +154,11 @@ class Tiled:
             reached = Reached.REVERSIBLE_SMALLER if len(code) < target_bytes else reached
         return Encoded(code, {**self.settings, "step": step_at(index)}, reached, encodes)
 
-    def _exact(self, raster: Raster, index: int, code: bytes) -> bool:
+    def _exact(self, raster: Raster, code: bytes) -> bool:
         if isinstance(self.size, str):
             from safecheck.codecs.tile.adaptive import coding as adaptive
 
-            return adaptive.exact(adaptive.analyse(raster, self.transform, self.weighting), index)
+            return adaptive.exact(adaptive.analyse(raster, self.transform, self.weighting), code)
         return np.array_equal(self.decode(code, raster.format, raster.shape), raster.samples)
 
 

@@ -69,10 +69,15 @@ def _fill_tile(tile: Array, known: Array, sweeps: int) -> None:
         rows[r] = _nearest_in_line(tile[r], known[r])
     for c in range(size):
         _nearest_in_line(tile[:, c], rows)
-    unknown = np.flatnonzero(known.ravel() == 0)
+    unknown = np.empty(size * size, np.int64)
+    count = 0
+    for k in range(size * size):
+        if not known[k // size, k % size]:
+            unknown[count] = k
+            count += 1
     for _ in range(sweeps):
-        for k in unknown:
-            r, c = k // size, k % size
+        for at in range(count):
+            r, c = unknown[at] // size, unknown[at] % size
             total = tile[max(r - 1, 0), c] + tile[min(r + 1, size - 1), c]
             total += tile[r, max(c - 1, 0)] + tile[r, min(c + 1, size - 1)]
             tile[r, c] = np.floor(total + 0.5) / 4.0

@@ -260,7 +260,8 @@ def _halves(
     order = scan_order(size)
     places = np.stack([order // size, order % size], axis=1).astype(np.int32)
     if not _mirrored(table) or size < FOLDED_FROM:
-        return table, np.empty((0, 0)), places
+        # A copy, since a kernel compiles once more for arrays that are read-only.
+        return table.copy(), np.empty((0, 0)), places
     half = size // 2
     folded = ((places & 1) * half + (places >> 1)).astype(np.int32)
     return np.ascontiguousarray(table[0::2, :half]), np.ascontiguousarray(table[1::2, :half]), folded

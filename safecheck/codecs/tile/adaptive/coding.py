@@ -35,6 +35,8 @@ STEPS_TOGETHER = 128
 """Tiles are chosen once for so many places of the grid of steps, an octave."""
 DRAWING_SHARE = 32
 """A drawing may take the frame's size over this."""
+SCREENED = 16
+"""Of so many tiles one is held against the raster first."""
 SWEEPS = 4
 """How often what is filled is smoothed; more gains nothing here."""
 
@@ -190,22 +192,32 @@ def fixed_bytes(analysis: Analysis) -> int:
     return stream.HEADER_BYTES + len(analysis.padding.written)
 
 
-def exact(analysis: Analysis, step: int) -> bool:
-    """Whether the code at a step gives every sample back; without writing it."""
+def exact(analysis: Analysis, code: bytes) -> bool:
+    """Whether a code of this raster gives every sample back, told without reading its payload."""
     raster = analysis.raster
-    chosen = partition_at(analysis, step)
-    tables = _bases(analysis.transform)
+    header, _ = stream.read(code, raster.format, raster.shape)
+    chosen = partition_at(analysis, header.step)
+    # Some of the tiles mostly say no already.
+    return _agree(analysis, chosen, chosen.tiles[::SCREENED], header) and _agree(analysis, chosen, chosen.tiles, header)
+
+
+def _agree(analysis: Analysis, chosen: Partition, tiles: npt.NDArray[np.int32], header: stream.Header) -> bool:
+    """Whether all samples of some tiles come back."""
+    raster = analysis.raster
     results = []
-    for values, by_size in zip(
-        chosen.values, _plane_steps(analysis.weighting, step, raster.format.channels), strict=True
-    ):
-        found, ends = np.empty_like(values), np.zeros(len(chosen.tiles), dtype=np.int32)
-        shifts = leaves.quantise_tiles(values, chosen.tiles, by_size, _tables()[2], found, ends)
-        leaves.dequantise_tiles(found, chosen.tiles, ends, by_size, *shifts)
-        whole = planes.padded_shape(raster.shape, contexts.LARGEST)
-        results.append(leaves.inverse_tiles(found, chosen.tiles, ends, tables, whole))
+    by_plane = _plane_steps(analysis.weighting, header.step, header.channels)
+    whole = planes.padded_shape(raster.shape, contexts.LARGEST)
+    for plane, (values, by_size) in enumerate(zip(chosen.values, by_plane, strict=True)):
+        found, ends = np.empty_like(values), np.zeros(len(tiles), dtype=np.int32)
+        leaves.quantise_tiles(values, tiles, by_size, _tables()[2], found, ends)
+        leaves.dequantise_tiles(found, tiles, ends, by_size, *header.shifts[2 * plane : 2 * plane + 2])
+        results.append(leaves.inverse_tiles(found, tiles, ends, _bases(analysis.transform), whole))
     wrong = planes.from_planes(results, analysis.centres, raster.format, raster.shape) != raster.samples
-    return not (wrong if analysis.hidden is None else wrong[~analysis.hidden]).any()
+    asked = np.zeros(whole, np.bool_)
+    for kind, row, column, _ in tiles:
+        asked[4 * row : 4 * (row + (1 << kind)), 4 * column : 4 * (column + (1 << kind))] = True
+    asked = asked[: raster.shape[0], : raster.shape[1]]
+    return not wrong[asked if analysis.hidden is None else asked & ~analysis.hidden].any()
 
 
 def _bases(name: str) -> tuple[npt.NDArray[np.float64], ...]:

@@ -21,12 +21,14 @@ SAMPLED_FROM = 256
 """Fewer tiles are not sampled."""
 SAMPLED_AGAIN = 12
 """Places on the grid of steps by which the first sample may move the step before another is taken."""
-USUAL = 0.94
-"""What a code takes of the bytes predicted, on most frames."""
+RICH_BITS = 2
+"""Codes of more bits a coefficient than this keep nearer to what is predicted."""
+USUAL = {True: 0.98, False: 0.94}
+"""What a code, rich or not, takes of the bytes predicted, on most frames. Measured once on real frames."""
+SAMPLE_SCALE = {True: 0.997, False: 0.986}
+"""What a whole code, rich or not, takes of the sample's share, since contexts learn longer. Measured likewise."""
 LEARNING = 220
-"""Bytes that the contexts take to learn, in a sample as in a whole code; measured once on real frames."""
-SAMPLE_SCALE = 0.992
-"""What a whole code takes of the sample's share beside, since weights learn longer. Measured once on real frames."""
+"""Bytes that contexts take to learn beside, in a sample as in a whole code. Measured likewise."""
 
 
 def _partition_counts(analysis: coding.Analysis, chosen: coding.Partition) -> npt.NDArray[np.int64]:
@@ -47,6 +49,7 @@ def search(analysis: coding.Analysis, target_bytes: float) -> tuple[int, bytes, 
     wanted = target_bytes - coding.fixed_bytes(analysis)
     chosen = coding.partition_at(analysis, rate.step_for(_counts(analysis), wanted * FIRST_SCALE))
     counts = _partition_counts(analysis, chosen)
+    rich = 8 * wanted > RICH_BITS * len(chosen.values[0]) * len(chosen.values)
 
     def share(step: int) -> float:
         """Bytes of a sample of the tiles, over what the counts predict of them."""
@@ -58,12 +61,12 @@ def search(analysis: coding.Analysis, target_bytes: float) -> tuple[int, bytes, 
     def sample(asked: int) -> int | None:
         if len(chosen.tiles) < SAMPLED_FROM:
             return None
-        step = rate.step_for(counts[0], wanted / USUAL)
+        step = rate.step_for(counts[0], wanted / USUAL[rich])
         found = share(step)
-        again = rate.step_for(counts[0], (wanted - LEARNING) / (found * SAMPLE_SCALE))
+        again = rate.step_for(counts[0], (wanted - LEARNING) / (found * SAMPLE_SCALE[rich]))
         if abs(again - step) > SAMPLED_AGAIN:
             found = share(again)
-        return int(found * SAMPLE_SCALE * rate.predicted_bytes(counts[0], asked)) + LEARNING
+        return int(found * SAMPLE_SCALE[rich] * rate.predicted_bytes(counts[0], asked)) + LEARNING
 
     put = functools.partial(coding.write, analysis)
     return rate.search(put, sample, counts[0], coding.fixed_bytes(analysis), target_bytes)
