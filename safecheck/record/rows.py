@@ -111,7 +111,7 @@ class MeasureRow(TreatedFrame):
     asked: str = column("", "ratio per frame, ratio per series or setting; empty for controls.", default="")
     ratio_asked: float | None = optional("to 1", "Ratio asked for, on the basis named beside it.")
     basis: str = column("", "Basis of the ratio asked for.")
-    reached: str = column("", "asked, bracket or why the ratio was not met; setting where no ratio was asked of the frame.")
+    reached: str = column("", "asked, bracket or why the ratio was not met; setting where none was asked of the frame.")
     encodes: int = column("", "Encodings needed to reach it.")
     code_bytes: int = column("bytes", "Size of the code stream.")
     code_crc32: int | None = optional("", "CRC-32 of the code stream; null for delivered copies.")
