@@ -21,7 +21,6 @@ __all__ = [
     "Analysis",
     "Partition",
     "analyse",
-    "coded_tiles",
     "decode",
     "exact",
     "fixed_bytes",
@@ -49,8 +48,8 @@ class Analysis:
     transform: str
     weighting: str
     centres: tuple[int, ...]
-    coded: npt.NDArray[np.uint8]
-    """1 for each cell of 4 x 4 pixels that is coded: (rows, columns)."""
+    coded: tuple[npt.NDArray[np.uint8], ...]
+    """1 for each tile of each size that holds a coded pixel: (tile rows, tile columns)."""
     coefficients: tuple[tuple[npt.NDArray[np.int32], ...], ...]
     """Of each plane and size: (tiles, size * size), in `transform.scan_order`."""
     padding: Padding
@@ -98,12 +97,13 @@ def _plane_steps(weighting: str, step: int, channels: int) -> list[npt.NDArray[n
     return planes_steps
 
 
-def coded_tiles(coded: npt.NDArray[np.uint8], kind: int) -> npt.NDArray[np.uint8]:
-    """1 for each tile of a size that holds a coded cell: (tile rows, tile columns)."""
-    side = 1 << kind
-    rows, columns = coded.shape
-    found: npt.NDArray[np.uint8] = coded.reshape(rows // side, side, columns // side, side).max(axis=(1, 3))
-    return found
+def _coded_by_size(coded: npt.NDArray[np.uint8]) -> tuple[npt.NDArray[np.uint8], ...]:
+    """1 for each tile of each size that holds a coded cell: (tile rows, tile columns)."""
+    found = [coded]
+    for _ in SIZES[1:]:
+        rows = found[-1][0::2] | found[-1][1::2]
+        found.append(np.ascontiguousarray(rows[:, 0::2] | rows[:, 1::2]))
+    return tuple(found)
 
 
 # A frame meets the same codec at several ratios, one after the other: the last analysis serves them all.
@@ -117,7 +117,7 @@ def analyse(raster: Raster, name: str, weighting: str) -> Analysis:
     coefficients = tuple(
         tuple(transform.forward(plane, transform.basis(name, size)) for size in SIZES) for plane in filled
     )
-    coded = _coded(raster.shape, hidden)
+    coded = _coded_by_size(_coded(raster.shape, hidden))
     return Analysis(raster, name, weighting, centres, coded, coefficients, written, drawn is not None, hidden)
 
 
@@ -153,7 +153,7 @@ def _coded(shape: tuple[int, int], hidden: Mask | None) -> npt.NDArray[np.uint8]
 
 def _costs(analysis: Analysis, steps_of_planes: list[npt.NDArray[np.float64]], kind: int) -> npt.NDArray[np.int64]:
     """What tiles of a size cost, over all planes: (tile rows, tile columns), 0 where nothing is coded."""
-    coded = coded_tiles(analysis.coded, kind)
+    coded = analysis.coded[kind]
     costs = np.zeros(coded.size, np.int64)
     size = SIZES[kind]
     for plane, by_size in enumerate(steps_of_planes):
@@ -175,8 +175,8 @@ def _partition(analysis: Analysis, group: int) -> Partition:
     step = min(group * STEPS_TOGETHER, steps.STEPS - 1)
     by_plane = _plane_steps(analysis.weighting, step, analysis.raster.format.channels)
     costs = [_costs(analysis, by_plane, kind) for kind in range(len(SIZES))]
-    cells = np.empty_like(analysis.coded)
-    partition.choose(*costs, analysis.coded, cells)
+    cells = np.empty_like(analysis.coded[0])
+    partition.choose(*costs, analysis.coded[0], cells)
     tiles = tree.tiles_of(cells)
     values = tuple(leaves.gather(own, tiles, cells.shape[1]) for own in analysis.coefficients)
     return Partition(cells, tiles, values)

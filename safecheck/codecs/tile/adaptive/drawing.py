@@ -69,11 +69,14 @@ def _two_valued(keys: Array, first: Array, second: Array) -> None:
 def _keys(raster: Raster, rows: slice | npt.NDArray[np.intp]) -> npt.NDArray[np.int64]:
     """One number a pixel of some rows, equal where all channels are; -1 for padding."""
     samples = raster.samples[rows].reshape(-1, raster.shape[1], raster.format.channels)
-    keys = np.zeros(samples.shape[:2], np.int64)
-    for channel in range(raster.format.channels):
-        keys = (keys << 16) + samples[..., channel] - raster.format.lowest
+    keys: npt.NDArray[np.int64] = samples[..., 0].astype(np.int64)
+    keys -= raster.format.lowest
+    for channel in range(1, raster.format.channels):
+        keys <<= 16
+        keys += samples[..., channel]
+        keys -= raster.format.lowest
     if raster.padding is not None:
-        keys[raster.padding[rows]] = -1
+        np.copyto(keys, -1, where=raster.padding[rows])
     return keys
 
 

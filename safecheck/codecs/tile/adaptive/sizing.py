@@ -77,7 +77,7 @@ def _counts(analysis: coding.Analysis) -> npt.NDArray[np.int64]:
     """Expected magnitudes of tiles of one size, for a first guess of the step."""
     total = np.zeros(rate.BINS, dtype=np.int64)
     size = SIZES[COUNTED]
-    coded = coding.coded_tiles(analysis.coded, COUNTED)
+    coded = analysis.coded[COUNTED]
     for plane, scale in enumerate(planes.PLANE_SCALES[analysis.raster.format.channels]):
         part = rate.magnitude_counts(
             analysis.coefficients[plane][COUNTED],
