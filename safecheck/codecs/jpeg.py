@@ -44,7 +44,7 @@ class Jpeg:
     def __post_init__(self) -> None:
         """Check the range."""
         if type(self.quality) is not int or not 1 <= self.quality <= QUALITY_HIGHEST:
-            raise ValueError(f"quality is {self.quality}, expected a whole number from 1 to {QUALITY_HIGHEST}")
+            raise ValueError(f"quality is {self.quality!r}, expected a whole number from 1 to {QUALITY_HIGHEST}")
 
     @property
     def settings(self) -> Settings:

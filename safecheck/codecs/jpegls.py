@@ -37,7 +37,7 @@ class JpegLs:
     def __post_init__(self) -> None:
         """Check the range."""
         if type(self.near) is not int or not 1 <= self.near <= NEAR_HIGHEST:
-            raise ValueError(f"near is {self.near}, expected a whole number from 1 to {NEAR_HIGHEST}")
+            raise ValueError(f"near is {self.near!r}, expected a whole number from 1 to {NEAR_HIGHEST}")
 
     @property
     def settings(self) -> Settings:

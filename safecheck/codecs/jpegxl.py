@@ -38,7 +38,7 @@ _LONGEST_SIDE = 0xFFFF
 
 def _effort_checked(effort: int) -> None:
     if type(effort) is not int or effort not in _EFFORTS:
-        raise ValueError(f"effort is {effort}, expected a whole number from {_EFFORTS[0]} to {_EFFORTS[-1]}")
+        raise ValueError(f"effort is {effort!r}, expected a whole number from {_EFFORTS[0]} to {_EFFORTS[-1]}")
 
 
 @dataclass(frozen=True, slots=True)
