@@ -46,7 +46,7 @@ class Reached(enum.StrEnum):
     ASKED = "asked"
     """Within `RATE_TOLERANCE`."""
     SMALL_FRAME = "small frame"
-    """The target is under `EXEMPT_BYTES`; nearest size taken."""
+    """The target is under `EXEMPT_BYTES` and lies between two sizes that the codec can give; nearest size taken."""
     CODEC_FLOOR = "codec floor"
     """The codec can make it no smaller."""
     CODEC_CEILING = "codec ceiling"

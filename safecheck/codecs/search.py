@@ -254,10 +254,8 @@ def tell(end: End, target_bytes: float, reversible_bytes: Callable[[], int]) -> 
         return Reached.ASKED
     if end == "ceiling" and reversible_bytes() <= target_bytes:
         return Reached.REVERSIBLE_SMALLER
-    if target_bytes < EXEMPT_BYTES:
-        return Reached.SMALL_FRAME
-    return {
-        "floor": Reached.CODEC_FLOOR,
-        "ceiling": Reached.CODEC_CEILING,
-        "between": Reached.COARSE_STEPS,
-    }[end]
+    if end == "floor":
+        return Reached.CODEC_FLOOR
+    if end == "ceiling":
+        return Reached.CODEC_CEILING
+    return Reached.SMALL_FRAME if target_bytes < EXEMPT_BYTES else Reached.COARSE_STEPS

@@ -63,9 +63,10 @@ def test_noise_that_no_reversible_code_shrinks_reaches_the_ceiling() -> None:
     assert len(encoded.code) > 0.9 * raster.size_bytes(SizeBasis.BITS_STORED)
 
 
-def test_frames_whose_target_is_tiny_say_so() -> None:
+@pytest.mark.parametrize(("target", "reached"), [(70, Reached.CODEC_FLOOR), (250, Reached.SMALL_FRAME)])
+def test_frames_whose_target_is_tiny_say_so_unless_the_dial_ended(target: int, reached: Reached) -> None:
     raster = contract.raster(PixelFormat(16, 12, False, "MONOCHROME2"), (32, 32), "noise")
-    assert Jpeg2000().encode_to_size(raster, 70).reached is Reached.SMALL_FRAME
+    assert Jpeg2000().encode_to_size(raster, target).reached is reached
 
 
 def test_noise_has_few_sizes_and_the_nearest_is_told() -> None:

@@ -18,7 +18,7 @@ from safecheck.codecs.tile.settings import (
     TRANSFORMS,
     WEIGHTINGS,
 )
-from safecheck.codecs.tile.steps import nearest_step, step_at
+from safecheck.codecs.tile.steps import STEPS, nearest_step, step_at
 from safecheck.frames import PixelFormat, Raster, Samples
 
 __all__ = ["Tiled"]
@@ -138,7 +138,12 @@ class Tiled:
         """
         admit(self, raster)
         index, code, encodes = self._search(raster, target_bytes)
-        reached = _reached(len(code), target_bytes)
+        reached = Reached.ASKED
+        if abs(len(code) - target_bytes) > RATE_TOLERANCE * target_bytes:
+            too_large = len(code) > target_bytes
+            at_end = self._writer(raster)(STEPS - 1 if too_large else 0)
+            encodes += 1
+            reached = _missed(len(at_end), target_bytes, too_large=too_large)
         if step_at(index) < EXACT_BELOW_STEP and self._exact(raster, code):
             write = self._writer(raster)
             low, high = index, nearest_step(EXACT_BELOW_STEP)
@@ -162,10 +167,10 @@ class Tiled:
         return np.array_equal(self.decode(code, raster.format, raster.shape), raster.samples)
 
 
-def _reached(size_bytes: int, target_bytes: float) -> Reached:
-    """Tell a size from the asked one, exactness aside."""
-    if abs(size_bytes - target_bytes) <= RATE_TOLERANCE * target_bytes:
-        return Reached.ASKED
-    if target_bytes < EXEMPT_BYTES:
-        return Reached.SMALL_FRAME
-    return Reached.CODEC_FLOOR if size_bytes > target_bytes else Reached.CODEC_CEILING
+def _missed(end_bytes: int, target_bytes: float, *, too_large: bool) -> Reached:
+    """Say why a size was missed, from the code at the end of the dial on that side, exactness aside."""
+    if too_large and end_bytes > target_bytes:
+        return Reached.CODEC_FLOOR
+    if not too_large and end_bytes < target_bytes:
+        return Reached.CODEC_CEILING
+    return Reached.SMALL_FRAME if target_bytes < EXEMPT_BYTES else Reached.COARSE_STEPS

@@ -184,9 +184,19 @@ def test_the_floor_is_told() -> None:
     assert len(encoded.code) > 5000
 
 
-def test_a_small_target_is_exempt() -> None:
-    raster = real_frames.grey("ct")
-    encoded = Tiled().encode_to_size(raster, 100)
+def test_the_floor_is_told_of_a_small_target_too() -> None:
+    encoded = Tiled().encode_to_size(real_frames.grey("ct"), 100)
+    assert encoded.reached is Reached.CODEC_FLOOR
+
+
+def test_a_small_target_between_the_ends_of_the_dial_is_exempt() -> None:
+    # Half a byte is more than the tolerance on a code of under 50 bytes.
+    samples = np.zeros((8, 8), np.uint16)
+    samples[:4] = 4095
+    raster = Raster(samples, GREY)
+    smallest = len(Tiled(step=2.0**22).encode(raster))
+    assert smallest < 50
+    encoded = Tiled().encode_to_size(raster, smallest + 0.5)
     assert encoded.reached is Reached.SMALL_FRAME
 
 
