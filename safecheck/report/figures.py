@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 from reportlab.graphics.shapes import Circle, Drawing, Group, Line, Polygon, PolyLine, Rect, String
 
-from safecheck.report.blocks import Bars, Bound, Chart, Point, Series
+from safecheck.report.blocks import Bars, Chart, Point, Series
 from safecheck.report.theme import (
     ACCENT,
     HAIR,
@@ -25,9 +26,14 @@ from safecheck.report.theme import (
     text_width,
 )
 
-__all__ = ["bars_drawing", "chart_drawing", "nice_ticks", "ratio_ticks"]
+__all__ = ["bars_drawing", "chart_drawing", "log_ticks", "nice_ticks", "ratio_ticks"]
 
 _SMALL = 7.0
+_KEY_LINE = 11.0
+_STEP, _SPREAD = 2.5, 5.0
+"""Points between neighbouring curves, and between the outermost at most."""
+_WIDE = 8.0
+"""Largest over smallest median from which an axis from zero would press curves flat."""
 _DASHES: tuple[tuple[float, ...] | None, ...] = (
     *(None, (4, 2), (1.4, 1.6), (7, 2, 1.5, 2), (2.5, 1.2), (9, 3)),
     *((1, 3), (6, 1.5), (3, 3, 1, 3)),
@@ -47,10 +53,10 @@ class _Scale:
     logarithmic: bool = False
 
     def at(self, value: float) -> float:
-        """Position of a value."""
+        """Position of a value; by logarithm what lies below the lowest stands there."""
         low, high = self.low, self.high
         if self.logarithmic:
-            low, high, value = math.log(low), math.log(high), math.log(value)
+            low, high, value = math.log(low), math.log(high), math.log(max(value, low))
         return self.start + (value - low) / (high - low) * (self.end - self.start)
 
 
@@ -75,26 +81,62 @@ def ratio_ticks(low: float, high: float, width: float, apart: float = 17.0) -> l
 
 
 def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
-    """Draw one chart: title and key above, axes, declared limits, curves with their spread."""
+    """Draw one chart: title and key above, axes, declared limits, curves with their spread.
+
+    `height` is that of a chart whose key takes one line; further lines are added, so that they press no curve flat.
+    """
     load_fonts()
-    drawing = Drawing(width, height, initialFontName=REGULAR)
     keys = _key(chart.series, width)
-    top = height - 14 - 11 * len(keys) - 4
-    ticks = nice_ticks(max([chart.highest, *(bound.value for bound in chart.near_bounds)]))
-    labels = _tick_labels(ticks)
-    left = max(text_width(label, REGULAR, _SMALL) for label in labels) + 8
+    height += _KEY_LINE * (len(keys) - 1)
+    drawing = Drawing(width, height, initialFontName=REGULAR)
+    top = height - 14 - _KEY_LINE * len(keys) - 4
+    y, ticks = _error_axis(chart, 27, top - 10)
+    left = max(text_width(label, REGULAR, _SMALL) for _, label in ticks) + 8
     ratios = [point.x for item in chart.series for point in item.points]
     x = _Scale(min(ratios) / 1.12, max(ratios) * 1.12, left, width - 6, logarithmic=True)
-    y = _Scale(0, ticks[-1], 27, top - 10)
     drawing.add(String(0, height - 9, printable(chart.title), fontName=MEDIUM, fontSize=8.4, fillColor=INK))
     _draw_keys(drawing, chart.series, keys, height - 22)
-    drawing.add(String(0, top - 3, printable(chart.y_title), fontName=REGULAR, fontSize=_SMALL, fillColor=MID))
-    _axes(drawing, chart, x, y, list(zip(ticks, labels, strict=True)), width)
-    _bounds(drawing, x, y, chart.near_bounds)
-    for index, item in enumerate(chart.series):
-        shift = 4.2 * (index - (len(chart.series) - 1) / 2) if chart.apart else 0.0
+    y_title = f"{chart.y_title}, logarithmic axis" if y.logarithmic else chart.y_title
+    drawing.add(String(0, top - 3, printable(y_title), fontName=REGULAR, fontSize=_SMALL, fillColor=MID))
+    _axes(drawing, chart, x, y, ticks, width)
+    for bound in chart.near_bounds:
+        at = y.at(bound.value)
+        drawing.add(Line(x.start, at, x.end, at, strokeColor=INK, strokeWidth=0.7, strokeDashArray=[1, 2]))
+    shifts = _shifts(len(chart.series)) if chart.apart else [0.0] * len(chart.series)
+    for index, (item, shift) in enumerate(zip(chart.series, shifts, strict=True)):
         _curve(drawing, item.points, x, y, index, shift)
+    _name_bounds(drawing, chart, x, y)
     return drawing
+
+
+def _shifts(curves: int) -> list[float]:
+    """Move each curve sideways by a little: by so little in all that a point still stands at its ratio."""
+    step = min(_STEP, _SPREAD / max(curves - 1, 1))
+    return [step * (index - (curves - 1) / 2) for index in range(curves)]
+
+
+def _error_axis(chart: Chart, start: float, end: float) -> tuple[_Scale, list[tuple[float, str]]]:
+    """The axis of errors with its ticks: from zero, or by logarithm where zero would press small medians flat."""
+    points = [point for item in chart.series for point in item.points]
+    bounds = [bound.value for bound in chart.near_bounds]
+    medians, high = [point.y for point in points], max([chart.highest, *bounds])
+    if min(medians) > 0 and max(medians) > _WIDE * min(medians):
+        low = min(*medians, *bounds, *(point.low for point in points if point.low))
+        scale = _Scale(low / 1.25, high * 1.1, start, end, logarithmic=True)
+        return scale, [(tick, f"{tick:,.12g}") for tick in log_ticks(scale.low, scale.high)]
+    ticks = nice_ticks(high)
+    return _Scale(0, ticks[-1], start, end), list(zip(ticks, _tick_labels(ticks), strict=True))
+
+
+def log_ticks(low: float, high: float, most: int = 7) -> list[float]:
+    """Return ticks between two values above 0: 1, 2 and 5 times powers of ten, or fewer where these are many."""
+    powers = range(math.floor(math.log10(low)), math.ceil(math.log10(high)) + 1)
+    for factors, step in (((1, 2, 5), 1), ((1, 3), 1), ((1,), 1), ((1,), 2), ((1,), 3)):
+        kept = [float(f"{factor}e{power}") for power in powers if power % step == 0 for factor in factors]
+        kept = [tick for tick in kept if low <= tick <= high]
+        if len(kept) <= most:
+            break
+    return kept or [low]
 
 
 def _tick_labels(ticks: Sequence[float]) -> list[str]:
@@ -110,9 +152,9 @@ def _axes(
     """Grid lines, ticks and the title of the axis of ratios."""
     for value, label in ticks:
         at = y.at(value)
-        colour = INK if value == 0 else HAIR
-        drawing.add(Line(x.start, at, x.end, at, strokeColor=colour, strokeWidth=0.6 if value == 0 else 0.35))
+        drawing.add(Line(x.start, at, x.end, at, strokeColor=HAIR, strokeWidth=0.35))
         drawing.add(_label(label, x.start - 4, at - 2.4, "end"))
+    drawing.add(Line(x.start, y.start, x.end, y.start, strokeColor=INK, strokeWidth=0.6))
     for ratio in ratio_ticks(x.low, x.high, x.end - x.start):
         at = x.at(ratio)
         drawing.add(Line(at, y.start, at, y.start - 3, strokeColor=INK, strokeWidth=0.5))
@@ -126,16 +168,37 @@ def _label(text: str, x: float, y: float, anchor: str, colour: object = INK) -> 
     return String(x, y, text, fontName=REGULAR, fontSize=_SMALL, textAnchor=anchor, fillColor=colour)
 
 
-def _bounds(drawing: Drawing, x: _Scale, y: _Scale, bounds: Sequence[Bound]) -> None:
-    """Declared limits, each named above its line, or below it where the next one is too near."""
-    last = -math.inf
-    for bound in sorted(bounds, key=lambda item: item.value):
-        at = y.at(bound.value)
-        drawing.add(Line(x.start, at, x.end, at, strokeColor=INK, strokeWidth=0.7, strokeDashArray=[1, 2]))
+def _name_bounds(drawing: Drawing, chart: Chart, x: _Scale, y: _Scale) -> None:
+    """Name each declared limit at its line, where it hides least of the curves, on white so that none strikes it."""
+    taken = _traces(chart, x, y)
+    for bound in sorted(chart.near_bounds, key=lambda item: item.value):
         text = fit_text(bound.text, LIGHT, _SMALL, x.end - x.start - 6)
-        base = max(at + 2.5, last + _SMALL + 1)
-        drawing.add(String(x.start + 3, base, text, fontName=LIGHT, fontSize=_SMALL, fillColor=INK))
-        last = base
+        wide, at = text_width(text, LIGHT, _SMALL), y.at(bound.value)
+        places = [(left, base) for base in (at + 2.5, at - 7.5) for left in (x.start + 3, x.end - wide - 3)]
+        inside = [place for place in places if place[1] >= y.start] or places[:2]
+        left, base = min(inside, key=lambda place: _hidden(taken, place, wide))
+        drawing.add(Rect(left - 1, base - 1.6, wide + 2, _SMALL + 1, fillColor=WHITE, strokeColor=None))
+        drawing.add(String(left, base, text, fontName=LIGHT, fontSize=_SMALL, fillColor=INK))
+        # A name counts for more than any curve, so that the next does not stand upon it.
+        taken += [(left + part, base + 2) for part in range(math.ceil(wide)) for _ in range(10)]
+
+
+def _hidden(taken: Sequence[tuple[float, float]], place: tuple[float, float], wide: float) -> int:
+    """How many of the points taken a name would stand upon."""
+    left, base = place
+    return sum(left - 3 <= at <= left + wide + 3 and base - 3 <= up <= base + _SMALL + 1 for at, up in taken)
+
+
+def _traces(chart: Chart, x: _Scale, y: _Scale) -> list[tuple[float, float]]:
+    """Points along the curves and at the ends of their spreads."""
+    found = []
+    for item in chart.series:
+        places = [(x.at(point.x), y.at(point.y)) for point in item.points]
+        for (a, b), (c, d) in itertools.pairwise(places):
+            found += [(a + (c - a) * part / 40, b + (d - b) * part / 40) for part in range(41)]
+        for point, (at, _) in zip(item.points, places, strict=True):
+            found += [(at, y.at(value)) for value in (point.low, point.y, point.high, point.worst) if value is not None]
+    return found
 
 
 def _curve(drawing: Drawing, points: Sequence[Point], x: _Scale, y: _Scale, index: int, shift: float) -> None:
@@ -202,7 +265,7 @@ def _key_width(item: Series) -> float:
 def _draw_keys(drawing: Drawing, series: Sequence[Series], lines: Sequence[Sequence[int]], top: float) -> None:
     """Samples of line and marker with the names."""
     for number, line in enumerate(lines):
-        at, y = 0.0, top - 11 * number
+        at, y = 0.0, top - _KEY_LINE * number
         for index in line:
             colour = _GREYS[index % len(_GREYS)]
             dash = _dash(index)
@@ -216,7 +279,7 @@ def bars_drawing(bars: Bars, width: float) -> Drawing:
     """Draw bars on one scale from zero: open ones are before, filled ones after."""
     load_fonts()
     line, gap = 11.5, 8.0
-    names = min(max(text_width(printable(bar.label), REGULAR, 7.4) for bar in bars.bars) + 8, width * 0.36)
+    names = min(max(text_width(printable(bar.label), REGULAR, 7.4) for bar in bars.bars) + 8, width * 0.5)
     largest = max(bar.value for bar in bars.bars) or 1.0
     room = width - names - max(text_width(bar.text, REGULAR, 7.4) for bar in bars.bars) - 8
     height = line * len(bars.bars) + gap

@@ -39,7 +39,7 @@ FEW, MANY = 4, 8
 
 _CAPTION = (
     "Over frames: mark, median; bar, 5th to 95th percentile; short line, largest. Each at the median ratio that its "
-    "candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. Curves stand slightly apart, so "
+    "candidate reached, on the bits-stored basis; the axis of ratios is logarithmic. Curves stand apart by a hair, so "
     "that they do not hide each other."
 )
 _CAPTION_OF_ONE = "Values of the one frame at the ratio reached, on the bits-stored basis; logarithmic axis of ratios."
