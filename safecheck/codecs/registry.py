@@ -204,15 +204,19 @@ def reversible_form(name: str) -> Codec | None:
     return codec(form[0], **form[1]) if form else None
 
 
-def load_kernels() -> None:
-    """Compile what the codecs compile, or take it from the disk: once in a parent process, before workers start."""
+def load_kernels(adaptive: bool = False) -> None:
+    """Compile what the codecs compile, or take it from the disk: once in a parent process, before workers start.
+
+    What chosen tile sizes need of it takes as long again, and is asked for by `adaptive`.
+    """
     samples = (np.arange(48 * 40).reshape(48, 40) * 7 % 4096).astype(np.uint16)
     padding = np.zeros(samples.shape, dtype=np.bool_)
     padding[:8] = True
     form = PixelFormat(16, 12, False, "MONOCHROME2")
     raster = Raster(samples, form, padding)
-    tiled = rated("tiled")
-    tiled.decode(tiled.encode_to_size(raster, 600.0).code, form, raster.shape)
+    for size in (8, "adaptive") if adaptive else (8,):
+        tiled = cast(RatedCodec, codec("tiled", size=size))
+        tiled.decode(tiled.encode_to_size(raster, 600.0).code, form, raster.shape)
 
 
 def from_settings(name: str, settings: Settings) -> Codec:

@@ -152,10 +152,13 @@ def _differs(frame: Frame, delivered: Frame) -> str:
     return ""
 
 
-def load_kernels() -> None:
-    """Compile all kernels, or take them from the disk: once in a parent process, before workers start."""
+def load_kernels(adaptive: bool = False) -> None:
+    """Compile all kernels, or take them from the disk: once in a parent process, before workers start.
+
+    Those of tiles chosen over the frame only if `adaptive`.
+    """
     from safecheck.codecs.registry import load_kernels as load_codec_kernels
     from safecheck.measures.baseline import load_kernels as load_measure_kernels
 
     load_measure_kernels()
-    load_codec_kernels()
+    load_codec_kernels(adaptive)

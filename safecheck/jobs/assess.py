@@ -267,7 +267,7 @@ def _run_all(
             treatment,
             work,
             executor=executor,
-            warm_up=lambda: _warm_up(prepared.site, tell),
+            warm_up=lambda: _warm_up(prepared, tell),
             report=report,
         )
         again = _tasks(prepared, refused_frames(tasks, work))
@@ -280,13 +280,16 @@ def _threads(prepared: Prepared, executor: Executor) -> int:
     return max(1, executor.workers // busy)
 
 
-def _warm_up(site: Site, tell: Tell) -> None:
+def _warm_up(prepared: Prepared, tell: Tell) -> None:
     """Compile once, here, before workers start; nothing to do where these versions have been compiled before."""
-    made_of = versions()
+    site, made_of = prepared.site, versions()
+    adaptive = any(("size", "adaptive") in each.settings for each in prepared.assignment.candidates)
+    if adaptive:
+        made_of["tiled"] = "adaptive"
     if site.has_kernels(made_of):
         return
     tell("Preparing compiled code (some seconds on the first run after an installation)")
-    load_kernels()
+    load_kernels(adaptive)
     site.see_kernels(made_of)
 
 
