@@ -161,6 +161,7 @@ def assess(
             workers=workers,
             with_images=with_images,
             attachment=not no_attachment,
+            dry_run=dry_run,
         )
 
     (say_dry_run if dry_run else run_main_job)(request, Screen(quiet=quiet))

@@ -16,6 +16,7 @@ from dataclasses import dataclass
 from typing import Literal, TypeAlias
 
 from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Reached
+from safecheck.errors import CodecUnavailable
 
 __all__ = ["MOST_ENCODES", "Dial", "End", "Found", "Step", "bracket", "tell", "turn"]
 
@@ -248,14 +249,23 @@ def tell(end: End, target_bytes: float, reversible_bytes: Callable[[], int]) -> 
     target_bytes
         Asked size.
     reversible_bytes
-        Gives the smallest reversible size; called only where the codec could make its code no larger.
+        Gives the smallest reversible size; called only where the codec could make its code no larger. Where it finds no
+        reversible codec on this machine, none is smaller.
     """
     if end == "met":
         return Reached.ASKED
-    if end == "ceiling" and reversible_bytes() <= target_bytes:
+    if end == "ceiling" and _holds(reversible_bytes, target_bytes):
         return Reached.REVERSIBLE_SMALLER
     if end == "floor":
         return Reached.CODEC_FLOOR
     if end == "ceiling":
         return Reached.CODEC_CEILING
     return Reached.SMALL_FRAME if target_bytes < EXEMPT_BYTES else Reached.COARSE_STEPS
+
+
+def _holds(reversible_bytes: Callable[[], int], target_bytes: float) -> bool:
+    """Whether a reversible code of this machine is within the asked size."""
+    try:
+        return reversible_bytes() <= target_bytes
+    except CodecUnavailable:
+        return False

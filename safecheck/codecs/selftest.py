@@ -5,7 +5,6 @@ The rasters are made here from whole numbers alone, so the same check runs every
 
 from __future__ import annotations
 
-import importlib
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from typing import Literal
@@ -14,6 +13,7 @@ import numpy as np
 
 from safecheck.codecs import registry
 from safecheck.codecs.base import Codec, RatedCodec
+from safecheck.codecs.libraries import imagecodecs_with
 from safecheck.errors import CodecError, CodecUnavailable
 from safecheck.frames import PixelFormat, Raster, Samples, SizeBasis
 
@@ -57,16 +57,24 @@ def check(name: str) -> CodecCheck:
         If no codec has that name.
     """
     library = registry.entry(name).library
+    missing = CodecCheck(name, library, "", False, None, "not available here")
+    if not registry.available(name):
+        return missing
     try:
-        codec = registry.codec(name)
-        version = codec.version
+        return _check(registry.codec(name), library)
     except CodecUnavailable:
-        return CodecCheck(name, library, "", False, None, "not available here")
+        # A library that is here may have been built without the part that a codec needs.
+        return missing
+
+
+def _check(codec: Codec, library: str) -> CodecCheck:
+    """Check a codec whose library is here."""
+    version = codec.version
     rasters = _rasters(_EVERY_DEPTH if codec.reversible else _SOME_DEPTHS)
     taken = [raster for raster in rasters if codec.refuses(raster.format, raster.shape) is None]
     fault = next((fault for raster in taken if (fault := _fault(codec, raster))), "")
     exact = not fault if codec.reversible else None
-    return CodecCheck(name, library, version, not fault, exact, fault or _held(codec, taken))
+    return CodecCheck(codec.name, library, version, not fault, exact, fault or _held(codec, taken))
 
 
 def _held(codec: Codec, rasters: list[Raster]) -> str:
@@ -90,6 +98,8 @@ def _fault(codec: Codec, raster: Raster) -> str:
     try:
         code, allowed = _written(codec, raster)
         back = codec.decode(code, form, raster.shape)
+    except CodecUnavailable:
+        raise
     except CodecError as error:
         return f"{name}: {error}"
     largest = int(np.abs(back.astype(np.int64) - raster.samples.astype(np.int64)).max())
@@ -113,7 +123,10 @@ def _written(codec: Codec, raster: Raster) -> tuple[bytes, float]:
 
 def _second_decoder() -> bool:
     """Whether the other JPEG 2000 decoder is here."""
-    return registry.available("jpeg2000-reversible")
+    try:
+        return bool(registry.codec("jpeg2000-reversible").version)
+    except CodecUnavailable:
+        return False
 
 
 def _decoders_agree(code: bytes, decoded: Samples) -> bool:
@@ -123,7 +136,7 @@ def _decoders_agree(code: bytes, decoded: Samples) -> bool:
     """
     if not _second_decoder():
         return True
-    second = importlib.import_module("imagecodecs")
+    second = imagecodecs_with("JPEG2K")
     try:
         again = second.jpeg2k_decode(code, numthreads=1)
     except RuntimeError:

@@ -6,10 +6,10 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
-import imagecodecs
 import numpy as np
 import numpy.typing as npt
 
+from safecheck.dicom.decoder_libraries import load_imagecodecs
 from safecheck.dicom.decoders import DECODERS
 from safecheck.dicom.frame_pixels import read_frame_pixels, second_frame_pixels
 from safecheck.dicom.pixel_header import PixelHeader
@@ -31,7 +31,9 @@ class DecoderCheck:
     library: str
     """Pinned decoder."""
     second_library: str
-    """Second decoder, '' where none is installed with the program."""
+    """Second decoder, '' where none is installed with the program or this machine lacks it."""
+    available: bool
+    """This machine has the pinned decoder."""
     exact: bool | None
     """The pinned decoder gave the samples that were coded, bit for bit; None where nothing here writes the syntax."""
     agree: bool | None
@@ -46,11 +48,23 @@ def check_decoders() -> tuple[DecoderCheck, ...]:
 
 def _check(uid: str, samples: Samples) -> DecoderCheck:
     decoder = DECODERS[uid]
-    encode = _ENCODERS.get(uid.removeprefix(ROOT))
+    second_library = decoder.second_library if decoder.second_available else ""
     exact = agree = None
-    if encode is not None:
-        exact, agree = _round_trip(uid, encode(samples), samples)
-    return DecoderCheck(syntax_of(uid).name, decoder.library, decoder.second_library, exact, agree)
+    code = _written(uid, samples) if decoder.available else None
+    if code is not None:
+        exact, agree = _round_trip(uid, code, samples)
+    return DecoderCheck(syntax_of(uid).name, decoder.library, second_library, decoder.available, exact, agree)
+
+
+def _written(uid: str, samples: Samples) -> bytes | None:
+    """Code of the samples; None where nothing here writes the syntax."""
+    encode = _ENCODERS.get(uid.removeprefix(ROOT))
+    if encode is None:
+        return None
+    try:
+        return encode(samples)
+    except ImportError:
+        return None
 
 
 def _round_trip(uid: str, code: bytes, samples: Samples) -> tuple[bool, bool | None]:
@@ -83,30 +97,32 @@ def _rle(samples: npt.NDArray[Any]) -> bytes:
     planes = [(samples >> 8).astype(np.uint8), (samples & 0xFF).astype(np.uint8)]
     segments = []
     for plane in planes:
-        coded = b"".join(bytes(imagecodecs.packbits_encode(row.tobytes())) for row in plane)
+        coded = b"".join(bytes(load_imagecodecs().packbits_encode(row.tobytes())) for row in plane)
         segments.append(coded + b"\x00" * (len(coded) % 2))
     starts = [64, 64 + len(segments[0])] + [0] * 13
     return np.array([2, *starts], dtype="<u4").tobytes() + b"".join(segments)
 
 
 def _lossless_jpeg(samples: npt.NDArray[Any]) -> bytes:
-    return bytes(imagecodecs.jpeg8_encode(samples, lossless=True, predictor=1, bitspersample=_BITS))
+    return bytes(load_imagecodecs().jpeg8_encode(samples, lossless=True, predictor=1, bitspersample=_BITS))
 
 
 def _jpeg_ls(samples: npt.NDArray[Any]) -> bytes:
-    return bytes(imagecodecs.jpegls_encode(samples))
+    return bytes(load_imagecodecs().jpegls_encode(samples))
 
 
 def _jpeg2000(samples: npt.NDArray[Any]) -> bytes:
-    return bytes(imagecodecs.jpeg2k_encode(samples, level=0, reversible=True, codecformat="J2K", bitspersample=_BITS))
+    return bytes(
+        load_imagecodecs().jpeg2k_encode(samples, level=0, reversible=True, codecformat="J2K", bitspersample=_BITS)
+    )
 
 
 def _htj2k(samples: npt.NDArray[Any]) -> bytes:
-    return bytes(imagecodecs.htj2k_encode(samples, reversible=True, tlm=True))
+    return bytes(load_imagecodecs().htj2k_encode(samples, reversible=True, tlm=True))
 
 
 def _jpeg_xl(samples: npt.NDArray[Any]) -> bytes:
-    return bytes(imagecodecs.jpegxl_encode(samples, lossless=True, bitspersample=_BITS))
+    return bytes(load_imagecodecs().jpegxl_encode(samples, lossless=True, bitspersample=_BITS))
 
 
 _ENCODERS: dict[str, Callable[[npt.NDArray[Any]], bytes]] = {

@@ -14,14 +14,13 @@ from dataclasses import dataclass
 from types import MappingProxyType
 from typing import Any
 
-import imagecodecs
 import numpy as np
 import numpy.typing as npt
-import openjpeg
 from pydicom.encaps import encapsulate
 from pydicom.pixels.decoders.base import get_decoder
 from pydicom.uid import RLELossless
 
+from safecheck.dicom.decoder_libraries import OPENJPEG, is_here, load_imagecodecs, load_openjpeg
 from safecheck.dicom.pixel_header import PixelHeader
 from safecheck.dicom.quiet import quiet_library
 from safecheck.dicom.stream_facts import StreamFacts
@@ -41,12 +40,26 @@ class Decoder:
     """Who decodes a syntax."""
 
     library: str
+    part: str
+    """What of imagecodecs it needs."""
     run: _Decode
     processes: tuple[str, ...] = ()
     """Processes that the code stream may name under this syntax; empty where it names none."""
     second_library: str = ""
     """'' where no second decoder is among the runtime dependencies."""
     second: _Decode | None = None
+    second_part: str = ""
+    """What of imagecodecs the second needs, or `OPENJPEG`; '' for nothing."""
+
+    @property
+    def available(self) -> bool:
+        """Whether this machine has it."""
+        return is_here(self.part)
+
+    @property
+    def second_available(self) -> bool:
+        """Whether there is a second decoder, and this machine has it."""
+        return self.second is not None and (not self.second_part or is_here(self.second_part))
 
 
 def _rle(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
@@ -66,7 +79,9 @@ def _rle(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
     out = np.empty((pixels, header.channels, depth), dtype=np.uint8)
     for segment in range(count):
         # With room for one run of padding and no more: what unpacks to far more than the frame is refused.
-        plane = imagecodecs.packbits_decode(code[bounds[segment] : bounds[segment + 1]], out=pixels + _PACKBITS_RUN)
+        plane = load_imagecodecs().packbits_decode(
+            code[bounds[segment] : bounds[segment + 1]], out=pixels + _PACKBITS_RUN
+        )
         if len(plane) < pixels:
             raise InputRefused("truncated", "an RLE segment holds fewer samples than the frame")
         channel, byte = divmod(segment, depth)
@@ -95,28 +110,28 @@ def _rle_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> 
 
 def _jpeg(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
     if header.channels == 1 or facts is None:
-        return np.asarray(imagecodecs.jpeg8_decode(code))
+        return np.asarray(load_imagecodecs().jpeg8_decode(code))
     marked = facts.coded_colour or ("RGB" if header.photometric == "RGB" else "YBR")
     if facts.process == "lossless":
         marked = "RGB"  # no transform belongs to the lossless process: channels as they are
     colours = {"RGB": "RGB", "YBR": "YCBCR"}
-    return np.asarray(imagecodecs.jpeg8_decode(code, colorspace=colours[marked], outcolorspace="RGB"))
+    return np.asarray(load_imagecodecs().jpeg8_decode(code, colorspace=colours[marked], outcolorspace="RGB"))
 
 
 def _jpeg_lossless_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
-    return np.asarray(imagecodecs.jpegsof3_decode(code))
+    return np.asarray(load_imagecodecs().jpegsof3_decode(code))
 
 
 def _jpeg_ls(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
-    return np.asarray(imagecodecs.jpegls_decode(code))
+    return np.asarray(load_imagecodecs().jpegls_decode(code))
 
 
 def _jpeg2000(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
-    return np.asarray(imagecodecs.jpeg2k_decode(code, numthreads=1))
+    return np.asarray(load_imagecodecs().jpeg2k_decode(code, numthreads=1))
 
 
 def _jpeg2000_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
-    return np.asarray(openjpeg.decode(code, j2k_format=0))
+    return np.asarray(load_openjpeg().decode(code, j2k_format=0))
 
 
 def _htj2k_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
@@ -125,7 +140,7 @@ def _htj2k_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -
     before = sys.unraisablehook
     sys.unraisablehook = dropped.append
     try:
-        samples = np.asarray(imagecodecs.htj2k_decode(code))
+        samples = np.asarray(load_imagecodecs().htj2k_decode(code))
     finally:
         sys.unraisablehook = before
     if dropped:
@@ -134,7 +149,7 @@ def _htj2k_second(code: bytes, header: PixelHeader, facts: StreamFacts | None) -
 
 
 def _jpeg_xl(code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:  # noqa: ARG001
-    return np.asarray(imagecodecs.jpegxl_decode(code, numthreads=1))
+    return np.asarray(load_imagecodecs().jpegxl_decode(code, numthreads=1))
 
 
 def rebuild_jpeg(code: bytes) -> bytes:
@@ -146,29 +161,31 @@ def rebuild_jpeg(code: bytes) -> bytes:
         'decode'.
     """
     try:
-        return bytes(imagecodecs.jpegxl_decode_jpeg(code, numthreads=1))
+        return bytes(load_imagecodecs().jpegxl_decode_jpeg(code, numthreads=1))
     except Exception as error:
         raise InputRefused("decode", f"{type(error).__name__} from the decoder") from None
 
 
 _TURBO, _SOF3 = "libjpeg-turbo (imagecodecs)", "jpegsof3 (imagecodecs)"
 _OPENJPEG = "OpenJPEG (imagecodecs)"
-_LOSSLESS = Decoder(_TURBO, _jpeg, ("lossless",), _SOF3, _jpeg_lossless_second)
-_J2K = Decoder(_OPENJPEG, _jpeg2000, ("jpeg2000",), "OpenJPEG (pylibjpeg-openjpeg)", _jpeg2000_second)
-_HT = Decoder(_OPENJPEG, _jpeg2000, ("htj2k",), "OpenJPH (imagecodecs)", _htj2k_second)
-_XL = Decoder("libjxl (imagecodecs)", _jpeg_xl)
+_LOSSLESS = Decoder(_TURBO, "JPEG8", _jpeg, ("lossless",), _SOF3, _jpeg_lossless_second, "JPEGSOF3")
+_J2K = Decoder(
+    _OPENJPEG, "JPEG2K", _jpeg2000, ("jpeg2000",), "OpenJPEG (pylibjpeg-openjpeg)", _jpeg2000_second, OPENJPEG
+)
+_HT = Decoder(_OPENJPEG, "JPEG2K", _jpeg2000, ("htj2k",), "OpenJPH (imagecodecs)", _htj2k_second, "HTJ2K")
+_XL = Decoder("libjxl (imagecodecs)", "JPEGXL", _jpeg_xl)
 
 DECODERS: MappingProxyType[str, Decoder] = MappingProxyType(
     {
-        f"{ROOT}.5": Decoder("PackBits (imagecodecs)", _rle, (), "pydicom", _rle_second),
-        f"{ROOT}.4.50": Decoder(_TURBO, _jpeg, ("baseline",)),
-        f"{ROOT}.4.51": Decoder(_TURBO, _jpeg, ("baseline", "extended")),
-        f"{ROOT}.4.53": Decoder(_TURBO, _jpeg, ("progressive",)),
-        f"{ROOT}.4.55": Decoder(_TURBO, _jpeg, ("progressive",)),
+        f"{ROOT}.5": Decoder("PackBits (imagecodecs)", "PACKBITS", _rle, (), "pydicom", _rle_second),
+        f"{ROOT}.4.50": Decoder(_TURBO, "JPEG8", _jpeg, ("baseline",)),
+        f"{ROOT}.4.51": Decoder(_TURBO, "JPEG8", _jpeg, ("baseline", "extended")),
+        f"{ROOT}.4.53": Decoder(_TURBO, "JPEG8", _jpeg, ("progressive",)),
+        f"{ROOT}.4.55": Decoder(_TURBO, "JPEG8", _jpeg, ("progressive",)),
         f"{ROOT}.4.57": _LOSSLESS,
         f"{ROOT}.4.70": _LOSSLESS,
-        f"{ROOT}.4.80": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
-        f"{ROOT}.4.81": Decoder("CharLS (imagecodecs)", _jpeg_ls, ("jpeg-ls",)),
+        f"{ROOT}.4.80": Decoder("CharLS (imagecodecs)", "JPEGLS", _jpeg_ls, ("jpeg-ls",)),
+        f"{ROOT}.4.81": Decoder("CharLS (imagecodecs)", "JPEGLS", _jpeg_ls, ("jpeg-ls",)),
         f"{ROOT}.4.90": _J2K,
         f"{ROOT}.4.91": _J2K,
         f"{ROOT}.4.201": _HT,
@@ -208,15 +225,17 @@ def decode(uid: str, code: bytes, header: PixelHeader, facts: StreamFacts | None
 
 
 def second_opinion(uid: str, code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array | None:
-    """Decode one frame with the second decoder of its syntax; None where there is none.
+    """Decode one frame with the second decoder of its syntax; None where there is none, or not on this machine.
 
     Raises
     ------
     InputRefused
         As `decode`.
     """
-    second = DECODERS[uid].second
-    return None if second is None else _checked(second, code, header, facts)
+    decoder = DECODERS[uid]
+    if decoder.second is None or not decoder.second_available:
+        return None
+    return _checked(decoder.second, code, header, facts)
 
 
 def _checked(run: _Decode, code: bytes, header: PixelHeader, facts: StreamFacts | None) -> _Array:
@@ -224,6 +243,8 @@ def _checked(run: _Decode, code: bytes, header: PixelHeader, facts: StreamFacts 
         samples = run(code, header, facts)
     except InputRefused:
         raise
+    except ImportError:
+        raise InputRefused("decode", "the decoder is not available here") from None
     except Exception as error:
         # The one seam to the decoding libraries, which share no base of errors.
         raise InputRefused("decode", f"{type(error).__name__} from the decoder") from None

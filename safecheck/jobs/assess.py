@@ -64,7 +64,7 @@ class AssessRequest:
 
     paths: tuple[Path, ...]
     out: Path | None
-    """Dossier; None for a dry run."""
+    """Dossier; a dry run may name none."""
     plan_file: Path | None = None
     ratios: tuple[float, ...] = DEFAULT_RATIOS
     codecs: tuple[str, ...] = DEFAULT_CODECS
@@ -77,6 +77,8 @@ class AssessRequest:
     """None for all cores."""
     with_images: bool = False
     attachment: bool = True
+    dry_run: bool = False
+    """Only say what a run would do: what is missing is told, and refuses nothing."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -108,7 +110,7 @@ def prepare_run(request: AssessRequest, tell: Tell, standby: Standby | None = No
         If a document, a path or the key is wrong, or a codec is missing that a run, other than a dry one, needs.
     """
     loaded = _loaded(request)
-    if request.out is not None:
+    if request.out is not None and not request.dry_run:
         check_available(loaded.plan)
     site = open_site(request.key_file)
     if standby is not None and site.has_kernels(versions()):

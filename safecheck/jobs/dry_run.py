@@ -10,7 +10,7 @@ from safecheck.dicom.reader import open_instance
 from safecheck.errors import InputRefused
 from safecheck.evaluation import evaluate, load_kernels
 from safecheck.jobs.assess import Prepared
-from safecheck.jobs.plans import is_available
+from safecheck.jobs.plans import is_available, missing_controls
 from safecheck.jobs.series import SeriesAssignments
 from safecheck.record.rows import FrameResult
 from safecheck.runner.pool import cores
@@ -42,6 +42,8 @@ def dry_run(prepared: Prepared) -> Iterator[str]:
     yield f"Candidates: {len(plan.candidates)}, limits: {len(plan.limits)}"
     for name in dict.fromkeys(candidate.codec for candidate in plan.candidates):
         yield f"  {name}: {'available' if is_available(name) else 'not available here'}"
+    for name in missing_controls():
+        yield f"  {name}, a control of every run: not available here"
     yield from _cost(prepared)
     yield from _evidence(prepared, patients)
     yield from _idle_limits(prepared)
@@ -75,6 +77,7 @@ def _cost(prepared: Prepared) -> Iterator[str]:
         yield "Time, rows and disk: nothing to assess"
         return
     missing = [each.codec for each in prepared.assignment.candidates if not is_available(each.codec)]
+    missing += missing_controls()
     if missing:
         yield f"Time and rows: not known, and the run is refused, while {missing[0]} is not available here"
         return

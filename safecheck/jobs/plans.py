@@ -22,11 +22,13 @@ __all__ = [
     "dial_range",
     "is_available",
     "load_plan",
+    "missing_controls",
     "plan_of_command_line",
 ]
 
 DEFAULT_RATIOS = (5.0, 8.0, 10.0, 15.0, 20.0)
 DEFAULT_CODECS = ("tiled", "jpeg2000")
+_CONTROLS = ("jpegls-reversible", "jpeg2000-reversible")
 
 
 @dataclass(frozen=True, slots=True)
@@ -114,12 +116,14 @@ def is_available(codec: str) -> bool:
 
 
 def check_available(plan: Plan) -> None:
-    """Raise where this machine lacks the codec of a candidate.
+    """Raise where this machine lacks the codec of a candidate, or one that every run needs.
 
     Raises
     ------
     DocumentError
         With the dotted path of the first such candidate.
+    UsageError
+        If a codec of the run's own controls is missing.
     """
     for index, candidate in enumerate(plan.candidates):
         if not is_available(candidate.codec):
@@ -128,6 +132,16 @@ def check_available(plan: Plan) -> None:
                 f"candidates[{index}].codec",
                 f"{candidate.codec} is not available here, expected {library} with that codec; see safecheck selftest",
             )
+    for name in missing_controls():
+        raise UsageError(
+            f"{name} is not available here, and every run needs it as a control of its own; expected "
+            f"{registry.entry(name).library} with that codec; see safecheck selftest"
+        )
+
+
+def missing_controls() -> tuple[str, ...]:
+    """Codecs of the reversible codes that every frame carries, where this machine lacks them."""
+    return tuple(name for name in _CONTROLS if not is_available(name))
 
 
 def _check_codecs(plan: Plan) -> None:

@@ -10,6 +10,8 @@ from safecheck.record.document import CodecCheckEntry
 
 __all__ = ["lines_of", "run_selftest"]
 
+_NOT_AVAILABLE = "not available here"
+
 
 def run_selftest() -> tuple[CodecCheckEntry, ...]:
     """Check every codec, and every reading syntax that something here can write."""
@@ -36,19 +38,22 @@ def _of_decoder(check: DecoderCheck) -> CodecCheckEntry:
         False: "a coded pattern did not come back",
     }
     agreed = {None: "", True: "; a second decoder agrees", False: "; a second decoder disagrees"}
+    found = details[check.exact] + agreed[check.agree] if check.available else _NOT_AVAILABLE
     return CodecCheckEntry(
         codec=f"reads {check.syntax}",
         library=check.library + (f", {check.second_library}" if check.second_library else ""),
         version="",
-        available=True,
+        available=check.available,
         reversible_exact=None if check.exact is None else check.exact and check.agree is not False,
-        detail=details[check.exact] + agreed[check.agree],
+        detail=found,
     )
 
 
 def lines_of(checks: Iterable[CodecCheckEntry]) -> Iterator[str]:
     """Yield a line per check."""
     for check in checks:
-        state = check.version or check.library if check.available else "not available here"
+        state = check.version or check.library if check.available else _NOT_AVAILABLE
         exact = {True: ", bit-exact", False: ", NOT bit-exact", None: ""}[check.reversible_exact]
-        yield f"{check.codec}: {state}{exact} ({check.detail})"
+        # What is missing says which library would bring it.
+        detail = check.library if check.detail == _NOT_AVAILABLE else check.detail
+        yield f"{check.codec}: {state}{exact} ({detail})"

@@ -10,7 +10,7 @@ from types import MappingProxyType
 import pytest
 
 from safecheck.codecs import registry
-from safecheck.errors import DocumentError
+from safecheck.errors import DocumentError, UsageError
 from safecheck.jobs.assess import AssessRequest, prepare_run
 from safecheck.jobs.dry_run import dry_run
 from safecheck.jobs.plans import check_available, is_available, load_plan
@@ -63,6 +63,12 @@ def lacking(monkeypatch: pytest.MonkeyPatch, codec: str) -> None:
     monkeypatch.setattr(registry, "ENTRIES", MappingProxyType({**registry.ENTRIES, codec: entry}))
 
 
+def test_a_run_without_the_codecs_of_its_controls_is_refused(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
+    lacking(monkeypatch, "jpegls-reversible")
+    with pytest.raises(UsageError, match="jpegls-reversible is not available here, and every run needs it"):
+        check_available(load_plan(plan(tmp_path, 'codec = "tiled"\nratio = 10')).plan)
+
+
 def test_a_run_without_its_codec_is_refused_before_it_begins(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
     lacking(monkeypatch, "jpeg2000")
     assert not is_available("jpeg2000")
@@ -89,6 +95,11 @@ def test_a_dry_run_says_which_codec_is_missing_and_how_many_rows_there_will_be(
         lacking(monkeypatch, "jpeg2000")
     request = AssessRequest((tmp_path / "ct",), None, plan_file=path, key_file=tmp_path / "key")
     lines = list(dry_run(prepare_run(request, lambda _: None)))
+    named = dataclasses.replace(request, out=tmp_path / "dossier", dry_run=True)
+    assert [line for line in dry_run(prepare_run(named, lambda _: None)) if "available" in line] == [
+        line for line in lines if "available" in line
+    ]
+    assert not (tmp_path / "dossier").exists()
     assert f"  jpeg2000: {'not available here' if lacks else 'available'}" in lines
     assert "  tiled: available" in lines
     if lacks:
