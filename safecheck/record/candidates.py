@@ -6,7 +6,15 @@ from typing import Literal
 
 from safecheck.documents import Document
 
-__all__ = ["CandidateEntry", "CarriageEntry", "LedgerEntry", "NeighbourEntry", "ReversibleEntry", "SpreadEntry"]
+__all__ = [
+    "CandidateEntry",
+    "CarriageEntry",
+    "LedgerEntry",
+    "NeighbourEntry",
+    "ReversibleEntry",
+    "SeriesMissedEntry",
+    "SpreadEntry",
+]
 
 
 class SpreadEntry(Document):
@@ -23,6 +31,21 @@ class SpreadEntry(Document):
     p95: float
     least: float
     largest: float
+
+
+class SeriesMissedEntry(Document):
+    """Series whose total, with one setting for all their frames, misses the ratio asked for by more than 1 %."""
+
+    series: int
+    """Series that miss it."""
+    of_series: int
+    """Series that were run."""
+    frames: int
+    """Frames of the series that miss it."""
+    ratio_least: float
+    """Least of the totals of those series, on the basis asked."""
+    ratio_largest: float
+    """Largest of them."""
 
 
 class CandidateEntry(Document):
@@ -46,6 +69,8 @@ class CandidateEntry(Document):
     """Frames by what `reached` says."""
     spread: tuple[SpreadEntry, ...] = ()
     """What was not fixed by what was asked: error and dial by ratio, ratio and error by setting."""
+    series_missed: SeriesMissedEntry | None = None
+    """Where a ratio per series was asked and some series miss it in all."""
 
 
 class NeighbourEntry(Document):

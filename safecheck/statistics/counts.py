@@ -13,6 +13,7 @@ from safecheck.record.candidates import CandidateEntry
 from safecheck.record.inputs import CountEntry, InputCounts, StratumEntry
 from safecheck.record.tables import TableReader
 from safecheck.statistics.groups import Groups
+from safecheck.statistics.series_ratios import series_missed
 from safecheck.statistics.spread import spread
 from safecheck.wording import ANALYSIS_CODEC, DELIVERED_COPIES, sentence_of
 
@@ -121,6 +122,7 @@ def candidate_entries(plan: Plan, groups: Groups, archive_codecs: frozenset[str]
             frames=len(groups.of_candidate(candidate.name)),
             reached=_reached(groups, candidate.name),
             spread=tuple(spread(groups, candidate.name, asked)),
+            series_missed=series_missed(groups, candidate),
         )
     if len(groups.of_role("delivered")):
         yield CandidateEntry(

@@ -156,8 +156,9 @@ class _Held:
             return None, "no bound: no patient evaluated"
         if outcome.patients < scope.patients:
             return None, f"no bound: {scope.patients - outcome.patients} of {scope.patients} patients not evaluated"
+        patients = f"{outcome.patients} patient{'' if outcome.patients == 1 else 's'}"
         percent = 100 * share_upper_bound(outcome.patients - outcome.patients_within, outcome.patients)
-        text = f"at most {percent:.3g} % of patients exceed it, one-sided 95 % bound, {outcome.patients} patients"
+        text = f"at most {percent:.3g} % of patients exceed it, one-sided 95 % bound, {patients}"
         return percent, text
 
 

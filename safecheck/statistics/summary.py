@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
 
@@ -11,13 +11,12 @@ import numpy as np
 from safecheck.policy.conditions import CONDITION_TEXTS, ExitCondition, in_order, winning
 from safecheck.policy.plan import Plan, plan_hash
 from safecheck.record.candidates import CandidateEntry
-from safecheck.record.delivered import DeliveredEntry
 from safecheck.record.document import SCHEMA_VERSION, CodecCheckEntry, PlanEntry, RecordDocument, TableEntry
 from safecheck.record.inputs import InputCounts
 from safecheck.record.outcomes import Condition, ControlEntry, OutcomeEntry
 from safecheck.record.tables import TableReader
-from safecheck.statistics.bounds import patients_needed
 from safecheck.statistics.cautions import cautions_that_apply
+from safecheck.statistics.conditions import Finished, conditions_of
 from safecheck.statistics.controls import controls
 from safecheck.statistics.counts import candidate_entries, input_counts, left_out, stratum_entries
 from safecheck.statistics.delivered import delivered_entry
@@ -75,7 +74,7 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
     checks = tuple(controls(measures))
     controls_held = _controls_held(checks, counts, candidates)
     copies = delivered_entry(tables["inputs"], measures)
-    conditions = in_order(_conditions(plan, counts, held, controls_held, candidates, copies))
+    said = conditions_of(Finished(plan, counts, held, controls_held, candidates, copies, around.notes))
     return RecordDocument(
         schema_version=SCHEMA_VERSION,
         title=RECORD_TITLE,
@@ -110,9 +109,9 @@ def summarise(plan: Plan, tables: Mapping[str, TableReader], around: Surrounding
         content_reasons=_counted(measures, "content_reason"),
         notes=dict(sorted(around.notes.items())),
         cautions=cautions_that_apply(plan, measures, strata, held, controls_held=controls_held),
-        conditions=tuple(Condition(code=int(code), text=CONDITION_TEXTS[code]) for code in conditions),
-        exit_code=int(winning(conditions)),
-        exit_text=_exit_text(winning(conditions), held),
+        conditions=tuple(Condition(code=int(code), text=said[code]) for code in in_order(said)),
+        exit_code=int(winning(said)),
+        exit_text=said.get(winning(said)) or _done_text(held),
         tables=around.tables,
     )
 
@@ -131,55 +130,9 @@ def _controls_held(
     return any(control == "reversible" for control, _ in ran) and wanted <= ran
 
 
-def _conditions(
-    plan: Plan,
-    counts: InputCounts,
-    held: tuple[OutcomeEntry, ...],
-    controls_held: bool,
-    candidates: tuple[CandidateEntry, ...],
-    copies: DeliveredEntry | None,
-) -> Iterator[ExitCondition]:
-    """Yield the exit conditions that a finished run can have."""
-    no_copies = copies is not None and not copies.pairs_measured
-    if not controls_held:
-        yield ExitCondition.CONTROLS
-    images = counts.assessed + counts.refused
-    too_many_refused = 100 * counts.refused > plan.allowed.refused_percent * max(images, 1)
-    frames = counts.frames_assessed + counts.frames_refused
-    too_many_frames = 100 * counts.frames_refused > plan.allowed.refused_percent * max(frames, 1)
-    too_many_excluded = 100 * counts.excluded > plan.allowed.excluded_percent * max(counts.files, 1)
-    proposed = [entry for entry in held if entry.status == "proposed"]
-    nothing = not counts.frames_assessed or not any(candidate.frames for candidate in candidates)
-    if too_many_refused or too_many_frames or too_many_excluded or nothing or _unheard(proposed) or no_copies:
-        yield ExitCondition.LEFT_OUT
-    if any(entry.outcome == "outside declared limits" for entry in proposed):
-        yield ExitCondition.OUTSIDE
-    if plan.claim and _too_little(plan, proposed):
-        yield ExitCondition.LITTLE_EVIDENCE
-
-
-def _unheard(proposed: list[OutcomeEntry]) -> bool:
-    """Whether limits were declared and any proposed candidate gave no value to any of them."""
-    values: dict[str, int] = {}
-    for entry in proposed:
-        values[entry.candidate] = values.get(entry.candidate, 0) + entry.values
-    return any(number == 0 for number in values.values())
-
-
-def _exit_text(condition: ExitCondition, held: tuple[OutcomeEntry, ...]) -> str:
-    """The condition's words; without limits no word on limits."""
-    if condition is ExitCondition.DONE and not held:
-        return f"ran, controls held, {NO_LIMITS}"
-    return CONDITION_TEXTS[condition]
-
-
-def _too_little(plan: Plan, proposed: list[OutcomeEntry]) -> bool:
-    """Whether any limit without an exceedance rests on fewer patients than the claim needs."""
-    if plan.claim is None or plan.sample.drawn != "random" or not proposed:
-        return True
-    share, confidence = plan.claim.exceeding_at_most_percent / 100, plan.claim.confidence_percent / 100
-    needed = patients_needed(share, confidence=confidence)
-    return any(entry.patients < needed for entry in proposed)
+def _done_text(held: tuple[OutcomeEntry, ...]) -> str:
+    """Words of a run that ended as it should; without limits no word on limits."""
+    return CONDITION_TEXTS[ExitCondition.DONE] if held else f"ran, controls held, {NO_LIMITS}"
 
 
 def _outcomes_text(held: tuple[OutcomeEntry, ...]) -> str:

@@ -6,7 +6,14 @@ from typing import Any
 
 import pytest
 
-from safecheck.record.candidates import CandidateEntry, CarriageEntry, NeighbourEntry, ReversibleEntry, SpreadEntry
+from safecheck.record.candidates import (
+    CandidateEntry,
+    CarriageEntry,
+    NeighbourEntry,
+    ReversibleEntry,
+    SeriesMissedEntry,
+    SpreadEntry,
+)
 from safecheck.report.blocks import Charts, Table
 from tests.report.made_records import CT, make_record
 from tests.report.test_content import report, section, tables, words
@@ -112,6 +119,30 @@ def test_only_a_ratio_that_was_asked_of_the_frame_is_said_to_be_missed(reached: 
     text = words(section(report(make_record(candidates=asked(everything))), "Ratio ledger"))
     assert ("Ratios not reached" in text) is said
     assert "Every frame reached" not in text
+
+
+def test_a_ratio_per_series_that_the_series_miss_in_all_is_said_to_be_missed() -> None:
+    missed = SeriesMissedEntry(series=2, of_series=33, frames=19, ratio_least=7.1, ratio_largest=8.25)
+    per_series = {"asked": "ratio per series", "reached": {"setting": 312}, "series_missed": missed}
+    notes = {"jpeg2000 10:1: codec floor on the reference frame of the series": 19}
+    record = make_record(candidates=asked({"jpeg2000 10:1": per_series}), notes=notes)
+    (table,) = [each for each in tables(section(report(record), "Ratio ledger")) if each.columns[-1].head == "of"]
+    assert [row.cells for row in table.rows if row.cells[0] == "jpeg2000 10:1"] == [
+        (
+            "jpeg2000 10:1",
+            "total of the series 7.10 to 8.25:1, by more than 1 % other than asked, in 2 of 33 series",
+            "19",
+            "312",
+        ),
+        ("jpeg2000 10:1", "codec floor on the reference frame of the series", "19", "312"),
+    ]
+
+
+def test_a_setting_that_is_no_whole_number_has_three_digits_that_count() -> None:
+    found = spread("dial_value", "", 0.0004)
+    record = make_record(candidates=asked({"jpeg2000 10:1": {"asked": "ratio per frame", "spread": (found,)}}))
+    row = table_of(section(report(record), TITLE)).rows[1]
+    assert row.cells[3:] == ("0.000200", "0.000300", "0.000400", "0.000500", "0.000600")
 
 
 def test_every_reversible_codec_stands_beside_the_smallest() -> None:

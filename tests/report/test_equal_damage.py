@@ -113,5 +113,15 @@ def test_the_section_follows_the_ledger_and_warns_that_figures_are_equal_alone()
     assert not [word for word in ("better", "best", "superior", "wins", "recommended") if word in text]
 
 
+def test_a_declared_reference_that_took_no_frame_is_said_in_a_sentence() -> None:
+    record = make_record(equal_damage=())
+    idle = tuple(
+        item.model_copy(update={"frames": 0} if item.candidate == "jpeg2000 10:1" else {}) for item in record.candidates
+    )
+    content = record.plan.model_copy(update={"content": {**record.plan.content, "reference": "jpeg2000 10:1"}})
+    text = words(section(report(record.model_copy(update={"candidates": idle, "plan": content})), TITLE))
+    assert "jpeg2000 10:1, the reference candidate that the plan names: it took no frame." in text
+
+
 def test_without_a_second_codec_there_is_no_section() -> None:
     assert TITLE not in [item.title for item in report(make_record(equal_damage=())).sections]

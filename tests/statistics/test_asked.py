@@ -69,6 +69,33 @@ def test_what_is_not_fixed_stands_with_its_spread(
         assert each.unit == {"ratio_bits_stored": "to 1", "rmse_content": "HU", "dial_value": ""}[each.figure]
 
 
+@pytest.mark.parametrize(
+    ("basis", "ratios", "told"),
+    [("bits-stored", [8.05, 7.95], None), ("bits-stored", [8.0, 6.0], (2, 1, 6.0)), ("now", [8.0, 8.0], (2, 2, 4.0))],
+    ids=["all within 1 %", "one series of two", "another basis"],
+)
+def test_series_that_miss_the_ratio_in_all_are_counted(
+    tmp_path: Path, basis: str, ratios: list[float], told: tuple[int, int, float] | None
+) -> None:
+    made = plan(candidates=[{"codec": "near", "ratio": 8, "per": "series", "basis": basis}])
+    rows: list[Any] = []
+    for number, ratio in enumerate(ratios):
+        study = f"S-{number}"
+        # Two frames of equal size before: of codes of 30 and 60 bytes the total has the weighted mean of their ratios.
+        for frame, (code, own) in enumerate(((30, ratio + 0.2), (60, ratio - 0.1)), start=1):
+            known: dict[str, Any] = {"ratio_bits_stored": own, "times_smaller_than_now": own / 2, "code_bytes": code}
+            rows.append(measured(made.candidates[0].name, study=study, frame=frame, codec="near", **known))
+        rows.append(reversible(study=study))
+    (entry,) = record_of(tmp_path, rows, made).candidates
+    if told is None:
+        assert entry.series_missed is None
+        return
+    missed = entry.series_missed
+    assert missed is not None
+    assert (missed.of_series, missed.series, missed.frames) == (told[0], told[1], 2 * told[1])
+    assert missed.ratio_least == pytest.approx(told[2])
+
+
 def test_errors_of_other_units_are_spread_apart(tmp_path: Path) -> None:
     rows = four_frames("near, near 10")
     rows += [

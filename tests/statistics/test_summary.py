@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import datetime
 from collections.abc import Callable
 from pathlib import Path
@@ -216,6 +217,41 @@ def test_the_exit_code_follows_from_limits_and_claim(
     summed: Summed, made: Plan, values: list[float], code: int
 ) -> None:
     assert summed(frames(values), made).exit_code == code
+
+
+@pytest.mark.parametrize(
+    ("made", "text"),
+    [
+        (plan(limits=[limit(unit="OD")]), f"a proposed candidate without a value for any limit: {ONE} gave none"),
+        (plan(allowed={"refused_percent": 1}), "more files refused than the plan allows: 1 of 2, at most 1 %"),
+    ],
+    ids=["without a value", "refused"],
+)
+def test_what_left_too_little_is_named(summed: Summed, made: Plan, text: str) -> None:
+    refused = row("inputs", input="F", side="original", status="refused", reason="range", frames_refused=1)
+    files = [*inputs(["S-0"]), refused] if "refused" in text else None
+    record = summed(frames([1.0]), made, files=files)
+    assert record.exit_code == 3
+    assert record.exit_text.startswith(text)
+    assert [item.text for item in record.conditions if item.code == 3] == [record.exit_text]
+
+
+def test_a_proposed_candidate_that_took_no_frame_is_named_with_the_reason(tmp_path: Path) -> None:
+    rows = frames([1.0])
+    tables = {
+        "measures": reader(tmp_path, "measures", rows + owed(rows)),
+        "windows": reader(tmp_path, "windows", []),
+        "regions": reader(tmp_path, "regions", []),
+        "inputs": reader(tmp_path, "inputs", inputs(["S-0"])),
+    }
+    made = plan(limits=[limit()], candidates=[{"codec": "jpeg2000", "ratio": 10}, {"codec": "jpeg", "ratio": 10}])
+    notes = {"jpeg 10:1 not run: jpeg: 14 bits stored, expected at most 12": 1}
+    record = summarise(made, tables, dataclasses.replace(AROUND, notes=notes))
+    assert (record.exit_code, record.exit_text) == (
+        3,
+        "a proposed candidate without a value for any limit: jpeg 10:1 took no frame "
+        "(14 bits stored, expected at most 12)",
+    )
 
 
 def test_a_candidate_for_context_does_not_decide(summed: Summed) -> None:

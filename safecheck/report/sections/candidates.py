@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 from safecheck.record.candidates import CandidateEntry, SpreadEntry
@@ -17,6 +18,7 @@ _INTRO = (
     "setting is sought for every frame; by ratio per series one setting, found on the middle frame of a series, serves "
     "all its frames; by setting the ratio is what comes of it."
 )
+_MOST_DECIMALS = 9
 _COLUMNS = (
     Column("Candidate"),
     Column("What was asked"),
@@ -72,11 +74,15 @@ def _rows(head: str, spread: list[tuple[CandidateEntry, SpreadEntry]]) -> Iterat
 
 
 def _decimals(entry: SpreadEntry, parts: list[float]) -> int | None:
-    """Ratios as in the ledger; a dial of whole numbers without decimals."""
+    """Ratios as in the ledger; a dial of whole numbers without decimals, others with three digits that count."""
     if entry.figure == "ratio_bits_stored":
         return 2
-    whole = entry.figure == "dial_value" and all(value == round(value) for value in parts)
-    return 0 if whole else None
+    if entry.figure != "dial_value":
+        return None
+    if all(value == round(value) for value in parts):
+        return 0
+    least = min(abs(value) for value in parts if value)
+    return min(max(2 - math.floor(math.log10(least)), 0), _MOST_DECIMALS)
 
 
 def _parts(entry: SpreadEntry) -> tuple[float, ...]:

@@ -32,10 +32,10 @@ _COLUMNS = (
 
 
 def equal_damage(view: View) -> tuple[Section, ...]:
-    """The section Equal damage; none where only one codec was run."""
+    """The section Equal damage; none where only one codec was run, unless the reference declared took no frame."""
     entries = view.record.equal_damage
     if not entries:
-        return ()
+        return _without_reference(view)
     blocks: list[Block] = [Prose(_intro(entries[0].reference)), Prose(_CAUTION, "caution")]
     with_entries = {item.stratum for item in entries}
     strata = [item for item in view.record.strata if item.stratum in with_entries]
@@ -46,6 +46,15 @@ def equal_damage(view: View) -> tuple[Section, ...]:
     if rest:
         blocks.append(Prose(rest, "note"))
     return (Section("Equal damage", tuple(blocks)),)
+
+
+def _without_reference(view: View) -> tuple[Section, ...]:
+    """One sentence where the plan names a reference that took no frame; nothing else to say without entries."""
+    declared = view.record.plan.content.get("reference")
+    if not any(item.candidate == declared and not item.frames for item in view.candidates) or not view.ran:
+        return ()
+    text = f"No codec is held beside {declared}, the reference candidate that the plan names: it took no frame."
+    return (Section("Equal damage", (Prose(text),)),)
 
 
 def _intro(reference: str) -> str:

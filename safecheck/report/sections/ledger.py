@@ -10,7 +10,7 @@ from safecheck.record.inputs import StratumEntry
 from safecheck.report.blocks import Bar, Bars, Block, Column, Heading, Prose, Row, Section, Table
 from safecheck.report.numbers import aligned, bytes_text, count, joined, plural
 from safecheck.report.sections.view import View, is_analysis, names_with_status, rest_sentence
-from safecheck.wording import ANALYSIS_CODEC
+from safecheck.wording import ANALYSIS_CODEC, ON_REFERENCE
 
 __all__ = ["ledger"]
 
@@ -189,7 +189,8 @@ def _reversible(entries: Sequence[LedgerEntry]) -> str:
 
 
 def _reached(view: View) -> list[Block]:
-    """Where the ratio asked for was not met; a ratio per series is asked of one frame of each."""
+    """Where the ratio asked for was not met: by a frame, or by a series in all where one setting serves it."""
+    by_series = [item for item in view.candidates if item.asked == "ratio per series"]
     asked = [item for item in view.candidates if item.ratio_asked is not None and item.asked != "ratio per series"]
     rows = [
         Row((item.candidate, reached, count(frames), count(item.frames)))
@@ -197,6 +198,7 @@ def _reached(view: View) -> list[Block]:
         for reached, frames in sorted(item.reached.items())
         if reached not in ("asked", "bracket") and frames
     ]
+    rows += [row for item in by_series for row in _reached_by_series(view, item)]
     notes: list[Block] = [Prose(_BRACKET, "note")] if any(item.reached.get("bracket") for item in asked) else []
     if not rows:
         if notes or not view.ran or not any(item.frames for item in asked):
@@ -209,6 +211,23 @@ def _reached(view: View) -> list[Block]:
         Column("of", number=True),
     )
     return [*notes, Heading("Ratios not reached"), Table(columns, tuple(rows))]
+
+
+def _reached_by_series(view: View, item: CandidateEntry) -> list[Row]:
+    """What series got in all instead, then why it was not met where the setting was sought."""
+    missed, of = item.series_missed, count(item.frames)
+    rows = []
+    if missed is not None:
+        totals = aligned((missed.ratio_least, missed.ratio_largest), 2)
+        span = " to ".join(dict.fromkeys(totals))
+        number = f"{count(missed.series)} of {plural(missed.of_series, 'series', 'series')}"
+        text = f"total of the series {span}:1, by more than 1 % other than asked, in {number}"
+        rows.append(Row((item.candidate, text, count(missed.frames), of)))
+    start = f"{item.candidate}: "
+    for note, frames in view.record.notes.items():
+        if note.startswith(start) and note.endswith(ON_REFERENCE):
+            rows.append(Row((item.candidate, note.removeprefix(start), count(frames), of)))
+    return rows
 
 
 _BRACKET = (
