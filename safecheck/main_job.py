@@ -38,8 +38,9 @@ def perform(request: Callable[[], AssessRequest], screen: Screen) -> RecordDocum
     typer.echo(f"Record: {asked.out}/report.pdf")
     counts = record.inputs
     typer.echo(
-        f"{counts.frames_assessed} frames of {counts.studies} studies assessed in {time.monotonic() - since:.0f} s; "
-        f"{counts.excluded} files excluded, {counts.refused} refused, {counts.frames_refused} frames refused"
+        f"{_counted(counts.frames_assessed, 'frame')} of {_counted(counts.studies, 'study', 'studies')} assessed in "
+        f"{time.monotonic() - since:.0f} s; {_counted(counts.excluded, 'file')} excluded, {counts.refused} refused, "
+        f"{_counted(counts.frames_refused, 'frame')} refused"
     )
     return record
 
@@ -49,8 +50,9 @@ def say_outcome(record: RecordDocument, *, demonstration: bool = False) -> None:
     if record.delivered is not None:
         copies = record.delivered
         typer.echo(
-            f"Delivered copies: {copies.pairs_measured} pairs measured, {copies.copies_without_original} copies "
-            f"without an original, {copies.originals_without_copy} originals without a copy"
+            f"Delivered copies: {_counted(copies.pairs_measured, 'pair')} measured, "
+            f"{_counted(copies.copies_without_original, 'copy', 'copies')} without an original, "
+            f"{_counted(copies.originals_without_copy, 'original')} without a copy"
         )
     typer.echo(f"Limits: {record.outcomes_text}")
     typer.echo(f"Controls: {'held' if record.controls_held else 'NOT HELD, run invalid'}")
@@ -69,3 +71,8 @@ def say_dry_run(request: Callable[[], AssessRequest], screen: Screen) -> None:
     screen.clear()
     for line in dry_run(prepared):
         typer.echo(line)
+
+
+def _counted(number: int, one: str, many: str = "") -> str:
+    """'1 study', '2 studies'."""
+    return f"{number} {one if number == 1 else many or one + 's'}"

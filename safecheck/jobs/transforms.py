@@ -165,9 +165,13 @@ def _write(study: TransformStudy, request: TransformRequest) -> None:
 
 def lines_of(study: TransformStudy) -> list[str]:
     """Say what was studied and what was not."""
-    lines = [f"{study.files} files read, {study.series} series with images to study"]
+    lines = [f"{study.files} file{'s' * (study.files != 1)} read, {study.series} series with images to study"]
     lines += [
         f"{item.number} {item.what}{'s' * (item.number > 1)}: {sentence_of(item.reason)}" for item in study.left_aside
     ]
     left = study.series - len(study.frames)
-    return [*lines, f"{len(study.frames)} frames studied, at most {study.most_frames}; {left} series not studied"]
+    number = len(study.frames)
+    return [
+        *lines,
+        f"{number} frame{'s' * (number != 1)} studied, at most {study.most_frames}; {left} series not studied",
+    ]

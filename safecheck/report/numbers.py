@@ -15,6 +15,7 @@ __all__ = [
     "figure",
     "header_ratio",
     "joined",
+    "listed",
     "percent",
     "plural",
     "rounded_time",
@@ -121,6 +122,11 @@ def joined(parts: Sequence[str], last: str = "and") -> str:
     if len(parts) < 2:
         return "".join(parts)
     return f"{', '.join(parts[:-1])} {last} {parts[-1]}"
+
+
+def listed(names: Sequence[str]) -> str:
+    """'a, b and c'; 'a, b; c' where a name itself holds a comma."""
+    return "; ".join(names) if any("," in name for name in names) else joined(names)
 
 
 def bytes_text(size: float | None) -> str:

@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from safecheck.record.document import RecordDocument
 from safecheck.record.outcomes import OutcomeEntry
 from safecheck.record.run import RunFacts
-from safecheck.report.numbers import count, figure, joined, plural, unit_after
+from safecheck.report.numbers import count, figure, listed, plural, unit_after
 from safecheck.report.sections.front import (
     candidate_lines,
     controls_line,
@@ -97,7 +97,7 @@ def _outcome(same: Sequence[OutcomeEntry]) -> str:
     mark = outcome_words(first).removeprefix(first.outcome)
     return (
         f"{first.limit} ({first.side} {figure(first.bound, 12)}{unit_after(first.unit)}): {first.outcome} with "
-        f"{joined([item.candidate for item in same])}, {studies_words(first)}{mark}; {first.bound_text}"
+        f"{listed([item.candidate for item in same])}, {studies_words(first)}{mark}; {first.bound_text}"
     )
 
 

@@ -70,7 +70,10 @@ def test_denominators_name_what_was_not_evaluated_and_not_taken() -> None:
     made = report(changed_outcomes(status="proposed", **counts))
     says = "within in 27 of 30 studies, 2 not evaluated, 5 frames not taken by the codec"
     assert says in words(made.front)
-    assert says in words(section(made, "Limits and outcomes"))
+    (table, *_) = tables(section(made, "Limits and outcomes"))
+    at = [column.head for column in table.columns].index("studies")
+    assert table.rows[1].cells[at] == "27 of 30"
+    assert table.rows[1].cells[-1].endswith("Not evaluated: 2 studies. 5 frames not taken by the codec.")
     assert says in summary(changed_outcomes(status="proposed", **counts))
 
 

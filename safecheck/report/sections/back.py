@@ -9,7 +9,7 @@ from typing import Any
 from safecheck.record.document import CodecCheckEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Signatures, Table
 from safecheck.report.definitions import CONTENT_RULES, REGION_FIGURES, TERMS, definition_of
-from safecheck.report.numbers import NONE, count, rounded_time, signed
+from safecheck.report.numbers import NONE, count, plural, rounded_time, signed
 from safecheck.report.sections.view import View, dash, rest_sentence
 
 __all__ = ["definitions", "keeping", "plan", "signatures", "versions"]
@@ -197,7 +197,7 @@ def keeping(view: View) -> Section:
     record = view.record
     program = record.versions.get("safecheck", "")
     keep = (
-        ("Originals", f"the {count(record.inputs.files)} files as they were read"),
+        ("Originals", _originals(record.inputs.files)),
         ("Site key", f"the key whose short hash is {record.key_id}; without it pseudonyms cannot be recomputed"),
         ("Plan", f"SHA-256 {record.plan.sha256[:16]}…"),
         ("Versions", f"those listed under Versions and selftest{f', program version {program}' if program else ''}"),
@@ -213,6 +213,11 @@ def keeping(view: View) -> Section:
     )
     rows = tuple(Row((what, which, "", "")) for what, which in keep)
     return Section("What to keep, and review", (Table(columns, rows),))
+
+
+def _originals(files: int) -> str:
+    """The files that were read."""
+    return f"the {plural(files, 'file')} as {'it was' if files == 1 else 'they were'} read"
 
 
 def signatures(view: View) -> Section:

@@ -11,7 +11,7 @@ from safecheck.record.document import RecordDocument
 from safecheck.record.inputs import CountEntry, InputCounts
 from safecheck.record.outcomes import ControlEntry
 from safecheck.report.blocks import Block, Column, Heading, Prose, Row, Section, Table
-from safecheck.report.numbers import count, joined, plural
+from safecheck.report.numbers import count, listed, plural
 from safecheck.report.sections.front import controls_line
 from safecheck.report.sections.view import View, dash, place_words
 from safecheck.wording import ON_REFERENCE, RUN_INVALID
@@ -91,7 +91,7 @@ def _sum_line(name: str, counts: tuple[int, int, int, int]) -> str:
     """The sum, said to agree or not."""
     files, assessed, excluded, refused = counts
     line = (
-        f"{name}: {count(files)} files = {count(assessed)} assessed + {count(excluded)} excluded + "
+        f"{name}: {plural(files, 'file')} = {count(assessed)} assessed + {count(excluded)} excluded + "
         f"{count(refused)} refused"
     )
     return f"{line}." if files == assessed + excluded + refused else f"{line}: THE SUMS DO NOT AGREE."
@@ -168,7 +168,7 @@ def _noticed(view: View) -> list[Block]:
         (
             "Not run",
             (Column("Why"), Column("Candidates"), frames),
-            [Row((reason, joined(names), count(number))) for reason, names, number in idle],
+            [Row((reason, listed(names), count(number))) for reason, names, number in idle],
         ),
         (
             "One setting for a series, sought where the ratio was not met",

@@ -11,7 +11,7 @@ from safecheck.record.delivered import DeliveredEntry
 from safecheck.record.outcomes import OutcomeEntry
 from safecheck.report.blocks import Block, Column, Contents, Facts, Heading, Numbered, Prose, Row, Table, Title
 from safecheck.report.definitions import label_of
-from safecheck.report.numbers import bytes_text, count, figure, joined, plural, rounded_time, unit_after
+from safecheck.report.numbers import bytes_text, count, figure, joined, listed, plural, rounded_time, unit_after
 from safecheck.report.sections.view import View
 from safecheck.wording import CAUTIONS, NO_LIMITS, RECORD_TITLE, SHORT_CAUTION
 
@@ -72,9 +72,9 @@ def _asked(view: View) -> tuple[str, ...]:
 def candidate_lines(view: View) -> tuple[str, ...]:
     """What was proposed, what stands for context, and what of the plan was run on no frame."""
     run = [item for item in view.candidates if item.frames]
-    proposed = joined(ratio_groups([item for item in run if item.status == "proposed"]))
-    context = joined(ratio_groups([item for item in run if item.status == "context"]))
-    idle = joined(ratio_groups([item for item in view.candidates if not item.frames]))
+    proposed = listed(ratio_groups([item for item in run if item.status == "proposed"]))
+    context = listed(ratio_groups([item for item in run if item.status == "context"]))
+    idle = listed(ratio_groups([item for item in view.candidates if not item.frames]))
     lines = (
         f"Proposed: {proposed}." if proposed else "",
         f"For context: {context}." if context else "",

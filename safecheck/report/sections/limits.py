@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from dataclasses import replace
 
 from safecheck.record.outcomes import OutcomeEntry
 from safecheck.report.blocks import Block, Column, Prose, Row, Section, Table
-from safecheck.report.numbers import aligned_beside, count, plural
-from safecheck.report.sections.front import limit_words, outcome_words, studies_words
+from safecheck.report.numbers import NONE, aligned_beside, count, figure, joined, plural
+from safecheck.report.sections.front import limit_words, outcome_words
 from safecheck.report.sections.view import View, place_words, rest_sentence
 from safecheck.wording import NO_LIMITS, SHORT_CAUTION
 
@@ -15,14 +16,18 @@ __all__ = ["limits"]
 
 LINES = 400
 
-_COLUMNS = (
+_BOUND_COLUMN = Column("Bound", "% of patients", number=True)
+_COLUMNS: tuple[Column, ...] = (
     Column("Candidate"),
     Column("Outcome"),
     Column("Values outside", number=True),
-    Column("Studies, patients"),
+    Column("studies", number=True, over="Within"),
+    Column("patients", number=True, over="Within"),
+    _BOUND_COLUMN,
     Column("Worst value", number=True),
     Column("Place of the worst value"),
 )
+_BOUND = "Bound: at most so many of the patients exceed it, one-sided 95 %; a dash where the sample carries no bound."
 
 
 def limits(view: View) -> Section:
@@ -32,12 +37,27 @@ def limits(view: View) -> Section:
         return Section("Limits and outcomes", (Prose(f"{NO_LIMITS.capitalize()}."),))
     blocks: list[Block] = [Prose(SHORT_CAUTION, "caution")]
     rows: list[Row] = []
-    for name in dict.fromkeys(item.limit for item in view.record.outcomes):
-        same = [item for item in outcomes if item.limit == name]
+    groups = [[item for item in outcomes if item.limit == name] for name in _names(view)]
+    for same in groups:
         rows += [Row((_head(same),), group=True), *_rows(same)]
-    note = rest_sentence(LINES, len(rows), "all stand in record.json")
-    blocks.append(Table(_COLUMNS, tuple(rows[:LINES]), note=note))
+    blocks.append(_table(rows, bounds=not all(map(_one_bound, groups))))
     return Section("Limits and outcomes", tuple(blocks))
+
+
+def _names(view: View) -> tuple[str, ...]:
+    """Names of the limits, in the plan's order."""
+    return tuple(dict.fromkeys(item.limit for item in view.record.outcomes))
+
+
+def _table(rows: Sequence[Row], *, bounds: bool) -> Table:
+    """The table; a column of bounds only where candidates under a limit have several."""
+    rest = rest_sentence(LINES, len(rows), "all stand in record.json")
+    shown = tuple(rows[:LINES])
+    if bounds:
+        return Table(_COLUMNS, shown, note=f"{_BOUND} {rest}".strip())
+    at = _COLUMNS.index(_BOUND_COLUMN)
+    shown = tuple(row if row.group else replace(row, cells=row.cells[:at] + row.cells[at + 1 :]) for row in shown)
+    return Table(_COLUMNS[:at] + _COLUMNS[at + 1 :], shown, note=rest)
 
 
 def _head(same: Sequence[OutcomeEntry]) -> str:
@@ -61,36 +81,42 @@ def _capital(text: str) -> str:
 def _rows(same: Sequence[OutcomeEntry]) -> list[Row]:
     """All candidates under one limit."""
     worst = aligned_beside([item.worst_value for item in same], same[0].bound)
-    shared = _one_bound(same)
-    return [_row(item, value, shared=shared) for item, value in zip(same, worst, strict=True)]
+    return [_row(item, value) for item, value in zip(same, worst, strict=True)]
 
 
-def _row(item: OutcomeEntry, worst: str, *, shared: bool) -> Row:
+def _row(item: OutcomeEntry, worst: str) -> Row:
     """One candidate under the limit."""
     candidate = item.candidate if item.status == "proposed" else f"{item.candidate} (context)"
     outcome = outcome_words(item)
     if item.reason:
         outcome += f" ({item.reason})"
-    place = [_place(item), "" if shared else f"{_capital(item.bound_text)}."]
-    if item.values_missing:
-        place.append(f"{plural(item.values_missing, 'value')} not evaluated.")
     return Row(
         (
             candidate,
             outcome,
             f"{count(item.values_outside)} of {count(item.values)}",
-            f"{studies_words(item)}; {_patients(item)}" if item.studies else studies_words(item),
+            f"{count(item.studies_within)} of {count(item.studies)}",
+            f"{count(item.patients_within)} of {count(item.patients)}",
+            NONE if item.upper_bound_percent is None else figure(item.upper_bound_percent),
             worst,
-            " ".join(part for part in place if part),
+            " ".join(part for part in (_place(item), *_missing(item)) if part),
         ),
         strong=item.outcome == "outside declared limits" and item.status == "proposed",
     )
 
 
-def _patients(item: OutcomeEntry) -> str:
-    """Patients within, of those in scope."""
-    missing = f", {count(item.patients_not_evaluated)} not evaluated" if item.patients_not_evaluated else ""
-    return f"in {count(item.patients_within)} of {plural(item.patients, 'patient')}{missing}"
+def _missing(item: OutcomeEntry) -> Iterator[str]:
+    """Yield what gave no value."""
+    parts = [
+        plural(item.values_missing, "value") if item.values_missing else "",
+        plural(item.studies_not_evaluated, "study", "studies") if item.studies_not_evaluated else "",
+        plural(item.patients_not_evaluated, "patient") if item.patients_not_evaluated else "",
+    ]
+    named = joined([part for part in parts if part])
+    if named:
+        yield f"Not evaluated: {named}."
+    if item.frames_not_run:
+        yield f"{_capital(plural(item.frames_not_run, 'frame'))} not taken by the codec."
 
 
 def _place(item: OutcomeEntry) -> str:
