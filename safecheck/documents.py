@@ -8,6 +8,7 @@ import tomllib
 from typing import TypeVar
 
 from pydantic import BaseModel, ConfigDict, ValidationError
+from pydantic_core import ErrorDetails
 
 from safecheck.errors import DocumentError
 
@@ -65,11 +66,22 @@ def from_mapping(model: type[D], table: object) -> D:
         # Strict, and by way of JSON: there a list may stand for a tuple and a text for a date, but "10" for no number.
         return model.model_validate_json(json.dumps(table, default=_as_text), strict=True)
     except ValidationError as error:
-        found = error.errors(include_url=False, include_context=False)
+        found = _causes(error.errors(include_url=False, include_context=False))
         # A misspelt key gives two findings, one missing and one unknown: the unknown one shows the slip.
         first = min(found, key=lambda item: item["type"] != "extra_forbidden")
         more = f" (and {len(found) - 1} more)" if len(found) > 1 else ""
         raise DocumentError(_dotted(first["loc"]), _sentence(first["type"], first["msg"]) + more) from error
+
+
+def _causes(found: list[ErrorDetails]) -> list[ErrorDetails]:
+    """Leave out what is said of a whole only because of its parts: a list is too short once its one item is wrong."""
+    places = [item["loc"] for item in found]
+    return [item for item in found if not any(_lies_inside(place, item["loc"]) for place in places)]
+
+
+def _lies_inside(place: tuple[int | str, ...], whole: tuple[int | str, ...]) -> bool:
+    """Whether a key lies below another."""
+    return len(place) > len(whole) and place[: len(whole)] == whole
 
 
 def _as_text(value: object) -> str:

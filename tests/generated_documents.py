@@ -22,7 +22,7 @@ from pydantic.fields import FieldInfo
 
 from safecheck.codecs import registry
 from safecheck.documents import Document
-from safecheck.jobs.plans import dial_range
+from safecheck.jobs.plans import setting_range
 from safecheck.measures.catalogue import MEASURES, Measure
 from safecheck.policy.plan import Plan
 from safecheck.record.crops import CropDocument
@@ -263,12 +263,12 @@ def _codecs() -> str:
     for name in registry.rated_names():
         dial = registry.entry(name).dial
         others = [
-            f"`{key}` (default `{json.dumps(value)}`)"
+            f"`{key}`: {setting_range(name, key)} (default `{json.dumps(value)}`)"
             for key, value in sorted(registry.codec(name).settings.items())
             if key != dial
         ]
         writes = "yes" if registry.entry(name).archive_can_write else "no"
-        rows.append((f"`{name}`", f"`{dial}`", dial_range(name), ", ".join(others) or "–", writes))
+        rows.append((f"`{name}`", f"`{dial}`", setting_range(name, dial), "; ".join(others) or "–", writes))
     return table(("codec", "its dial", "expected of the dial", "other settings", "an archive can write it"), rows)
 
 

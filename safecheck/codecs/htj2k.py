@@ -22,6 +22,7 @@ from safecheck.codecs.libraries import carried_by, imagecodecs_with, openjpeg
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.offsets import narrow_type, within
 from safecheck.codecs.reversible import best_reversible
+from safecheck.codecs.setting_values import number
 from safecheck.codecs.stream_headers import check_htj2k
 from safecheck.frames import PixelFormat, Raster, Samples, SizeBasis
 
@@ -47,9 +48,7 @@ class Htj2k:
 
     def __post_init__(self) -> None:
         """Check the range; keep a whole number as the float it stands for."""
-        if isinstance(self.step, bool) or not STEP_LOWEST <= self.step <= STEP_HIGHEST:
-            raise ValueError(f"step is {self.step}, expected {STEP_LOWEST:g} to {STEP_HIGHEST}")
-        object.__setattr__(self, "step", float(self.step))
+        object.__setattr__(self, "step", number("step", self.step, STEP_LOWEST, STEP_HIGHEST))
 
     @property
     def settings(self) -> Settings:

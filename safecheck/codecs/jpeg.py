@@ -17,6 +17,7 @@ from safecheck.codecs.integer_dial import WholeDial, encode_around
 from safecheck.codecs.libraries import carried_by, imagecodecs_with
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.offsets import offset_of, to_signed, to_unsigned, within
+from safecheck.codecs.setting_values import whole
 from safecheck.codecs.stream_headers import check_jpeg
 from safecheck.frames import PixelFormat, Raster, Samples
 
@@ -43,8 +44,7 @@ class Jpeg:
 
     def __post_init__(self) -> None:
         """Check the range."""
-        if type(self.quality) is not int or not 1 <= self.quality <= QUALITY_HIGHEST:
-            raise ValueError(f"quality is {self.quality!r}, expected a whole number from 1 to {QUALITY_HIGHEST}")
+        object.__setattr__(self, "quality", whole("quality", self.quality, 1, QUALITY_HIGHEST))
 
     @property
     def settings(self) -> Settings:

@@ -17,6 +17,7 @@ from safecheck.codecs.base import Carriage, Encoded, Settings, admit, fitted
 from safecheck.codecs.libraries import carried_by, openjpeg
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.reversible import best_reversible
+from safecheck.codecs.setting_values import number
 from safecheck.codecs.stream_headers import MOST_LEVELS, check_jpeg2000
 from safecheck.frames import PixelFormat, Raster, Samples, SizeBasis
 
@@ -46,9 +47,7 @@ class Jpeg2000:
 
     def __post_init__(self) -> None:
         """Check the range; keep a whole number as the float it stands for."""
-        if isinstance(self.ratio, bool) or not RATIO_LOWEST <= self.ratio <= RATIO_HIGHEST:
-            raise ValueError(f"ratio is {self.ratio}, expected {RATIO_LOWEST} to {RATIO_HIGHEST:g}")
-        object.__setattr__(self, "ratio", float(self.ratio))
+        object.__setattr__(self, "ratio", number("ratio", self.ratio, RATIO_LOWEST, RATIO_HIGHEST))
 
     @property
     def settings(self) -> Settings:

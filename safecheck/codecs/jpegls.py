@@ -8,6 +8,7 @@ from typing import ClassVar
 from safecheck.codecs import jpegls_coding
 from safecheck.codecs.base import Carriage, Encoded, Settings
 from safecheck.codecs.integer_dial import WholeDial, encode_around
+from safecheck.codecs.setting_values import whole
 from safecheck.frames import PixelFormat, Raster, Samples
 
 __all__ = ["NEAR_HIGHEST", "JpegLs", "highest_near"]
@@ -36,8 +37,7 @@ class JpegLs:
 
     def __post_init__(self) -> None:
         """Check the range."""
-        if type(self.near) is not int or not 1 <= self.near <= NEAR_HIGHEST:
-            raise ValueError(f"near is {self.near!r}, expected a whole number from 1 to {NEAR_HIGHEST}")
+        object.__setattr__(self, "near", whole("near", self.near, 1, NEAR_HIGHEST))
 
     @property
     def settings(self) -> Settings:

@@ -20,6 +20,7 @@ from safecheck.codecs.libraries import carried_by, imagecodecs_with
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.offsets import offset_of, to_signed, to_unsigned
 from safecheck.codecs.reversible import best_reversible
+from safecheck.codecs.setting_values import number, whole
 from safecheck.frames import PixelFormat, Raster, Samples, SizeBasis
 
 __all__ = ["DISTANCE_HIGHEST", "DISTANCE_LOWEST", "JpegXl", "JpegXlLossless"]
@@ -30,15 +31,10 @@ _EFFORT = 7
 """libjxl's own default."""
 _REVERSIBLE_EFFORT = 3
 """On real frames 4 to 13 times as fast as 7, for codes from 1 % smaller to 15 % larger."""
-_EFFORTS = range(1, 10)
+_EFFORT_HIGHEST = 9
 _SLOPE = -0.7
 """d log(size) / d log(distance), as seen on CT, MR, CR and ultrasound frames at 5 to 20:1."""
 _LONGEST_SIDE = 0xFFFF
-
-
-def _effort_checked(effort: int) -> None:
-    if type(effort) is not int or effort not in _EFFORTS:
-        raise ValueError(f"effort is {effort!r}, expected a whole number from {_EFFORTS[0]} to {_EFFORTS[-1]}")
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,11 +53,10 @@ class JpegXl:
 
     def __post_init__(self) -> None:
         """Check the ranges; keep a whole number as the float it stands for."""
-        if isinstance(self.distance, bool) or not DISTANCE_LOWEST <= self.distance <= DISTANCE_HIGHEST:
-            but = ", which would not be lossless" if self.distance == 0 else ""
-            raise ValueError(f"distance is {self.distance}{but}, expected {DISTANCE_LOWEST} to {DISTANCE_HIGHEST:g}")
-        _effort_checked(self.effort)
-        object.__setattr__(self, "distance", float(self.distance))
+        remark = ", which would not be lossless" if self.distance == 0 else ""
+        distance = number("distance", self.distance, DISTANCE_LOWEST, DISTANCE_HIGHEST, remark=remark)
+        object.__setattr__(self, "distance", distance)
+        object.__setattr__(self, "effort", whole("effort", self.effort, 1, _EFFORT_HIGHEST))
 
     @property
     def settings(self) -> Settings:
@@ -149,7 +144,7 @@ class JpegXlLossless:
 
     def __post_init__(self) -> None:
         """Check the range."""
-        _effort_checked(self.effort)
+        object.__setattr__(self, "effort", whole("effort", self.effort, 1, _EFFORT_HIGHEST))
 
     @property
     def settings(self) -> Settings:

@@ -27,7 +27,6 @@ __all__ = [
     "codec",
     "entry",
     "from_settings",
-    "from_text",
     "load_kernels",
     "names",
     "rated",
@@ -82,7 +81,7 @@ ENTRIES: Mapping[str, Entry] = MappingProxyType(
         "htj2k-reversible": Entry("safecheck.codecs.htj2k", "Htj2kLossless", *_BOTH, "", True),
         "jpegxl-reversible": Entry("safecheck.codecs.jpegxl", "JpegXlLossless", *_IMAGECODECS, "", True),
         "rle-reversible": Entry("safecheck.codecs.rle", "RleLossless", *_IMAGECODECS, "", True),
-        # A step so fine that no sum of 64 x 64 quantiser errors reaches half a stored unit.
+        # The finest step there is.
         "tiled": Entry(
             "safecheck.codecs.tile.codec",
             "Tiled",
@@ -90,7 +89,7 @@ ENTRIES: Mapping[str, Entry] = MappingProxyType(
             "numba",
             "step",
             False,
-            ("tiled", MappingProxyType({"step": 2.0**-7})),
+            ("tiled", MappingProxyType({"step": 0.125})),
         ),
     }
 )
@@ -158,7 +157,8 @@ def codec(name: str, **settings: str | float | bool) -> Codec:
     known = [field.name for field in dataclasses.fields(cast("type", kind)) if field.init]
     for key in settings:
         if key not in known:
-            raise UsageError(f"codec {name}: setting {key!r} is unknown, expected one of {known}")
+            expected = f"one of {', '.join(known)}" if known else "none"
+            raise UsageError(f"codec {name}: setting {key!r} is unknown, expected {expected}")
     try:
         return kind(**settings)
     except (TypeError, ValueError, CannotEncode) as error:
@@ -239,25 +239,6 @@ def from_settings(name: str, settings: Settings) -> Codec:
 def settings_text(settings: Settings) -> str:
     """Settings as JSON with sorted keys and no spaces: equal text for equal codecs."""
     return json.dumps(dict(settings), sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
-
-
-def from_text(name: str, text: str) -> Codec:
-    """Make the codec whose settings `settings_text` wrote.
-
-    Raises
-    ------
-    UsageError
-        If the text is no table of JSON, and as in `from_settings`.
-    CodecUnavailable
-        As in `codec`.
-    """
-    try:
-        table = json.loads(text)
-    except json.JSONDecodeError as error:
-        raise UsageError(f"codec {name}: settings are not JSON: {error}") from error
-    if not isinstance(table, dict):
-        raise UsageError(f"codec {name}: settings are a {type(table).__name__}, expected a table")
-    return from_settings(name, table)
 
 
 def _kind(name: str) -> type[Codec]:

@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import Literal
 
 from safecheck.codecs import registry
+from safecheck.codecs.base import RatedCodec
 from safecheck.documents import from_toml
 from safecheck.errors import CodecUnavailable, DocumentError, UsageError
 from safecheck.policy.limits import check_limits
@@ -19,11 +20,11 @@ __all__ = [
     "DEFAULT_RATIOS",
     "LoadedPlan",
     "check_available",
-    "dial_range",
     "is_available",
     "load_plan",
     "missing_controls",
     "plan_of_command_line",
+    "setting_range",
 ]
 
 DEFAULT_RATIOS = (5.0, 8.0, 10.0, 15.0, 20.0)
@@ -146,30 +147,55 @@ def missing_controls() -> tuple[str, ...]:
 
 def _check_codecs(plan: Plan) -> None:
     """Ask the registry for each candidate's codec with its settings, and for its dial where there is no ratio."""
+    known: dict[tuple[str | float | None, ...], int] = {}
     for index, candidate in enumerate(plan.candidates):
         path = f"candidates[{index}]"
-        try:
-            registry.rated(candidate.codec, **candidate.settings)
-        except UsageError as error:
-            raise DocumentError(f"{path}.codec", str(error)) from error
-        dial = registry.entry(candidate.codec).dial
-        if candidate.ratio is None and dial not in candidate.settings:
+        made = _made(candidate, path)
+        _check_dial(candidate, path)
+        # The name tells candidates apart by what was written, which a codec may take for the same setting.
+        asked = (candidate.ratio, candidate.per, candidate.basis, candidate.outside)
+        first = known.setdefault((candidate.codec, registry.settings_text(made.settings), *asked), index)
+        if first != index:
+            held = ", ".join(f"{key} {value}" for key, value in made.settings.items())
             raise DocumentError(
-                f"{path}.settings.{dial}",
-                f"is missing; without a ratio {candidate.codec} is set by its {dial}, "
-                f"expected {dial_range(candidate.codec)}",
-            )
-        if candidate.ratio is not None and dial in candidate.settings:
-            raise DocumentError(
-                f"{path}.settings.{dial}",
-                f"is what the ratio of {candidate.ratio:g}:1 sets; expected either a ratio or {dial}, not both",
+                f"{path}.settings", f"is the same as that of candidates[{first}] to {candidate.codec}: {held}"
             )
 
 
-def dial_range(codec: str) -> str:
-    """Range of a codec's dial, in the codec's own words: it says them when asked for what no dial can be."""
+def _made(candidate: CandidatePlan, path: str) -> RatedCodec:
+    """A candidate's codec; what is wrong with it is named by the key at fault."""
     try:
-        registry.rated(codec, **{registry.entry(codec).dial: -1.0})
+        registry.rated(candidate.codec)
+    except UsageError as error:
+        raise DocumentError(f"{path}.codec", str(error)) from error
+    for key, value in candidate.settings.items():
+        try:
+            registry.rated(candidate.codec, **{key: value})
+        except UsageError as error:
+            raise DocumentError(f"{path}.settings.{key}", str(error)) from error
+    return registry.rated(candidate.codec, **candidate.settings)
+
+
+def _check_dial(candidate: CandidatePlan, path: str) -> None:
+    """A ratio, or the codec's dial, and not both."""
+    dial = registry.entry(candidate.codec).dial
+    if candidate.ratio is None and dial not in candidate.settings:
+        raise DocumentError(
+            f"{path}.settings.{dial}",
+            f"is missing; without a ratio {candidate.codec} is set by its {dial}, "
+            f"expected {setting_range(candidate.codec, dial)}",
+        )
+    if candidate.ratio is not None and dial in candidate.settings:
+        raise DocumentError(
+            f"{path}.settings.{dial}",
+            f"is what the ratio of {candidate.ratio:g}:1 sets; expected either ratio or settings.{dial}, not both",
+        )
+
+
+def setting_range(codec: str, setting: str) -> str:
+    """Range of a codec's setting, in the codec's own words: it says them when asked for what no setting can be."""
+    try:
+        registry.rated(codec, **{setting: -1.0})
     except UsageError as error:
         return str(error).partition("expected ")[2]
     return "a number"

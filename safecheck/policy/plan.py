@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import datetime
 import hashlib
+import math
 from typing import Annotated, Literal, TypeAlias
 
 import rfc8785
-from pydantic import Field, model_validator
+from pydantic import BeforeValidator, Field, model_validator
 
 from safecheck.documents import Document
 from safecheck.frames import SizeBasis
@@ -34,6 +35,21 @@ TO_FILL_IN = "to be filled in"
 """How a draft marks what only a person can say; a plan that still says so is refused."""
 
 Text = Annotated[str, Field(min_length=1, max_length=200)]
+
+
+def _scalar(value: object) -> object:
+    """Say in one sentence what no setting can be; the union of kinds says it once for each."""
+    if not isinstance(value, str | int | float):
+        kind = "a list" if isinstance(value, list) else "a table" if isinstance(value, dict) else "empty"
+        # A TypeError would not reach the one who wrote the plan: pydantic takes a ValueError for a fault of the value.
+        raise ValueError(f"is {kind}, expected a text, a number, true or false")  # noqa: TRY004
+    if isinstance(value, float) and not math.isfinite(value):
+        raise ValueError(f"is {'not a number' if math.isnan(value) else 'infinite'}, expected a finite number")
+    return value
+
+
+Setting: TypeAlias = Annotated[str | int | float | bool, BeforeValidator(_scalar)]
+"""A setting's value: a JSON scalar."""
 
 
 class Change(Document):
@@ -92,7 +108,7 @@ class CandidatePlan(Document):
     basis: SizeBasis = SizeBasis.BITS_STORED
     status: Literal["proposed", "context"] = "proposed"
     """Only proposed candidates decide the exit code."""
-    settings: dict[str, str | int | float | bool] = Field(default_factory=dict)
+    settings: dict[str, Setting] = Field(default_factory=dict)
     """The codec's other settings, e.g. size = 16 for tiled; without a ratio its dial too, e.g. quality = 85."""
     outside: Literal["keep", "flatten"] = "keep"
     """Whether what is neither content nor padding is coded like the rest, or set to one value before coding."""

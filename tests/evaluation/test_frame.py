@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import json
 from typing import Any
 
 import numpy as np
@@ -54,7 +55,7 @@ def test_every_candidate_and_the_reversible_control_give_a_row() -> None:
 def test_errors_are_those_of_the_code_read_back(codec: str) -> None:
     original = frame()
     row = only(evaluate(original, TWO, full_controls=False), f"{codec} 10:1")
-    again = registry.from_text(codec, row.settings) if codec == "tiled" else registry.rated(codec)
+    again = registry.from_settings(codec, json.loads(row.settings)) if codec == "tiled" else registry.rated(codec)
     code = (
         again.encode(original.raster)
         if codec == "tiled"

@@ -30,24 +30,57 @@ def plan(folder: Path, *candidates: str) -> Path:
     [
         (
             'codec = "jpeg2000"',
-            r"candidates\[0\]\.settings\.ratio: is missing; without a ratio jpeg2000 is set by its ratio, expected 1",
+            r"candidates\[0\]\.settings\.ratio: is missing; without a ratio jpeg2000 is set by its ratio, expected",
         ),
         (
             'codec = "tiled"\nsettings = { size = 16 }',
-            r"candidates\[0\]\.settings\.step: is missing; without a ratio tiled is set by its step, expected a pos",
+            r"candidates\[0\]\.settings\.step: is missing; without a ratio tiled is set by its step, expected a num",
         ),
         (
             'codec = "tiled"\nratio = 10\nsettings = { step = 4.0 }',
-            r"candidates\[0\]\.settings\.step: is what the ratio of 10:1 sets; expected either a ratio or step",
+            r"\.settings\.step: is what the ratio of 10:1 sets; expected either ratio or settings\.step, not both",
         ),
-        ('codec = "tiled"\nsettings = { step = -4.0 }', r"candidates\[0\]\.codec: codec tiled: step is -4"),
+        (
+            'codec = "tiled"\nsettings = { step = -4.0 }',
+            r"^candidates\[0\]\.settings\.step: codec tiled: step is -4, expected a number from 0\.125 to 4194304$",
+        ),
+        (
+            'codec = "jpegxl"\nsettings = { distance = "1.0" }',
+            r'^candidates\[0\]\.settings\.distance: .*distance is "1\.0", expected a number from 0\.01 to 25$',
+        ),
+        ('codec = "tiled"\nsettings = { step = nan }', r"settings\.step: is not a number, expected a finite number$"),
+        ('codec = "tiled"\nsettings = { step = inf }', r"settings\.step: is infinite, expected a finite number$"),
+        ('codec = "tiled"\nsettings = { step = [8] }', r"step: is a list, expected a text, a number, true or false$"),
+        ('codec = "tiled"\nratio = -10', r"^candidates\[0\]\.ratio: Input should be greater than 1$"),
+        ('codec = "jpeg"\nsettings = { effort = 4 }', r"settings\.effort: .* is unknown, expected one of quality$"),
         ('codec = "jpegls-reversible"', r"candidates\[0\]\.codec: codec jpegls-reversible cannot be asked"),
     ],
-    ids=["no dial", "a setting that is no dial", "dial and ratio", "dial out of range", "no dial at all"],
+    ids=[
+        "no dial",
+        "a setting that is no dial",
+        "dial and ratio",
+        "dial out of range",
+        "a text for a number",
+        "not a number",
+        "infinite",
+        "a list",
+        "ratio out of range",
+        "unknown setting",
+        "no dial at all",
+    ],
 )
 def test_a_candidate_has_a_ratio_or_its_codecs_dial(tmp_path: Path, candidate: str, message: str) -> None:
     with pytest.raises(DocumentError, match=message):
         load_plan(plan(tmp_path, candidate))
+
+
+def test_two_candidates_that_a_codec_takes_for_one_are_refused(tmp_path: Path) -> None:
+    near = [f'codec = "tiled"\nsettings = {{ step = {step} }}' for step in (8.3, 8.31)]
+    message = r"candidates\[1\]\.settings: is the same as that of candidates\[0\] to tiled: size 8, step 8\.309"
+    with pytest.raises(DocumentError, match=message):
+        load_plan(plan(tmp_path, *near))
+    apart = [f'codec = "tiled"\nratio = 10\nsettings = {{ size = {size} }}' for size in (8, 16)]
+    assert len(load_plan(plan(tmp_path, *apart)).plan.candidates) == 2
 
 
 def test_candidates_by_setting_and_per_series_are_read(tmp_path: Path) -> None:

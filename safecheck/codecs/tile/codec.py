@@ -10,6 +10,7 @@ from typing import ClassVar
 import numpy as np
 
 from safecheck.codecs.base import EXEMPT_BYTES, RATE_TOLERANCE, Carriage, Encoded, Reached, Settings, admit
+from safecheck.codecs.setting_values import choice, number
 from safecheck.codecs.tile.settings import (
     ADAPTIVE,
     ADAPTIVE_VERSION,
@@ -18,7 +19,7 @@ from safecheck.codecs.tile.settings import (
     TRANSFORMS,
     WEIGHTINGS,
 )
-from safecheck.codecs.tile.steps import STEPS, nearest_step, step_at
+from safecheck.codecs.tile.steps import FINEST_STEP, STEPS, nearest_step, step_at
 from safecheck.frames import PixelFormat, Raster, Samples
 
 __all__ = ["Tiled"]
@@ -47,20 +48,15 @@ class Tiled:
     weighting: str = "flat"
     """``flat``: error in the image's own unit, the same at all frequencies; ``perceptual``: ITU-T T.81 Annex K."""
     step: float = 1.0
-    """Quantiser step in stored units, above 0; moved to the nearest of the codec's grid (ratios of 2**(1/128))."""
+    """Quantiser step in stored units, 1/8 to 2**22; moved to the nearest of the codec's grid (ratios of 2**(1/128))."""
 
     def __post_init__(self) -> None:
         """Check values; move the step to the grid, so that equal codes have equal settings."""
-        for value, choices, what in (
-            (self.size, (*SIZES, ADAPTIVE), "size"),
-            (self.transform, TRANSFORMS, "transform"),
-            (self.weighting, WEIGHTINGS, "weighting"),
-        ):
-            if value not in choices:
-                raise ValueError(f"{what} is {value!r}, expected one of {', '.join(map(str, choices))}")
-        if not 0 < self.step < float("inf"):
-            raise ValueError(f"step is {self.step}, expected a positive number of stored units")
-        object.__setattr__(self, "step", step_at(nearest_step(self.step)))
+        object.__setattr__(self, "size", choice("size", self.size, (*SIZES, ADAPTIVE)))
+        object.__setattr__(self, "transform", choice("transform", self.transform, TRANSFORMS))
+        object.__setattr__(self, "weighting", choice("weighting", self.weighting, WEIGHTINGS))
+        step = number("step", self.step, FINEST_STEP, step_at(STEPS - 1))
+        object.__setattr__(self, "step", step_at(nearest_step(step)))
 
     @property
     def settings(self) -> Settings:
