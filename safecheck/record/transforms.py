@@ -71,7 +71,7 @@ class Finding:
     """One figure."""
 
     area: str
-    """``content``, ``region NAME`` or ``inner tiles``."""
+    """``content``, ``region LABEL`` or ``inner tiles``."""
     transform: str
     """'' where it depends on none."""
     tile_size: int | None

@@ -138,6 +138,8 @@ class Series:
 
     name: str
     points: tuple[Point, ...]
+    look: int | None = None
+    """Number of its mark and dash, for curves that stand on several charts; by default its place."""
 
 
 @dataclass(frozen=True, slots=True)

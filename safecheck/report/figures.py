@@ -104,9 +104,14 @@ def chart_drawing(chart: Chart, width: float, height: float) -> Drawing:
         drawing.add(Line(x.start, at, x.end, at, strokeColor=INK, strokeWidth=0.7, strokeDashArray=[1, 2]))
     shifts = _shifts(len(chart.series)) if chart.apart else [0.0] * len(chart.series)
     for index, (item, shift) in enumerate(zip(chart.series, shifts, strict=True)):
-        _curve(drawing, item.points, x, y, index, shift)
+        _curve(drawing, item.points, x, y, _look(item, index), shift)
     _name_bounds(drawing, chart, x, y)
     return drawing
+
+
+def _look(item: Series, place: int) -> int:
+    """Number of a curve's mark and dash."""
+    return place if item.look is None else item.look
 
 
 def _shifts(curves: int) -> list[float]:
@@ -267,10 +272,10 @@ def _draw_keys(drawing: Drawing, series: Sequence[Series], lines: Sequence[Seque
     for number, line in enumerate(lines):
         at, y = 0.0, top - _KEY_LINE * number
         for index in line:
-            colour = _GREYS[index % len(_GREYS)]
-            dash = _dash(index)
+            look = _look(series[index], index)
+            colour, dash = _GREYS[look % len(_GREYS)], _dash(look)
             drawing.add(Line(at, y + 2.4, at + 20, y + 2.4, strokeColor=colour, strokeWidth=0.9, strokeDashArray=dash))
-            drawing.add(_marker(index, at + 10, y + 2.4, colour))
+            drawing.add(_marker(look, at + 10, y + 2.4, colour))
             drawing.add(_label(printable(series[index].name), at + 24, y, "start"))
             at += _key_width(series[index])
 

@@ -7,7 +7,7 @@ from safecheck.report.blocks import Report
 from safecheck.report.content import SECOND_GENERATION
 from safecheck.report.pdf import draw_pdf
 from safecheck.report.sections.study_frame import basis_section, frame_section
-from safecheck.report.sections.study_front import TABLE_NAME, study_cautions, study_front
+from safecheck.report.sections.study_front import TABLE_NAME, study_cautions, study_front, study_meanings
 from safecheck.report.sections.study_words import figures_of
 from safecheck.wording import STUDY_TITLE
 
@@ -28,6 +28,7 @@ def draw_study(study: TransformStudy, table_sha256: str, *, with_images: bool) -
     """
     figures = [figures_of(number, frame) for number, frame in enumerate(study.frames, start=1)]
     sections = [frame_section(item, with_images=with_images) for item in figures]
+    sections.append(study_meanings())
     if study.bases:
         sections.append(basis_section(study.bases))
     lossy = any(frame.source_lossy for frame in study.frames)

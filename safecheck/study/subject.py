@@ -10,7 +10,7 @@ from safecheck.codecs.tile.planes import centre, to_planes
 from safecheck.evaluation.original import grid_of
 from safecheck.frames import Frame, ModalityTable, Raster, luma
 from safecheck.measures.content import Content, find_content
-from safecheck.regions.region import RegionSet, cover_grid
+from safecheck.regions.region import Region, RegionSet, cover_grid
 from safecheck.study.areas import Area
 from safecheck.study.tiles import Reals, as_tiles
 
@@ -86,5 +86,11 @@ def _regions(frame: Frame, regions: RegionSet | None) -> tuple[Area, ...]:
             continue
         weights = covered.fractions if padding is None else np.where(padding, 0.0, covered.fractions)
         if weights.any():
-            found.append(Area(f"region {region.name}", weights))
+            found.append(Area(f"region {_label(region, regions)}", weights))
     return tuple(found)
+
+
+def _label(region: Region, regions: RegionSet) -> str:
+    """A region's label, with its name where another has the same label."""
+    shared = sum(other.label == region.label for other in regions.regions) > 1
+    return f"{region.label} ({region.name})" if shared else region.label

@@ -174,11 +174,12 @@ def test_samples_carried_otherwise_than_stored_are_named_with_the_versions() -> 
         code_precision=16,
         sample_offset=2048,
         sample_scale=1.0,
+        clipped_on_reading=True,
         rows=312,
     )
     blocks = section(report(make_record(carriage=(entry,))), "Versions and selftest")
     (table,) = [table for table in tables(blocks) if "Code stream says" in [column.head for column in table.columns]]
-    assert table.rows[0].cells == ("htj2k", "12", "signed", "16", "2048", "1", "312")
+    assert table.rows[0].cells == ("htj2k", "12", "signed", "16", "2048", "1", "yes", "312")
     assert "Code stream says" not in words(section(report(), "Versions and selftest"))
 
 

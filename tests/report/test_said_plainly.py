@@ -79,7 +79,7 @@ def test_denominators_name_what_was_not_evaluated_and_not_taken() -> None:
 
 def test_the_worst_value_stands_with_region_row_column_and_position() -> None:
     text = words(section(report(changed_outcomes(worst_region="target 1")), "Limits and outcomes"))
-    assert "Region target 1, patient P-0005c2a9" in text
+    assert "Region target 1, P-0005c2a9, S-000571fe, series 4, image 22" in text
     assert "row 203, column 318, slice at −100 mm" in text
 
 

@@ -236,6 +236,22 @@ def test_regions_are_measured_with_the_share_of_each_pixel_that_they_cover() -> 
     assert 0 < within != value(found, "rmse", "cosine", 8, ("ratio", 10.0))
 
 
+@pytest.mark.parametrize(
+    ("labels", "areas"),
+    [
+        (("liver", "spleen"), {"region liver", "region spleen"}),
+        (("liver", "liver"), {"region liver (a)", "region liver (b)"}),
+    ],
+    ids=["labels of their own", "a label shared"],
+)
+def test_regions_go_by_their_label(labels: tuple[str, str], areas: set[str]) -> None:
+    (made, _) = region(20.0).regions
+    both = tuple(dataclasses.replace(made, name=name, label=label) for name, label in zip("ab", labels, strict=True))
+    subject = subject_of(frame(), RegionSet(both, "0" * 64))
+    assert subject is not None
+    assert {area.name for area in subject.areas} == {"content", *areas}
+
+
 def test_comparisons_are_against_cosine_and_the_best_size() -> None:
     found = studied("mr-small")
     for fixed in (("kept share", 50.0), ("ratio", 10.0)):

@@ -96,6 +96,7 @@ def _carriage(view: View) -> list[Block]:
         Column("Code stream says", "bits", number=True),
         Column("Added before coding", "stored values", number=True),
         Column("Factor before coding", "times", number=True),
+        Column("Clipped on reading"),
         Column("Rows", number=True),
     )
     rows = tuple(
@@ -107,6 +108,7 @@ def _carriage(view: View) -> list[Block]:
                 count(item.code_precision),
                 signed(f"{item.sample_offset:d}"),
                 f"{item.sample_scale:.6g}",
+                "yes" if item.clipped_on_reading else "no",
                 count(item.rows),
             )
         )

@@ -9,7 +9,7 @@ from safecheck.record.outcomes import OutcomeEntry
 from safecheck.report.blocks import Block, Column, Prose, Row, Section, Table
 from safecheck.report.numbers import NONE, aligned_beside, count, figure, joined, plural
 from safecheck.report.sections.front import limit_words, outcome_words
-from safecheck.report.sections.view import View, place_words, rest_sentence
+from safecheck.report.sections.view import View, place_brief, rest_sentence
 from safecheck.wording import NO_LIMITS, SHORT_CAUTION
 
 __all__ = ["limits"]
@@ -124,4 +124,4 @@ def _place(item: OutcomeEntry) -> str:
     if item.worst is None:
         return ""
     region = f"region {item.worst_region}, " if item.worst_region else ""
-    return _capital(f"{region}{place_words(item.worst)}.")
+    return _capital(f"{region}{place_brief(item.worst)}.")

@@ -77,9 +77,7 @@ def _lines(item: FrameFigures) -> tuple[str, ...]:
 
 def _by_size(item: FrameFigures) -> Charts:
     """Curves of the cosine transform, one for each tile size."""
-    # Sizes without a code come last, so that a curve has one marker on both charts.
-    sizes = sorted(item.sizes, key=lambda size: (size not in item.coded_sizes, size))
-    curves = {f"{size} by {size}": ("cosine", size) for size in sizes}
+    curves = {f"{size} by {size}": ("cosine", size) for size in item.sizes}
     return _charts(item, "Cosine, by tile size", curves, caption="")
 
 
@@ -106,7 +104,7 @@ def _series(
 ) -> tuple[Series, ...]:
     """Points of each curve that has any, in order of x."""
     made = []
-    for name, (transform, size) in curves.items():
+    for look, (name, (transform, size)) in enumerate(curves.items()):
         points = []
         for at in item.fixed_at(fixed):
             x = item.at(along, transform, size, (fixed, at))
@@ -114,7 +112,7 @@ def _series(
             if x is not None and y is not None:
                 points.append(Point(x, y))
         if points:
-            made.append(Series(name, tuple(sorted(points, key=lambda point: point.x))))
+            made.append(Series(name, tuple(sorted(points, key=lambda point: point.x)), look))
     return tuple(made)
 
 

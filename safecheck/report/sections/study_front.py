@@ -5,13 +5,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from safecheck.record.transforms import StudiedFrame, TransformStudy
-from safecheck.report.blocks import Block, Column, Facts, Heading, Numbered, Prose, Row, Table, Title
+from safecheck.report.blocks import Block, Column, Facts, Heading, Numbered, Prose, Row, Section, Table, Title
 from safecheck.report.numbers import aligned, count, plural
 from safecheck.report.sections.study_words import AT_RATIO, RATIO, USUAL_SIZE, FrameFigures, fine
 from safecheck.statistics.cautions import image_cautions
 from safecheck.wording import ANALYSIS_CODEC, CAUTIONS, CAUTIONS_WHEN, SHORT_CAUTION, STUDY_TITLE, sentence_of
 
-__all__ = ["TABLE_NAME", "study_cautions", "study_front"]
+__all__ = ["TABLE_NAME", "study_cautions", "study_front", "study_meanings"]
 
 TABLE_NAME = "transforms.csv"
 
@@ -53,11 +53,14 @@ def study_front(study: TransformStudy, figures: Sequence[FrameFigures], table_sh
         Heading("Which part of the loss is whose"),
         Prose(SHORT_CAUTION, "caution"),
         *_answer(figures),
-        Heading("What the figures mean"),
-        Numbered(DEFINITIONS),
         Heading("Cautions"),
         *_cautions(study.frames),
     )
+
+
+def study_meanings() -> Section:
+    """What the figures mean, after the frames, so that cautions and the answer share the first page."""
+    return Section("What the figures mean", (Numbered(DEFINITIONS),), room_mm=100.0)
 
 
 def _title(study: TransformStudy, table_sha256: str) -> Title:
@@ -78,7 +81,8 @@ def _studied(study: TransformStudy) -> tuple[str, ...]:
     return (
         f"{plural(len(study.frames), 'frame')} of {plural(study.series, 'series', 'series')} with images to study: the "
         f"middle frame of each, for at most {plural(study.most_frames, 'series', 'series')}.{rest}",
-        f"Every figure of these pages and many more stand in {TABLE_NAME}, each with its unit.",
+        f"Every figure of these pages and many more stand in {TABLE_NAME}, each with its unit; what they mean "
+        "stands after the frames.",
     )
 
 

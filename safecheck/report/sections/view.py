@@ -23,6 +23,7 @@ __all__ = [
     "dash",
     "is_analysis",
     "names_with_status",
+    "place_brief",
     "place_short",
     "place_words",
     "rest_sentence",
@@ -124,10 +125,18 @@ def view_of(record: RecordDocument, record_sha256: str, run: RunFacts, crops: Pa
 
 def place_words(place: Place) -> str:
     """Name a place in full, under pseudonyms."""
-    parts = [f"patient {place.patient}", f"study {place.study}"]
-    parts += [f"series {place.series_number}" if place.series_number is not None else f"series {place.series}"]
-    parts += [place_short(place)]
-    return ", ".join(parts)
+    return f"patient {place.patient}, study {place.study}, {_from_series(place)}"
+
+
+def place_brief(place: Place) -> str:
+    """Name a place in full where room is short: a pseudonym's first letter tells what it is of."""
+    return f"{place.patient}, {place.study}, {_from_series(place)}"
+
+
+def _from_series(place: Place) -> str:
+    """Series, and place within it."""
+    series = place.series_number if place.series_number is not None else place.series
+    return f"series {series}, {place_short(place)}"
 
 
 def place_short(place: Place) -> str:
