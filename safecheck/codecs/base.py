@@ -88,6 +88,8 @@ class Carriage:
     """Stored values added before coding, where a codec takes no sign."""
     scale: float = 1.0
     """Factor before coding, at least 1: where a codec judges error against the full range of its sample type."""
+    clipped_on_reading: bool = False
+    """Whether what the code holds beyond the range of the bits stored is brought to the nearest value inside."""
 
 
 @runtime_checkable

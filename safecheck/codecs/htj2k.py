@@ -67,7 +67,7 @@ class Htj2k:
 
     def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
         """Samples as they are, in 8 or 16 bits."""
-        return _carriage(format)
+        return _carriage(format, reversible=self.reversible)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
@@ -149,7 +149,7 @@ class Htj2kLossless:
 
     def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
         """Samples as they are, in 8 or 16 bits."""
-        return _carriage(format)
+        return _carriage(format, reversible=self.reversible)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
@@ -184,8 +184,9 @@ def _version() -> str:
     return carried_by(imagecodecs_with("HTJ2K").htj2k_version(), "imagecodecs")
 
 
-def _carriage(form: PixelFormat) -> Carriage:
-    return Carriage(8 * narrow_type(form).itemsize)
+def _carriage(form: PixelFormat, *, reversible: bool) -> Carriage:
+    precision = 8 * narrow_type(form).itemsize
+    return Carriage(precision, clipped_on_reading=not reversible and precision > form.bits_stored)
 
 
 def _too_long(shape: tuple[int, int]) -> str | None:
@@ -201,14 +202,14 @@ def _write(codec: Codec, raster: Raster, step: float | None) -> bytes:
     samples = np.ascontiguousarray(raster.samples, dtype=narrow_type(form, signed=form.signed))
     with writing(codec.name, "OpenJPH"):
         code = library.htj2k_encode(samples, level=step, reversible=step is None)
-        check_htj2k(code, form, raster.shape, _carriage(form).precision, reversible=step is None)
+        check_htj2k(code, form, raster.shape, codec.carriage(form).precision, reversible=step is None)
     return bytes(code)
 
 
 def _read(codec: Codec, code: bytes, form: PixelFormat, shape: tuple[int, int]) -> npt.NDArray[np.integer]:
     """Read with OpenJPEG, which gives samples of 8 or 16 bits with their sign."""
     library = openjpeg(codec.name)
-    check_htj2k(code, form, shape, _carriage(form).precision, reversible=codec.reversible)
+    check_htj2k(code, form, shape, codec.carriage(form).precision, reversible=codec.reversible)
     with reading(codec.name, "OpenJPEG"):
         decoded: npt.NDArray[np.integer] = library.decode(code, 0)
     return decoded
@@ -219,4 +220,4 @@ def _first_step(raster: Raster, target_bytes: float) -> float:
     if not 0 < target_bytes < math.inf:
         raise ValueError(f"asked for {target_bytes} bytes, expected a positive number")
     ratio = raster.size_bytes(SizeBasis.BITS_STORED) / target_bytes
-    return 2.0 ** (raster.format.bits_stored - _carriage(raster.format).precision) * 0.0005 * ratio
+    return 2.0 ** (raster.format.bits_stored - 8 * narrow_type(raster.format).itemsize) * 0.0005 * ratio

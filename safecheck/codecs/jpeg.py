@@ -64,7 +64,8 @@ class Jpeg:
 
     def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
         """Unsigned, in 8 or 12 bits."""
-        return Carriage(_BASELINE_BITS if format.bits_stored <= _BASELINE_BITS else _EXTENDED_BITS, offset_of(format))
+        precision = _BASELINE_BITS if format.bits_stored <= _BASELINE_BITS else _EXTENDED_BITS
+        return Carriage(precision, offset_of(format), clipped_on_reading=precision > format.bits_stored)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
         """Refuse more than 12 bits, colour of more than 8, and frames beyond the library's longest side."""

@@ -56,7 +56,7 @@ class JpegLs:
 
     def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
         """Unsigned, at the bits stored."""
-        return jpegls_coding.carriage(format)
+        return jpegls_coding.carriage(format, reversible=self.reversible)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002
         """Refuse a largest error beyond half the range, and what the header cannot say."""

@@ -50,10 +50,16 @@ def version() -> str:
     return carried_by(reader.jpegls_version(), "imagecodecs")
 
 
-def carriage(form: PixelFormat) -> Carriage:
+def carriage(form: PixelFormat, *, reversible: bool) -> Carriage:
     """Unsigned, at the bits stored (at least 2), or in whole bytes where only imagecodecs writes."""
+    precision = _precision(form)
+    return Carriage(precision, offset_of(form), clipped_on_reading=not reversible and precision > form.bits_stored)
+
+
+def _precision(form: PixelFormat) -> int:
+    """Bits a sample that the code stream declares."""
     true = max(form.bits_stored, _LEAST_PRECISION)
-    return Carriage(true if _writes_true_precision() else 8 * narrow_type(form).itemsize, offset_of(form))
+    return true if _writes_true_precision() else 8 * narrow_type(form).itemsize
 
 
 def write(codec: Codec, raster: Raster, near: int) -> bytes:
@@ -70,9 +76,7 @@ def write(codec: Codec, raster: Raster, near: int) -> bytes:
     imagecodecs_with("JPEGLS")
     with writing(codec.name, "CharLS"):
         code = (_write_true if _writes_true_precision() else _write_bytes)(raster, near)
-        check_jpegls(
-            code, carriage(raster.format).precision, raster.format.channels, raster.shape, range(near, near + 1)
-        )
+        check_jpegls(code, _precision(raster.format), raster.format.channels, raster.shape, range(near, near + 1))
     return code
 
 
@@ -108,7 +112,7 @@ def read(codec: Codec, code: bytes, form: PixelFormat, shape: tuple[int, int], n
         Where the library is missing.
     """
     library = imagecodecs_with("JPEGLS")
-    near = check_jpegls(code, carriage(form).precision, form.channels, shape, nears)
+    near = check_jpegls(code, _precision(form), form.channels, shape, nears)
     with reading(codec.name, "CharLS"):
         decoded = library.jpegls_decode(code)
     samples = to_signed(decoded, form)

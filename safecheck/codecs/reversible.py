@@ -42,7 +42,7 @@ class JpegLsLossless:
 
     def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
         """Unsigned, at the bits stored."""
-        return jpegls_coding.carriage(format)
+        return jpegls_coding.carriage(format, reversible=self.reversible)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only what the header cannot say."""

@@ -132,6 +132,7 @@ def _carried(treated: Treated) -> dict[str, Any]:
         "code_precision": carriage.precision if carriage else None,
         "sample_offset": carriage.offset if carriage else None,
         "sample_scale": carriage.scale if carriage else None,
+        "clipped_on_reading": carriage.clipped_on_reading if carriage else None,
     }
 
 

@@ -144,5 +144,7 @@ class CarriageEntry(Document):
     """Stored values added before coding."""
     sample_scale: float
     """Factor before coding."""
+    clipped_on_reading: bool = False
+    """Whether values read beyond the range of the bits stored were brought to the nearest inside."""
     rows: int
     """Rows of the table of measures."""

@@ -108,6 +108,7 @@ class MeasureRow(TreatedFrame):
     code_precision: int | None = optional("bits", "Bits a sample that the code stream declares.")
     sample_offset: int | None = optional("stored values", "Added to each sample before coding.")
     sample_scale: float | None = optional("times", "Factor of each sample, once the offset is added, before coding.")
+    clipped_on_reading: bool | None = optional("", "Whether values read beyond the bits stored were clipped.")
     asked: str = column("", "ratio per frame, ratio per series or setting; empty for controls.", default="")
     ratio_asked: float | None = optional("to 1", "Ratio asked for, on the basis named beside it.")
     basis: str = column("", "Basis of the ratio asked for.")

@@ -11,7 +11,7 @@ from safecheck.statistics.groups import Groups, Indices
 
 __all__ = ["carriages", "reversible_codecs"]
 
-_FORM = ("bits_stored", "signed", "code_precision", "sample_offset", "sample_scale")
+_FORM = ("bits_stored", "signed", "code_precision", "sample_offset", "sample_scale", "clipped_on_reading")
 """Columns that say how samples of one form are carried."""
 
 
@@ -60,7 +60,7 @@ def carriages(groups: Groups) -> Iterator[CarriageEntry]:
     reader = groups.reader
     codec_of, codecs = reader.codes("codec")
     columns = np.stack([reader.numbers(name) for name in _FORM], axis=1)
-    bits, _, precision, offset, scale = columns.T
+    bits, _, precision, offset, scale, _ = columns.T
     # Without a code of our own, as for delivered copies, nothing is known.
     rows = np.flatnonzero(~np.isnan(precision) & ((precision != bits) | (offset != 0) | (scale != 1)))
     for number in np.unique(codec_of[rows]):
@@ -73,5 +73,6 @@ def carriages(groups: Groups) -> Iterator[CarriageEntry]:
                 code_precision=int(form[2]),
                 sample_offset=int(form[3]),
                 sample_scale=form[4],
+                clipped_on_reading=bool(form[5]),
                 rows=count,
             )

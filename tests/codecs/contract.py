@@ -126,6 +126,9 @@ def check_carriage(codec: Codec, form: PixelFormat) -> None:
     assert carriage.scale == 1.0
     lowest, highest = form.lowest + carriage.offset, form.highest + carriage.offset
     assert highest < 1 << (carriage.precision - (1 if lowest < 0 else 0))
+    # A code of a reversible codec, or one of the bits stored, holds nothing that could be clipped.
+    irreversible = not codec.reversible and carriage.precision > form.bits_stored
+    assert carriage.clipped_on_reading is irreversible
 
 
 def check_values_beyond_the_bits(codec: Codec) -> None:

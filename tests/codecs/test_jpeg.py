@@ -89,7 +89,8 @@ def test_up_to_eight_bits_are_baseline_and_up_to_twelve_extended(bits: int, sign
     process, precision = (0xC0, 8) if bits <= 8 else (0xC1, 12)
     frame = dict(segments(code))[process]
     assert frame[0] == precision
-    assert Jpeg().carriage(form) == Carriage(precision, 1 << (bits - 1) if signed else 0)
+    offset = 1 << (bits - 1) if signed else 0
+    assert Jpeg().carriage(form) == Carriage(precision, offset, clipped_on_reading=bits < precision)
 
 
 def test_the_huffman_tables_are_made_for_the_frame() -> None:

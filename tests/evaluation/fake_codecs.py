@@ -56,7 +56,7 @@ class Near:
 
     def carriage(self, format: PixelFormat) -> Carriage:  # noqa: A002
         """Unsigned, in 16 bits."""
-        return Carriage(16, -format.lowest)
+        return Carriage(16, -format.lowest, clipped_on_reading=True)
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse colour."""

@@ -129,7 +129,9 @@ def test_rows_say_how_samples_were_carried() -> None:
     result = evaluate(original, assignment, full_controls=True)
     (row,) = rows(result, "candidate")
     assert (row.bits_stored, row.code_precision, row.sample_offset, row.sample_scale) == (12, 16, 2048, 1.0)
+    assert row.clipped_on_reading is True
     (planted,) = rows(result, "planted")
+    assert planted.clipped_on_reading is None
     assert (planted.code_precision, planted.dial, planted.asked) == (None, "", "")
 
 

@@ -195,10 +195,16 @@ def test_reversible_codecs_are_counted_on_the_frames_that_carry_them_all(tmp_pat
 
 
 def test_only_samples_carried_otherwise_than_they_are_stored_are_named(tmp_path: Path) -> None:
-    plain: dict[str, Any] = {"code_precision": 12, "sample_offset": 0, "sample_scale": 1.0}
+    plain: dict[str, Any] = {
+        "code_precision": 12,
+        "sample_offset": 0,
+        "sample_scale": 1.0,
+        "clipped_on_reading": False,
+    }
+    sixteen = {"code_precision": 16, "clipped_on_reading": True}
     rows = [
-        measured("near 8:1", codec="near", study="S-0", signed=True, **(plain | {"code_precision": 16})),
-        measured("near 8:1", codec="near", study="S-1", signed=True, **(plain | {"code_precision": 16})),
+        measured("near 8:1", codec="near", study="S-0", signed=True, **(plain | sixteen)),
+        measured("near 8:1", codec="near", study="S-1", signed=True, **(plain | sixteen)),
         measured("near 8:1", codec="near", study="S-2", **(plain | {"sample_offset": 2048})),
         measured("far 8:1", codec="far", study="S-0", **plain),
         measured("delivered copies", codec="delivered", role="delivered", study="S-0"),
@@ -206,11 +212,19 @@ def test_only_samples_carried_otherwise_than_they_are_stored_are_named(tmp_path:
     ]
     made = plan(candidates=[{"codec": codec, "ratio": 8} for codec in ("near", "far")])
     found = [
-        (each.codec, each.signed, each.code_precision, each.sample_offset, each.sample_scale, each.rows)
+        (
+            each.codec,
+            each.signed,
+            each.code_precision,
+            each.sample_offset,
+            each.sample_scale,
+            each.clipped_on_reading,
+            each.rows,
+        )
         for each in record_of(tmp_path, rows, made).carriage
     ]
     assert sorted(found) == [
-        ("jpegls-reversible", False, 12, 0, 16.0, 3),
-        ("near", False, 12, 2048, 1.0, 1),
-        ("near", True, 16, 0, 1.0, 2),
+        ("jpegls-reversible", False, 12, 0, 16.0, False, 3),
+        ("near", False, 12, 2048, 1.0, False, 1),
+        ("near", True, 16, 0, 1.0, True, 2),
     ]
