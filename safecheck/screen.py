@@ -74,13 +74,20 @@ class Screen:
         if found.note:
             self.clear()
             self.update(found.note)
-        self.update(f"Assessing: {found.done} of {found.total} parts, {found.frames} frames{left}")
+        self.update(
+            f"Assessing: {found.done} of {_counted(found.total, 'part')}, {_counted(found.frames, 'frame')}{left}"
+        )
 
     def clear(self) -> None:
         """Leave an empty line behind."""
         if self._rewrites and self._last and not self._quiet:
             typer.echo("\r\x1b[K", nl=False, err=True)
         self._last = ""
+
+
+def _counted(number: int, one: str) -> str:
+    """'1 frame', '2 frames'."""
+    return f"{number} {one}{'' if number == 1 else 's'}"
 
 
 def _duration(seconds: float) -> str:

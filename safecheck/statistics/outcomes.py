@@ -155,8 +155,9 @@ class _Held:
         if not outcome.patients:
             return None, "no bound: no patient evaluated"
         if outcome.patients < scope.patients:
-            return None, f"no bound: {scope.patients - outcome.patients} of {scope.patients} patients not evaluated"
-        patients = f"{outcome.patients} patient{'' if outcome.patients == 1 else 's'}"
+            missing = scope.patients - outcome.patients
+            return None, f"no bound: {missing} of {_counted(scope.patients, 'patient')} not evaluated"
+        patients = _counted(outcome.patients, "patient")
         percent = 100 * share_upper_bound(outcome.patients - outcome.patients_within, outcome.patients)
         text = f"at most {percent:.3g} % of patients exceed it, one-sided 95 % bound, {patients}"
         return percent, text
@@ -175,6 +176,11 @@ def _word(outcome: Outcome, scope: _Scope) -> tuple[OutcomeWord, str]:
     """The outcome's word: 'within' only where every study in scope gave a value."""
     missing = scope.studies - outcome.studies
     if outcome.word is OutcomeWord.WITHIN and missing:
-        reason = f"{missing} of {scope.studies} studies gave no value; the others are within"
+        reason = f"{missing} of {_counted(scope.studies, 'study', 'studies')} gave no value; the others are within"
         return OutcomeWord.NOT_EVALUATED, reason
     return outcome.word, outcome.reason
+
+
+def _counted(number: int, one: str, many: str = "") -> str:
+    """'1 study', '2 studies'."""
+    return f"{number} {one if number == 1 else many or one + 's'}"
