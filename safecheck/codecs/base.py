@@ -20,6 +20,7 @@ from safecheck.frames import PixelFormat, Raster, Samples
 
 __all__ = [
     "EXEMPT_BYTES",
+    "LONGEST_SIDE",
     "RATE_TOLERANCE",
     "Carriage",
     "Codec",
@@ -29,6 +30,7 @@ __all__ = [
     "Settings",
     "admit",
     "fitted",
+    "too_long",
 ]
 
 Settings: TypeAlias = Mapping[str, str | int | float | bool]
@@ -38,6 +40,9 @@ RATE_TOLERANCE = 0.01
 """A code whose size is within this share of the asked size counts as reached."""
 EXEMPT_BYTES = 4096
 """Targets below this many bytes are not held to `RATE_TOLERANCE`: headers weigh too much there."""
+
+LONGEST_SIDE = 0xFFFF
+"""Of a frame: DICOM and most code streams have 16 bits for it."""
 
 
 class Reached(enum.StrEnum):
@@ -213,6 +218,13 @@ def admit(codec: Codec, raster: Raster) -> None:
             f"{codec.name}: samples from {lowest} to {highest}, expected "
             f"{raster.format.lowest} to {raster.format.highest} ({raster.format.bits_stored} bits stored)"
         )
+
+
+def too_long(shape: tuple[int, int]) -> str | None:
+    """Why (rows, columns) are more than a header can say; None where they are not."""
+    if max(shape) > LONGEST_SIDE:
+        return f"{shape[0]} x {shape[1]} pixels, expected at most {LONGEST_SIDE} on each side"
+    return None
 
 
 def fitted(

@@ -17,8 +17,8 @@ import numpy as np
 import numpy.typing as npt
 
 from safecheck.codecs import search
-from safecheck.codecs.base import Carriage, Codec, Encoded, Settings, admit, fitted
-from safecheck.codecs.libraries import carried_by, imagecodecs_with, openjpeg
+from safecheck.codecs.base import Carriage, Codec, Encoded, Settings, admit, fitted, too_long
+from safecheck.codecs.libraries import carried_by, imagecodecs_with, openjpeg, openjpeg_version
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.offsets import narrow_type, within
 from safecheck.codecs.reversible import best_reversible
@@ -31,7 +31,6 @@ __all__ = ["STEP_HIGHEST", "STEP_LOWEST", "Htj2k", "Htj2kLossless"]
 STEP_LOWEST, STEP_HIGHEST = 1e-6, 0.5
 _SLOPE = -0.7
 """d log(size) / d log(step), as seen on CT, MR, CR and ultrasound frames at 5 to 20:1."""
-_LONGEST_SIDE = 0xFFFF
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,8 +56,8 @@ class Htj2k:
 
     @property
     def version(self) -> str:
-        """OpenJPH's version and that of the package that carries it."""
-        return _version()
+        """The libraries that write and read, their versions and those of the packages that carry them."""
+        return _version(self)
 
     @property
     def error_bound(self) -> int | None:
@@ -71,7 +70,7 @@ class Htj2k:
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
-        return _too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster.
@@ -139,8 +138,8 @@ class Htj2kLossless:
 
     @property
     def version(self) -> str:
-        """OpenJPH's version and that of the package that carries it."""
-        return _version()
+        """The libraries that write and read, their versions and those of the packages that carry them."""
+        return _version(self)
 
     @property
     def error_bound(self) -> int | None:
@@ -153,7 +152,7 @@ class Htj2kLossless:
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
-        return _too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster exactly.
@@ -180,19 +179,14 @@ class Htj2kLossless:
         return fitted(_read(self, code, format, shape), self.name, format, shape)
 
 
-def _version() -> str:
-    return carried_by(imagecodecs_with("HTJ2K").htj2k_version(), "imagecodecs")
+def _version(codec: Codec) -> str:
+    writer = carried_by(imagecodecs_with("HTJ2K").htj2k_version(), "imagecodecs")
+    return f"{writer}, read by {openjpeg_version(codec.name)}"
 
 
 def _carriage(form: PixelFormat, *, reversible: bool) -> Carriage:
     precision = 8 * narrow_type(form).itemsize
     return Carriage(precision, clipped_on_reading=not reversible and precision > form.bits_stored)
-
-
-def _too_long(shape: tuple[int, int]) -> str | None:
-    if max(shape) > _LONGEST_SIDE:
-        return f"{shape[0]} x {shape[1]} pixels, expected at most {_LONGEST_SIDE} on each side"
-    return None
 
 
 def _write(codec: Codec, raster: Raster, step: float | None) -> bytes:

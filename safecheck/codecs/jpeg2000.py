@@ -14,7 +14,7 @@ from typing import ClassVar
 
 from safecheck.codecs import search
 from safecheck.codecs.base import Carriage, Encoded, Settings, admit, fitted
-from safecheck.codecs.libraries import carried_by, openjpeg
+from safecheck.codecs.libraries import openjpeg, openjpeg_version
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.reversible import best_reversible
 from safecheck.codecs.setting_values import number
@@ -57,8 +57,7 @@ class Jpeg2000:
     @property
     def version(self) -> str:
         """OpenJPEG's version and that of the package that carries it."""
-        numbers = openjpeg(self.name).get_openjpeg_version()
-        return carried_by(f"OpenJPEG {'.'.join(str(number) for number in numbers)}", "pylibjpeg-openjpeg")
+        return openjpeg_version(self.name)
 
     @property
     def error_bound(self) -> int | None:

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from typing import ClassVar
 
 from safecheck.codecs import jpegls_coding
-from safecheck.codecs.base import Carriage, Encoded, Settings
+from safecheck.codecs.base import Carriage, Encoded, Settings, too_long
 from safecheck.codecs.integer_dial import WholeDial, encode_around
 from safecheck.codecs.setting_values import whole
 from safecheck.frames import PixelFormat, Raster, Samples
@@ -64,7 +64,7 @@ class JpegLs:
         if self.near > highest:
             limit = f"at most {highest}" if highest else "a reversible codec"
             return f"near is {self.near} with {format.bits_stored} bits stored, expected {limit}"
-        return jpegls_coding.too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster.

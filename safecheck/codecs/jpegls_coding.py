@@ -19,22 +19,13 @@ from safecheck.codecs.stream_headers import check_jpegls
 from safecheck.errors import CorruptCode
 from safecheck.frames import PixelFormat, Raster, Samples
 
-__all__ = ["LONGEST_SIDE", "carriage", "read", "too_long", "version", "write"]
+__all__ = ["carriage", "read", "version", "write"]
 
-LONGEST_SIDE = 0xFFFF
-"""Of a frame in any of the JPEG headers, which have 16 bits for it."""
 _LEAST_PRECISION = 2
 """ISO/IEC 14495-1 C.2.2: P is 2 to 16."""
 _BY_PIXEL = 2
 """Interleave mode of colour."""
 _HEADROOM_BYTES = 4096
-
-
-def too_long(shape: tuple[int, int]) -> str | None:
-    """Refuse what the header's 16 bits cannot say."""
-    if max(shape) > LONGEST_SIDE:
-        return f"{shape[0]} x {shape[1]} pixels, expected at most {LONGEST_SIDE} on each side"
-    return None
 
 
 def _writes_true_precision() -> bool:
@@ -43,11 +34,9 @@ def _writes_true_precision() -> bool:
 
 
 def version() -> str:
-    """Name the library that writes, with its version."""
-    reader = imagecodecs_with("JPEGLS")
-    if _writes_true_precision():
-        return carried_by("CharLS", "pyjpegls")
-    return carried_by(reader.jpegls_version(), "imagecodecs")
+    """Name the library that writes, with its version, and the one that reads where it is another."""
+    reader = carried_by(imagecodecs_with("JPEGLS").jpegls_version(), "imagecodecs")
+    return f"{carried_by('CharLS', 'pyjpegls')}, read by {reader}" if _writes_true_precision() else reader
 
 
 def carriage(form: PixelFormat, *, reversible: bool) -> Carriage:

@@ -14,7 +14,7 @@ from types import ModuleType
 from typing import ClassVar
 
 from safecheck.codecs import search
-from safecheck.codecs.base import Carriage, Codec, Encoded, Settings, admit, fitted
+from safecheck.codecs.base import Carriage, Codec, Encoded, Settings, admit, fitted, too_long
 from safecheck.codecs.jpegxl_header import check_jpegxl
 from safecheck.codecs.libraries import carried_by, imagecodecs_with
 from safecheck.codecs.library_calls import reading, writing
@@ -34,7 +34,6 @@ _REVERSIBLE_EFFORT = 3
 _EFFORT_HIGHEST = 9
 _SLOPE = -0.7
 """d log(size) / d log(distance), as seen on CT, MR, CR and ultrasound frames at 5 to 20:1."""
-_LONGEST_SIDE = 0xFFFF
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,7 +78,7 @@ class JpegXl:
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
-        return _too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster.
@@ -167,7 +166,7 @@ class JpegXlLossless:
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
-        return _too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster exactly.
@@ -200,12 +199,6 @@ def _version() -> str:
 
 def _library() -> ModuleType:
     return imagecodecs_with("JPEGXL")
-
-
-def _too_long(shape: tuple[int, int]) -> str | None:
-    if max(shape) > _LONGEST_SIDE:
-        return f"{shape[0]} x {shape[1]} pixels, expected at most {_LONGEST_SIDE} on each side"
-    return None
 
 
 def _write(codec: Codec, raster: Raster, settings: dict[str, float | bool]) -> bytes:

@@ -9,7 +9,7 @@ from types import ModuleType
 
 from safecheck.errors import CodecUnavailable
 
-__all__ = ["carried_by", "imagecodecs_with", "openjpeg"]
+__all__ = ["carried_by", "imagecodecs_with", "openjpeg", "openjpeg_version"]
 
 
 def imagecodecs_with(part: str) -> ModuleType:
@@ -51,6 +51,23 @@ def openjpeg(codec: str) -> ModuleType:
         return importlib.import_module("openjpeg.utils")
     except ImportError as error:
         raise CodecUnavailable(f"{codec}: pylibjpeg-openjpeg is not on this machine") from error
+
+
+def openjpeg_version(codec: str) -> str:
+    """Version of OpenJPEG, and that of the package that carries it.
+
+    Parameters
+    ----------
+    codec
+        Name of the codec that asks, for the message.
+
+    Raises
+    ------
+    CodecUnavailable
+        If the library is missing.
+    """
+    numbers = openjpeg(codec).get_openjpeg_version()
+    return carried_by(f"OpenJPEG {'.'.join(str(number) for number in numbers)}", "pylibjpeg-openjpeg")
 
 
 @functools.cache

@@ -61,6 +61,7 @@ class Entry:
 
 
 _IMAGECODECS = ("imagecodecs", "imagecodecs")
+_CHARLS = ("imagecodecs, and pyjpegls to write the true precision", "imagecodecs")
 _OPENJPEG = ("pylibjpeg-openjpeg", "openjpeg")
 _BOTH = ("imagecodecs and pylibjpeg-openjpeg", "imagecodecs openjpeg")
 _NONE: Settings = MappingProxyType({})
@@ -71,12 +72,12 @@ ENTRIES: Mapping[str, Entry] = MappingProxyType(
             "safecheck.codecs.jpeg2000", "Jpeg2000", *_OPENJPEG, "ratio", True, ("jpeg2000-reversible", _NONE)
         ),
         "jpeg": Entry("safecheck.codecs.jpeg", "Jpeg", *_IMAGECODECS, "quality", True),
-        "jpegls": Entry("safecheck.codecs.jpegls", "JpegLs", *_IMAGECODECS, "near", True, ("jpegls-reversible", _NONE)),
+        "jpegls": Entry("safecheck.codecs.jpegls", "JpegLs", *_CHARLS, "near", True, ("jpegls-reversible", _NONE)),
         "htj2k": Entry("safecheck.codecs.htj2k", "Htj2k", *_BOTH, "step", True, ("htj2k-reversible", _NONE)),
         "jpegxl": Entry(
             "safecheck.codecs.jpegxl", "JpegXl", *_IMAGECODECS, "distance", True, ("jpegxl-reversible", _NONE)
         ),
-        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLsLossless", *_IMAGECODECS, "", True),
+        "jpegls-reversible": Entry("safecheck.codecs.reversible", "JpegLsLossless", *_CHARLS, "", True),
         "jpeg2000-reversible": Entry("safecheck.codecs.reversible", "Jpeg2000Lossless", *_IMAGECODECS, "", True),
         "htj2k-reversible": Entry("safecheck.codecs.htj2k", "Htj2kLossless", *_BOTH, "", True),
         "jpegxl-reversible": Entry("safecheck.codecs.jpegxl", "JpegXlLossless", *_IMAGECODECS, "", True),

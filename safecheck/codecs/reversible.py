@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from typing import ClassVar
 
 from safecheck.codecs import jpegls_coding
-from safecheck.codecs.base import Carriage, Codec, Settings, admit, fitted
+from safecheck.codecs.base import Carriage, Codec, Settings, admit, fitted, too_long
 from safecheck.codecs.libraries import carried_by, imagecodecs_with
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.codecs.offsets import narrow_type
@@ -46,7 +46,7 @@ class JpegLsLossless:
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only what the header cannot say."""
-        return jpegls_coding.too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster exactly.
@@ -104,7 +104,7 @@ class Jpeg2000Lossless:
         """Refuse one bit, which the library cannot write or loses where it is noise, and what no header can say."""
         if format.bits_stored == 1:
             return "1 bit stored, expected at least 2"
-        return jpegls_coding.too_long(shape)
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster exactly.

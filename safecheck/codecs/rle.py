@@ -13,7 +13,7 @@ from typing import ClassVar
 import numpy as np
 import numpy.typing as npt
 
-from safecheck.codecs.base import Carriage, Settings, admit, fitted
+from safecheck.codecs.base import Carriage, Settings, admit, fitted, too_long
 from safecheck.codecs.libraries import carried_by, imagecodecs_with
 from safecheck.codecs.library_calls import reading, writing
 from safecheck.errors import CorruptCode
@@ -23,7 +23,6 @@ __all__ = ["RleLossless"]
 
 _HEADER = struct.Struct("<16I")
 """PS3.5 G.5: how many segments, then where each begins."""
-_LONGEST_SIDE = 0xFFFF
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,9 +54,7 @@ class RleLossless:
 
     def refuses(self, format: PixelFormat, shape: tuple[int, int]) -> str | None:  # noqa: A002, ARG002
         """Refuse only frames beyond what DICOM can say."""
-        if max(shape) > _LONGEST_SIDE:
-            return f"{shape[0]} x {shape[1]} pixels, expected at most {_LONGEST_SIDE} on each side"
-        return None
+        return too_long(shape)
 
     def encode(self, raster: Raster) -> bytes:
         """Write the raster exactly.

@@ -44,6 +44,8 @@ class Recomputed:
     """Frames computed again."""
     frames: int
     """Frames of the dossier."""
+    missing: int
+    """Instances of the dossier that are not among the images given."""
     differences: tuple[str, ...]
     """One sentence each."""
 
@@ -74,13 +76,14 @@ def recompute(
     differences: list[str] = []
     for instance, number in drawn:
         if instance not in known:
-            differences.append(f"instance {instance} of the record is not among the images given")
             continue
         found = {table: rows[table].get((instance, number), []) for table in _NAMED_BY}
         copy = inputs.pairs.get(known[instance].input)
         own = assignments.of(known[instance])
         differences += _differing(known[instance], copy, number, own, found)
-    return Recomputed(len(drawn), len(every), tuple(differences))
+    missing = {instance for instance, _ in every} - set(known)
+    done = sum(instance in known for instance, _ in drawn)
+    return Recomputed(done, len(every), len(missing), tuple(differences))
 
 
 def _frame_column(reader: TableReader) -> Iterator[_Frame]:

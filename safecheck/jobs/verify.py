@@ -149,7 +149,13 @@ def _recompute(
     tables = readers(dossier)
     found = recompute(tables, inputs, assignment, frames=frames, seed=seed)
     line = f"{found.drawn} of {found.frames} frames were computed again, and their rows held against the tables"
-    return _explained([*_other_figures(record, plan, tables), *found.differences], record.versions), line
+    differences = _explained([*_other_figures(record, plan, tables), *found.differences], record.versions)
+    if found.missing:
+        # Nothing was altered by that: what is given is not all of what the run was about.
+        one = found.missing == 1
+        what = "instance of the record is" if one else "instances of the record are"
+        differences.insert(0, f"{found.missing} {what} not among the images given")
+    return differences, line
 
 
 def _other_figures(record: RecordDocument, plan: Plan, tables: Mapping[str, TableReader]) -> Iterator[str]:
