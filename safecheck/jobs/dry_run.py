@@ -2,20 +2,13 @@
 
 from __future__ import annotations
 
-import time
 from collections.abc import Iterator
-from dataclasses import dataclass
 
-from safecheck.dicom.reader import open_instance
-from safecheck.errors import InputRefused
-from safecheck.evaluation import evaluate, load_kernels
 from safecheck.jobs.assess import Prepared
 from safecheck.jobs.plans import is_available, missing_controls
-from safecheck.jobs.series import SeriesAssignments
-from safecheck.record.rows import FrameResult
+from safecheck.jobs.trial import expect
 from safecheck.runner.pool import cores
-from safecheck.runner.progress import full_controls_of, weight_of
-from safecheck.runner.tasks import Task
+from safecheck.runner.progress import full_controls_of
 from safecheck.statistics.bounds import patients_needed
 from safecheck.wording import NO_BOUND, SHORT_CAUTION, sentence_of
 
@@ -23,10 +16,12 @@ __all__ = ["dry_run"]
 
 _BYTES_PER_FRAME_AND_CANDIDATE = 600
 """Rows of all tables in Parquet and CSV, measured on CT; an estimate for the disk."""
+_START_S = 5.0
+"""From the start of the command to the first frame, and from the last one to the end of the report."""
 
 
 def dry_run(prepared: Prepared) -> Iterator[str]:
-    """Yield the lines that a dry run prints; one frame is run to learn the speed."""
+    """Yield the lines that a dry run prints; a few frames are run to learn the speed."""
     inputs, plan = prepared.inputs, prepared.loaded.plan
     frames = sum(each.frames for each in inputs.assessed)
     studies = len(prepared.studies)
@@ -62,17 +57,8 @@ def _reasons(prepared: Prepared) -> Iterator[str]:
         yield f"  {files} left out: {sentence_of(reason)}"
 
 
-@dataclass(frozen=True, slots=True)
-class _Trial:
-    """What one frame gave, tried as the run would assess it."""
-
-    seconds_per_weight: float
-    rows: FrameResult
-    """Without the controls that only a share of frames carries."""
-
-
 def _cost(prepared: Prepared) -> Iterator[str]:
-    """Time, rows and disk, from one frame that is run for the purpose."""
+    """Time, rows and disk, from a few frames that are run for the purpose."""
     if not prepared.tasks:
         yield "Time, rows and disk: nothing to assess"
         return
@@ -81,38 +67,21 @@ def _cost(prepared: Prepared) -> Iterator[str]:
     if missing:
         yield f"Time and rows: not known, and the run is refused, while {missing[0]} is not available here"
         return
-    trial = _tried(prepared, prepared.tasks[len(prepared.tasks) // 2])
     frames = [frame for task in prepared.tasks for frame in task.frames]
-    if trial is None:
-        yield "Time and rows: not known, the frame tried was refused"
+    expected = expect(frames, prepared.assignment, full_controls_of(prepared.assignment))
+    if expected is None:
+        yield "Time and rows: not known, the frames tried were refused"
     else:
-        total = sum(weight_of(task, prepared.assignment) for task in prepared.tasks)
+        # Workers share out tasks, and one without a task helps nobody.
         workers = prepared.request.workers or cores()
-        expected = max(1.0, trial.seconds_per_weight * total / workers)
-        yield f"Time: about {expected:.0f} s on {workers} workers, after compiled code is prepared"
-        controls = sum(frame.full_controls for frame in frames) * full_controls_of(prepared.assignment)
-        copies = sum(frame.delivered is not None for frame in frames)
-        measures = len(frames) * len(trial.rows.measures) + controls + copies
-        windows, regions = len(frames) * len(trial.rows.windows), len(frames) * len(trial.rows.regions)
-        yield f"Rows: about {measures} of measures, {windows} of windows, {regions} of regions"
+        seconds = _START_S + expected.seconds / min(workers, len(prepared.tasks))
+        yield f"Time: about {seconds:.0f} s on {workers} workers, after compiled code is prepared"
+        yield (
+            f"Rows: about {expected.measures:.0f} of measures, {expected.windows:.0f} of windows, "
+            f"{expected.regions:.0f} of regions"
+        )
     disk = len(frames) * (len(prepared.assignment.candidates) + 2) * _BYTES_PER_FRAME_AND_CANDIDATE
     yield f"Disk: about {max(disk / 1e6, 0.1):.1f} MB"
-
-
-def _tried(prepared: Prepared, task: Task) -> _Trial | None:
-    """The first frame of a task, run twice, since the first time includes what is done once; None if it is refused."""
-    load_kernels()
-    each = task.frames[0]
-    try:
-        assignment = SeriesAssignments(prepared.assignment, prepared.inputs.assessed).of(each.instance)
-        with open_instance(each.instance) as reader:
-            rows = evaluate(reader.frame(each.number), assignment, full_controls=False)
-            since = time.monotonic()
-            evaluate(reader.frame(each.number), assignment, full_controls=each.full_controls)
-    except InputRefused:
-        return None
-    weight = weight_of(Task("", (each,)), prepared.assignment)
-    return _Trial((time.monotonic() - since) / weight, rows)
 
 
 def _idle_limits(prepared: Prepared) -> Iterator[str]:

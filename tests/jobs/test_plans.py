@@ -6,6 +6,7 @@ import dataclasses
 import re
 from pathlib import Path
 from types import MappingProxyType
+from typing import get_args
 
 import pytest
 
@@ -14,6 +15,7 @@ from safecheck.errors import DocumentError, UsageError
 from safecheck.jobs.assess import AssessRequest, prepare_run
 from safecheck.jobs.dry_run import dry_run
 from safecheck.jobs.plans import check_available, is_available, load_plan
+from safecheck.options import Codecs
 from synthetic_studies import ct_body
 from tests.end_to_end.hospital import CHANGE, CHOSEN, assess_here
 
@@ -144,3 +146,9 @@ def test_a_dry_run_says_which_codec_is_missing_and_how_many_rows_there_will_be(
     # A codec may not take the frame that carries all controls, and over-compression has window rows of its own.
     assert abs(int(said[0]) - rows["measures"]) <= 2
     assert int(said[1]) <= rows["windows"] <= int(said[1]) + 2 * 2
+
+
+def test_the_help_names_every_codec_that_can_be_asked_for_a_ratio() -> None:
+    _, option = get_args(Codecs)
+    named = option.help.partition("any of ")[2].partition(";")[0].split(", ")
+    assert tuple(named) == registry.rated_names()
