@@ -24,6 +24,8 @@ class WholeDial:
     """Setting tried first."""
     rising: bool
     """Whether turning up makes the code larger."""
+    guess: Callable[[search.Step], float] | None = None
+    """First code -> setting at which the asked size is expected; None where nothing is known of it."""
 
 
 def encode_around(codec: Callable[[int], Codec], raster: Raster, target_bytes: float, dial: WholeDial) -> Encoded:
@@ -61,7 +63,9 @@ def encode_around(codec: Callable[[int], Codec], raster: Raster, target_bytes: f
         codes[setting] = codec(setting).encode(raster)
         return codes[setting]
 
-    steps = search.bracket(encode, target_bytes, dial.lowest, dial.highest, dial.start, rising=dial.rising)
+    steps = search.bracket(
+        encode, target_bytes, dial.lowest, dial.highest, dial.start, rising=dial.rising, guess=dial.guess
+    )
     first = steps[0]
     settings = codec(first.dial).settings
     if len(steps) == 1:

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import ClassVar
 
-from safecheck.codecs import jpegls_coding
+from safecheck.codecs import jpegls_coding, search
 from safecheck.codecs.base import Carriage, Encoded, Settings, too_long
 from safecheck.codecs.integer_dial import WholeDial, encode_around
 from safecheck.codecs.setting_values import whole
@@ -110,5 +111,11 @@ class JpegLs:
             If ``target_bytes`` is not positive and finite.
         """
         highest = max(highest_near(raster.format), 1)
-        dial = WholeDial(1, highest, min(_START, highest), rising=False)
+
+        def guess(step: search.Step) -> float:
+            """Each bit a sample halves the number of values that are told apart, which lie 2 near + 1 apart."""
+            saved = 8 * (len(step.code) - target_bytes) / raster.samples.size
+            return ((2 * step.dial + 1) * math.exp2(min(max(saved, -16.0), 16.0)) - 1) / 2
+
+        dial = WholeDial(1, highest, min(_START, highest), rising=False, guess=guess)
         return encode_around(JpegLs, raster, target_bytes, dial)

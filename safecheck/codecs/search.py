@@ -21,7 +21,8 @@ from safecheck.errors import CodecUnavailable
 __all__ = ["MOST_ENCODES", "Dial", "End", "Found", "Step", "bracket", "tell", "turn"]
 
 MOST_ENCODES = 12
-"""No frame is encoded more often than this on the way to a size."""
+"""With a continuous dial no frame is encoded more often than this; one of whole numbers ends where its two settings
+are found, which has no such bound."""
 _ONE_SIDED = 5
 """After so many codes on the same side of the asked size the end of the dial is tried."""
 _BEYOND = 1.25
@@ -175,7 +176,14 @@ def _inside(points: list[_Point], above: _Point, below: _Point) -> float | None:
 
 
 def bracket(
-    encode: Callable[[int], bytes], target_bytes: float, lowest: int, highest: int, start: int, *, rising: bool
+    encode: Callable[[int], bytes],
+    target_bytes: float,
+    lowest: int,
+    highest: int,
+    start: int,
+    *,
+    rising: bool,
+    guess: Callable[[Step], float] | None = None,
 ) -> tuple[Step, ...]:
     """Find the two neighbouring settings of an integer dial whose codes lie around the asked size.
 
@@ -191,6 +199,8 @@ def bracket(
         First setting tried, within the range.
     rising
         Whether the code grows with the setting.
+    guess
+        First code -> setting at which the asked size is expected; None where nothing is known of it.
 
     Returns
     -------
@@ -223,6 +233,11 @@ def bracket(
         end = large if beyond is None else small
         if at == end:
             return (step,)
+        if guess is not None and tried == 1:
+            stride = max(1, abs(round(guess(step)) - at))
+            at = min(at + stride, end) if end > at else max(at - stride, end)
+            stride = max(1, stride // 4)
+            continue
         # Strides grow: a start that is nearly right costs two or three codes, a wrong one stays logarithmic.
         at = min(at + stride, end) if end > at else max(at - stride, end)
         stride *= 3

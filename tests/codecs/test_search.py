@@ -194,3 +194,9 @@ def test_a_start_outside_the_range_is_refused() -> None:
 )
 def test_the_end_of_a_search_has_one_word(end: search.End, target: float, reversible: int, reached: Reached) -> None:
     assert search.tell(end, target, lambda: reversible) is reached
+
+
+@pytest.mark.parametrize("guessed", [1.0, 40.0, 57.0, 100.0, 1e9, -1e9])
+def test_a_first_guess_however_wrong_changes_no_pair(guessed: float) -> None:
+    alone = search.bracket(code_of, 57.5, 1, 100, 3, rising=True)
+    assert search.bracket(code_of, 57.5, 1, 100, 3, rising=True, guess=lambda _: guessed) == alone
