@@ -66,7 +66,7 @@ def test_htj2k_decodes_alike_with_openjpeg(tmp_path: Path, suffix: str, signed: 
 
 
 def test_every_still_image_syntax_has_one_pinned_decoder() -> None:
-    # The list of issue: JPEG .50 .51 .53 .55 .57 .70, JPEG-LS, JPEG 2000, HTJ2K, JPEG XL, RLE.
+    # Every syntax for still images: JPEG .50 .51 .53 .55 .57 .70, JPEG-LS, JPEG 2000, HTJ2K, JPEG XL, RLE.
     suffixes = ("50", "51", "53", "55", "57", "70", "80", "81", "90", "91", "110", "111", "112", "201", "202", "203")
     assert set(DECODERS) == {J + suffix for suffix in suffixes} | {"1.2.840.10008.1.2.5"}
     assert set(DECODERS) <= set(SYNTAXES)

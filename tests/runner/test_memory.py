@@ -16,7 +16,7 @@ def peaks_of(dossier: Path, frames: int, answer: Connection) -> None:
 
 @pytest.mark.slow
 def test_ten_times_the_frames_take_the_same_memory(tmp_path: Path) -> None:
-    # Issue: 2,000 frames within 1.2 of 200 frames.
+    # Wanted: 2,000 frames within 1.2 of 200 frames.
     found = []
     for frames in (200, 2000):
         here, there = multiprocessing.Pipe()

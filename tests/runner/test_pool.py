@@ -90,7 +90,7 @@ def test_two_frames_of_one_task_that_kill_are_both_refused(tmp_path: Path) -> No
 
 
 def test_a_dead_worker_is_reported_within_ten_seconds_and_long_before_the_run_ends(tmp_path: Path) -> None:
-    # Issue: within 10 s. The other worker is busy for a minute, so nothing else can wake the parent.
+    # Wanted: within 10 s. The other worker is busy for a minute, so nothing else can wake the parent.
     begun, reported = tmp_path / "begun", threading.Event()
     one = [instance("one"), instance("two", series="R-2")]
     work = work_of(tmp_path / "d", one)
