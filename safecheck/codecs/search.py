@@ -217,7 +217,6 @@ def bracket(
         raise ValueError(f"asked for {target_bytes} bytes from {start} in {lowest} to {highest}")
     within: Step | None = None
     beyond: Step | None = None
-    small, large = (lowest, highest) if rising else (highest, lowest)
     at, stride, tried = start, 1, 0
     while True:
         step, tried = Step(at, encode(at)), tried + 1
@@ -230,17 +229,14 @@ def bracket(
                 return within, beyond
             at = _between(within, beyond, target_bytes, halve=tried % 3 == 0)
             continue
-        end = large if beyond is None else small
+        end = highest if (beyond is None) == rising else lowest
         if at == end:
             return (step,)
         if guess is not None and tried == 1:
             stride = max(1, abs(round(guess(step)) - at))
-            at = min(at + stride, end) if end > at else max(at - stride, end)
-            stride = max(1, stride // 4)
-            continue
-        # Strides grow: a start that is nearly right costs two or three codes, a wrong one stays logarithmic.
         at = min(at + stride, end) if end > at else max(at - stride, end)
-        stride *= 3
+        # Strides grow: a start that is nearly right costs two or three codes, a wrong one stays logarithmic.
+        stride = max(1, stride // 4) if guess is not None and tried == 1 else 3 * stride
 
 
 def _between(within: Step, beyond: Step, target_bytes: float, *, halve: bool) -> int:

@@ -39,7 +39,9 @@ __all__ = [
     "WORST_BYTES",
     "bit_length",
     "decode_levels",
+    "decode_rest",
     "encode_levels",
+    "encode_rest",
     "new_scratch",
 ]
 
@@ -74,20 +76,8 @@ def _predict(levels: Array, used: Array, tile: int, across: int) -> int:
 
 
 @njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _encode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, grade: int, value: int) -> Coder:
-    """Write a magnitude above zero; that it is above zero is written by the caller."""
-    coder = encode_bit(buffer, coder, states, ONE + zone * CLASSES + grade, 1 if value > 1 else 0)
-    if value == 1:
-        return coder
-    kind = (CLASSES if zone else 0) + grade
-    row = LENGTH + kind * LENGTHS
-    length = 2
-    while value >> length:
-        coder = encode_bit(buffer, coder, states, row + length, 1)
-        length += 1
-    if length < LENGTHS - 1:
-        coder = encode_bit(buffer, coder, states, row + length, 0)
-    row = MANTISSA + (kind * LENGTHS + length) * 3
+def encode_rest(buffer: Array, coder: Coder, states: Array, row: int, value: int, length: int) -> Coder:
+    """Write what stands below the leading bit of a magnitude above 1."""
     first = (value >> (length - 2)) & 1
     coder = encode_bit(buffer, coder, states, row, first)
     if length > 2:
@@ -98,6 +88,42 @@ def _encode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, gra
             low = 16
         if low > 0:
             coder = encode_raw(buffer, coder, value, low)
+    return coder
+
+
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
+def decode_rest(buffer: Array, coder: Coder, states: Array, row: int, length: int) -> tuple[Coder, int]:
+    """Read a magnitude above 1 of so many bits."""
+    coder, first = decode_bit(buffer, coder, states, row)
+    value = 2 | first
+    if length > 2:
+        coder, bit = decode_bit(buffer, coder, states, row + 1 + first)
+        value = (value << 1) | bit
+        low = length - 3
+        if low > 16:
+            coder, part = decode_raw(buffer, coder, low - 16)
+            value = (value << (low - 16)) | part
+            low = 16
+        if low > 0:
+            coder, part = decode_raw(buffer, coder, low)
+            value = (value << low) | part
+    return coder, value
+
+
+@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
+def _encode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, grade: int, value: int) -> Coder:
+    """Write a magnitude above zero; that it is above zero is written by the caller."""
+    coder = encode_bit(buffer, coder, states, ONE + zone * CLASSES + grade, 1 if value > 1 else 0)
+    if value > 1:
+        kind = (CLASSES if zone else 0) + grade
+        row = LENGTH + kind * LENGTHS
+        length = 2
+        while value >> length:
+            coder = encode_bit(buffer, coder, states, row + length, 1)
+            length += 1
+        if length < LENGTHS - 1:
+            coder = encode_bit(buffer, coder, states, row + length, 0)
+        coder = encode_rest(buffer, coder, states, MANTISSA + (kind * LENGTHS + length) * 3, value, length)
     return coder
 
 
@@ -114,20 +140,7 @@ def _decode_magnitude(buffer: Array, coder: Coder, states: Array, zone: int, gra
         if not bit:
             break
         length += 1
-    row = MANTISSA + (kind * LENGTHS + length) * 3
-    coder, first = decode_bit(buffer, coder, states, row)
-    value = 2 | first
-    if length > 2:
-        coder, bit = decode_bit(buffer, coder, states, row + 1 + first)
-        value = (value << 1) | bit
-        low = length - 3
-        if low > 16:
-            coder, part = decode_raw(buffer, coder, low - 16)
-            value = (value << (low - 16)) | part
-            low = 16
-        if low > 0:
-            coder, part = decode_raw(buffer, coder, low)
-            value = (value << low) | part
+    coder, value = decode_rest(buffer, coder, states, MANTISSA + (kind * LENGTHS + length) * 3, length)
     return coder, value
 
 

@@ -26,7 +26,7 @@ from safecheck.codecs.tile.adaptive.contexts import (
 from safecheck.codecs.tile.adaptive.mixing import Tables, decode_mixed, encode_mixed, logit_table, odds_table
 from safecheck.codecs.tile.context import CLASSES, LENGTHS, MAGNITUDE_CAP, class_table
 from safecheck.codecs.tile.entropy import Coder, decode_bit, decode_raw, decode_sign, encode_bit, encode_raw
-from safecheck.codecs.tile.levels import LARGEST_LEVEL, WORST_BYTES, bit_length
+from safecheck.codecs.tile.levels import LARGEST_LEVEL, WORST_BYTES, bit_length, decode_rest, encode_rest
 
 __all__ = ["Lookup", "decode_tiles", "encode_tiles", "tables"]
 
@@ -52,40 +52,6 @@ def _known(near: Array, around: Array, classes: Array, place: int, beside_at: in
     grade = classes[np.uintp(min(inside + beside, MAGNITUDE_CAP))]
     inside = min(classes[np.uintp(min(inside, MAGNITUDE_CAP))], NEAR - 1)
     return int(grade), int(inside), int(min(classes[np.uintp(min(beside, MAGNITUDE_CAP))], NEAR - 2))
-
-
-@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _encode_rest(buffer: Array, coder: Coder, states: Array, row: int, value: int, length: int) -> Coder:
-    """Write what stands below the leading bit of a magnitude above 1."""
-    first = (value >> (length - 2)) & 1
-    coder = encode_bit(buffer, coder, states, row, first)
-    if length > 2:
-        coder = encode_bit(buffer, coder, states, row + 1 + first, (value >> (length - 3)) & 1)
-        low = length - 3
-        if low > 16:
-            coder = encode_raw(buffer, coder, value >> 16, low - 16)
-            low = 16
-        if low > 0:
-            coder = encode_raw(buffer, coder, value, low)
-    return coder
-
-
-@njit(cache=True, nogil=True, _nrt=False, forceinline=True)
-def _decode_rest(buffer: Array, coder: Coder, states: Array, row: int, length: int) -> tuple[Coder, int]:
-    coder, first = decode_bit(buffer, coder, states, row)
-    value = 2 | first
-    if length > 2:
-        coder, bit = decode_bit(buffer, coder, states, row + 1 + first)
-        value = (value << 1) | bit
-        low = length - 3
-        if low > 16:
-            coder, part = decode_raw(buffer, coder, low - 16)
-            value = (value << (low - 16)) | part
-            low = 16
-        if low > 0:
-            coder, part = decode_raw(buffer, coder, low)
-            value = (value << low) | part
-    return coder, value
 
 
 @njit(cache=True, nogil=True, _nrt=False)
@@ -187,7 +153,7 @@ def encode_tiles(
                     break
                 length += 1
             if length > 1:
-                coder = _encode_rest(buffer, coder, states, mantissa_row(zone, known[0], length), size, length)
+                coder = encode_rest(buffer, coder, states, mantissa_row(zone, known[0], length), size, length)
             if size:
                 coder = encode_raw(buffer, coder, 1 if value < 0 else 0, 1)
                 near[np.uintp(place)] = size
@@ -239,7 +205,7 @@ def decode_tiles(
                 length += 1
             value = size = length
             if length > 1:
-                coder, size = _decode_rest(buffer, coder, states, mantissa_row(zone, known[0], length), length)
+                coder, size = decode_rest(buffer, coder, states, mantissa_row(zone, known[0], length), length)
             if size:
                 coder, negative = decode_sign(buffer, coder)
                 value = -size if negative else size
